@@ -1,0 +1,15 @@
+//! Exact part values, the IEC 60062 notation for them, and the physical quantities of a job.
+
+mod notation;
+mod quantity;
+mod value;
+
+#[cfg(test)]
+mod test_support;
+
+pub use notation::{NotationError, format_part, parse_part};
+pub use quantity::{
+    QuantityError, format_si, parse_angular, parse_decibels, parse_frequency, parse_number,
+    parse_seconds,
+};
+pub use value::{Kind, Value, ValueError};
