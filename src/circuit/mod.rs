@@ -5,11 +5,11 @@ mod netlist;
 mod nodal;
 mod numeric;
 mod polynomial;
-
+mod traits;
 
 pub use library::{find, library};
 pub use netlist::{Circuit, CircuitError, Need, OpAmp, Output, SensibleQ, Slot, Term};
 pub use nodal::Transfer;
 pub use numeric::response;
 pub use polynomial::Polynomial;
-
+pub use traits::SlotEffect;

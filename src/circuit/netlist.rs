@@ -107,9 +107,8 @@ impl Need {
 
     /// The inequality as text, such as `C1/C2 >= 4 Q^2 + 4 Q^2 |gain|`.
     pub fn text(&self, circuit: &Circuit) -> String {
-        let product = |slots: &[usize]| {
-            slots.iter().map(|&s| circuit.slots[s].name.as_str()).collect::<Vec<_>>().join(" ")
-        };
+        let product =
+            |slots: &[usize]| slots.iter().map(|&s| circuit.slots[s].name.as_str()).collect::<Vec<_>>().join(" ");
         let power = |name: &str, k: i32| match k {
             0 => String::new(),
             1 => format!(" {name}"),
@@ -300,7 +299,7 @@ impl Reader {
             self.fault("elements".into(), message, "split the network into sections");
             return None;
         }
-        let ties = raw.ties.iter().enumerate().map(|(i, tie)| self.named(&format!("ties[{i}]"), tie)).collect();
+        let ties = raw.ties.iter().enumerate().map(|(i, tie)| self.tied(&format!("ties[{i}]"), tie)).collect();
         let outputs = raw.outputs.iter().enumerate();
         let outputs: Vec<Output> = outputs.filter_map(|(i, o)| self.output(i, o, &op_amps)).collect();
         if raw.outputs.is_empty() {
@@ -371,13 +370,7 @@ impl Reader {
         let mut found: Vec<usize> = Vec::new();
         for name in names {
             match self.slots.iter().position(|s| &s.name == name) {
-                Some(slot) => {
-                    if found.first().is_some_and(|&first| self.slots[first].kind != self.slots[slot].kind) {
-                        let message = format!("`{name}` is of another kind than the slots before it");
-                        self.fault(path.to_string(), message, "name slots of one kind");
-                    }
-                    found.push(slot);
-                }
+                Some(slot) => found.push(slot),
                 None => {
                     let list: Vec<&str> = self.slots.iter().map(|s| s.name.as_str()).collect();
                     let help = format!("the elements are {}", list.join(", "));
@@ -386,6 +379,15 @@ impl Reader {
             }
         }
         found
+    }
+
+    fn tied(&mut self, path: &str, names: &[String]) -> Vec<usize> {
+        let slots = self.named(path, names);
+        if slots.iter().any(|&slot| self.slots[slot].kind != self.slots[slots[0]].kind) {
+            let message = "a resistor and a capacitor cannot carry the same value".to_string();
+            self.fault(path.to_string(), message, "tie slots of one kind");
+        }
+        slots
     }
 
     fn output(&mut self, index: usize, raw: &RawOutput, op_amps: &[OpAmp]) -> Option<Output> {
@@ -410,8 +412,7 @@ impl Reader {
             self.fault(path, message, help);
             return None;
         };
-        let keep: Vec<Option<usize>> =
-            (0..self.slots.len()).map(|s| (!without.contains(&s)).then_some(s)).collect();
+        let keep: Vec<Option<usize>> = (0..self.slots.len()).map(|s| (!without.contains(&s)).then_some(s)).collect();
         let transfer = full.substituted(&keep, self.slots.len());
         if let Some(problem) = shape_problem(raw.shape, &transfer) {
             let message = format!("node `{}` does not give a {}: {problem}", raw.node, raw.shape.name());

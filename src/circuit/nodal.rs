@@ -213,8 +213,7 @@ mod tests {
     #[test]
     fn divider_and_inverting_amplifier() {
         // source - R1 - node 2 - R2 - ground
-        let divider =
-            Network { nodes: 3, slots: &[[1, 2], [2, 0]], capacitors: &[false, false], op_amps: &[] };
+        let divider = Network { nodes: 3, slots: &[[1, 2], [2, 0]], capacitors: &[false, false], op_amps: &[] };
         let (n, d) = divider.transfer(2).unwrap().coefficients(&[1e3, 3e3]);
         assert!((n[0] / d[0] - 0.75).abs() < 1e-15);
         // source - R1 - node 2 (minus), R2 from node 2 to the output, node 3
@@ -235,12 +234,8 @@ mod tests {
     #[test]
     fn an_unused_slot_does_not_reach_the_response() {
         // A resistor from the source to ground.
-        let loaded = Network {
-            nodes: 3,
-            slots: &[[1, 2], [2, 0], [1, 0]],
-            capacitors: &[false, true, false],
-            op_amps: &[],
-        };
+        let loaded =
+            Network { nodes: 3, slots: &[[1, 2], [2, 0], [1, 0]], capacitors: &[false, true, false], op_amps: &[] };
         let transfer = loaded.transfer(2).unwrap();
         assert!(transfer.depends_on(0) && transfer.depends_on(1) && !transfer.depends_on(2));
         assert!(!transfer.is_invariant_under(&[1, 0, 2]));

@@ -67,7 +67,8 @@ fn solve(mut matrix: Vec<Vec<Complex64>>) -> Option<Vec<Complex64>> {
     }
     for column in 0..n {
         let pivot = (column..n).max_by(|&a, &b| matrix[a][column].norm().total_cmp(&matrix[b][column].norm()))?;
-        if matrix[pivot][column].norm() < 1e-14 {
+        let lead = matrix[pivot][column].norm();
+        if lead <= 0.0 || !lead.is_finite() {
             return None;
         }
         matrix.swap(column, pivot);

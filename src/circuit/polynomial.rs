@@ -30,6 +30,11 @@ impl Polynomial {
         Polynomial::from_terms([(exponents, 1)])
     }
 
+    /// One term: a coefficient times variables to the given powers.
+    pub fn monomial(exponents: &[u8], coefficient: i64) -> Polynomial {
+        Polynomial::from_terms([(exponents.to_vec(), coefficient)])
+    }
+
     fn from_terms(terms: impl IntoIterator<Item = (Vec<u8>, i64)>) -> Polynomial {
         let mut sum = Polynomial::zero();
         for (exponents, coefficient) in terms {
@@ -165,12 +170,25 @@ impl Polynomial {
         a.times(&b.derivative(variable)) == b.times(&a.derivative(variable))
     }
 
+    /// Whether a/b visibly differs between two points that differ in one variable only.
+    fn ratio_moves(a: &Polynomial, b: &Polynomial, variable: usize, variables: usize) -> bool {
+        let here: Vec<f64> = (0..variables).map(|k| 1.0 + 0.618 * k as f64).collect();
+        let mut there = here.clone();
+        there[variable] *= 1.5;
+        let (left, right) = (a.value(&here) * b.value(&there), a.value(&there) * b.value(&here));
+        (left - right).abs() > 1e-9 * left.abs()
+    }
+
     /// a/b with every variable taken out on which the ratio does not depend, and common monomials cancelled.
     pub fn reduced_ratio(a: &Polynomial, b: &Polynomial, variables: usize) -> (Polynomial, Polynomial) {
         let (mut a, mut b) = (a.clone(), b.clone());
         for variable in 0..variables {
             let (top, bottom) = (a.degree_in(variable), b.degree_in(variable));
-            if top + bottom > 0 && Polynomial::ratio_ignores(&a, &b, variable) {
+            // One pair of points can show dependence at once; only its absence needs the exact test.
+            if top + bottom > 0
+                && !Polynomial::ratio_moves(&a, &b, variable, variables)
+                && Polynomial::ratio_ignores(&a, &b, variable)
+            {
                 // A ratio that does not depend on the variable equals that of the leading coefficients in it.
                 (a, b) = (a.coefficient_of(variable, top), b.coefficient_of(variable, bottom));
             }

@@ -1,33 +1,224 @@
-//! Shelves.
-use crate::units::{Kind, Value};
-/// Shelf.
+//! The shelf: which values may go into a slot.
+
+use thiserror::Error;
+
+use super::closer;
+use crate::units::{Kind, Value, format_part, range_in_words};
+
+/// The values of one kind of part that are allowed: ascending, distinct, and never none.
+///
+/// ```
+/// use roundwell::parts::{Series, Shelf};
+/// use roundwell::units::{Kind, parse_part};
+///
+/// let ohms = |text| parse_part(text, Kind::Resistor);
+/// let shelf = Shelf::new(Kind::Resistor, Series::E12.values_between(ohms("1k")?, ohms("10k")?))?;
+/// assert_eq!(shelf.len(), 13);
+/// assert_eq!(shelf.nearest(4500.0), ohms("4k7")?);
+/// # Ok::<(), Box<dyn std::error::Error>>(())
+/// ```
 #[derive(Clone, Debug, PartialEq, Eq)]
-pub struct Shelf { kind: Kind, values: Vec<Value> }
-/// Error.
-#[derive(Clone, Debug, PartialEq, Eq, thiserror::Error)]
-pub enum ShelfError {
-    /// .
-    #[error("empty")]
-    Empty,
+pub struct Shelf {
+    kind: Kind,
+    values: Vec<Value>,
 }
-#[allow(clippy::len_without_is_empty)]
+
+/// Why values do not make a shelf.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Error)]
+pub enum ShelfError {
+    /// No value was given.
+    #[error("the {} shelf is empty: widen its range, or add a series or single values", .0.name())]
+    Empty(Kind),
+    /// Every value was taken away.
+    #[error("no {} is left on the shelf: exclude fewer values, or add a series or single values", .0.name())]
+    NothingLeft(Kind),
+    /// A value outside [`Kind::range`].
+    #[error("{} is out of range: a {} value lies between {}", format_part(*.value, *.kind), .kind.name(), range_in_words(*.kind))]
+    OutOfRange {
+        /// The kind of part.
+        kind: Kind,
+        /// The value.
+        value: Value,
+    },
+}
+
+#[expect(clippy::len_without_is_empty, reason = "a shelf is never empty")]
 impl Shelf {
-    /// .
-    pub fn new(_kind: Kind, _values: impl IntoIterator<Item = Value>) -> Result<Shelf, ShelfError> { todo!() }
-    /// .
-    pub fn kind(&self) -> Kind { self.kind }
-    /// .
-    pub fn values(&self) -> &[Value] { &self.values }
-    /// .
-    pub fn contains(&self, _value: Value) -> bool { todo!() }
-    /// .
-    pub fn nearest(&self, _ideal: f64) -> Value { todo!() }
-    /// .
-    pub fn intersection(&self, _other: &Shelf) -> Option<Shelf> { todo!() }
-    /// .
-    pub fn without(&self, _values: &[Value]) -> Result<Shelf, ShelfError> { todo!() }
-    /// .
-    pub fn len(&self) -> usize { self.values.len() }
-    /// .
-    pub fn span(&self) -> (Value, Value) { todo!() }
+    /// A shelf of these values, in any order; values given twice count once.
+    ///
+    /// # Errors
+    /// [`ShelfError::Empty`] without a value, [`ShelfError::OutOfRange`] for the smallest value that
+    /// is outside [`Kind::range`].
+    pub fn new(kind: Kind, values: impl IntoIterator<Item = Value>) -> Result<Shelf, ShelfError> {
+        let mut values: Vec<Value> = values.into_iter().collect();
+        values.sort_unstable();
+        values.dedup();
+        if values.is_empty() {
+            return Err(ShelfError::Empty(kind));
+        }
+        match values.iter().find(|value| !kind.allows(**value)) {
+            Some(&value) => Err(ShelfError::OutOfRange { kind, value }),
+            None => Ok(Shelf { kind, values }),
+        }
+    }
+
+    /// The kind of part.
+    pub fn kind(&self) -> Kind {
+        self.kind
+    }
+
+    /// The values, ascending and distinct.
+    pub fn values(&self) -> &[Value] {
+        &self.values
+    }
+
+    /// The count of values, at least one.
+    pub fn len(&self) -> usize {
+        self.values.len()
+    }
+
+    /// The smallest and the largest value.
+    pub fn span(&self) -> (Value, Value) {
+        (self.values[0], self.values[self.values.len() - 1])
+    }
+
+    /// Whether the value is on the shelf.
+    pub fn contains(&self, value: Value) -> bool {
+        self.values.binary_search(&value).is_ok()
+    }
+
+    /// The value with the smallest ratio to `ideal`, given in ohms or farads; the smaller of two that
+    /// are equally far. A number that is not positive, or no number, gives the smallest value.
+    pub fn nearest(&self, ideal: f64) -> Value {
+        let (first, last) = self.span();
+        let above = self.values.partition_point(|value| value.to_f64() < ideal);
+        match self.values.get(above) {
+            None => last,
+            Some(_) if above == 0 => first,
+            Some(&value) => closer(self.values[above - 1], value, ideal),
+        }
+    }
+
+    /// The values that are on both shelves, or `None` when there are none or the kinds differ.
+    pub fn intersection(&self, other: &Shelf) -> Option<Shelf> {
+        let kept = |value: &Value| self.kind == other.kind && other.contains(*value);
+        self.filtered(kept)
+    }
+
+    /// The shelf without the given values; those that are not on it are ignored.
+    ///
+    /// # Errors
+    /// [`ShelfError::NothingLeft`] when no value remains.
+    pub fn without(&self, excluded: &[Value]) -> Result<Shelf, ShelfError> {
+        self.filtered(|value| !excluded.contains(value)).ok_or(ShelfError::NothingLeft(self.kind))
+    }
+
+    fn filtered(&self, keep: impl Fn(&Value) -> bool) -> Option<Shelf> {
+        let values: Vec<Value> = self.values.iter().copied().filter(keep).collect();
+        let kind = self.kind;
+        (!values.is_empty()).then_some(Shelf { kind, values })
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    #![allow(clippy::unwrap_used)]
+    use proptest::prelude::*;
+
+    use super::*;
+    use crate::units::parse_part;
+    use crate::units::test_support::deterministic;
+
+    fn values(kind: Kind, texts: &str) -> Vec<Value> {
+        let parts = texts.split_whitespace();
+        parts.map(|text| parse_part(text, kind).unwrap()).collect()
+    }
+
+    fn shelf(texts: &str) -> Shelf {
+        Shelf::new(Kind::Resistor, values(Kind::Resistor, texts)).unwrap()
+    }
+
+    #[test]
+    fn values_are_sorted_and_counted_once() {
+        let shelf = shelf("10k 4k7 4.7k 1k 4700");
+        assert_eq!(shelf.values(), values(Kind::Resistor, "1k 4k7 10k"));
+        assert_eq!((shelf.kind(), shelf.len()), (Kind::Resistor, 3));
+        let ends = values(Kind::Resistor, "1k 10k");
+        assert_eq!(shelf.span(), (ends[0], ends[1]));
+        assert!(shelf.contains(ends[0]) && !shelf.contains(ends[0].shifted(-1).unwrap()));
+    }
+
+    #[test]
+    fn refusals_say_what_is_wrong_and_what_to_do() {
+        let message = |kind, values: &[Value]| {
+            let error = Shelf::new(kind, values.iter().copied()).unwrap_err();
+            error.to_string()
+        };
+        assert_eq!(
+            message(Kind::Capacitor, &[]),
+            "the capacitor shelf is empty: widen its range, or add a series or single values"
+        );
+        let wild = [Value::ONE, Value::new(47, 12).unwrap(), Value::new(1, 15).unwrap()];
+        assert_eq!(
+            message(Kind::Resistor, &wild),
+            "47T is out of range: a resistor value lies between 1 mΩ and 1 TΩ"
+        );
+        let one = shelf("1k");
+        assert_eq!(
+            one.without(one.values()).unwrap_err().to_string(),
+            "no resistor is left on the shelf: exclude fewer values, or add a series or single values"
+        );
+    }
+
+    #[test]
+    fn shelves_are_cut() {
+        let (left, right) = (shelf("1k 2k2 4k7"), shelf("2k2 4k7 10k"));
+        assert_eq!(left.intersection(&right), Some(shelf("2k2 4k7")));
+        assert_eq!(left.intersection(&shelf("3k3")), None);
+        let farads = Shelf::new(Kind::Capacitor, [Value::ONE]).unwrap();
+        let ohms = shelf("1R");
+        assert_eq!(farads.values(), ohms.values());
+        assert_eq!(ohms.intersection(&farads), None);
+        let excluded = values(Kind::Resistor, "2.2k 33k");
+        assert_eq!(left.without(&excluded), Ok(shelf("1k 4k7")));
+        assert_eq!(left.without(&[]), Ok(left));
+    }
+
+    #[test]
+    fn nearest_is_by_ratio_and_ends_at_the_ends() {
+        let shelf = shelf("1R 4R 100R");
+        for (ideal, text) in [
+            (2.0, "1R"), // as far from 1 as from 4
+            (2.0_f64.next_up(), "4R"),
+            (4.0, "4R"),
+            (19.0, "4R"),
+            (21.0, "100R"),
+            (1e9, "100R"),
+            (f64::INFINITY, "100R"),
+            (1e-9, "1R"),
+            (0.0, "1R"),
+            (-5.0, "1R"),
+            (f64::NAN, "1R"),
+        ] {
+            assert_eq!(shelf.nearest(ideal), values(Kind::Resistor, text)[0], "{ideal}");
+        }
+    }
+
+    proptest! {
+        #![proptest_config(deterministic(2048))]
+
+        // Reference: a scan of the whole shelf.
+        #[test]
+        fn nearest_agrees_with_a_scan(
+            mantissas in prop::collection::vec((1_u64..1000, -3..6_i32), 1..40),
+            power in -4.0..9.0_f64,
+        ) {
+            let ideal = 10_f64.powf(power);
+            let given = mantissas.iter().map(|(m, e)| Value::new(*m, *e).unwrap());
+            let shelf = Shelf::new(Kind::Resistor, given).unwrap();
+            let distance = |value: Value| (value.to_f64() / ideal).ln().abs();
+            let least = shelf.values().iter().copied().map(distance).fold(f64::INFINITY, f64::min);
+            prop_assert!(distance(shelf.nearest(ideal)) <= least + 1e-12);
+        }
+    }
 }

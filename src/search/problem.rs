@@ -5,6 +5,7 @@ use std::sync::Arc;
 use crate::circuit::{Circuit, Output};
 use crate::parts::Shelf;
 use crate::target::{Criterion, Section};
+use crate::units::Kind;
 
 /// A whole job.
 #[derive(Clone, Debug)]
@@ -35,6 +36,29 @@ pub struct SectionProblem {
 }
 
 impl SectionProblem {
+    /// A section with one shelf a kind and the circuit's own ties in force, taken at the output of that name.
+    ///
+    /// `None` if the circuit has no such output.
+    pub fn new(
+        target: Section,
+        circuit: Arc<Circuit>,
+        output: &str,
+        resistors: &Shelf,
+        capacitors: &Shelf,
+    ) -> Option<SectionProblem> {
+        let output = circuit.outputs.iter().position(|o| o.name == output)?;
+        let shelf = |slot: &crate::circuit::Slot| match slot.kind {
+            Kind::Resistor => resistors.clone(),
+            Kind::Capacitor => capacitors.clone(),
+        };
+        let shelves = circuit.slots.iter().map(shelf).collect();
+        let filled = |tie: &Vec<usize>| -> Vec<usize> {
+            tie.iter().copied().filter(|slot| !circuit.outputs[output].without.contains(slot)).collect()
+        };
+        let equal = circuit.ties.iter().map(filled).filter(|tie| tie.len() > 1).collect();
+        Some(SectionProblem { target, circuit, output, shelves, equal })
+    }
+
     /// The output that is taken.
     pub fn output(&self) -> &Output {
         &self.circuit.outputs[self.output]
@@ -58,4 +82,19 @@ pub struct Goals {
     pub alternatives: usize,
     /// The geometric mean of the resistances of each section must lie in this range, ohms.
     pub impedance: Option<(f64, f64)>,
+}
+
+impl Default for Goals {
+    /// 0.1 dB wanted, 1 dB limit, 0.001 dB resolution, ten rows, no alternatives.
+    fn default() -> Self {
+        Goals {
+            max_part_numbers: None,
+            wanted_error: 0.1,
+            error_limit: 1.0,
+            error_resolution: 0.001,
+            rows: 10,
+            alternatives: 0,
+            impedance: None,
+        }
+    }
 }

@@ -1,8 +1,16 @@
-//! Faults in a text, and where they stand: shared by everything that reads RON.
+//! Texts in RON (rusty object notation, <https://github.com/ron-rs/ron>): reading them with all their faults at once,
+//! and showing each fault where it stands. Shared by everything that reads RON.
+
+mod names;
+mod read;
+mod render;
+mod scan;
 
 use std::ops::Range;
 
-use serde::de::DeserializeOwned;
+pub use names::suggestion;
+pub use read::parse;
+pub use render::render;
 
 /// One thing that is wrong with a text, a file or a flag.
 #[derive(Clone, Debug, PartialEq, Eq)]
@@ -30,15 +38,16 @@ impl Fault {
     }
 }
 
-/// Reads a RON text into `T`.
+/// The faults with the spans of their paths in the text, in text order.
 ///
-/// # Errors
-/// All faults that can be told independently.
-pub fn parse<T: DeserializeOwned>(text: &str) -> Result<T, Vec<Fault>> {
-    ron::from_str(text).map_err(|e| vec![Fault::at("", e.to_string())])
-}
-
-/// The faults with the spans of their paths (or of the nearest enclosing path) in the text.
-pub fn located(_text: &str, faults: Vec<Fault>) -> Vec<Fault> {
+/// A path is made of keys and indices: `sections[1].q`, `slots.R1.pin` (keys of maps without their quotes), `band[0]`
+/// (a member of a list or tuple). Where a path leads nowhere, the nearest value that encloses it is taken; `[0]` of a
+/// value that stands alone is that value. Flags (paths that begin with `-`) have no span and come last.
+pub fn located(text: &str, mut faults: Vec<Fault>) -> Vec<Fault> {
+    let tree = scan::Tree::of(text);
+    for fault in faults.iter_mut().filter(|f| f.span.is_none() && !f.path.starts_with('-')) {
+        fault.span = Some(tree.nearest(&fault.path));
+    }
+    faults.sort_by_key(|f| f.span.as_ref().map_or((usize::MAX, 0), |span| (span.start, span.end)));
     faults
 }

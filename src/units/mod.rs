@@ -3,13 +3,15 @@
 mod notation;
 mod quantity;
 mod value;
+mod written;
 
 #[cfg(test)]
-mod test_support;
+pub(crate) mod test_support;
 
+pub(crate) use notation::range_in_words;
 pub use notation::{NotationError, format_part, parse_part};
 pub use quantity::{
-    QuantityError, format_si, parse_angular, parse_decibels, parse_frequency, parse_number,
-    parse_seconds,
+    QuantityError, format_si, parse_angular, parse_decibels, parse_frequency, parse_number, parse_seconds,
 };
 pub use value::{Kind, Value, ValueError};
+pub(crate) use written::excerpt;

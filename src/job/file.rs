@@ -1,0 +1,228 @@
+//! The job file as it is written (RON): every key may be missing, scalars are kept as text.
+
+use std::fmt;
+
+use serde::Deserialize;
+use serde::de::value::SeqAccessDeserializer;
+use serde::de::{Deserializer, Error, MapAccess, SeqAccess, Visitor};
+
+use super::given::{Given, Scalar, Scalars};
+use super::shelf::Shelves;
+use crate::target::Shape;
+use crate::text::{self, Fault};
+
+/// Defines a structure of the job file: every key is optional and none is unknown.
+macro_rules! written {
+    ($(#[$meta:meta])* $name:ident as $shown:literal { $($(#[$doc:meta])* $key:ident: $type:ty,)* }) => {
+        $(#[$meta])*
+        #[derive(Clone, Debug, Default, PartialEq, Deserialize)]
+        #[serde(default, deny_unknown_fields, rename = $shown)]
+        pub struct $name {
+            $($(#[$doc])* pub $key: Option<Given<$type>>,)*
+        }
+
+        impl $name {
+            /// Lays another one over this: each key that is set in `over` wins as a whole.
+            pub fn overlay(&mut self, over: $name) {
+                $(if over.$key.is_some() { self.$key = over.$key; })*
+            }
+        }
+    };
+}
+
+written! {
+    /// A job file. A key of a section wins over the key of the same name here.
+    JobFile as "Job" {
+        /// The title.
+        title: Scalar,
+        /// The sections in signal order; the only key that a job cannot do without.
+        sections: Vec<SectionFile>,
+        /// Identifier of the circuit of each section that names none; otherwise the shape decides.
+        circuit: Scalar,
+        /// Name of the output to take; otherwise the first of the wanted shape and sign.
+        output: Scalar,
+        /// Whether the sign of the gains matters.
+        sign: Sign,
+        /// What may be used as resistors; E96 from 1 kΩ to 1 MΩ.
+        resistors: Shelves,
+        /// What may be used as capacitors; E12 from 1 nF to 1 µF.
+        capacitors: Shelves,
+        /// Lowest and highest frequency that count, Hz; lowest f0 / 10 to highest f0 × 10.
+        band: (Scalar, Scalar),
+        /// How far under the largest |H*| the floor lies, dB; 60.
+        floor: Scalar,
+        /// Whether a flat gain offset is ignored; false.
+        ignore_gain: bool,
+        /// What the error of a set is; decibels, for jobs with an all-pass section the vector error.
+        measure: MeasureFile,
+        /// No set may need more part numbers than this.
+        max_part_numbers: Scalar,
+        /// The error that is good enough, in dB or as a plain ratio or percentage; 0.1 dB or 1 %.
+        wanted_error: Scalar,
+        /// The error above which nothing is listed, likewise; 1 dB or 12 %.
+        error_limit: Scalar,
+        /// The error below which nothing better is looked for, likewise; 0.001 dB or 0.01 %.
+        error_resolution: Scalar,
+        /// How many rows to list at most; 10.
+        rows: Scalar,
+        /// How many further sets to list for each number of part numbers; 0.
+        alternatives: Scalar,
+        /// Range for the geometric mean of the resistances of each section, Ω.
+        impedance: (Scalar, Scalar),
+        /// How long to search.
+        time_limit: Scalar,
+    }
+}
+
+written! {
+    /// A section of a job file.
+    SectionFile as "Section" {
+        /// The name; otherwise the number of the section, from 1.
+        name: Scalar,
+        /// The shape.
+        shape: Shape,
+        /// Pole frequency, Hz. A section has f0, w0 or poles.
+        f0: Scalar,
+        /// Angular pole frequency, rad/s.
+        w0: Scalar,
+        /// Two real poles, Hz: they stand for f0 and Q.
+        poles: (Scalar, Scalar),
+        /// Pole quality factor.
+        q: Scalar,
+        /// Signed gain, plain ratio; 1.
+        gain: Scalar,
+        /// Zero frequency of a notch, Hz; otherwise that of the poles.
+        fz: Scalar,
+        /// Angular zero frequency of a notch, rad/s.
+        wz: Scalar,
+        /// Identifier of the circuit.
+        circuit: Scalar,
+        /// Name of the output to take.
+        output: Scalar,
+        /// Whether the sign of the gain matters.
+        sign: Sign,
+        /// What may be used as resistors in this section.
+        resistors: Shelves,
+        /// What may be used as capacitors in this section.
+        capacitors: Shelves,
+        /// What may go into single slots.
+        slots: Slots,
+        /// Groups of slots that must carry the same value.
+        equal: Vec<Vec<Scalar>>,
+        /// Ties of the circuit that do not hold.
+        untie: Untie,
+    }
+}
+
+written! {
+    /// What may go into one slot: one value, or a shelf with exclusions.
+    SlotFile as "Slot" {
+        /// The only value.
+        pin: Scalar,
+        /// The shelf; otherwise that of the section.
+        shelf: Shelves,
+        /// Values that are taken off the shelf.
+        exclude: Scalars,
+    }
+}
+
+impl JobFile {
+    /// Reads a job file.
+    ///
+    /// # Errors
+    /// The faults of the text, with their spans: see [`text::parse`].
+    pub fn parse(text: &str) -> Result<JobFile, Vec<Fault>> {
+        text::parse(text)
+    }
+}
+
+/// Whether the sign of a gain matters.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Deserialize)]
+pub enum Sign {
+    /// The gain must have the sign that was written.
+    #[default]
+    Kept,
+    /// Any sign will do: the circuit decides.
+    Either,
+}
+
+/// What the error of a set is; see [`Measure`](crate::target::Measure).
+#[derive(Clone, Debug, PartialEq, Deserialize)]
+#[serde(deny_unknown_fields)]
+pub enum MeasureFile {
+    /// Response error in dB.
+    Decibel,
+    /// Vector error.
+    Vector,
+    /// Weighted sum of the relative misses; a weight that is missing is zero.
+    Weighted {
+        /// Weight of the miss in f0.
+        f0: Option<Scalar>,
+        /// Weight of the miss in Q.
+        q: Option<Scalar>,
+        /// Weight of the miss in gain.
+        gain: Option<Scalar>,
+        /// Weight of the miss in fz; where missing, that of f0.
+        fz: Option<Scalar>,
+    },
+}
+
+/// What may go into single slots, by slot name, in the order written.
+#[derive(Clone, Debug, Default, PartialEq)]
+pub struct Slots(pub Vec<(String, SlotFile)>);
+
+impl<'de> Deserialize<'de> for Slots {
+    fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
+        struct Entries;
+        impl<'de> Visitor<'de> for Entries {
+            type Value = Slots;
+
+            fn expecting(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+                f.write_str("slots by name, such as {\"R1\": (pin: \"10k\")}")
+            }
+
+            fn visit_map<A: MapAccess<'de>>(self, mut map: A) -> Result<Slots, A::Error> {
+                let mut slots: Vec<(String, SlotFile)> = Vec::new();
+                while let Some(name) = map.next_key::<String>()? {
+                    if slots.iter().any(|(known, _)| *known == name) {
+                        return Err(A::Error::custom(format!("the slot `{name}` is there twice")));
+                    }
+                    slots.push((name, map.next_value()?));
+                }
+                Ok(Slots(slots))
+            }
+        }
+        deserializer.deserialize_map(Entries)
+    }
+}
+
+/// Which ties of the circuit do not hold.
+#[derive(Clone, Debug, PartialEq)]
+pub enum Untie {
+    /// All of them, or none.
+    All(bool),
+    /// The ties of exactly these slots.
+    Groups(Vec<Vec<Scalar>>),
+}
+
+impl<'de> Deserialize<'de> for Untie {
+    fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
+        struct Either;
+        impl<'de> Visitor<'de> for Either {
+            type Value = Untie;
+
+            fn expecting(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+                f.write_str("true, false or a list such as [[\"RA\", \"RB\"]]")
+            }
+
+            fn visit_bool<E>(self, all: bool) -> Result<Untie, E> {
+                Ok(Untie::All(all))
+            }
+
+            fn visit_seq<A: SeqAccess<'de>>(self, list: A) -> Result<Untie, A::Error> {
+                Vec::deserialize(SeqAccessDeserializer::new(list)).map(Untie::Groups)
+            }
+        }
+        deserializer.deserialize_any(Either)
+    }
+}

@@ -1,0 +1,129 @@
+//! How sets are judged and what is wanted of them, for the job as a whole.
+
+use std::f64::consts::TAU;
+use std::fmt::Display;
+
+use super::desk::{At, Checked, Desk, Place};
+use super::file::{JobFile, MeasureFile};
+use super::given::Scalar;
+use super::section::number;
+use crate::search::Goals;
+use crate::target::{Criterion, Measure, Weights};
+use crate::units::{Kind, parse_decibels, parse_frequency, parse_number, parse_part};
+
+/// A whole number between two bounds.
+fn whole(name: &str, low: usize, high: usize) -> impl Fn(&str) -> Result<usize, String> {
+    move |text| {
+        let number = text.parse().ok().filter(|number| (low..=high).contains(number));
+        number.ok_or_else(|| format!("{name} must be a whole number from {low} to {high}, found {text}"))
+    }
+}
+
+/// A number larger than zero and not above `high`.
+fn positive<E: Display>(
+    name: &str,
+    high: f64,
+    read: impl Fn(&str) -> Result<f64, E>,
+) -> impl Fn(&str) -> Result<f64, String> {
+    move |text| match read(text) {
+        Ok(number) if number > 0.0 && number <= high => Ok(number),
+        Ok(_) => Err(format!("{name} must be larger than 0 and at most {high}, found {text}")),
+        Err(error) => Err(error.to_string()),
+    }
+}
+
+/// The criterion. `all_pass` is the name of an all-pass section, if the job has one.
+pub(super) fn criterion(desk: &mut Desk, job: &JobFile, all_pass: Option<&str>) -> Checked<Criterion> {
+    let root = Place::job();
+    let measure = measure(desk, root.find("measure", &job.measure), all_pass);
+    let band = desk.range(root.find("band", &job.band), parse_frequency);
+    let floor = desk.optional(root.find("floor", &job.floor), positive("floor", 300.0, parse_decibels));
+    let usual = Criterion::default();
+    Ok(Criterion {
+        measure: measure?,
+        band: band?.map(|(low, high)| (low * TAU, high * TAU)),
+        floor_db: floor?.unwrap_or(usual.floor_db),
+        ignore_gain: job.ignore_gain.as_ref().map_or(usual.ignore_gain, |given| given.value),
+    })
+}
+
+fn measure(desk: &mut Desk, found: Option<At<'_, MeasureFile>>, all_pass: Option<&str>) -> Checked<Measure> {
+    let Some(At { value, place }) = found else {
+        return Ok(if all_pass.is_some() { Measure::Vector } else { Measure::Decibel });
+    };
+    match (value, all_pass) {
+        (MeasureFile::Decibel, Some(name)) => {
+            let message = format!("the magnitude in dB says nothing about the all-pass section {name}");
+            Err(desk.note(&place, message, "write measure: Vector, or Weighted(..)"))
+        }
+        (MeasureFile::Decibel, None) => Ok(Measure::Decibel),
+        (MeasureFile::Vector, _) => Ok(Measure::Vector),
+        (MeasureFile::Weighted { f0, q, gain, fz }, _) => {
+            let mut weight = |key: &str, scalar: &Option<Scalar>| {
+                let found = scalar.as_ref().map(|value| At { value, place: place.key(key) });
+                desk.optional(found, number("a weight", 0.0, 1e6))
+            };
+            let (f0, q, gain, fz) = (weight("f0", f0), weight("q", q), weight("gain", gain), weight("fz", fz));
+            let f0 = f0?.unwrap_or(0.0);
+            let [q, gain, fz] = [q?.unwrap_or(0.0), gain?.unwrap_or(0.0), fz?.unwrap_or(f0)];
+            if f0 + q + gain + fz > 0.0 {
+                return Ok(Measure::Weighted(Weights { f0, q, gain, fz }));
+            }
+            Err(desk.note(&place, "every weight is zero", "write Weighted(f0: 1, q: 0.2, gain: 1), for example"))
+        }
+    }
+}
+
+/// The goals; errors are in the unit of the measure.
+pub(super) fn goals(desk: &mut Desk, job: &JobFile, measure: Checked<Measure>) -> Checked<Goals> {
+    let root = Place::job();
+    let most =
+        desk.optional(root.find("max_part_numbers", &job.max_part_numbers), whole("max_part_numbers", 1, 1000));
+    let rows = desk.optional(root.find("rows", &job.rows), whole("rows", 1, 10_000));
+    let alternatives = desk.optional(root.find("alternatives", &job.alternatives), whole("alternatives", 0, 10_000));
+    let ohms = |text: &str| parse_part(text, Kind::Resistor);
+    let impedance = desk.range(root.find("impedance", &job.impedance), ohms);
+    let [wanted_error, error_limit, error_resolution] = errors(desk, job, &measure?)?;
+    let usual = Goals::default();
+    Ok(Goals {
+        max_part_numbers: most?,
+        wanted_error,
+        error_limit,
+        error_resolution,
+        rows: rows?.unwrap_or(usual.rows),
+        alternatives: alternatives?.unwrap_or(usual.alternatives),
+        impedance: impedance?.map(|(low, high)| (low.to_f64(), high.to_f64())),
+    })
+}
+
+/// The wanted error, the limit and the resolution. What is not written gives way to what is.
+fn errors(desk: &mut Desk, job: &JobFile, measure: &Measure) -> Checked<[f64; 3]> {
+    let (usual, highest): ([f64; 3], f64) = match measure {
+        Measure::Decibel => ([0.1, 1.0, 0.001], 100.0),
+        Measure::Vector | Measure::Weighted(_) => ([0.01, 0.12, 0.0001], 10.0),
+    };
+    let mut error = |key: &str, given| {
+        let found = Place::job().find(key, given);
+        match measure {
+            Measure::Decibel => desk.optional(found, positive(key, highest, parse_decibels)),
+            Measure::Vector | Measure::Weighted(_) => desk.optional(found, positive(key, highest, parse_number)),
+        }
+    };
+    let wanted = error("wanted_error", &job.wanted_error);
+    let limit = error("error_limit", &job.error_limit);
+    let resolution = error("error_resolution", &job.error_resolution);
+    let (wanted, limit, resolution) = (wanted?, limit?, resolution?);
+    let aim = wanted.unwrap_or(usual[0].min(limit.unwrap_or(f64::INFINITY)));
+    let (limit, resolution) = (limit.unwrap_or(usual[1].max(aim)), resolution.unwrap_or(usual[2].min(aim)));
+    if aim > limit {
+        let place = Place::job().of("wanted_error", &job.wanted_error);
+        let message = format!("wanted_error {aim} is above error_limit {limit}");
+        return Err(desk.note(&place, message, "raise the limit, or want a smaller error"));
+    }
+    if resolution > aim {
+        let place = Place::job().of("error_resolution", &job.error_resolution);
+        let message = format!("error_resolution {resolution} is above wanted_error {aim}");
+        return Err(desk.note(&place, message, "choose a finer resolution"));
+    }
+    Ok([aim, limit, resolution])
+}

@@ -1,0 +1,22 @@
+//! Job files: what the user writes, and how it becomes a [`Problem`](crate::search::Problem) with everything resolved
+//! and checked.
+//!
+//! A job is read into a [`JobFile`], in which every key may be missing; what the command line says is laid over it;
+//! [`resolve`] then fills in the defaults and returns either a [`Job`] or every fault that can be told independently.
+
+mod desk;
+mod file;
+mod given;
+mod goals;
+mod resolve;
+mod section;
+mod shelf;
+mod slots;
+
+#[cfg(test)]
+mod tests;
+
+pub use file::{JobFile, MeasureFile, SectionFile, Sign, SlotFile, Slots, Untie};
+pub use given::{Given, Scalar, Scalars};
+pub use resolve::{Job, resolve};
+pub use shelf::{ShelfFile, Shelves};

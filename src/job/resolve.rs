@@ -1,0 +1,113 @@
+//! From a job as written to a problem that can be searched.
+
+use std::sync::Arc;
+use std::time::Duration;
+
+use super::desk::{At, Checked, Desk, Noted, Place};
+use super::file::{JobFile, SectionFile};
+use super::goals::{criterion, goals};
+use super::section::{Circuits, Written};
+use super::shelf::shelf;
+use super::slots::{Board, Stock};
+use crate::circuit::Circuit;
+use crate::search::{Problem, SectionProblem};
+use crate::text::Fault;
+use crate::units::{Kind, parse_seconds};
+
+/// A job with everything resolved and checked.
+#[derive(Clone, Debug)]
+pub struct Job {
+    /// What is searched.
+    pub problem: Problem,
+    /// How long to search, where the job says so.
+    pub time_limit: Option<Duration>,
+}
+
+/// Resolves a job: fills in the defaults, finds the circuits, chooses the outputs, puts the shelves together.
+///
+/// `circuits` gives the circuit of an identifier, or says what is wrong with it.
+///
+/// # Errors
+/// All faults that can be told independently, by their paths in the job file or their flags;
+/// [`located`](crate::text::located) adds the places in the text and their order.
+pub fn resolve(
+    job: &JobFile,
+    circuits: &mut dyn FnMut(&str) -> Result<Arc<Circuit>, String>,
+) -> Result<Job, Vec<Fault>> {
+    let mut desk = Desk::default();
+    resolved(&mut desk, job, circuits).map_err(|Noted| desk.faults)
+}
+
+fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits) -> Checked<Job> {
+    let root = Place::job();
+    let files: &[SectionFile] = job.sections.as_ref().map_or(&[], |given| &given.value);
+    let place = root.key("sections");
+    if files.is_empty() {
+        let help = "write sections: [(shape: LowPass, f0: \"1 kHz\", q: 0.7071)], for example";
+        desk.note(&place, "the job has no sections", help);
+    }
+    let resistors = shelf(desk, root.find("resistors", &job.resistors), Kind::Resistor);
+    let capacitors = shelf(desk, root.find("capacitors", &job.capacitors), Kind::Capacitor);
+    let stock = Stock { resistors, capacitors };
+
+    let mut names: Vec<String> = Vec::new();
+    let mut sections = Vec::new();
+    for (index, file) in files.iter().enumerate() {
+        let place = place.item(index);
+        let name = file.name.as_ref().map_or_else(|| (index + 1).to_string(), |name| name.value.text().to_string());
+        if names.contains(&name) {
+            let message = format!("two sections are named {name}");
+            desk.note(&place.of("name", &file.name), message, "give each section its own name");
+        }
+        names.push(name.clone());
+        sections.push(section(desk, &Written { job, file, place, name }, &stock, circuits));
+    }
+
+    let all_pass =
+        files.iter().zip(&names).find(|(file, _)| file.shape.as_ref().is_some_and(|shape| shape.value.is_all_pass()));
+    let criterion = criterion(desk, job, all_pass.map(|(_, name)| name.as_str()));
+    let measure = criterion.as_ref().map(|criterion| criterion.measure).map_err(|noted| *noted);
+    let goals = goals(desk, job, measure);
+    let seconds = |text: &str| {
+        let seconds = parse_seconds(text).map_err(|error| error.to_string())?;
+        Duration::try_from_secs_f64(seconds).map_err(|error| error.to_string())
+    };
+    let time_limit = desk.optional(root.find("time_limit", &job.time_limit), seconds);
+    if !desk.faults.is_empty() {
+        return Err(Noted);
+    }
+    Ok(Job {
+        problem: Problem {
+            title: job.title.as_ref().map_or("untitled", |given| given.value.text()).to_string(),
+            sections: sections.into_iter().collect::<Checked<_>>()?,
+            criterion: criterion?,
+            goals: goals?,
+        },
+        time_limit: time_limit?,
+    })
+}
+
+fn section(desk: &mut Desk, written: &Written, stock: &Stock, circuits: Circuits) -> Checked<SectionProblem> {
+    let (file, place) = (written.file, &written.place);
+    let target = written.target(desk);
+    let circuit = written.circuit(desk, circuits);
+    let mut own = |found: Option<At<'_, _>>, kind, of_job: &Checked<_>| match found {
+        Some(at) => shelf(desk, Some(at), kind),
+        None => of_job.clone(),
+    };
+    let stock = Stock {
+        resistors: own(place.find("resistors", &file.resistors), Kind::Resistor, &stock.resistors),
+        capacitors: own(place.find("capacitors", &file.capacitors), Kind::Capacitor, &stock.capacitors),
+    };
+    let (mut target, circuit) = (target?, circuit?);
+    let output = written.output(desk, &circuit, &mut target)?;
+
+    let board = Board { circuit: &circuit, output: &circuit.outputs[output], file, place };
+    let shelves = board.shelves(desk, &stock);
+    let equal = board.equal(desk)?;
+    let gain = written.check_gain(desk, &circuit, board.output, &equal, &target);
+    let mut shelves = shelves?;
+    board.narrow(desk, &mut shelves, &equal)?;
+    gain?;
+    Ok(SectionProblem { target, circuit, output, shelves, equal })
+}

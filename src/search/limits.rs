@@ -1,0 +1,55 @@
+//! How a search is watched and stopped: the search itself knows neither clock nor terminal.
+
+use serde::Serialize;
+
+/// Why a search ended before it was complete.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize)]
+#[serde(rename_all = "kebab-case")]
+pub enum StopReason {
+    /// The time limit was reached.
+    TimeLimit,
+    /// The user interrupted it.
+    Interrupted,
+}
+
+impl StopReason {
+    /// The reason in words.
+    pub fn describe(self) -> &'static str {
+        match self {
+            StopReason::TimeLimit => "the time limit was reached",
+            StopReason::Interrupted => "it was interrupted",
+        }
+    }
+}
+
+/// Where a search stands.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Progress<'a> {
+    /// Name of the section being searched.
+    pub section: &'a str,
+    /// Families with this many different values are being searched.
+    pub part_numbers: usize,
+    /// Sets up to this error are being sought, in the unit of the measure.
+    pub error_limit: f64,
+    /// Best error found so far for this section.
+    pub best: Option<f64>,
+    /// How much of the current level is done, 0 to 1.
+    pub done: f64,
+}
+
+/// Told where a search stands, and asked whether it shall stop.
+pub trait Monitor: Sync {
+    /// A reason to stop now, if there is one. Asked often, from several threads.
+    fn stop(&self) -> Option<StopReason> {
+        None
+    }
+
+    /// Told now and then, from several threads.
+    fn progress(&self, _progress: &Progress<'_>) {}
+}
+
+/// Lets the search run to its end, unseen.
+#[derive(Clone, Copy, Debug, Default)]
+pub struct Unwatched;
+
+impl Monitor for Unwatched {}

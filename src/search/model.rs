@@ -1,0 +1,218 @@
+//! One section made ready for the search: groups of slots that carry one value, and which of them matter.
+
+use crate::circuit::Transfer;
+use crate::parts::Shelf;
+use crate::target::Biquad;
+use crate::units::{Kind, Value};
+
+use super::problem::SectionProblem;
+
+/// Slots that carry one value: those of an equality in force, or a single slot.
+#[derive(Clone, Debug)]
+pub(crate) struct Group {
+    /// Slot indices, ascending.
+    pub slots: Vec<usize>,
+    /// Resistors or capacitors.
+    pub kind: Kind,
+    /// What may go into all of them.
+    pub shelf: Shelf,
+}
+
+/// A section in terms of groups. The first [`Model::active`] groups reach the response, the others do not.
+#[derive(Clone, Debug)]
+pub(crate) struct Model {
+    /// All groups of filled slots, those that reach the response first.
+    pub groups: Vec<Group>,
+    /// How many of them reach the response.
+    pub active: usize,
+    /// The transfer function in the admittances of the active groups.
+    pub transfer: Transfer,
+    /// Permutations of the active groups, the identity left out, that leave response and shelves as they are.
+    pub symmetries: Vec<Vec<usize>>,
+    /// Filled slots.
+    pub placed_parts: usize,
+}
+
+impl Model {
+    /// Groups the slots of a section; `None` if slots that must be equal share no value.
+    pub fn new(section: &SectionProblem) -> Option<Model> {
+        let output = section.output();
+        let filled: Vec<usize> = output.filled(&section.circuit).collect();
+        let mut lists: Vec<Vec<usize>> = Vec::new();
+        for &slot in &filled {
+            match section.equal.iter().find(|group| group.contains(&slot)) {
+                Some(group) if lists.iter().any(|list| group.contains(&list[0])) => {
+                    let list = lists.iter_mut().find(|list| group.contains(&list[0]))?;
+                    list.push(slot);
+                }
+                _ => lists.push(vec![slot]),
+            }
+        }
+        let mut groups = Vec::new();
+        for slots in lists {
+            let mut shelf = section.shelves[slots[0]].clone();
+            for &slot in &slots[1..] {
+                shelf = shelf.intersection(&section.shelves[slot])?;
+            }
+            groups.push(Group { kind: section.circuit.slots[slots[0]].kind, slots, shelf });
+        }
+        let place = |groups: &[Group]| -> Vec<Option<usize>> {
+            (0..section.circuit.slots.len()).map(|slot| groups.iter().position(|g| g.slots.contains(&slot))).collect()
+        };
+        let merged = output.transfer.substituted(&place(&groups), groups.len());
+        let (mut active, silent): (Vec<_>, Vec<_>) =
+            groups.into_iter().enumerate().partition(|(i, _)| merged.depends_on(*i));
+        // A group that does not reach the response may still stand in N and D as a common factor: setting it to any
+        // value leaves the ratio, so keep the leading coefficient in it.
+        let mut transfer = merged;
+        for (index, _) in &silent {
+            transfer = without_factor(&transfer, *index);
+        }
+        let mut map = vec![None; active.len() + silent.len()];
+        for (new, (old, _)) in active.iter().enumerate() {
+            map[*old] = Some(new);
+        }
+        let transfer = transfer.substituted(&map, active.len());
+        let count = active.len();
+        active.extend(silent);
+        let groups: Vec<Group> = active.into_iter().map(|(_, group)| group).collect();
+        let symmetries = symmetries(&transfer, &groups[..count]);
+        Some(Model { groups, active: count, transfer, symmetries, placed_parts: filled.len() })
+    }
+
+    /// The active groups.
+    pub fn active_groups(&self) -> &[Group] {
+        &self.groups[..self.active]
+    }
+
+    /// The groups that do not reach the response.
+    pub fn silent_groups(&self) -> &[Group] {
+        &self.groups[self.active..]
+    }
+
+    /// The transfer function for values of the active groups.
+    pub fn biquad(&self, values: &[Value]) -> Biquad {
+        let values: Vec<f64> = values.iter().map(|v| v.to_f64()).collect();
+        self.biquad_of(&values)
+    }
+
+    /// The transfer function for values of the active groups in ohms and farads.
+    pub fn biquad_of(&self, values: &[f64]) -> Biquad {
+        let (n, d) = self.transfer.coefficients(values);
+        let fixed = |list: Vec<f64>| [0, 1, 2].map(|k| list.get(k).copied().unwrap_or(0.0));
+        Biquad { num: fixed(n), den: fixed(d) }
+    }
+
+    /// Which numerator coefficients can be other than zero.
+    pub fn numerator(&self) -> [bool; 3] {
+        [0, 1, 2].map(|k| self.transfer.numerator.get(k).is_some_and(|p| !p.is_empty()))
+    }
+
+    /// How many combinations of shelf values there are for the active groups.
+    pub fn combinations(&self) -> f64 {
+        self.active_groups().iter().map(|g| g.shelf.len() as f64).product()
+    }
+}
+
+/// Removes a variable on which the ratio does not depend: the leading coefficient in it, of all coefficients alike.
+fn without_factor(transfer: &Transfer, variable: usize) -> Transfer {
+    let degree = |list: &[crate::circuit::Polynomial]| list.iter().map(|p| p.degree_in(variable)).max().unwrap_or(0);
+    let lead = |list: &[crate::circuit::Polynomial]| {
+        let top = degree(list);
+        list.iter().map(|p| p.coefficient_of(variable, top)).collect()
+    };
+    Transfer {
+        numerator: lead(&transfer.numerator),
+        denominator: lead(&transfer.denominator),
+        capacitors: transfer.capacitors.clone(),
+    }
+}
+
+/// Swaps of two groups, and pairs of disjoint swaps, that leave the response and the shelves unchanged.
+fn symmetries(transfer: &Transfer, groups: &[Group]) -> Vec<Vec<usize>> {
+    let n = groups.len();
+    let swappable = |a: usize, b: usize| {
+        groups[a].kind == groups[b].kind
+            && groups[a].shelf == groups[b].shelf
+            && groups[a].slots.len() == groups[b].slots.len()
+    };
+    let pairs: Vec<(usize, usize)> =
+        (0..n).flat_map(|a| (a + 1..n).map(move |b| (a, b))).filter(|&(a, b)| swappable(a, b)).collect();
+    let swapped = |list: &[(usize, usize)]| {
+        let mut order: Vec<usize> = (0..n).collect();
+        list.iter().for_each(|&(a, b)| order.swap(a, b));
+        order
+    };
+    let mut found = Vec::new();
+    for (i, &first) in pairs.iter().enumerate() {
+        let single = swapped(&[first]);
+        if transfer.is_invariant_under(&single) {
+            found.push(single);
+            continue;
+        }
+        for &second in &pairs[i + 1..] {
+            let disjoint = ![first.0, first.1].iter().any(|k| [second.0, second.1].contains(k));
+            let both = swapped(&[first, second]);
+            if disjoint && transfer.is_invariant_under(&both) {
+                found.push(both);
+            }
+        }
+    }
+    closure(found, n)
+}
+
+/// The group that the permutations generate, the identity left out, in a fixed order.
+fn closure(generators: Vec<Vec<usize>>, n: usize) -> Vec<Vec<usize>> {
+    let identity: Vec<usize> = (0..n).collect();
+    let mut all = std::collections::BTreeSet::from([identity.clone()]);
+    let mut open = vec![identity.clone()];
+    while let Some(order) = open.pop() {
+        for generator in &generators {
+            let product: Vec<usize> = order.iter().map(|&k| generator[k]).collect();
+            if all.insert(product.clone()) {
+                open.push(product);
+            }
+        }
+    }
+    all.remove(&identity);
+    all.into_iter().collect()
+}
+
+/// Set partitions of `n` items into exactly `blocks` blocks, as block numbers by item: the first item is in block 0, each
+/// new block takes the next number.
+pub(crate) fn partitions(n: usize, blocks: usize) -> Vec<Vec<usize>> {
+    fn extend(prefix: &mut Vec<usize>, used: usize, n: usize, blocks: usize, out: &mut Vec<Vec<usize>>) {
+        let left = n - prefix.len();
+        if used + left < blocks {
+            return;
+        }
+        if left == 0 {
+            out.push(prefix.clone());
+            return;
+        }
+        for block in 0..(used + 1).min(blocks) {
+            prefix.push(block);
+            extend(prefix, used.max(block + 1), n, blocks, out);
+            prefix.pop();
+        }
+    }
+    let mut out = Vec::new();
+    if blocks <= n {
+        extend(&mut Vec::new(), 0, n, blocks, &mut out);
+    }
+    out
+}
+
+#[cfg(test)]
+mod tests {
+    use super::partitions;
+
+    #[test]
+    fn partitions_are_counted_by_stirling_numbers() {
+        // Stirling numbers of the second kind S(6, k), Abramowitz & Stegun, table 24.4.
+        let counts: Vec<usize> = (0..=6).map(|k| partitions(6, k).len()).collect();
+        assert_eq!(counts, [0, 1, 31, 90, 65, 15, 1]);
+        assert_eq!(partitions(0, 0), [Vec::<usize>::new()]);
+        assert!(partitions(2, 0).is_empty() && partitions(0, 1).is_empty());
+    }
+}

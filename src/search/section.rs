@@ -1,0 +1,286 @@
+//! The exact front of one section.
+
+use std::collections::BTreeMap;
+use std::sync::atomic::{AtomicBool, AtomicUsize, Ordering};
+
+use rayon::prelude::*;
+
+use crate::target::{Biquad, Yardstick};
+use crate::units::{Kind, Value};
+
+use super::canonical::{canonical, distinct};
+use super::family::{Family, Visitor};
+use super::front::{Best, End, ErrorKey, Found, Proof};
+use super::limits::{Monitor, Progress};
+use super::model::{Model, partitions};
+use super::problem::Goals;
+use super::window::{Window, WindowMaker};
+
+/// What the search of one section gave.
+#[derive(Clone, Debug)]
+pub(crate) struct SectionFront {
+    /// For each number of part numbers on the front its sets, best first.
+    pub rows: Vec<Vec<Found>>,
+    /// What is proved of it.
+    pub proof: Proof,
+    /// Sets whose response was evaluated.
+    pub sets: u64,
+    /// Partial and whole sets visited.
+    pub nodes: u64,
+    /// The error limit that was in force in the end: larger than the job's where nothing lay within that.
+    pub limit: f64,
+}
+
+/// By how much the error limit grows from level to level while nothing is found.
+const LEVEL_FACTOR: f64 = 3.0;
+
+/// A level is passed over where the next is not dearer than this, in expected partial sets.
+const DEARER: f64 = 1.5;
+
+/// Where nothing lies within the error limit it is widened this often, by [`LEVEL_FACTOR`] each time.
+const WIDENINGS: u32 = 4;
+
+/// Searches one section.
+pub(crate) fn search(
+    model: &Model,
+    yardstick: &Yardstick,
+    goals: &Goals,
+    monitor: &dyn Monitor,
+) -> Option<SectionFront> {
+    let maker = WindowMaker::new(yardstick, model.numerator())?;
+    let mut search = Search {
+        model,
+        yardstick,
+        goals,
+        monitor,
+        maker,
+        windows: BTreeMap::new(),
+        best: Best::new(goals.alternatives + 1),
+        sets: 0,
+        nodes: 0,
+    };
+    Some(search.run())
+}
+
+struct Search<'a> {
+    model: &'a Model,
+    yardstick: &'a Yardstick,
+    goals: &'a Goals,
+    monitor: &'a dyn Monitor,
+    maker: WindowMaker<'a>,
+    /// Windows already made, by error limit: the levels of different counts mostly coincide.
+    windows: BTreeMap<ErrorKey, Vec<Window>>,
+    best: Best,
+    sets: u64,
+    nodes: u64,
+}
+
+impl Search<'_> {
+    fn run(&mut self) -> SectionFront {
+        let mut limit = self.goals.error_limit;
+        let mut proof = self.walk_counts(self.goals.error_resolution, limit);
+        for _ in 0..WIDENINGS {
+            if !self.best.front().is_empty() || matches!(proof, Proof::Stopped { .. }) {
+                break;
+            }
+            let from = limit;
+            limit *= LEVEL_FACTOR;
+            proof = self.walk_counts(from, limit);
+        }
+        SectionFront { rows: self.best.front(), proof, sets: self.sets, nodes: self.nodes, limit }
+    }
+
+    /// The windows for sets up to an error.
+    fn windows(&mut self, limit: f64) -> Vec<Window> {
+        // The key rounds, so the windows are made for the largest error of that key.
+        let key = ErrorKey::new(limit);
+        self.windows.entry(key).or_insert_with(|| self.maker.windows(key.ceiling())).clone()
+    }
+
+    /// Walks the number of different values upwards, each up to `limit` in levels that begin at `first`.
+    fn walk_counts(&mut self, first: f64, limit: f64) -> Proof {
+        let count = |kind| self.model.active_groups().iter().filter(|g| g.kind == kind).count();
+        let (resistors, capacitors) = (count(Kind::Resistor), count(Kind::Capacitor));
+        let fewest = usize::from(resistors > 0) + usize::from(capacitors > 0);
+        let most = resistors + capacitors;
+        let allowed = self.goals.max_part_numbers.unwrap_or(most);
+        for k in fewest..=most.min(allowed) {
+            let families = self.families(k, (resistors, capacitors));
+            // A set with more part numbers must be strictly better than every one with fewer.
+            let cap = match self.best.error_up_to(k) {
+                Some(best) if self.goals.alternatives == 0 => best.below().map(ErrorKey::ceiling),
+                _ => Some(limit),
+            };
+            let Some(cap) = cap.map(|cap| cap.min(limit)) else {
+                return Proof::Exhaustive(End::Resolution);
+            };
+            let mut level = first.min(cap);
+            loop {
+                let next = (level * LEVEL_FACTOR).min(cap);
+                if level < cap && self.expected(&families, next) < DEARER * self.expected(&families, level) {
+                    level = next;
+                    continue;
+                }
+                if self.search_level(&families, k, level).is_none() {
+                    let reason = self.monitor.stop().unwrap_or(super::StopReason::Interrupted);
+                    return Proof::Stopped { reason, complete_below: k };
+                }
+                // A set of this count may also have come from fewer variables and a silent slot: what counts is
+                // whether anything within this level can still be missing.
+                if level >= cap || self.best.worst_kept(k).is_some_and(|key| key <= ErrorKey::new(level)) {
+                    break;
+                }
+                level = next;
+            }
+            if self.best.error_up_to(k).is_some_and(|key| key < ErrorKey::new(self.goals.error_resolution)) {
+                return Proof::Exhaustive(if k < most { End::Resolution } else { End::AllCounts });
+            }
+        }
+        Proof::Exhaustive(if allowed < most { End::CountLimit } else { End::AllCounts })
+    }
+
+    /// The families with exactly `count` variables, one of each class under the section's symmetries.
+    fn families(&mut self, count: usize, (resistors, capacitors): (usize, usize)) -> Vec<Family> {
+        let groups = self.model.active_groups();
+        let windows = self.windows(self.goals.error_resolution);
+        let mut members = Vec::new();
+        for r in 0..=count {
+            for of_resistors in partitions(resistors, r) {
+                for of_capacitors in partitions(capacitors, count - r) {
+                    let (mut next_r, mut next_c) = (of_resistors.iter(), of_capacitors.iter());
+                    let member: Vec<usize> = groups
+                        .iter()
+                        .filter_map(|g| match g.kind {
+                            Kind::Resistor => next_r.next().copied(),
+                            Kind::Capacitor => next_c.next().map(|c| c + r),
+                        })
+                        .collect();
+                    let mirrored = self.model.symmetries.iter().any(|order| {
+                        let image: Vec<usize> = order.iter().map(|&k| member[k]).collect();
+                        renumbered(&image, r) < renumbered(&member, r)
+                    });
+                    if !mirrored {
+                        members.push(member);
+                    }
+                }
+            }
+        }
+        members.into_par_iter().filter_map(|member| Family::new(self.model, member, &windows)).collect()
+    }
+
+    /// How many partial sets a level is expected to have.
+    fn expected(&mut self, families: &[Family], level: f64) -> f64 {
+        let windows = self.windows(level);
+        families.par_iter().filter_map(|f| Some(f.plan(&windows)?.nodes)).collect::<Vec<_>>().iter().sum()
+    }
+
+    /// Searches all families for sets up to an error; `None` if it was stopped. What was found until then is kept.
+    fn search_level(&mut self, families: &[Family], count: usize, level: f64) -> Option<()> {
+        let windows = self.windows(level);
+        let plans: Vec<_> = families.par_iter().filter_map(|f| f.plan(&windows)).collect();
+        // Large families are divided by the values of their first variable, small ones are done in one go.
+        const LARGE: f64 = 20_000.0;
+        let mut tasks = Vec::new();
+        for plan in &plans {
+            let roots = plan.roots();
+            let size = if plan.nodes > LARGE { ((roots as f64 * LARGE / plan.nodes) as usize).max(1) } else { roots };
+            let mut start = 0;
+            while start < roots {
+                tasks.push((plan, start..(start + size).min(roots)));
+                start += size;
+            }
+        }
+        let best_error = self.best.error_up_to(usize::MAX).map(ErrorKey::ceiling);
+        let (finished, total) = (AtomicUsize::new(0), tasks.len().max(1));
+        let stopped = AtomicBool::new(false);
+        let results: Vec<(Collector<'_>, u64)> = tasks
+            .into_par_iter()
+            .map(|(plan, roots)| {
+                let mut collector = Collector {
+                    model: self.model,
+                    yardstick: self.yardstick,
+                    goals: self.goals,
+                    monitor: self.monitor,
+                    stopped: &stopped,
+                    count,
+                    limit: level,
+                    best: Best::new(self.goals.alternatives + 1),
+                    sets: 0,
+                };
+                if collector.stopped() {
+                    return (collector, 0);
+                }
+                let nodes = plan.walk(roots, &mut collector);
+                let done = finished.fetch_add(1, Ordering::Relaxed) + 1;
+                self.monitor.progress(&Progress {
+                    section: &self.yardstick.sections()[0].name,
+                    part_numbers: count,
+                    error_limit: level,
+                    best: best_error,
+                    done: done as f64 / total as f64,
+                });
+                (collector, nodes)
+            })
+            .collect();
+        for (collector, nodes) in results {
+            self.nodes += nodes;
+            self.sets += collector.sets;
+            self.best.merge(collector.best);
+        }
+        (!stopped.load(Ordering::Relaxed)).then_some(())
+    }
+}
+
+/// The same partition with its blocks numbered by first appearance, resistors (blocks below `r`) and capacitors apart.
+fn renumbered(member: &[usize], r: usize) -> Vec<usize> {
+    let mut names: Vec<usize> = Vec::new();
+    let mut number = |block: usize| {
+        names.iter().position(|&n| n == block).unwrap_or_else(|| {
+            names.push(block);
+            names.len() - 1
+        })
+    };
+    member.iter().map(|&block| 2 * number(block) + usize::from(block >= r)).collect()
+}
+
+/// Evaluates the sets of one task and keeps the best.
+struct Collector<'a> {
+    model: &'a Model,
+    yardstick: &'a Yardstick,
+    goals: &'a Goals,
+    monitor: &'a dyn Monitor,
+    stopped: &'a AtomicBool,
+    count: usize,
+    limit: f64,
+    best: Best,
+    sets: u64,
+}
+
+impl Visitor for Collector<'_> {
+    fn set(&mut self, values: &dyn Fn() -> Vec<Value>, response: &Biquad) {
+        self.sets += 1;
+        // The set is judged in its canonical form below; this first look may differ from that by rounding.
+        let limit = self.best.worst_kept(self.count).map_or(self.limit, |key| key.ceiling().min(self.limit));
+        let order = self.yardstick.sections()[0].shape.order();
+        if !response.is_stable(order) || self.yardstick.within(&[*response], limit * (1.0 + 1e-9) + 1e-12).is_none() {
+            return;
+        }
+        let values = values();
+        if distinct(self.model.active_groups(), &values) < self.count {
+            return;
+        }
+        let Some(mut found) = canonical(self.model, self.goals, &values) else { return };
+        let achieved = self.model.biquad(&found.values[..self.model.active]);
+        if let Some(deviation) = self.yardstick.within(&[achieved], limit + 1e-12) {
+            found.key = ErrorKey::new(deviation.error);
+            self.best.insert(found);
+        }
+    }
+
+    fn stopped(&mut self) -> bool {
+        if self.monitor.stop().is_some() {
+            self.stopped.store(true, Ordering::Relaxed);
+        }
+        self.stopped.load(Ordering::Relaxed)
+    }
+}

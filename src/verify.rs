@@ -1,0 +1,284 @@
+//! An independent recheck of every set that is to be reported.
+//!
+//! The search judges sets by transfer-function coefficients from symbolic analysis. Here the same netlist is solved
+//! numerically, frequency by frequency, and parts, counts and order are checked against the job itself. A set that
+//! fails is a fault of the program and must not be shown.
+
+use std::collections::BTreeSet;
+
+use num_complex::Complex64;
+use thiserror::Error;
+
+use crate::circuit::response;
+use crate::search::{Chosen, ErrorKey, Outcome, Problem, Row};
+use crate::target::{Measure, Section, Yardstick};
+
+/// What does not hold of an outcome.
+#[derive(Clone, Debug, PartialEq, Error)]
+pub enum VerifyError {
+    /// A slot without its part, or a part that is not on its slot's shelf.
+    #[error("row {row}, section {section}: slot {slot} does not hold a part from its shelf")]
+    Part {
+        /// Row, counted from 1.
+        row: usize,
+        /// Section name.
+        section: String,
+        /// Slot name.
+        slot: String,
+    },
+    /// Slots that must be equal are not.
+    #[error("row {row}, section {section}: slots that must be equal carry different values")]
+    Tie {
+        /// Row, counted from 1.
+        row: usize,
+        /// Section name.
+        section: String,
+    },
+    /// The response of the netlist is not what the search said.
+    #[error("row {row}: the netlist's error is {found}, the search said {claimed}")]
+    Response {
+        /// Row, counted from 1.
+        row: usize,
+        /// What the numeric solve gives.
+        found: f64,
+        /// What the search said.
+        claimed: f64,
+    },
+    /// Part numbers or placed parts are miscounted.
+    #[error("row {row}: {found} {what} counted, the search said {claimed}")]
+    Count {
+        /// Row, counted from 1.
+        row: usize,
+        /// What was counted.
+        what: &'static str,
+        /// The recount.
+        found: usize,
+        /// What the search said.
+        claimed: usize,
+    },
+    /// Rows out of order, or one that another beats in everything.
+    #[error("row {row} does not belong where it stands: {why}")]
+    Order {
+        /// Row, counted from 1.
+        row: usize,
+        /// Why.
+        why: &'static str,
+    },
+}
+
+/// Rechecks every row of an outcome.
+///
+/// # Errors
+/// The first thing that does not hold.
+pub fn verify(problem: &Problem, outcome: &Outcome) -> Result<(), VerifyError> {
+    let targets: Vec<Section> = problem.sections.iter().map(|s| s.target.clone()).collect();
+    let yardstick = Yardstick::new(&targets, problem.criterion);
+    for (index, row) in outcome.rows.iter().enumerate() {
+        check_row(problem, &yardstick, index + 1, row)?;
+    }
+    check_order(outcome)
+}
+
+fn check_row(problem: &Problem, yardstick: &Yardstick, number: usize, row: &Row) -> Result<(), VerifyError> {
+    let mut bought = BTreeSet::new();
+    let mut placed = 0;
+    for (section, chosen) in problem.sections.iter().zip(&row.sections) {
+        let name = || section.target.name.clone();
+        for slot in section.output().filled(&section.circuit) {
+            let part = chosen.parts.iter().find(|p| p.slot == slot).and_then(|p| Some((p.kind, p.value?)));
+            let Some((kind, value)) = part.filter(|(_, value)| section.shelves[slot].contains(*value)) else {
+                let slot = section.circuit.slots[slot].name.clone();
+                return Err(VerifyError::Part { row: number, section: name(), slot });
+            };
+            bought.insert((kind, value));
+            placed += 1;
+        }
+        let value_of = |slot: &usize| chosen.parts.iter().find(|p| p.slot == *slot).and_then(|p| p.value);
+        if section.equal.iter().any(|group| group.iter().map(value_of).collect::<BTreeSet<_>>().len() > 1) {
+            return Err(VerifyError::Tie { row: number, section: name() });
+        }
+    }
+    let counts =
+        [("part numbers", bought.len(), row.part_numbers.unwrap_or(0)), ("placed parts", placed, row.placed_parts)];
+    for (what, found, claimed) in counts {
+        if found != claimed {
+            return Err(VerifyError::Count { row: number, what, found, claimed });
+        }
+    }
+    let found = error(problem, yardstick, row);
+    let claimed = row.deviation.error;
+    // Where Q is high both routes lose digits in the same proportion as the response itself is sensitive.
+    const AGREEMENT: f64 = 1e-6;
+    if (found - claimed).abs() <= AGREEMENT * (1.0 + claimed.abs()) {
+        Ok(())
+    } else {
+        Err(VerifyError::Response { row: number, found, claimed })
+    }
+}
+
+/// The response of a chosen section's netlist.
+fn numeric(problem: &Problem, index: usize, chosen: &Chosen, w: f64) -> Complex64 {
+    let section = &problem.sections[index];
+    let mut values = vec![f64::NAN; section.circuit.slots.len()];
+    chosen.parts.iter().for_each(|part| values[part.slot] = part.ideal);
+    response(&section.circuit, section.output(), &values, w).unwrap_or(Complex64::new(f64::NAN, f64::NAN))
+}
+
+/// The error of a row from the netlist alone, by the definitions of [`Measure`].
+fn error(problem: &Problem, yardstick: &Yardstick, row: &Row) -> f64 {
+    let cascade = |w: f64| -> Complex64 {
+        row.sections.iter().enumerate().map(|(k, chosen)| numeric(problem, k, chosen, w)).product()
+    };
+    let ideal = |w: f64| -> Complex64 { problem.sections.iter().map(|s| s.target.ideal().value(w)).product() };
+    let offset = row.deviation.offset.unwrap_or(1.0);
+    let largest = yardstick.frequencies().map(|w| ideal(w).norm()).fold(0.0, f64::max);
+    let floor = largest * 10f64.powf(-problem.criterion.floor_db / 20.0);
+    let at = |w: f64| {
+        let (h, wanted) = (cascade(w) * offset, ideal(w));
+        match problem.criterion.measure {
+            Measure::Decibel => 20.0 * (h.norm().max(floor) / wanted.norm().max(floor)).log10().abs(),
+            Measure::Vector => (h - wanted).norm() / wanted.norm().max(floor),
+            Measure::Weighted(_) => 0.0,
+        }
+    };
+    if let Measure::Weighted(weights) = problem.criterion.measure {
+        let gain = if problem.criterion.ignore_gain { 0.0 } else { weights.gain };
+        let weights = [weights.f0, weights.q, gain, weights.fz];
+        let section = |(k, section): (usize, &crate::search::SectionProblem)| {
+            let misses =
+                fitted(problem, k, &row.sections[k]).map(|h| section.target.misses(&section.target.figures_of(&h)));
+            misses.map_or(f64::NAN, |misses| {
+                let terms = misses.into_iter().zip(weights).filter(|(_, weight)| *weight > 0.0);
+                terms.filter_map(|(miss, weight)| Some(miss? * weight)).sum::<f64>()
+            })
+        };
+        return problem
+            .sections
+            .iter()
+            .enumerate()
+            .map(section)
+            .fold(0.0, |worst, e| if e > worst { e } else { worst });
+    }
+    yardstick.frequencies().map(at).fold(0.0, |worst, e| if e > worst || e.is_nan() { e } else { worst })
+}
+
+/// The transfer function of a chosen section, fitted to the numeric response: with D monic, N(jω) = H(jω) D(jω) is linear
+/// in the coefficients, and three frequencies determine the five (two frequencies the three of order one).
+fn fitted(problem: &Problem, index: usize, chosen: &Chosen) -> Option<crate::target::Biquad> {
+    let order = problem.sections[index].target.shape.order();
+    let w0 = chosen.achieved.w0;
+    let unknowns = 2 * order + 1;
+    let mut rows: Vec<Vec<f64>> = Vec::new();
+    for ratio in [0.5, 1.0, 2.0].iter().take(order + 1) {
+        let h = numeric(problem, index, chosen, ratio * w0);
+        let s = |k: usize| Complex64::new(0.0, *ratio).powu(k as u32);
+        let mut line: Vec<Complex64> = (0..=order).map(s).collect();
+        line.extend((0..order).map(|k| -h * s(k)));
+        line.push(h * s(order));
+        rows.push(line.iter().map(|z| z.re).collect());
+        rows.push(line.iter().map(|z| z.im).collect());
+    }
+    let x = least_squares(&rows, unknowns)?;
+    let mut fit = crate::target::Biquad { num: [0.0; 3], den: [0.0; 3] };
+    for k in 0..=order {
+        // The fit is in ω/w0.
+        fit.num[k] = x[k] / w0.powi(k as i32);
+        fit.den[k] = if k < order { x[order + 1 + k] } else { 1.0 } / w0.powi(k as i32);
+    }
+    Some(fit)
+}
+
+/// Least squares by the normal equations, for a few well-scaled unknowns; each row ends in its right side.
+fn least_squares(rows: &[Vec<f64>], unknowns: usize) -> Option<Vec<f64>> {
+    let mut system: Vec<Vec<f64>> =
+        (0..unknowns).map(|i| (0..=unknowns).map(|j| rows.iter().map(|r| r[i] * r[j]).sum()).collect()).collect();
+    for column in 0..unknowns {
+        let pivot =
+            (column..unknowns).max_by(|&a, &b| system[a][column].abs().total_cmp(&system[b][column].abs()))?;
+        system.swap(column, pivot);
+        if system[column][column].abs() <= 0.0 {
+            return None;
+        }
+        for row in (0..unknowns).filter(|&r| r != column) {
+            let factor = system[row][column] / system[column][column];
+            for k in column..=unknowns {
+                let step = factor * system[column][k];
+                system[row][k] -= step;
+            }
+        }
+    }
+    Some((0..unknowns).map(|i| system[i][unknowns] / system[i][i]).collect())
+}
+
+fn check_order(outcome: &Outcome) -> Result<(), VerifyError> {
+    let rank = |row: &Row| (ErrorKey::new(row.deviation.error), row.part_numbers, row.placed_parts);
+    for (index, row) in outcome.rows.iter().enumerate() {
+        let number = index + 1;
+        if index > 0 && rank(&outcome.rows[index - 1]) > rank(row) {
+            return Err(VerifyError::Order { row: number, why: "the row before it is worse" });
+        }
+        let beaten = outcome.rows[..index]
+            .iter()
+            .any(|before| before.part_numbers <= row.part_numbers && before.placed_parts <= row.placed_parts);
+        if beaten && !row.alternative {
+            return Err(VerifyError::Order { row: number, why: "another row beats it in everything" });
+        }
+    }
+    Ok(())
+}
+
+#[cfg(test)]
+mod tests {
+    #![allow(clippy::unwrap_used)]
+    use std::sync::Arc;
+
+    use super::*;
+    use crate::circuit::find;
+    use crate::parts::{Series, Shelf};
+    use crate::search::{Goals, SectionProblem, Unwatched, shortlist};
+    use crate::target::{Criterion, Shape, Weights};
+    use crate::units::{Kind, Value, parse_part};
+
+    fn problem(measure: Measure) -> Problem {
+        let shelf = |kind, series: Series, from: &str, to: &str| {
+            let end = |text| parse_part(text, kind).unwrap();
+            Shelf::new(kind, series.values_between(end(from), end(to))).unwrap()
+        };
+        let target = Section::new("A", Shape::LowPass, 6283.0, Some(0.9), 2.0, None).unwrap();
+        let resistors = shelf(Kind::Resistor, Series::E24, "1k", "100k");
+        let capacitors = shelf(Kind::Capacitor, Series::E6, "1n", "100n");
+        let circuit = Arc::new(find("tow-thomas").unwrap().clone());
+        let section = SectionProblem::new(target, circuit, "low-pass", &resistors, &capacitors).unwrap();
+        let criterion = Criterion { measure, ..Criterion::default() };
+        Problem { title: String::new(), sections: vec![section], criterion, goals: Goals::default() }
+    }
+
+    #[test]
+    fn sound_outcomes_pass_and_tampered_ones_do_not() {
+        for measure in
+            [Measure::Decibel, Measure::Vector, Measure::Weighted(Weights { f0: 1.0, q: 0.5, gain: 0.2, fz: 0.0 })]
+        {
+            let problem = problem(measure);
+            let good = shortlist(&problem, &Unwatched);
+            assert!(good.rows.len() > 1, "{measure:?}");
+            verify(&problem, &good).unwrap();
+            let tampered = |change: &dyn Fn(&mut Outcome)| {
+                let mut bad = good.clone();
+                change(&mut bad);
+                verify(&problem, &bad).unwrap_err().to_string()
+            };
+            let message = tampered(&|o| o.rows[0].deviation.error *= 1.01);
+            assert!(message.starts_with("row 1: the netlist's error is"), "{message}");
+            let message = tampered(&|o| o.rows[0].sections[0].parts[0].ideal *= 1.001);
+            assert!(message.starts_with("row 1: the netlist's error is"), "{message}");
+            let message = tampered(&|o| o.rows[0].sections[0].parts[0].value = Value::new(10001, 0).ok());
+            assert_eq!(message, "row 1, section A: slot RG does not hold a part from its shelf");
+            let message = tampered(&|o| o.rows[1].part_numbers = Some(1));
+            assert!(message.contains("part numbers counted, the search said 1"), "{message}");
+            let message = tampered(&|o| o.rows.reverse());
+            assert!(message.ends_with("the row before it is worse"), "{message}");
+            let message = tampered(&|o| o.rows.insert(0, o.rows[0].clone()));
+            assert!(message.ends_with("another row beats it in everything"), "{message}");
+        }
+    }
+}
