@@ -9,7 +9,7 @@ use std::collections::BTreeSet;
 use num_complex::Complex64;
 use thiserror::Error;
 
-use crate::circuit::response;
+use crate::circuit::{response, solve};
 use crate::search::{Chosen, ErrorKey, Outcome, Problem, Row};
 use crate::target::{Measure, Section, Yardstick};
 
@@ -190,24 +190,9 @@ fn fitted(problem: &Problem, index: usize, chosen: &Chosen) -> Option<crate::tar
 
 /// Least squares by the normal equations, for a few well-scaled unknowns; each row ends in its right side.
 fn least_squares(rows: &[Vec<f64>], unknowns: usize) -> Option<Vec<f64>> {
-    let mut system: Vec<Vec<f64>> =
-        (0..unknowns).map(|i| (0..=unknowns).map(|j| rows.iter().map(|r| r[i] * r[j]).sum()).collect()).collect();
-    for column in 0..unknowns {
-        let pivot =
-            (column..unknowns).max_by(|&a, &b| system[a][column].abs().total_cmp(&system[b][column].abs()))?;
-        system.swap(column, pivot);
-        if system[column][column].abs() <= 0.0 {
-            return None;
-        }
-        for row in (0..unknowns).filter(|&r| r != column) {
-            let factor = system[row][column] / system[column][column];
-            for k in column..=unknowns {
-                let step = factor * system[column][k];
-                system[row][k] -= step;
-            }
-        }
-    }
-    Some((0..unknowns).map(|i| system[i][unknowns] / system[i][i]).collect())
+    let normal = |i: usize, j: usize| Complex64::from(rows.iter().map(|r| r[i] * r[j]).sum::<f64>());
+    let system = (0..unknowns).map(|i| (0..=unknowns).map(|j| normal(i, j)).collect()).collect();
+    Some(solve(system)?.into_iter().map(|z| z.re).collect())
 }
 
 fn check_order(outcome: &Outcome) -> Result<(), VerifyError> {

@@ -11,5 +11,6 @@ pub use library::{find, library};
 pub use netlist::{Circuit, CircuitError, Need, OpAmp, Output, SensibleQ, Slot, Term};
 pub use nodal::Transfer;
 pub use numeric::response;
+pub(crate) use numeric::solve;
 pub use polynomial::Polynomial;
 pub use traits::SlotEffect;

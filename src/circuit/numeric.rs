@@ -56,7 +56,7 @@ pub fn response(circuit: &Circuit, output: &Output, values: &[f64], w: f64) -> O
 }
 
 /// Gaussian elimination with scaled partial pivoting; the last column is the right-hand side.
-fn solve(mut matrix: Vec<Vec<Complex64>>) -> Option<Vec<Complex64>> {
+pub(crate) fn solve(mut matrix: Vec<Vec<Complex64>>) -> Option<Vec<Complex64>> {
     let n = matrix.len();
     for row in &mut matrix {
         let scale = row[..n].iter().map(|z| z.norm()).fold(0.0, f64::max);

@@ -156,6 +156,15 @@ impl Polynomial {
         if signs.all(|s| s == first) { first } else { 0 }
     }
 
+    /// The terms with positive coefficients, and the others with their signs turned: this is the first minus the second.
+    pub fn by_sign(&self) -> (Polynomial, Polynomial) {
+        let terms = |positive: bool| {
+            let kept = self.terms.iter().filter(move |(_, c)| (**c > 0) == positive);
+            Polynomial::from_terms(kept.map(|(e, c)| (e.clone(), c.abs())))
+        };
+        (terms(true), terms(false))
+    }
+
     /// Value for the given variables.
     pub fn value(&self, variables: &[f64]) -> f64 {
         let term = |(e, &c): (&Vec<u8>, &i64)| {

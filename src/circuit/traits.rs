@@ -18,6 +18,8 @@ pub struct SlotEffect {
     pub gain: bool,
     /// Whether fz depends on it.
     pub fz: bool,
+    /// Whether the shape itself rests on it: the null of a notch, or that the zeros of an all-pass mirror its poles.
+    pub shape: bool,
 }
 
 /// Names of the figures, in the order in which they are trimmed where nothing speaks against it.
@@ -48,6 +50,7 @@ impl Circuit {
             q: figures.q.as_ref().is_some_and(|q| q.on(slot)),
             gain: figures.gain.iter().any(|gain| gain.on(slot)),
             fz: figures.fz.as_ref().is_some_and(|fz| fz.on(slot)),
+            shape: figures.shape.iter().any(|condition| condition.on(slot)),
         };
         output.filled(self).map(effect).collect()
     }
@@ -56,10 +59,12 @@ impl Circuit {
     /// one disturbs a figure that was set before.
     ///
     /// As many figures as possible; a figure that no resistor sets in such an order is left out. Slots that are tied
-    /// to others are not trimmed. Where several resistors can serve, the one that moves the fewest figures is named.
+    /// to others, or on which the shape itself rests, are not trimmed. Where several resistors can serve, the one that moves the fewest figures is named.
     pub fn trims(&self, output: &Output) -> Vec<(usize, &'static str)> {
         let tied = |slot: usize| self.ties.iter().any(|tie| tie.contains(&slot));
-        let trimmable = |effect: &SlotEffect| self.slots[effect.slot].kind == Kind::Resistor && !tied(effect.slot);
+        let trimmable = |effect: &SlotEffect| {
+            self.slots[effect.slot].kind == Kind::Resistor && !tied(effect.slot) && !effect.shape
+        };
         let effects: Vec<SlotEffect> = self.effects(output).into_iter().filter(trimmable).collect();
         let mut best = Vec::new();
         longest(&effects, &mut Vec::new(), &mut best);
@@ -107,6 +112,8 @@ struct Dependences {
     q: Option<Quotient>,
     gain: Vec<Quotient>,
     fz: Option<Quotient>,
+    /// Quotients that are 1 where the shape holds.
+    shape: Vec<Quotient>,
 }
 
 impl Dependences {
@@ -117,6 +124,20 @@ impl Dependences {
         let order = output.shape.order();
         let at = |power: usize| Quotient::new(n(power), d(power), slots);
         let notch = output.shape == Shape::Notch;
+        // What must vanish for the shape to hold: positive terms against negative ones. Without either it holds, or
+        // fails, for all values alike.
+        let vanishing = match output.shape {
+            Shape::Notch => vec![n(1).clone()],
+            Shape::AllPass => {
+                vec![n(0).times(d(2)).minus(&n(2).times(d(0))), n(1).times(d(2)).plus(&n(2).times(d(1)))]
+            }
+            Shape::FirstOrderAllPass => vec![n(0).times(d(1)).plus(&n(1).times(d(0)))],
+            _ => Vec::new(),
+        };
+        let condition = |sum: &Polynomial| {
+            let (positive, negative) = sum.by_sign();
+            Quotient::new(&positive, &negative, slots)
+        };
         Dependences {
             f0: Quotient::new(d(0), d(order), slots),
             q: (order == 2).then(|| Quotient::new(&d(0).times(d(2)), &d(1).times(d(1)), slots)),
@@ -127,6 +148,7 @@ impl Dependences {
                 Shape::Notch => vec![at(0), at(2)],
             },
             fz: notch.then(|| Quotient::new(n(0), n(2), slots)),
+            shape: vanishing.iter().map(condition).collect(),
         }
     }
 }
@@ -169,6 +191,23 @@ mod tests {
         assert_eq!(trims("rc-low-pass", "low-pass"), "R1 f0");
         assert_eq!(moved("sallen-key-low-pass", "low-pass", "R1"), "f0 Q");
         assert!(!trims("sallen-key-low-pass", "low-pass").contains("gain"));
+    }
+
+    // Source: the notes of the circuit files: the Fliege null needs R6 R8 = R4 R7; the notch of the feed-forward biquad
+    // needs no matching; its all-pass needs R6 = RQ RB/RF, the first-order all-pass RA = RB.
+    #[test]
+    fn what_a_shape_rests_on_is_not_trimmed() {
+        let resting = |id: &str, output: &str| {
+            let circuit = find(id).unwrap();
+            let effects = circuit.effects(circuit.output(output).unwrap());
+            let slots = effects.into_iter().filter(|effect| effect.shape);
+            slots.map(|effect| circuit.slots[effect.slot].name.as_str()).collect::<Vec<_>>().join(" ")
+        };
+        assert_eq!(resting("fliege-notch", "notch"), "R7 R8 R6 R4");
+        assert_eq!(resting("feed-forward-biquad", "notch"), "");
+        assert_eq!(resting("first-order-all-pass", "all-pass"), "RA RB");
+        assert!(resting("feed-forward-biquad", "all-pass").contains("R6"));
+        assert_eq!(trims("fliege-notch", "notch"), "R1 f0");
     }
 
     /// A figure by the numbers: slots that do not move it leave it as it is, the others change it.

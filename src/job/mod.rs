@@ -2,7 +2,7 @@
 //! and checked.
 //!
 //! A job is read into a [`JobFile`], in which every key may be missing; what the command line says is laid over it;
-//! [`resolve`] then fills in the defaults and returns either a [`Job`] or every fault that can be told independently.
+//! [`resolve()`] then fills in the defaults and returns either a [`Job`] or every fault that can be told independently.
 
 mod desk;
 mod file;

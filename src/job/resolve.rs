@@ -78,7 +78,7 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits) -> Checked<Job> 
     }
     Ok(Job {
         problem: Problem {
-            title: job.title.as_ref().map_or("untitled", |given| given.value.text()).to_string(),
+            title: job.title.as_ref().map_or("", |given| given.value.text()).to_string(),
             sections: sections.into_iter().collect::<Checked<_>>()?,
             criterion: criterion?,
             goals: goals?,

@@ -57,8 +57,8 @@ pub struct Row {
     pub worst_miss: f64,
     /// Whether the row is not on the front, and listed because alternatives were asked for.
     pub alternative: bool,
-    /// Whether it is proved that no set on these shelves in this circuit has a smaller error with as few part numbers.
-    /// Never so for several sections, which are chosen one at a time.
+    /// Whether it is proved that no set on these shelves in this circuit, but those of the rows before it, has a smaller
+    /// error with as few part numbers. Never so for several sections, which are chosen one at a time.
     pub proved: bool,
     /// The sections.
     pub sections: Vec<Chosen>,
@@ -79,6 +79,9 @@ pub struct SectionSummary {
     pub nodes: u64,
     /// The error limit in force in the end: larger than the job's where nothing lay within that.
     pub error_limit: f64,
+    /// Whether nothing was left out: beyond the job's error limit, where nothing lies within it, families that would take
+    /// too long are.
+    pub complete: bool,
     /// The section's own front: part numbers and error, the latter in the unit of the measure.
     pub front: Vec<(usize, f64)>,
     /// Names of the slots that do not reach the response.
@@ -189,7 +192,8 @@ impl Prepared<'_> {
             sets: self.front.sets,
             nodes: self.front.nodes,
             error_limit: self.front.limit,
-            front: self.front.rows.iter().map(|row| (row[0].part_numbers, row[0].key.error())).collect(),
+            complete: !self.front.left_out,
+            front: self.front.rows.iter().map(|row| (row[0].part_numbers, row[0].error)).collect(),
             silent: silent.map(|&s| circuit.slots[s].name.clone()).collect(),
             interchangeable: self.model.symmetries.iter().map(swap).collect(),
             unmet: unmet(self.problem),
@@ -218,9 +222,18 @@ fn unmet(section: &SectionProblem) -> Vec<String> {
             let (bound, reach) = (need.bound(q, section.target.gain.abs()), reach(need));
             let fails = if need.at_least { reach < bound } else { reach > bound };
             let end = if need.at_least { "at most" } else { "at least" };
-            fails.then(|| format!("{} = {bound:.4}, but these shelves give {reach:.4} {end}", need.text(circuit)))
+            fails.then(|| {
+                format!("{} = {}, but these shelves give {} {end}", need.text(circuit), short(bound), short(reach))
+            })
         })
         .collect()
+}
+
+/// A number with four significant digits, no more decimals than needed.
+fn short(x: f64) -> String {
+    let digits = (3 - x.abs().log10().floor() as i32).clamp(0, 6) as usize;
+    let text = format!("{x:.digits$}");
+    if text.contains('.') { text.trim_end_matches('0').trim_end_matches('.').to_string() } else { text }
 }
 
 /// A combination of one set for each section.
@@ -371,13 +384,16 @@ impl Board<'_> {
                 p.chosen(&values, found.levels.iter().filter_map(level).collect())
             });
         let chosen = chosen.collect();
-        self.assembled(chosen, Some(combination.part_numbers), alternative, single && proved && !alternative)
+        self.assembled(chosen, Some(combination.part_numbers), alternative, single && proved)
     }
 
     /// A row from its sections.
     fn assembled(&self, sections: Vec<Chosen>, part_numbers: Option<usize>, alternative: bool, proved: bool) -> Row {
         let responses: Vec<Biquad> = self.prepared.iter().zip(&sections).map(|(p, c)| p.response(c)).collect();
-        let deviation = self.whole.deviation(&responses);
+        let mut deviation = self.whole.deviation(&responses);
+        // What is left of exact parts is rounding, and that has no place.
+        const ROUNDING: f64 = 1e-10;
+        deviation.at = deviation.at.filter(|_| deviation.error > ROUNDING);
         let decibels = match self.problem.criterion.measure {
             Measure::Decibel => deviation.error,
             _ => {

@@ -1,6 +1,6 @@
 //! One representative for all sets that differ only by a decade of impedance or by interchangeable slots.
 
-use std::collections::BTreeSet;
+use std::collections::{BTreeMap, BTreeSet};
 
 use crate::units::{Kind, Value};
 
@@ -38,7 +38,8 @@ pub(crate) fn canonical(model: &Model, goals: &Goals, values: &[Value]) -> Optio
         image
     };
     let values = model.symmetries.iter().map(image).chain([base.clone()]).min()?;
-    Some(Found { key: ErrorKey::new(f64::INFINITY), part_numbers, values, levels })
+    let error = f64::INFINITY;
+    Some(Found { error, key: ErrorKey::new(error), part_numbers, values, levels })
 }
 
 /// The impedance level: geometric mean of the resistances, ohms; `None` without a resistor. Values in ohms and farads.
@@ -66,27 +67,59 @@ pub(crate) fn shifted(groups: &[Group], values: &[Value], level: i32) -> Option<
 }
 
 /// Adds values for the groups that do not reach the response, with as few new part numbers as possible: a value already
-/// there (the one nearest to the impedance level), else one that serves as many of the silent groups as possible.
-pub(crate) fn with_silent(model: &Model, mut values: Vec<Value>) -> Vec<Value> {
-    for (index, group) in model.silent_groups().iter().enumerate() {
-        let groups = &model.groups[..model.active + index];
-        let middle = impedance(groups, &in_ohms(&values)).filter(|_| group.kind == Kind::Resistor);
-        let middle = middle.unwrap_or_else(|| {
-            let (low, high) = group.shelf.span();
-            (low.to_f64() * high.to_f64()).sqrt()
-        });
-        let distance = |v: &Value| (v.to_f64() / middle).ln().abs();
-        let there = groups.iter().zip(&values).filter(|(g, _)| g.kind == group.kind).map(|(_, v)| *v);
-        let reused = there
+/// there (the one nearest to the impedance level), else one of a smallest set of values that serves all that are left.
+pub(crate) fn with_silent(model: &Model, active: Vec<Value>) -> Vec<Value> {
+    let silent = model.silent_groups();
+    let level = impedance(model.active_groups(), &in_ohms(&active));
+    let distance = |group: &Group, v: &Value| {
+        let (low, high) = group.shelf.span();
+        let middle = (low.to_f64() * high.to_f64()).sqrt();
+        let wanted = if group.kind == Kind::Resistor { level.unwrap_or(middle) } else { middle };
+        (v.to_f64() / wanted).ln().abs()
+    };
+    let nearest = |group: &Group, values: &mut dyn Iterator<Item = Value>| {
+        values
             .filter(|v| group.shelf.contains(*v))
-            .min_by(|a, b| distance(a).total_cmp(&distance(b)).then(a.cmp(b)));
-        let later = &model.silent_groups()[index + 1..];
-        let serves = |v: &Value| later.iter().filter(|g| g.kind == group.kind && g.shelf.contains(*v)).count();
-        let fresh = || {
-            let rank = |v: &Value| (std::cmp::Reverse(serves(v)), (distance(v) * 1e9) as u64, *v);
-            group.shelf.values().iter().copied().min_by_key(rank)
-        };
-        values.extend(reused.or_else(fresh));
+            .min_by(|a, b| distance(group, a).total_cmp(&distance(group, b)).then(a.cmp(b)))
+    };
+    let there = |kind: Kind| {
+        let alike = model.active_groups().iter().zip(&active).filter(move |(g, _)| g.kind == kind);
+        alike.map(|(_, v)| *v)
+    };
+    let mut chosen: Vec<Option<Value>> = silent.iter().map(|g| nearest(g, &mut there(g.kind))).collect();
+    for kind in [Kind::Resistor, Kind::Capacitor] {
+        let left: Vec<usize> = (0..silent.len()).filter(|&i| chosen[i].is_none() && silent[i].kind == kind).collect();
+        let fresh = fewest_values(&left.iter().map(|&i| &silent[i]).collect::<Vec<_>>(), &distance);
+        left.into_iter().for_each(|i| chosen[i] = nearest(&silent[i], &mut fresh.iter().copied()));
     }
-    values
+    active.into_iter().chain(chosen.into_iter().flatten()).collect()
+}
+
+/// A smallest set of values such that each group's shelf has one of them.
+fn fewest_values(groups: &[&Group], distance: &dyn Fn(&Group, &Value) -> f64) -> Vec<Value> {
+    // Values that serve the same groups are alike: of them the nearest to the first group's level is kept.
+    let mut serving: BTreeMap<Vec<bool>, Value> = BTreeMap::new();
+    for group in groups {
+        for v in group.shelf.values() {
+            let serves = groups.iter().map(|g| g.shelf.contains(*v)).collect();
+            let kept = serving.entry(serves).or_insert(*v);
+            if distance(groups[0], v) < distance(groups[0], kept) {
+                *kept = *v;
+            }
+        }
+    }
+    let candidates: Vec<(Vec<bool>, Value)> = serving.into_iter().collect();
+    (0..=groups.len()).find_map(|size| cover(&candidates, &vec![false; groups.len()], size)).unwrap_or_default()
+}
+
+/// At most `size` of the candidates that together serve all groups not yet served.
+fn cover(candidates: &[(Vec<bool>, Value)], served: &[bool], size: usize) -> Option<Vec<Value>> {
+    let Some(open) = served.iter().position(|s| !s) else { return Some(Vec::new()) };
+    let size = size.checked_sub(1)?;
+    candidates.iter().filter(|(serves, _)| serves[open]).find_map(|(serves, value)| {
+        let now: Vec<bool> = served.iter().zip(serves).map(|(a, b)| a | b).collect();
+        let mut rest = cover(candidates, &now, size)?;
+        rest.push(*value);
+        Some(rest)
+    })
 }

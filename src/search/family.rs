@@ -518,7 +518,7 @@ impl Walk<'_, '_> {
                 continue;
             }
             self.nodes += 1;
-            if self.nodes % (1 << 14) == 0 {
+            if self.nodes.is_multiple_of(1 << 14) {
                 self.halted |= self.visitor.stopped();
             }
             if self.halted {

@@ -1,5 +1,6 @@
 //! What a search found: sets in one total order, the front, and how much of it is proved.
 
+use std::cmp::Ordering;
 use std::collections::{BTreeMap, BTreeSet};
 
 use crate::units::Value;
@@ -21,11 +22,6 @@ impl ErrorKey {
         ErrorKey(if error.is_nan() { u64::MAX } else { (error / STEP).round() as u64 })
     }
 
-    /// The error, to a whole step.
-    pub fn error(self) -> f64 {
-        self.0 as f64 * STEP
-    }
-
     /// The largest error that has this key or a smaller one, rounded outwards.
     pub fn ceiling(self) -> f64 {
         (self.0 as f64 + 0.5) * STEP * (1.0 + 1e-12)
@@ -38,17 +34,45 @@ impl ErrorKey {
 }
 
 /// One set for one section. The order is that of the shortlist: error, then part numbers, then the values in slot order.
-#[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord)]
-pub struct Found {
-    /// Its error.
+#[derive(Clone, Debug)]
+pub(crate) struct Found {
+    /// Its error in the unit of the measure.
+    pub error: f64,
+    /// The same as a key.
     pub key: ErrorKey,
     /// How many different values it needs, resistors and capacitors counted apart.
     pub part_numbers: usize,
     /// The value of each group of slots, at the lowest impedance level at which the set exists.
-    pub(crate) values: Vec<Value>,
+    pub values: Vec<Value>,
     /// Decades by which it can be shifted upwards in impedance and still exists, 0 included.
-    pub(crate) levels: Vec<i32>,
+    pub levels: Vec<i32>,
 }
+
+impl Found {
+    fn rank(&self) -> (ErrorKey, usize, &[Value]) {
+        (self.key, self.part_numbers, &self.values)
+    }
+}
+
+impl Ord for Found {
+    fn cmp(&self, other: &Self) -> Ordering {
+        self.rank().cmp(&other.rank())
+    }
+}
+
+impl PartialOrd for Found {
+    fn partial_cmp(&self, other: &Self) -> Option<Ordering> {
+        Some(self.cmp(other))
+    }
+}
+
+impl PartialEq for Found {
+    fn eq(&self, other: &Self) -> bool {
+        self.cmp(other).is_eq()
+    }
+}
+
+impl Eq for Found {}
 
 /// The best sets by number of part numbers, a limited number of each.
 #[derive(Clone, Debug)]
@@ -141,6 +165,7 @@ mod tests {
     #[test]
     fn the_front_has_only_improvements() {
         let found = |error, part_numbers| Found {
+            error,
             key: ErrorKey::new(error),
             part_numbers,
             values: Vec::new(),

@@ -236,10 +236,8 @@ fn least_norm(rows: &[Vec<f64>], right: &[f64]) -> Option<Vec<f64>> {
         system.swap(done, best);
         for row in (0..n).filter(|&r| r != done) {
             let factor = system[row][column] / system[done][column];
-            for k in column..=n {
-                let step = factor * system[done][k];
-                system[row][k] -= step;
-            }
+            let lead = system[done].clone();
+            system[row].iter_mut().zip(&lead).for_each(|(x, l)| *x -= factor * l);
         }
         pivots.push(column);
         done += 1;

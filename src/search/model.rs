@@ -31,6 +31,9 @@ pub(crate) struct Model {
     pub symmetries: Vec<Vec<usize>>,
     /// Filled slots.
     pub placed_parts: usize,
+    /// Part numbers that any set needs beside those of the active groups: 1 where a silent group's shelf shares no value
+    /// with any active one, a lower bound where several do so.
+    pub least_extra: usize,
 }
 
 impl Model {
@@ -77,7 +80,12 @@ impl Model {
         active.extend(silent);
         let groups: Vec<Group> = active.into_iter().map(|(_, group)| group).collect();
         let symmetries = symmetries(&transfer, &groups[..count]);
-        Some(Model { groups, active: count, transfer, symmetries, placed_parts: filled.len() })
+        let apart = |silent: &Group| {
+            let alike = groups[..count].iter().filter(|g| g.kind == silent.kind);
+            alike.into_iter().all(|g| g.shelf.intersection(&silent.shelf).is_none())
+        };
+        let least_extra = usize::from(groups[count..].iter().any(apart));
+        Some(Model { groups, active: count, transfer, symmetries, placed_parts: filled.len(), least_extra })
     }
 
     /// The active groups.

@@ -29,6 +29,8 @@ pub(crate) struct SectionFront {
     pub nodes: u64,
     /// The error limit that was in force in the end: larger than the job's where nothing lay within that.
     pub limit: f64,
+    /// Whether families were left out beyond the job's error limit, because they would have taken too long.
+    pub left_out: bool,
 }
 
 /// By how much the error limit grows from level to level while nothing is found.
@@ -37,8 +39,12 @@ const LEVEL_FACTOR: f64 = 3.0;
 /// A level is passed over where the next is not dearer than this, in expected partial sets.
 const DEARER: f64 = 1.5;
 
-/// Where nothing lies within the error limit it is widened this often, by [`LEVEL_FACTOR`] each time.
-const WIDENINGS: u32 = 4;
+/// Where nothing lies within the error limit it is widened, by [`LEVEL_FACTOR`] each time, until something does or it
+/// has passed this: in dB as in plain ratio a response that far off has nothing to do with the target.
+const FARTHEST: f64 = 300.0;
+
+/// Expected partial sets beyond which a level is left out, once nothing was found within the job's error limit.
+const AFFORDABLE: f64 = 3e8;
 
 /// Searches one section.
 pub(crate) fn search(
@@ -58,6 +64,7 @@ pub(crate) fn search(
         best: Best::new(goals.alternatives + 1),
         sets: 0,
         nodes: 0,
+        left_out: false,
     };
     Some(search.run())
 }
@@ -73,21 +80,26 @@ struct Search<'a> {
     best: Best,
     sets: u64,
     nodes: u64,
+    left_out: bool,
 }
 
 impl Search<'_> {
     fn run(&mut self) -> SectionFront {
         let mut limit = self.goals.error_limit;
-        let mut proof = self.walk_counts(self.goals.error_resolution, limit);
-        for _ in 0..WIDENINGS {
-            if !self.best.front().is_empty() || matches!(proof, Proof::Stopped { .. }) {
-                break;
-            }
+        let mut proof = self.walk_counts(self.goals.error_resolution, limit, f64::INFINITY);
+        while self.best.front().is_empty() && matches!(proof, Proof::Exhaustive(_)) && limit < FARTHEST {
             let from = limit;
             limit *= LEVEL_FACTOR;
-            proof = self.walk_counts(from, limit);
+            proof = self.walk_counts(from, limit, AFFORDABLE);
         }
-        SectionFront { rows: self.best.front(), proof, sets: self.sets, nodes: self.nodes, limit }
+        SectionFront {
+            rows: self.best.front(),
+            proof,
+            sets: self.sets,
+            nodes: self.nodes,
+            limit,
+            left_out: self.left_out,
+        }
     }
 
     /// The windows for sets up to an error.
@@ -97,17 +109,19 @@ impl Search<'_> {
         self.windows.entry(key).or_insert_with(|| self.maker.windows(key.ceiling())).clone()
     }
 
-    /// Walks the number of different values upwards, each up to `limit` in levels that begin at `first`.
-    fn walk_counts(&mut self, first: f64, limit: f64) -> Proof {
+    /// Walks the number of different values upwards, each up to `limit` in levels that begin at `first`; levels that are
+    /// not affordable are left out.
+    fn walk_counts(&mut self, first: f64, limit: f64, affordable: f64) -> Proof {
         let count = |kind| self.model.active_groups().iter().filter(|g| g.kind == kind).count();
         let (resistors, capacitors) = (count(Kind::Resistor), count(Kind::Capacitor));
         let fewest = usize::from(resistors > 0) + usize::from(capacitors > 0);
         let most = resistors + capacitors;
-        let allowed = self.goals.max_part_numbers.unwrap_or(most);
-        for k in fewest..=most.min(allowed) {
+        let extra = self.model.least_extra;
+        let allowed = self.goals.max_part_numbers.unwrap_or(most + extra);
+        for k in fewest..=most.min(allowed.saturating_sub(extra)) {
             let families = self.families(k, (resistors, capacitors));
             // A set with more part numbers must be strictly better than every one with fewer.
-            let cap = match self.best.error_up_to(k) {
+            let cap = match self.best.error_up_to(k + extra) {
                 Some(best) if self.goals.alternatives == 0 => best.below().map(ErrorKey::ceiling),
                 _ => Some(limit),
             };
@@ -117,6 +131,10 @@ impl Search<'_> {
             let mut level = first.min(cap);
             loop {
                 let next = (level * LEVEL_FACTOR).min(cap);
+                if affordable.is_finite() && self.expected(&families, level) > affordable {
+                    self.left_out = true;
+                    break;
+                }
                 if level < cap && self.expected(&families, next) < DEARER * self.expected(&families, level) {
                     level = next;
                     continue;
@@ -127,16 +145,16 @@ impl Search<'_> {
                 }
                 // A set of this count may also have come from fewer variables and a silent slot: what counts is
                 // whether anything within this level can still be missing.
-                if level >= cap || self.best.worst_kept(k).is_some_and(|key| key <= ErrorKey::new(level)) {
+                if level >= cap || self.best.worst_kept(k + extra).is_some_and(|key| key <= ErrorKey::new(level)) {
                     break;
                 }
                 level = next;
             }
-            if self.best.error_up_to(k).is_some_and(|key| key < ErrorKey::new(self.goals.error_resolution)) {
+            if self.best.error_up_to(k + extra).is_some_and(|key| key < ErrorKey::new(self.goals.error_resolution)) {
                 return Proof::Exhaustive(if k < most { End::Resolution } else { End::AllCounts });
             }
         }
-        Proof::Exhaustive(if allowed < most { End::CountLimit } else { End::AllCounts })
+        Proof::Exhaustive(if allowed < most + extra { End::CountLimit } else { End::AllCounts })
     }
 
     /// The families with exactly `count` variables, one of each class under the section's symmetries.
@@ -260,7 +278,10 @@ impl Visitor for Collector<'_> {
     fn set(&mut self, values: &dyn Fn() -> Vec<Value>, response: &Biquad) {
         self.sets += 1;
         // The set is judged in its canonical form below; this first look may differ from that by rounding.
-        let limit = self.best.worst_kept(self.count).map_or(self.limit, |key| key.ceiling().min(self.limit));
+        let limit = self
+            .best
+            .worst_kept(self.count + self.model.least_extra)
+            .map_or(self.limit, |key| key.ceiling().min(self.limit));
         let order = self.yardstick.sections()[0].shape.order();
         if !response.is_stable(order) || self.yardstick.within(&[*response], limit * (1.0 + 1e-9) + 1e-12).is_none() {
             return;
@@ -270,9 +291,12 @@ impl Visitor for Collector<'_> {
             return;
         }
         let Some(mut found) = canonical(self.model, self.goals, &values) else { return };
+        if self.goals.max_part_numbers.is_some_and(|most| found.part_numbers > most) {
+            return;
+        }
         let achieved = self.model.biquad(&found.values[..self.model.active]);
         if let Some(deviation) = self.yardstick.within(&[achieved], limit + 1e-12) {
-            found.key = ErrorKey::new(deviation.error);
+            (found.error, found.key) = (deviation.error, ErrorKey::new(deviation.error));
             self.best.insert(found);
         }
     }

@@ -222,7 +222,9 @@ impl<'a> WindowMaker<'a> {
         // Ends of (functional over normalising functional) relative to the ideal.
         let ends = |above: &[f64; 6], below: &[f64; 6]| -> (f64, f64) {
             let value = dot(above, &ideal);
-            let reach = |sign: f64| dual_bound(&rows, &unknown, below, &above.map(|c| sign * c)) * epsilon / value;
+            let reach = |sign: f64| {
+                dual_bound(&rows, &unknown, below, &above.map(|c| sign * c), reach_of(epsilon)) * epsilon / value
+            };
             (1.0 - reach(-1.0), 1.0 + reach(1.0))
         };
         let unit = |j: usize| {
@@ -280,7 +282,8 @@ impl<'a> WindowMaker<'a> {
         if let (true, Some(wz)) = (n[1] && n[0] && n[2], self.section.wz) {
             let x = (wz / self.section.w0).powi(2);
             let depth = [1.0 / x, 1.0, x, 0.0, 0.0, 0.0];
-            let value = dual_bound(&rows, &unknown, &unit(5), &depth) * epsilon + dot(&depth, &ideal);
+            let value =
+                dual_bound(&rows, &unknown, &unit(5), &depth, reach_of(epsilon)) * epsilon + dot(&depth, &ideal);
             let bound = value.max(0.0).sqrt();
             if bound.is_finite() && self.comparable(N(1), D(2)) {
                 let bound = bound * self.section.w0;
@@ -335,13 +338,14 @@ impl<'a> WindowMaker<'a> {
         for &below in &self.present() {
             // How much |D/D*| can differ from 1 per unit of E |D/D*|: an octagon about the disc, hence the cosine.
             let widest =
-                denominators.iter().map(|d| dual_bound(&rows, &unknown, &unit(below), d)).fold(0.0, f64::max);
+                denominators.iter().map(|d| dual_bound(&rows, &unknown, &unit(below), d, REACH)).fold(0.0, f64::max);
             let gain = widest / std::f64::consts::FRAC_PI_8.cos();
             for &above in &all {
                 if place(above) == place(below) || !self.comparable(above, below) {
                     continue;
                 }
-                let reach = |sign: f64| dual_bound(&rows, &unknown, &unit(below), &unit(above).map(|c| sign * c));
+                let reach =
+                    |sign: f64| dual_bound(&rows, &unknown, &unit(below), &unit(above).map(|c| sign * c), REACH);
                 bounds.push(VectorBound { above, below, reach: (reach(-1.0), reach(1.0)), gain });
             }
         }
@@ -371,11 +375,11 @@ impl<'a> WindowMaker<'a> {
             let find = |below: Coefficient| {
                 windows.iter().find(|w| w.above == [D(1)] && w.below == [below]).map(|w| (w.low, w.high))
             };
-            if let (Some(a), Some(b)) = (find(D(0)), find(D(2))) {
-                if a.0 > 0.0 && b.0 > 0.0 {
-                    let (low, high) = (a.0 * b.0, a.1 * b.1);
-                    windows.push(Window { above: vec![D(1), D(1)], below: vec![D(0), D(2)], low, high });
-                }
+            if let (Some(a), Some(b)) = (find(D(0)), find(D(2)))
+                && a.0.min(b.0) > 0.0
+            {
+                let (low, high) = (a.0 * b.0, a.1 * b.1);
+                windows.push(Window { above: vec![D(1), D(1)], below: vec![D(0), D(2)], low, high });
             }
         }
         windows
@@ -400,13 +404,27 @@ fn dot(a: &[f64; 6], b: &[f64; 6]) -> f64 {
     a.iter().zip(b).map(|(x, y)| x * y).sum()
 }
 
+/// How far a coefficient is taken to deviate at most, in units of δ, where rounding is charged: a hundred times its ideal
+/// value, scaled so that it is about one. No set within any limit of use comes near that.
+fn reach_of(epsilon: f64) -> f64 {
+    100.0 / epsilon
+}
+
+/// The same for the vector error, whose smallest limit of use is 1e-4.
+const REACH: f64 = 1e6;
+
 /// An upper bound on `objective`·δ over all δ with rows a·δ ≤ b and `normal`·δ = 0, coordinates not in `unknown` being
 /// zero; infinite if none was found.
 ///
 /// For multipliers λ ≥ 0 and any μ, objective·δ = (Σ λ a + μ normal)·δ + r·δ ≤ Σ λ b + r·δ, r what the multipliers
-/// leave. The solver chooses λ and μ; the bound is then formed here, with r (rounding) charged at 10⁶ units of δ.
-fn dual_bound(rows: &[([f64; 6], f64)], unknown: &[bool; 6], normal: &[f64; 6], objective: &[f64; 6]) -> f64 {
-    const REACH: f64 = 1e6;
+/// leave. The solver chooses λ and μ; the bound is then formed here, with r (rounding) charged at `reach` units of δ.
+fn dual_bound(
+    rows: &[([f64; 6], f64)],
+    unknown: &[bool; 6],
+    normal: &[f64; 6],
+    objective: &[f64; 6],
+    reach: f64,
+) -> f64 {
     let mut dual = LinearProgram::new(OptimizationDirection::Minimize);
     let multipliers: Vec<_> = rows.iter().map(|(_, b)| dual.add_var(*b, (0.0, f64::INFINITY))).collect();
     let free = dual.add_var(0.0, (f64::NEG_INFINITY, f64::INFINITY));
@@ -428,7 +446,7 @@ fn dual_bound(rows: &[([f64; 6], f64)], unknown: &[bool; 6], normal: &[f64; 6], 
             (objective[j] - sum - mu * normal[j]).abs()
         })
         .sum();
-    if rest * REACH > 1e-2 * bound.abs().max(1e-3) { f64::INFINITY } else { bound + rest * REACH }
+    if rest * reach > 1e-2 * bound.abs().max(1e-3) { f64::INFINITY } else { bound + rest * reach }
 }
 
 #[cfg(test)]

@@ -258,20 +258,16 @@ pub struct Biquad {
     pub den: [f64; 3],
 }
 
-/// Coefficients of |P(jω)|² in x = ω², ascending.
-pub(crate) fn squared(p: &[f64; 3]) -> [f64; 3] {
-    [p[0] * p[0], p[1] * p[1] - 2.0 * p[0] * p[2], p[2] * p[2]]
-}
-
-/// Value at x of a quadratic with ascending coefficients.
-pub(crate) fn at(p: &[f64; 3], x: f64) -> f64 {
-    p[0] + x * (p[1] + x * p[2])
+/// |P(jω)|² at x = ω². Not from the coefficients of |P|²: near a null those cancel to nothing.
+fn squared(p: &[f64; 3], x: f64) -> f64 {
+    let even = p[0] - p[2] * x;
+    even * even + p[1] * p[1] * x
 }
 
 impl Biquad {
     /// |H(jω)|² at x = ω².
     pub fn power(&self, x: f64) -> f64 {
-        at(&squared(&self.num), x) / at(&squared(&self.den), x)
+        squared(&self.num, x) / squared(&self.den, x)
     }
 
     /// H(jω).

@@ -126,7 +126,7 @@ fn defaults_are_those_of_the_trade() {
     let one = |inner: &str| sound(&in_section(inner)).problem;
     let problem = one("shape: LowPass, f0: 1000, q: 0.7");
     let section = &problem.sections[0];
-    assert_eq!((section.target.name.as_str(), section.target.gain, problem.title.as_str()), ("1", 1.0, "untitled"));
+    assert_eq!((section.target.name.as_str(), section.target.gain, problem.title.as_str()), ("1", 1.0, ""));
     assert_eq!(problem.criterion, Criterion::default());
     assert_eq!(problem.goals, crate::search::Goals::default());
     let range = |series: Series, from, to, kind| series.values_between(value(from, kind), value(to, kind));

@@ -1,0 +1,307 @@
+//! The command line as typed: flags and their texts, nothing checked beyond what is a choice or a count.
+
+use std::path::PathBuf;
+
+use clap::builder::PossibleValuesParser;
+use clap::{Args, Parser, Subcommand, ValueEnum};
+
+use crate::report::CSV_COLUMNS;
+use crate::target::Shape;
+
+/// From ideal filter sections to resistors and capacitors that can be bought, with a proof.
+#[derive(Debug, Parser)]
+#[command(name = "roundwell", version, max_term_width = 100, after_help = AFTER_HELP)]
+pub struct Arguments {
+    /// What to do.
+    #[command(subcommand)]
+    pub command: Command,
+}
+
+const AFTER_HELP: &str = "\
+Example:
+  roundwell shortlist --shape low-pass --f0 1k --q 0.7071 --circuit tow-thomas
+
+Exit codes:
+  0    found
+  1    internal fault: a result failed its independent check and is not shown
+  2    bad input or usage, or a file that cannot be read or written
+  3    nothing lies within the limits; what comes nearest is shown
+  130  interrupted; the best found so far is shown";
+
+/// The commands.
+#[derive(Debug, Subcommand)]
+pub enum Command {
+    /// Search a job for the sets of parts that come closest with the fewest part numbers.
+    #[command(after_help = SHORTLIST_HELP, after_long_help = shortlist_long_help(), allow_negative_numbers = true)]
+    Shortlist(Box<ShortlistArgs>),
+    /// List the circuits, or show one: nodes, slots, outputs, what each slot sets.
+    Circuits(CircuitsArgs),
+    /// Show a series of preferred values, or the neighbours of values in it.
+    #[command(allow_negative_numbers = true)]
+    Values(ValuesArgs),
+}
+
+const SHORTLIST_HELP: &str = "\
+Shelves are written as series and single values, then a range: E24,E96:1k..1M or 10k,22k,47k.
+Ranges are written FROM..TO. What is given here wins over the job file, in all its sections.
+
+Examples:
+  roundwell shortlist job.ron --format json --out shortlist.json
+  roundwell shortlist --shape low-pass --f0 1k --q 0.7071 --gain 1 --circuit tow-thomas
+
+Exit codes: 0 found, 1 internal fault, 2 bad input or usage, 3 nothing within the limits, 130 interrupted.";
+
+/// The long help of `shortlist`: with the columns of the CSV format.
+fn shortlist_long_help() -> String {
+    let columns = CSV_COLUMNS.map(|(name, meaning)| format!("  {name:<18} {meaning}"));
+    format!(
+        "{SHORTLIST_HELP}\n\nColumns of the CSV format; numbers in SI units, empty where not known:\n{}",
+        columns.join("\n")
+    )
+}
+
+/// How a shortlist is written.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, ValueEnum)]
+pub enum Format {
+    /// A table to read.
+    #[default]
+    Table,
+    /// JSON for scripts.
+    Json,
+    /// CSV, one line a part.
+    Csv,
+}
+
+/// How a circuit is written.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, ValueEnum)]
+pub enum CircuitFormat {
+    /// Text to read.
+    #[default]
+    Table,
+    /// JSON for scripts.
+    Json,
+}
+
+/// `shortlist`.
+#[derive(Debug, Default, Args)]
+pub struct ShortlistArgs {
+    /// The job file (RON), or - for standard input; without it the section is described by flags.
+    pub job: Option<PathBuf>,
+
+    #[command(flatten)]
+    pub section: SectionArgs,
+
+    #[command(flatten)]
+    pub parts: PartsArgs,
+
+    #[command(flatten)]
+    pub goals: GoalArgs,
+
+    #[command(flatten)]
+    pub output: OutputArgs,
+}
+
+/// One section, in place of a job file.
+#[derive(Debug, Default, Args)]
+#[command(next_help_heading = "One section, in place of a job file")]
+pub struct SectionArgs {
+    /// Shape of the response.
+    #[arg(long, value_parser = PossibleValuesParser::new(Shape::ALL.map(shape_flag)))]
+    pub shape: Option<String>,
+    /// Pole frequency, Hz.
+    #[arg(long, value_name = "FREQUENCY")]
+    pub f0: Option<String>,
+    /// Angular pole frequency, rad/s, in place of f0.
+    #[arg(long, value_name = "FREQUENCY")]
+    pub w0: Option<String>,
+    /// Two real poles, Hz, in place of f0 and Q.
+    #[arg(long, num_args = 2, value_names = ["FIRST", "SECOND"])]
+    pub poles: Option<Vec<String>>,
+    /// Pole quality factor.
+    #[arg(long)]
+    pub q: Option<String>,
+    /// Signed gain, plain ratio [default: 1].
+    #[arg(long, allow_hyphen_values = true)]
+    pub gain: Option<String>,
+    /// Zero frequency of a notch, Hz [default: f0].
+    #[arg(long, value_name = "FREQUENCY")]
+    pub fz: Option<String>,
+    /// Angular zero frequency of a notch, rad/s, in place of fz.
+    #[arg(long, value_name = "FREQUENCY")]
+    pub wz: Option<String>,
+    /// Name of the section.
+    #[arg(long)]
+    pub name: Option<String>,
+    /// What one slot may hold, such as R1=10k or C1=E6:1n..100n; repeatable.
+    #[arg(long, value_name = "SLOT=SHELF")]
+    pub slot: Vec<String>,
+    /// Slots that must carry the same value; repeatable.
+    #[arg(long, value_name = "SLOT=SLOT")]
+    pub equal: Vec<String>,
+    /// Lift the ties of the circuit: all, or those of the slots named; repeatable.
+    #[arg(long, value_name = "SLOT=SLOT", num_args = 0..=1, require_equals = true, default_missing_value = "all")]
+    pub untie: Vec<String>,
+}
+
+/// Circuit and shelves, for all sections.
+#[derive(Debug, Default, Args)]
+#[command(next_help_heading = "Circuit and parts")]
+pub struct PartsArgs {
+    /// Identifier of the circuit, or a circuit file (.ron).
+    #[arg(long)]
+    pub circuit: Option<String>,
+    /// Output of the circuit [default: the first of the wanted shape and sign].
+    #[arg(long)]
+    pub output: Option<String>,
+    /// Whether the sign of the gain is kept or either will do.
+    #[arg(long, value_parser = ["kept", "either"])]
+    pub sign: Option<String>,
+    /// What may be used as resistors [default: E96:1k..1M].
+    #[arg(long, value_name = "SHELF")]
+    pub resistors: Option<String>,
+    /// What may be used as capacitors [default: E12:1n..1u].
+    #[arg(long, value_name = "SHELF")]
+    pub capacitors: Option<String>,
+    /// Resistor values taken off the shelves, separated by commas.
+    #[arg(long, value_name = "VALUES")]
+    pub exclude_resistors: Option<String>,
+    /// Capacitor values taken off the shelves, separated by commas.
+    #[arg(long, value_name = "VALUES")]
+    pub exclude_capacitors: Option<String>,
+    /// Range for the geometric mean of the resistances of a section, ohms.
+    #[arg(long, value_name = "FROM..TO")]
+    pub impedance: Option<String>,
+}
+
+/// How sets are judged, and what is wanted.
+#[derive(Debug, Default, Args)]
+#[command(next_help_heading = "Error and goals")]
+pub struct GoalArgs {
+    /// What the error is: decibel, vector, or weighted:f0=1,q=0.2,gain=1 [default: decibel, or vector with an all-pass].
+    #[arg(long)]
+    pub measure: Option<String>,
+    /// The band that counts, Hz [default: lowest f0 / 10 to highest f0 x 10].
+    #[arg(long, value_name = "FROM..TO")]
+    pub band: Option<String>,
+    /// How far under the largest ideal magnitude the floor lies, dB [default: 60].
+    #[arg(long)]
+    pub floor: Option<String>,
+    /// Take out the best flat gain offset before the error is measured.
+    #[arg(long, value_name = "BOOL", num_args = 0..=1, require_equals = true, default_missing_value = "true")]
+    pub ignore_gain: Option<bool>,
+    /// Limit on part numbers.
+    #[arg(long, value_name = "COUNT")]
+    pub max_part_numbers: Option<String>,
+    /// The error that is good enough: marks a row [default: 0.1 dB or 1 %].
+    #[arg(long, value_name = "ERROR")]
+    pub wanted_error: Option<String>,
+    /// Nothing worse is listed unless nothing better exists [default: 1 dB or 12 %].
+    #[arg(long, value_name = "ERROR")]
+    pub error_limit: Option<String>,
+    /// The front ends where the best error falls below this [default: 0.001 dB or 0.01 %].
+    #[arg(long, value_name = "ERROR")]
+    pub error_resolution: Option<String>,
+    /// Rows to list at most [default: 10].
+    #[arg(long, value_name = "COUNT")]
+    pub rows: Option<String>,
+    /// Further sets to list for each number of part numbers [default: 0].
+    #[arg(long, value_name = "COUNT")]
+    pub alternatives: Option<String>,
+    /// How long to search, such as 10s [default: to the end].
+    #[arg(long, value_name = "TIME")]
+    pub time_limit: Option<String>,
+}
+
+/// What becomes of the result.
+#[derive(Debug, Default, Args)]
+#[command(next_help_heading = "Output")]
+pub struct OutputArgs {
+    /// How to write the shortlist.
+    #[arg(long, value_enum, default_value_t)]
+    pub format: Format,
+    /// Write to this file in place of standard output; it is replaced only when all is written.
+    #[arg(long, value_name = "FILE")]
+    pub out: Option<PathBuf>,
+    /// Title of the report.
+    #[arg(long)]
+    pub title: Option<String>,
+    /// Characters to the line of a table.
+    #[arg(long, value_name = "COUNT", default_value_t = 80, value_parser = clap::value_parser!(u16).range(40..=1000))]
+    pub width: u16,
+    /// Threads to search with [default: one for each processor core].
+    #[arg(long, value_name = "COUNT", value_parser = clap::value_parser!(u16).range(1..=1024))]
+    pub threads: Option<u16>,
+}
+
+/// `circuits`.
+#[derive(Debug, Args)]
+pub struct CircuitsArgs {
+    /// Identifier of a circuit, or a circuit file (.ron); without it all circuits are listed.
+    pub circuit: Option<String>,
+    /// How to write it.
+    #[arg(long, value_enum, default_value_t)]
+    pub format: CircuitFormat,
+    /// Characters to the line.
+    #[arg(long, value_name = "COUNT", default_value_t = 80, value_parser = clap::value_parser!(u16).range(40..=1000))]
+    pub width: u16,
+}
+
+/// `values`.
+#[derive(Debug, Args)]
+pub struct ValuesArgs {
+    /// Values whose neighbours are wanted, such as 4.8k or 4n8.
+    pub values: Vec<String>,
+    /// Series (E3 to E192), separated by commas [default: all].
+    #[arg(long, value_delimiter = ',')]
+    pub series: Vec<String>,
+    /// What the values are: R for ohms, C for farads [default: what the unit or prefix says].
+    #[arg(long, value_parser = ["R", "C"], ignore_case = true)]
+    pub kind: Option<String>,
+}
+
+/// The name of a shape on the command line.
+pub fn shape_flag(shape: Shape) -> &'static str {
+    match shape {
+        Shape::FirstOrderLowPass => "first-order-low-pass",
+        Shape::FirstOrderHighPass => "first-order-high-pass",
+        Shape::FirstOrderAllPass => "first-order-all-pass",
+        other => other.name(),
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use clap::CommandFactory;
+
+    use super::*;
+    use crate::job::JobFile;
+
+    #[test]
+    fn the_command_line_is_sound() {
+        Arguments::command().debug_assert();
+    }
+
+    /// The keys that a job file knows at a place, as its own message lists them.
+    fn keys(text: &str) -> Vec<String> {
+        let Err(faults) = JobFile::parse(text) else { return Vec::new() };
+        let help = faults.first().and_then(|fault| fault.help.clone()).unwrap_or_default();
+        let list = help.split_once("the keys are ").map(|(_, list)| list.to_string()).unwrap_or_default();
+        list.split(", ").map(str::to_string).collect()
+    }
+
+    #[test]
+    fn every_key_of_a_job_file_has_a_flag() {
+        let command = Arguments::command();
+        let shortlist = command.find_subcommand("shortlist");
+        let flags: Vec<String> = shortlist
+            .map(|command| command.get_arguments().filter_map(|arg| arg.get_long().map(str::to_string)).collect())
+            .unwrap_or_default();
+        let mut all = keys("(zzzzzzzzz: 1)");
+        all.extend(keys("(sections: [(zzzzzzzzz: 1)])"));
+        assert!(all.len() > 30, "{all:?}");
+        for key in all.iter().filter(|key| *key != "sections") {
+            let flag = if key == "slots" { "slot".to_string() } else { key.replace('_', "-") };
+            assert!(flags.contains(&flag), "--{flag}");
+        }
+    }
+}

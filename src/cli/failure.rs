@@ -1,0 +1,112 @@
+//! Why a command ends without a result, and the exit code that goes with it.
+
+use std::io;
+use std::path::Path;
+
+use super::{BAD_INPUT, INTERNAL_FAULT};
+use crate::text::{Fault, render};
+use crate::verify::VerifyError;
+
+/// Faults of one text.
+#[derive(Debug)]
+pub struct Faulty {
+    /// The name under which the text is known; empty for the command line.
+    pub file: String,
+    /// The text; empty for the command line.
+    pub text: String,
+    /// What is wrong with it.
+    pub faults: Vec<Fault>,
+}
+
+/// A command that cannot give a result.
+#[derive(Debug)]
+pub enum Failure {
+    /// The input is wrong.
+    Input(Vec<Faulty>),
+    /// The output cannot be written.
+    Output {
+        /// Where it should go.
+        target: String,
+        /// Why it does not.
+        error: io::Error,
+        /// What to do.
+        help: &'static str,
+    },
+    /// The result failed its independent check.
+    Unverified(VerifyError),
+    /// The threads cannot be started.
+    Threads(String),
+}
+
+impl Failure {
+    /// One fault of the command line, or of a file as a whole.
+    pub fn input(fault: Fault) -> Failure {
+        Failure::Input(vec![Faulty { file: String::new(), text: String::new(), faults: vec![fault] }])
+    }
+
+    /// A file that cannot be read.
+    pub fn reading(path: &Path, error: &io::Error) -> Failure {
+        let message = format!("cannot read {}: {}", path.display(), plain(error));
+        let help = match error.kind() {
+            io::ErrorKind::NotFound => "check the path; `roundwell --help` shows how a job is given",
+            io::ErrorKind::IsADirectory => "name a file in it",
+            _ => "",
+        };
+        Failure::input(Fault::at("", message).help(help))
+    }
+
+    /// The exit code: 1 for faults of the program, 2 for everything that the user can put right.
+    pub fn exit_code(&self) -> u8 {
+        match self {
+            Failure::Unverified(_) => INTERNAL_FAULT,
+            Failure::Input(_) | Failure::Output { .. } | Failure::Threads(_) => BAD_INPUT,
+        }
+    }
+
+    /// The failure as text, with colours if `styled`.
+    pub fn show(&self, styled: bool) -> String {
+        let one = |message: String, help: &str| render(&[Fault::at("", message).help(help)], "", "", styled);
+        match self {
+            Failure::Input(texts) => {
+                let shown = texts.iter().map(|text| render(&text.faults, &text.file, &text.text, styled));
+                shown.collect::<Vec<_>>().join("\n")
+            }
+            Failure::Output { target, error, help } => one(format!("cannot write {target}: {}", plain(error)), help),
+            Failure::Unverified(error) => {
+                let message = format!("internal fault: the result failed its independent check: {error}");
+                one(message, "no set is shown; please report this with the job")
+            }
+            Failure::Threads(error) => one(format!("cannot start the threads: {error}"), "ask for fewer --threads"),
+        }
+    }
+}
+
+/// The text of an error of the system, without its number.
+fn plain(error: &io::Error) -> String {
+    let text = error.to_string();
+    let text = text.split(" (os error").next().unwrap_or_default();
+    let first = text.chars().next().map_or(0, char::len_utf8);
+    text[..first].to_lowercase() + &text[first..]
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_result_that_fails_its_check_is_an_internal_fault() {
+        let error = VerifyError::Tie { row: 2, section: "A".to_string() };
+        let failure = Failure::Unverified(error.clone());
+        assert_eq!(failure.exit_code(), 1);
+        assert!(failure.show(false).contains(&error.to_string()) && failure.show(false).contains("no set is shown"));
+    }
+
+    #[test]
+    fn errors_of_the_system_are_told_without_their_numbers() {
+        let error = io::Error::from_raw_os_error(2);
+        let failure = Failure::reading(Path::new("job.ron"), &error);
+        assert_eq!(failure.exit_code(), 2);
+        assert!(!failure.show(false).contains("os error"), "{}", failure.show(false));
+        assert!(failure.show(false).starts_with("error: cannot read job.ron: "), "{}", failure.show(false));
+    }
+}

@@ -1,0 +1,368 @@
+//! From flags to settings: what the flags say is laid over the job file.
+
+use std::path::{Path, PathBuf};
+use std::time::Duration;
+
+use super::args::{GoalArgs, PartsArgs, SectionArgs, ShortlistArgs, shape_flag};
+use super::failure::{Failure, Faulty};
+use super::files::{Circuits, is_file_name, read_text};
+use crate::job::{
+    Given, Job, JobFile, MeasureFile, Scalar, Scalars, SectionFile, ShelfFile, Shelves, Sign, SlotFile, Slots, Untie,
+    resolve,
+};
+use crate::search::Problem;
+use crate::target::Shape;
+use crate::text::{Fault, located};
+
+/// A job that can be searched.
+#[derive(Debug)]
+pub struct Settings {
+    /// What is searched.
+    pub problem: Problem,
+    /// How long.
+    pub time_limit: Option<Duration>,
+}
+
+impl Settings {
+    /// Reads the job file, lays the flags over it, and resolves everything.
+    ///
+    /// # Errors
+    /// All faults of the job file, of the circuit files that it names, and of the flags.
+    pub fn new(args: &ShortlistArgs) -> Result<Settings, Failure> {
+        let source = args.job.as_deref().map(Source::read).transpose()?.unwrap_or_default();
+        let mut job = source.job()?;
+        let mut faults = lay_over(&mut job, args);
+        if source.path.is_some() {
+            faults.extend(section_flags(&args.section).into_iter().map(|flag| {
+                let message = format!("describes a section, but {} has its own", source.name);
+                Fault::at(flag, message).help("leave the flag out, or the job file")
+            }));
+        } else {
+            match one_section(&args.section) {
+                Ok(section) => {
+                    let title = section.shape.as_ref().map(|shape| format!("{} section", shape.value.name()));
+                    let title = title.map(|title| Given::flag("--title", title.as_str()));
+                    job.title = job.title.or(title);
+                    job.sections = Some(Given { value: vec![section], flag: None });
+                }
+                Err(more) => {
+                    faults.extend(more);
+                    return Err(source.failure(faults, Vec::new()));
+                }
+            }
+        }
+        let mut circuits = Circuits::new(source.folder());
+        match resolve(&job, &mut |name| circuits.get(name)) {
+            Ok(Job { problem, time_limit }) if faults.is_empty() => Ok(Settings { problem, time_limit }),
+            resolved => {
+                faults.extend(resolved.err().unwrap_or_default());
+                Err(source.failure(faults, circuits.faulty))
+            }
+        }
+    }
+}
+
+/// The job file as read; empty where there is none.
+#[derive(Debug, Default)]
+struct Source {
+    path: Option<PathBuf>,
+    name: String,
+    text: String,
+}
+
+impl Source {
+    fn read(path: &Path) -> Result<Source, Failure> {
+        let name = if path == Path::new("-") { "standard input".to_string() } else { path.display().to_string() };
+        Ok(Source { path: Some(path.to_path_buf()), name, text: read_text(path)? })
+    }
+
+    fn job(&self) -> Result<JobFile, Failure> {
+        match self.path {
+            Some(_) => JobFile::parse(&self.text).map_err(|faults| self.failure(faults, Vec::new())),
+            None => Ok(JobFile::default()),
+        }
+    }
+
+    /// The folder from which the job names circuit files: its own.
+    fn folder(&self) -> PathBuf {
+        self.path.as_deref().and_then(Path::parent).map(Path::to_path_buf).unwrap_or_default()
+    }
+
+    /// Faults of the job, and before them those of the circuit files that it names.
+    fn failure(&self, faults: Vec<Fault>, mut others: Vec<Faulty>) -> Failure {
+        let faults = match self.path {
+            Some(_) => located(&self.text, faults),
+            None => faults.into_iter().map(without_file).collect(),
+        };
+        others.push(Faulty { file: self.name.clone(), text: self.text.clone(), faults });
+        Failure::Input(others)
+    }
+}
+
+/// A fault of a job that no file describes: what stands for a key is its flag.
+fn without_file(mut fault: Fault) -> Fault {
+    if let Some(rest) = fault.path.strip_prefix("sections[0]") {
+        let key = rest.trim_start_matches('.').split(['.', '[']).next().unwrap_or_default();
+        fault.path = if key.is_empty() { String::new() } else { format!("--{}", key.replace('_', "-")) };
+    }
+    fault
+}
+
+/// A flag's value, where it is given.
+fn given<T: From<U>, U>(flag: &'static str, value: Option<U>) -> Option<Given<T>> {
+    value.map(|value| Given::flag(flag, value))
+}
+
+fn scalar(flag: &'static str, text: &Option<String>) -> Option<Given<Scalar>> {
+    given(flag, text.as_deref())
+}
+
+/// Keeps a value, or notes its fault.
+fn noted<T>(faults: &mut Vec<Fault>, read: Option<Result<T, Fault>>) -> Option<T> {
+    match read? {
+        Ok(value) => Some(value),
+        Err(fault) => {
+            faults.push(fault);
+            None
+        }
+    }
+}
+
+/// Lays the flags for the job as a whole over it. They win over its sections too.
+fn lay_over(job: &mut JobFile, args: &ShortlistArgs) -> Vec<Fault> {
+    let mut faults = Vec::new();
+    let PartsArgs { circuit, output, sign, resistors, capacitors, exclude_resistors, exclude_capacitors, impedance } =
+        &args.parts;
+    let GoalArgs {
+        measure,
+        band,
+        floor,
+        ignore_gain,
+        max_part_numbers,
+        wanted_error,
+        error_limit,
+        error_resolution,
+        rows,
+        alternatives,
+        time_limit,
+    } = &args.goals;
+    let shelf = |flag, text: &Option<String>| text.as_deref().map(|text| ShelfFile::from_flag(flag, text));
+    let range = |flag, text: &Option<String>| text.as_deref().map(|text| Given::range(flag, text));
+    let over = JobFile {
+        title: scalar("--title", &args.output.title),
+        sections: None,
+        circuit: circuit.as_deref().map(|name| Given::flag("--circuit", named_circuit(name, args).as_str())),
+        output: scalar("--output", output),
+        sign: sign
+            .as_deref()
+            .map(|sign| Given::flag("--sign", if sign == "either" { Sign::Either } else { Sign::Kept })),
+        resistors: noted(&mut faults, shelf("--resistors", resistors)),
+        capacitors: noted(&mut faults, shelf("--capacitors", capacitors)),
+        band: noted(&mut faults, range("--band", band)),
+        floor: scalar("--floor", floor),
+        ignore_gain: given("--ignore-gain", *ignore_gain),
+        measure: noted(&mut faults, measure.as_deref().map(measure_of)),
+        max_part_numbers: scalar("--max-part-numbers", max_part_numbers),
+        wanted_error: scalar("--wanted-error", wanted_error),
+        error_limit: scalar("--error-limit", error_limit),
+        error_resolution: scalar("--error-resolution", error_resolution),
+        rows: scalar("--rows", rows),
+        alternatives: scalar("--alternatives", alternatives),
+        impedance: noted(&mut faults, range("--impedance", impedance)),
+        time_limit: scalar("--time-limit", time_limit),
+    };
+    for section in job.sections.iter_mut().flat_map(|sections| &mut sections.value) {
+        clear(&mut section.circuit, &over.circuit);
+        clear(&mut section.output, &over.output);
+        clear(&mut section.sign, &over.sign);
+        clear(&mut section.resistors, &over.resistors);
+        clear(&mut section.capacitors, &over.capacitors);
+    }
+    job.overlay(over);
+    exclude(
+        job,
+        "--exclude-resistors",
+        exclude_resistors,
+        |job| &mut job.resistors,
+        |section| &mut section.resistors,
+    );
+    exclude(
+        job,
+        "--exclude-capacitors",
+        exclude_capacitors,
+        |job| &mut job.capacitors,
+        |section| &mut section.capacitors,
+    );
+    faults
+}
+
+/// Takes away what a section says where a flag says something else.
+fn clear<T>(own: &mut Option<Given<T>>, over: &Option<Given<T>>) {
+    if over.is_some() {
+        *own = None;
+    }
+}
+
+/// The circuit that a flag names: a file is named from the working folder, while a job file names it from its own.
+fn named_circuit(name: &str, args: &ShortlistArgs) -> String {
+    let absolute = || Some(std::path::absolute(name).ok()?.to_str()?.to_string());
+    let elsewhere = args.job.is_some() && is_file_name(name);
+    elsewhere.then(absolute).flatten().unwrap_or_else(|| name.to_string())
+}
+
+/// Takes values off the shelves of the job and of its sections.
+fn exclude(
+    job: &mut JobFile,
+    flag: &'static str,
+    text: &Option<String>,
+    of_job: impl Fn(&mut JobFile) -> &mut Option<Given<Shelves>>,
+    of_section: impl Fn(&mut SectionFile) -> &mut Option<Given<Shelves>>,
+) {
+    let Some(text) = text else { return };
+    let values: Vec<Scalar> = text.split(',').map(|value| Scalar::from(value.trim())).collect();
+    let take_off = |shelves: &mut Given<Shelves>| {
+        for shelf in &mut shelves.value.0 {
+            let exclude = shelf.exclude.get_or_insert_with(|| Given { value: Scalars::default(), flag: None });
+            // The flag is named where one of all these values cannot be read.
+            exclude.flag = Some(flag);
+            exclude.value.0.extend(values.iter().cloned());
+        }
+    };
+    let usual = || Given { value: Shelves(vec![ShelfFile::default()]), flag: None };
+    take_off(of_job(job).get_or_insert_with(usual));
+    for section in job.sections.iter_mut().flat_map(|sections| &mut sections.value) {
+        of_section(section).iter_mut().for_each(take_off);
+    }
+}
+
+/// The measure that a flag names.
+fn measure_of(text: &str) -> Result<Given<MeasureFile>, Fault> {
+    const FLAG: &str = "--measure";
+    let (name, weights) = text.split_once(':').unwrap_or((text, ""));
+    let weighted = name == "weighted" && !weights.is_empty();
+    let measure = match name {
+        "decibel" if weights.is_empty() => MeasureFile::Decibel,
+        "vector" if weights.is_empty() => MeasureFile::Vector,
+        _ if weighted => {
+            let mut found: [Option<Scalar>; 4] = [None, None, None, None];
+            for pair in weights.split(',') {
+                let place = pair.split_once('=').and_then(|(key, weight)| {
+                    let index = ["f0", "q", "gain", "fz"].iter().position(|known| *known == key.trim())?;
+                    Some((index, Scalar::from(weight.trim())))
+                });
+                let Some((index, weight)) = place else {
+                    let message = format!("`{pair}` is no weight");
+                    return Err(Fault::at(FLAG, message).help("write f0=, q=, gain= or fz= and a number"));
+                };
+                if found[index].replace(weight).is_some() {
+                    let message = format!("`{}` is there twice", pair.split('=').next().unwrap_or_default());
+                    return Err(Fault::at(FLAG, message).help("keep one of the two"));
+                }
+            }
+            let [f0, q, gain, fz] = found;
+            MeasureFile::Weighted { f0, q, gain, fz }
+        }
+        _ => {
+            let message = format!("`{text}` is no measure");
+            return Err(Fault::at(FLAG, message).help("write decibel, vector or weighted:f0=1,q=0.2,gain=1"));
+        }
+    };
+    Ok(Given::flag(FLAG, measure))
+}
+
+/// The flags that describe a section and are given.
+fn section_flags(args: &SectionArgs) -> Vec<&'static str> {
+    let SectionArgs { shape, f0, w0, poles, q, gain, fz, wz, name, slot, equal, untie } = args;
+    let given = [
+        ("--shape", shape.is_some()),
+        ("--f0", f0.is_some()),
+        ("--w0", w0.is_some()),
+        ("--poles", poles.is_some()),
+        ("--q", q.is_some()),
+        ("--gain", gain.is_some()),
+        ("--fz", fz.is_some()),
+        ("--wz", wz.is_some()),
+        ("--name", name.is_some()),
+        ("--slot", !slot.is_empty()),
+        ("--equal", !equal.is_empty()),
+        ("--untie", !untie.is_empty()),
+    ];
+    given.into_iter().filter(|(_, is_given)| *is_given).map(|(flag, _)| flag).collect()
+}
+
+/// The section that the flags describe.
+fn one_section(args: &SectionArgs) -> Result<SectionFile, Vec<Fault>> {
+    let SectionArgs { shape, f0, w0, poles, q, gain, fz, wz, name, slot, equal, untie } = args;
+    let example = "for example --shape low-pass --f0 1k --q 0.7071; or name a job file";
+    let mut faults = Vec::new();
+    if section_flags(args).is_empty() {
+        let message = "there is neither a job file nor a section";
+        return Err(vec![Fault::at("", message).help(format!("describe a section, {example}"))]);
+    }
+    if shape.is_none() {
+        faults.push(Fault::at("--shape", "the section has no shape").help(example));
+    }
+    if f0.is_none() && w0.is_none() && poles.is_none() {
+        let help = "give --f0 in Hz, --w0 in rad/s, or two --poles in Hz";
+        faults.push(Fault::at("--f0", "the section has no frequency").help(help));
+    }
+    let shape = shape.as_deref().and_then(|name| Shape::ALL.into_iter().find(|shape| shape_flag(*shape) == name));
+    let poles = match poles.as_deref() {
+        Some([first, second]) => Some(Given::flag("--poles", (first.as_str().into(), second.as_str().into()))),
+        _ => None,
+    };
+    let section = SectionFile {
+        name: scalar("--name", name),
+        shape: given("--shape", shape),
+        f0: scalar("--f0", f0),
+        w0: scalar("--w0", w0),
+        poles,
+        q: scalar("--q", q),
+        gain: scalar("--gain", gain),
+        fz: scalar("--fz", fz),
+        wz: scalar("--wz", wz),
+        slots: slots(&mut faults, slot),
+        equal: groups("--equal", &mut faults, equal),
+        untie: match untie.as_slice() {
+            [] => None,
+            list if list.iter().any(|text| text == "all") => Some(Given::flag("--untie", Untie::All(true))),
+            list => {
+                groups("--untie", &mut faults, list).map(|given| Given::flag("--untie", Untie::Groups(given.value)))
+            }
+        },
+        ..SectionFile::default()
+    };
+    if faults.is_empty() { Ok(section) } else { Err(faults) }
+}
+
+/// What single slots may hold, from `R1=10k` and the like.
+fn slots(faults: &mut Vec<Fault>, texts: &[String]) -> Option<Given<Slots>> {
+    const FLAG: &str = "--slot";
+    let mut slots: Vec<(String, SlotFile)> = Vec::new();
+    for text in texts {
+        let Some((name, shelf)) = text.split_once('=').map(|(name, shelf)| (name.trim(), shelf)) else {
+            let message = format!("`{text}` names no shelf");
+            faults.push(Fault::at(FLAG, message).help("write R1=10k or C1=E6:1n..100n"));
+            continue;
+        };
+        if slots.iter().any(|(known, _)| known == name) {
+            faults.push(Fault::at(FLAG, format!("the slot `{name}` is there twice")).help("keep one of the two"));
+        }
+        let shelf = noted(faults, Some(ShelfFile::from_flag(FLAG, shelf)));
+        slots.push((name.to_string(), SlotFile { shelf, ..SlotFile::default() }));
+    }
+    (!slots.is_empty()).then(|| Given::flag(FLAG, Slots(slots)))
+}
+
+/// Groups of slots, from `R1=R2` and the like.
+fn groups(flag: &'static str, faults: &mut Vec<Fault>, texts: &[String]) -> Option<Given<Vec<Vec<Scalar>>>> {
+    let mut groups = Vec::new();
+    for text in texts {
+        let group: Vec<&str> = text.split('=').map(str::trim).collect();
+        if group.len() < 2 || group.iter().any(|name| name.is_empty()) {
+            faults.push(Fault::at(flag, format!("`{text}` is no group of slots")).help("write R1=R2"));
+        }
+        groups.push(group.into_iter().map(Scalar::from).collect());
+    }
+    (!groups.is_empty()).then(|| Given::flag(flag, groups))
+}

@@ -1,0 +1,499 @@
+//! The one record from which every renderer works.
+
+use std::f64::consts::TAU;
+
+use serde::Serialize;
+
+use super::numbers::error_in_words;
+use crate::parts::Shelf;
+use crate::search::{Chosen, End, Outcome, Part, Problem, Proof, Row, SectionProblem, SectionSummary};
+use crate::target::{Criterion, Figures, Measure, Shape, Weights};
+use crate::units::{Kind, format_part};
+
+/// The name and version of the JSON format: keys may be added to it, none is renamed or removed.
+pub const FORMAT: &str = "roundwell-shortlist/1";
+
+/// A finished search: what was asked, how far it was searched, what was found. Units are in the names of the fields;
+/// what is not known is `None`, never a number.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct Record {
+    /// [`FORMAT`].
+    pub format: &'static str,
+    /// The title of the job.
+    pub title: String,
+    /// How far it was searched, and what that proves.
+    pub search: SearchRecord,
+    /// What the error of a row is.
+    pub measure: MeasureRecord,
+    /// What was wanted.
+    pub wanted: WantedRecord,
+    /// The sections in signal order.
+    pub sections: Vec<SectionRecord>,
+    /// Rank of the row with the fewest part numbers within the wanted error.
+    pub marked: Option<usize>,
+    /// The rows, best error first.
+    pub shortlist: Vec<RowRecord>,
+    /// Rows to compare with: `ideal parts` (resistors unrounded) and `nearest value to each` (those, each rounded).
+    pub references: Vec<RowRecord>,
+}
+
+/// How far it was searched.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct SearchRecord {
+    /// `exhaustive` or `stopped`.
+    pub proof: &'static str,
+    /// Why it stopped, in words.
+    pub reason: Option<String>,
+    /// What the proof is about: `whole job` for one section, otherwise `each section by itself`.
+    pub scope: &'static str,
+    /// Sets evaluated.
+    pub sets: u64,
+    /// Nodes of the search tree visited.
+    pub nodes: u64,
+    /// How long it took, s.
+    pub seconds: f64,
+    /// Whether anything lies within the error limit; otherwise the rows are the nearest that exist.
+    pub within_limit: bool,
+    /// Each section's own search.
+    pub sections: Vec<SectionSearch>,
+}
+
+/// How far one section was searched.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct SectionSearch {
+    /// The section.
+    pub name: String,
+    /// `exhaustive` or `stopped`.
+    pub proof: &'static str,
+    /// Where an exhaustive search ended: `all-counts`, `resolution` or `count-limit`.
+    pub end: Option<&'static str>,
+    /// Every smaller number of part numbers was searched to its end, where the search was stopped.
+    pub complete_below: Option<usize>,
+    /// The proof in words.
+    pub statement: String,
+    /// How many combinations of values there are.
+    pub combinations: Option<f64>,
+    /// Sets evaluated.
+    pub sets: u64,
+    /// Nodes visited.
+    pub nodes: u64,
+    /// The error limit in force in the end, in the unit of the measure.
+    pub error_limit: Option<f64>,
+    /// The section's own front.
+    pub front: Vec<FrontPoint>,
+    /// Slots that do not reach the response.
+    pub silent: Vec<String>,
+    /// Slots that can be swapped without a change of the response.
+    pub interchangeable: Vec<String>,
+    /// Inequalities of the circuit that the shelf cannot meet for this target.
+    pub unmet: Vec<String>,
+}
+
+/// A point of a section's own front.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct FrontPoint {
+    /// Part numbers.
+    pub part_numbers: usize,
+    /// The best error with so many, in the unit of the measure.
+    pub error: Option<f64>,
+}
+
+/// What the error is.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct MeasureRecord {
+    /// `decibel`, `vector` or `weighted`.
+    pub name: &'static str,
+    /// The definition in words.
+    pub definition: &'static str,
+    /// The unit of `ranking_error`: `dB`, or empty for a plain ratio.
+    pub unit: &'static str,
+    /// The weights of f0, Q, gain and fz of the weighted measure.
+    pub weights: Option<[f64; 4]>,
+    /// The band, Hz.
+    pub band_hz: [f64; 2],
+    /// How far under the largest |H*| in the band the floor lies, dB.
+    pub floor_db: f64,
+    /// Whether the best flat gain offset is taken out.
+    pub ignore_gain: bool,
+}
+
+/// What was wanted; errors in the unit of the measure.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct WantedRecord {
+    /// The error that is good enough.
+    pub wanted_error: f64,
+    /// Nothing worse is listed unless nothing better exists.
+    pub error_limit: f64,
+    /// The front ends where the best error falls below this.
+    pub error_resolution: f64,
+    /// No set may need more part numbers.
+    pub max_part_numbers: Option<usize>,
+    /// The range for the geometric mean of the resistances of each section, Ω.
+    pub impedance_ohm: Option<[f64; 2]>,
+}
+
+/// A section as it was asked for.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct SectionRecord {
+    /// Its name.
+    pub name: String,
+    /// The ideal figures.
+    pub target: TargetRecord,
+    /// The circuit.
+    pub circuit: String,
+    /// The output taken.
+    pub output: String,
+    /// What may go into the slots; slots with the same shelf together.
+    pub shelves: Vec<ShelfRecord>,
+    /// Groups of slots that carry one value.
+    pub equal: Vec<Vec<String>>,
+}
+
+/// The ideal figures of a section.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct TargetRecord {
+    /// The shape in words.
+    pub shape: &'static str,
+    /// Pole frequency, Hz.
+    pub f0_hz: f64,
+    /// Pole quality factor, for second order.
+    pub q: Option<f64>,
+    /// Signed gain.
+    pub gain: f64,
+    /// Zero frequency, Hz, of a notch.
+    pub fz_hz: Option<f64>,
+}
+
+/// A shelf in short.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct ShelfRecord {
+    /// The slots that it is for.
+    pub slots: Vec<String>,
+    /// Resistors or capacitors.
+    pub kind: Kind,
+    /// How many values it has.
+    pub values: usize,
+    /// The smallest value, Ω or F.
+    pub from: f64,
+    /// The largest value, Ω or F.
+    pub to: f64,
+    /// Both in IEC 60062 notation.
+    #[serde(skip)]
+    pub range: [String; 2],
+}
+
+/// One set for the whole job.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct RowRecord {
+    /// The place in the shortlist, from 1; references have none.
+    pub rank: Option<usize>,
+    /// The name of a reference.
+    pub name: Option<&'static str>,
+    /// Response error, dB.
+    pub response_error_db: Option<f64>,
+    /// The error by which the row is ranked, in the unit of the measure.
+    pub ranking_error: Option<f64>,
+    /// Where that error is largest, Hz.
+    pub error_at_hz: Option<f64>,
+    /// The flat gain factor that was taken out, where one was.
+    pub gain_offset: Option<f64>,
+    /// The largest relative miss in f0, Q, gain and fz over all sections, a plain ratio.
+    pub worst_miss: Option<f64>,
+    /// How many different parts must be bought.
+    pub part_numbers: Option<usize>,
+    /// How many parts sit on the board.
+    pub placed_parts: usize,
+    /// Whether it is not on the front but listed because alternatives were asked for.
+    pub alternative: bool,
+    /// Whether the row is proved to be the best of its kind.
+    pub proved: bool,
+    /// The sections in signal order.
+    pub sections: Vec<ChosenRecord>,
+}
+
+/// One section of a row.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct ChosenRecord {
+    /// Name of the section.
+    pub name: String,
+    /// Its circuit.
+    pub circuit: String,
+    /// The output taken.
+    pub output: String,
+    /// What the parts give.
+    pub achieved: Achieved,
+    /// Geometric mean of the resistances, Ω.
+    pub impedance_ohm: Option<f64>,
+    /// All impedance levels at which this set exists on the shelf, Ω, ascending.
+    pub levels_ohm: Vec<f64>,
+    /// The parts in slot order.
+    pub parts: Vec<PartRecord>,
+}
+
+/// Figures that parts give.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct Achieved {
+    /// Pole frequency, Hz.
+    pub f0_hz: Option<f64>,
+    /// Pole quality factor.
+    pub q: Option<f64>,
+    /// Signed gain.
+    pub gain: Option<f64>,
+    /// Zero frequency, Hz, of a notch.
+    pub fz_hz: Option<f64>,
+}
+
+/// One slot of a row.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct PartRecord {
+    /// The slot.
+    pub slot: String,
+    /// Resistor or capacitor.
+    pub kind: Kind,
+    /// Its value, Ω or F.
+    pub value: f64,
+    /// The value in IEC 60062 notation; `None` for a value that cannot be bought.
+    pub notation: Option<String>,
+    /// The unrounded value that belongs here, Ω or F.
+    pub ideal: Option<f64>,
+    /// What it is made of: one piece for a single part, none for a value that cannot be bought.
+    pub made_of: Vec<PieceRecord>,
+}
+
+/// A part to buy.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct PieceRecord {
+    /// Its value, Ω or F.
+    pub value: f64,
+}
+
+/// A number that is one.
+fn known(number: f64) -> Option<f64> {
+    number.is_finite().then_some(number)
+}
+
+impl Record {
+    /// The record of a search that took `seconds`.
+    pub fn new(problem: &Problem, outcome: &Outcome, seconds: f64) -> Record {
+        let references = [("ideal parts", &outcome.ideal), ("nearest value to each", &outcome.nearest)];
+        let row = |row: &Row, rank, name| RowRecord::new(problem, row, rank, name);
+        Record {
+            format: FORMAT,
+            title: problem.title.clone(),
+            search: SearchRecord::new(problem, outcome, seconds),
+            measure: MeasureRecord::new(problem),
+            wanted: WantedRecord {
+                wanted_error: problem.goals.wanted_error,
+                error_limit: problem.goals.error_limit,
+                error_resolution: problem.goals.error_resolution,
+                max_part_numbers: problem.goals.max_part_numbers,
+                impedance_ohm: problem.goals.impedance.map(|(from, to)| [from, to]),
+            },
+            sections: problem.sections.iter().map(SectionRecord::new).collect(),
+            marked: outcome.marked.map(|index| index + 1),
+            shortlist: outcome.rows.iter().zip(1..).map(|(found, rank)| row(found, Some(rank), None)).collect(),
+            references: references
+                .into_iter()
+                .filter_map(|(name, found)| Some(row(found.as_ref()?, None, Some(name))))
+                .collect(),
+        }
+    }
+
+    /// The row with the fewest part numbers within the wanted error.
+    pub fn marked_row(&self) -> Option<&RowRecord> {
+        self.shortlist.iter().find(|row| row.rank == self.marked && row.rank.is_some())
+    }
+}
+
+impl SearchRecord {
+    fn new(problem: &Problem, outcome: &Outcome, seconds: f64) -> SearchRecord {
+        let unit = problem.criterion.measure.unit();
+        let reason = outcome.stopped.or(outcome.sections.iter().find_map(|section| match section.proof {
+            Proof::Stopped { reason, .. } => Some(reason),
+            Proof::Exhaustive(_) => None,
+        }));
+        SearchRecord {
+            proof: if reason.is_some() { "stopped" } else { "exhaustive" },
+            reason: reason.map(|reason| reason.describe().to_string()),
+            scope: if problem.sections.len() > 1 { "each section by itself" } else { "whole job" },
+            sets: outcome.sets,
+            nodes: outcome.nodes,
+            seconds,
+            within_limit: outcome.within_limit,
+            sections: outcome.sections.iter().map(|section| SectionSearch::new(section, problem, unit)).collect(),
+        }
+    }
+}
+
+impl SectionSearch {
+    fn new(summary: &SectionSummary, problem: &Problem, unit: &str) -> SectionSearch {
+        let (proof, end, complete_below) = match summary.proof {
+            Proof::Exhaustive(End::AllCounts) => ("exhaustive", Some("all-counts"), None),
+            Proof::Exhaustive(End::Resolution) => ("exhaustive", Some("resolution"), None),
+            Proof::Exhaustive(End::CountLimit) => ("exhaustive", Some("count-limit"), None),
+            Proof::Stopped { complete_below, .. } => ("stopped", None, Some(complete_below)),
+        };
+        SectionSearch {
+            name: summary.name.clone(),
+            proof,
+            end,
+            complete_below,
+            statement: statement(summary, problem, unit),
+            combinations: known(summary.combinations),
+            sets: summary.sets,
+            nodes: summary.nodes,
+            error_limit: known(summary.error_limit),
+            front: summary
+                .front
+                .iter()
+                .map(|&(part_numbers, error)| FrontPoint { part_numbers, error: known(error) })
+                .collect(),
+            silent: summary.silent.clone(),
+            interchangeable: summary.interchangeable.clone(),
+            unmet: summary.unmet.clone(),
+        }
+    }
+}
+
+/// What was proved for a section, in words.
+fn statement(summary: &SectionSummary, problem: &Problem, unit: &str) -> String {
+    let within = format!("within {}", error_in_words(unit, summary.error_limit));
+    if !summary.complete {
+        return format!(
+            "not proved: very large families were left out in the search {within}, nearer sets may exist"
+        );
+    }
+    let none = format!("no set {within} on these shelves, in this circuit, beats the front");
+    match &summary.proof {
+        Proof::Exhaustive(End::AllCounts) => format!("proved: {none}"),
+        Proof::Exhaustive(End::Resolution) => {
+            let resolution = error_in_words(unit, problem.goals.error_resolution);
+            format!("proved: {none}, which ends once the error is below the resolution of {resolution}")
+        }
+        Proof::Exhaustive(End::CountLimit) => {
+            let most = problem.goals.max_part_numbers.map_or(String::new(), |most| format!(" of {most}"));
+            format!("proved: {none}, up to the limit{most} on part numbers")
+        }
+        Proof::Stopped { reason, complete_below } => {
+            let done = match complete_below {
+                0..=1 => "nothing is proved".to_string(),
+                2 => "only sets with one part number were searched to the end".to_string(),
+                below => format!("sets with up to {} part numbers were searched to the end", below - 1),
+            };
+            format!("stopped, {}: {done}, better sets with {complete_below} or more may exist", reason.describe())
+        }
+    }
+}
+
+impl MeasureRecord {
+    fn new(problem: &Problem) -> MeasureRecord {
+        let Criterion { measure, floor_db, ignore_gain, .. } = problem.criterion;
+        let targets: Vec<_> = problem.sections.iter().map(|section| section.target.clone()).collect();
+        let (low, high) = problem.criterion.band_for(&targets);
+        let (name, weights) = match measure {
+            Measure::Decibel => ("decibel", None),
+            Measure::Vector => ("vector", None),
+            // A gain that is ignored has no weight.
+            Measure::Weighted(Weights { f0, q, gain, fz }) => {
+                ("weighted", Some([f0, q, if ignore_gain { 0.0 } else { gain }, fz]))
+            }
+        };
+        MeasureRecord {
+            name,
+            definition: measure.describe(),
+            unit: measure.unit(),
+            weights,
+            band_hz: [low / TAU, high / TAU],
+            floor_db,
+            ignore_gain,
+        }
+    }
+}
+
+impl SectionRecord {
+    fn new(section: &SectionProblem) -> SectionRecord {
+        let target = &section.target;
+        let named = |slots: &[usize]| slots.iter().map(|&slot| section.circuit.slots[slot].name.clone()).collect();
+        let mut shelves: Vec<(&Shelf, Vec<usize>)> = Vec::new();
+        for slot in section.output().filled(&section.circuit) {
+            let shelf = &section.shelves[slot];
+            match shelves.iter_mut().find(|(known, _)| *known == shelf) {
+                Some((_, slots)) => slots.push(slot),
+                None => shelves.push((shelf, vec![slot])),
+            }
+        }
+        let shelf = |(shelf, slots): (&Shelf, Vec<usize>)| {
+            let (from, to) = shelf.span();
+            let kind = shelf.kind();
+            ShelfRecord {
+                slots: named(&slots),
+                kind,
+                values: shelf.len(),
+                from: from.to_f64(),
+                to: to.to_f64(),
+                range: [from, to].map(|value| format_part(value, kind)),
+            }
+        };
+        SectionRecord {
+            name: target.name.clone(),
+            target: TargetRecord {
+                shape: Shape::name(target.shape),
+                f0_hz: target.w0 / TAU,
+                q: target.q,
+                gain: target.gain,
+                fz_hz: target.wz.map(|wz| wz / TAU),
+            },
+            circuit: section.circuit.id.clone(),
+            output: section.output().name.clone(),
+            shelves: shelves.into_iter().map(shelf).collect(),
+            equal: section.equal.iter().map(|group| named(group)).collect(),
+        }
+    }
+}
+
+impl RowRecord {
+    fn new(problem: &Problem, row: &Row, rank: Option<usize>, name: Option<&'static str>) -> RowRecord {
+        RowRecord {
+            rank,
+            name,
+            response_error_db: known(row.decibels),
+            ranking_error: known(row.deviation.error),
+            error_at_hz: row.deviation.at.map(|w| w / TAU).and_then(known),
+            gain_offset: row.deviation.offset.and_then(known),
+            worst_miss: known(row.worst_miss),
+            part_numbers: row.part_numbers,
+            placed_parts: row.placed_parts,
+            alternative: row.alternative,
+            proved: row.proved,
+            sections: problem.sections.iter().zip(&row.sections).map(|(s, c)| ChosenRecord::new(s, c)).collect(),
+        }
+    }
+}
+
+impl ChosenRecord {
+    fn new(section: &SectionProblem, chosen: &Chosen) -> ChosenRecord {
+        let Figures { w0, q, gain, wz } = chosen.achieved;
+        let part = |part: &Part| PartRecord {
+            slot: section.circuit.slots[part.slot].name.clone(),
+            kind: part.kind,
+            value: part.value.map_or(part.ideal, |value| value.to_f64()),
+            notation: part.value.map(|value| format_part(value, part.kind)),
+            ideal: known(part.ideal),
+            made_of: part.value.map(|value| PieceRecord { value: value.to_f64() }).into_iter().collect(),
+        };
+        ChosenRecord {
+            name: section.target.name.clone(),
+            circuit: section.circuit.id.clone(),
+            output: section.output().name.clone(),
+            achieved: Achieved {
+                f0_hz: known(w0 / TAU),
+                q: q.and_then(known),
+                gain: known(gain),
+                fz_hz: wz.map(|wz| wz / TAU).and_then(known),
+            },
+            impedance_ohm: chosen.impedance.and_then(known),
+            levels_ohm: chosen.levels.clone(),
+            parts: chosen.parts.iter().map(part).collect(),
+        }
+    }
+}

@@ -1,0 +1,363 @@
+//! The record as a table for people: plain text without colour.
+
+use std::collections::BTreeMap;
+use std::io::{self, Write};
+
+use super::layout::{Column, grid, paragraph, unbroken};
+use super::numbers::{count, decimal_column, error_in_words, level, percent, rounded_part, short, span_of_time};
+use super::record::{
+    Achieved, ChosenRecord, MeasureRecord, PartRecord, Record, RowRecord, SectionSearch, TargetRecord,
+};
+use crate::units::{Kind, Value, format_part, parse_part};
+
+/// Writes the record as text of at most `width` characters to the line (40 at least; a name that is longer is not
+/// broken).
+///
+/// # Errors
+/// Those of the writer.
+pub fn write_table(record: &Record, width: usize, out: &mut dyn Write) -> io::Result<()> {
+    let blocks = [
+        if record.title.is_empty() { String::new() } else { record.title.clone() + "\n" },
+        searched(record, width),
+        outcome(record, width),
+        figures(record, width),
+        values(record, width),
+        detail(record, width),
+        paragraph(
+            "",
+            "Values are computed for ideal parts and ideal op-amps: tolerances, op-amp bandwidth and the layout come on \
+             top. Measure the build.",
+            width,
+        ),
+    ];
+    let filled: Vec<String> = blocks.into_iter().filter(|block| !block.is_empty()).collect();
+    out.write_all(filled.join("\n").as_bytes())
+}
+
+/// What was searched, and what that proves.
+fn searched(record: &Record, width: usize) -> String {
+    let mut text = String::new();
+    for (section, search) in record.sections.iter().zip(&record.search.sections) {
+        let target = target_in_words(&section.target);
+        let line = format!("{target}; circuit {}, output {}", section.circuit, section.output);
+        text += &paragraph(&format!("{}: ", section.name), &line, width);
+        let indent = "   ";
+        for shelf in &section.shelves {
+            let slots = shelf.slots.join(" ");
+            let line = match (shelf.values, &shelf.range) {
+                (1, [value, _]) => format!("{slots}: {value} only"),
+                (values, [from, to]) => format!("{slots}: {values} {} values, {from} to {to}", shelf.kind.name()),
+            };
+            text += &paragraph(indent, &line, width);
+        }
+        for group in &section.equal {
+            text += &paragraph(indent, &format!("{} carry the same value", group.join(" and ")), width);
+        }
+        for line in search_in_words(search) {
+            text += &paragraph(indent, &line, width);
+        }
+    }
+    let search = &record.search;
+    let total = format!(
+        "{} sets evaluated, {} nodes visited, {}",
+        count(search.sets),
+        count(search.nodes),
+        span_of_time(search.seconds)
+    );
+    text += &paragraph("Search: ", &total, width);
+    if record.sections.len() > 1 {
+        let caution = "The sections were chosen one at a time and only then combined, part numbers counted over the whole \
+                       board: a better board may exist.";
+        text += &paragraph("        ", caution, width);
+    }
+    if let Some(reason) = &search.reason {
+        text += &paragraph("        ", &format!("Stopped: {reason}. What is not proved is marked ?."), width);
+    }
+    text + &paragraph("Error:  ", &measure_in_words(&record.measure), width)
+}
+
+fn target_in_words(target: &TargetRecord) -> String {
+    let mut words = format!("{}, {}", target.shape, unbroken(&format!("f0 {}", level(target.f0_hz, 6, "Hz"))));
+    if let Some(q) = target.q {
+        words += &format!(", {}", unbroken(&format!("Q {}", short(q, 6))));
+    }
+    words += &format!(", {}", unbroken(&format!("gain {}", short(target.gain, 6))));
+    if let Some(fz) = target.fz_hz {
+        words += &format!(", {}", unbroken(&format!("fz {}", level(fz, 6, "Hz"))));
+    }
+    words
+}
+
+fn search_in_words(search: &SectionSearch) -> Vec<String> {
+    let mut lines = Vec::new();
+    if !search.silent.is_empty() {
+        lines.push(format!("without effect on the response: {}", search.silent.join(", ")));
+    }
+    if !search.interchangeable.is_empty() {
+        let pairs: Vec<String> = search.interchangeable.iter().map(|pair| unbroken(pair)).collect();
+        lines.push(format!("interchangeable, listed once: {}", pairs.join(", ")));
+    }
+    lines.extend(search.combinations.map(|combinations| match combinations {
+        few if few < 1e9 => format!("{} combinations", count(few as u64)),
+        many => format!("{many:.1e} combinations"),
+    }));
+    lines.push(search.statement.clone());
+    lines
+}
+
+fn measure_in_words(measure: &MeasureRecord) -> String {
+    let [low, high] = measure.band_hz.map(|hertz| unbroken(&level(hertz, 4, "Hz")));
+    let mut words = measure.definition.to_string();
+    if let Some([f0, q, gain, fz]) = measure.weights {
+        return format!("{words}: weights f0 {f0}, Q {q}, gain {gain}, fz {fz}; response error {low} to {high}");
+    }
+    words += &format!(" {low} to {high}; floor {} dB under the largest |H*|", measure.floor_db);
+    if measure.ignore_gain {
+        words += "; the best flat gain offset is taken out";
+    }
+    words
+}
+
+/// What was found, in a sentence or two, where it is less than what was wanted.
+fn outcome(record: &Record, width: usize) -> String {
+    let mut text = String::new();
+    let [limit, wanted] = [record.wanted.error_limit, record.wanted.wanted_error]
+        .map(|error| unbroken(&error_in_words(record.measure.unit, error)));
+    if record.shortlist.is_empty() {
+        let line = match record.search.reason {
+            Some(_) => "Nothing was found before the search ended.",
+            None => "No set exists on these shelves that gives this response in this circuit.",
+        };
+        text += &paragraph("", line, width);
+    } else if !record.search.within_limit {
+        let which = if record.search.reason.is_some() { "the nearest found" } else { "the nearest that exist" };
+        let line = format!("Nothing lies within the error limit of {limit}: these are {which}.");
+        text += &paragraph("", &line, width);
+    } else if record.marked.is_none() {
+        text += &paragraph("", &format!("No row lies within the wanted error of {wanted}."), width);
+    }
+    for search in &record.search.sections {
+        for unmet in &search.unmet {
+            text += &paragraph(&format!("{}: ", search.name), unmet, width);
+        }
+    }
+    if (record.shortlist.is_empty() || !record.search.within_limit) && record.search.reason.is_none() {
+        let advice = "A wider or finer shelf, another circuit, or a larger error_limit may help.";
+        text += &paragraph("", advice, width);
+    }
+    text
+}
+
+/// The rows of the table: shortlist, then references.
+fn rows(record: &Record) -> impl Iterator<Item = &RowRecord> {
+    record.shortlist.iter().chain(&record.references)
+}
+
+/// Rank and marks, or the name of a reference.
+fn label(record: &Record, row: &RowRecord) -> String {
+    let Some(rank) = row.rank else { return row.name.unwrap_or_default().to_string() };
+    let marks = [(row.rank == record.marked, '*'), (row.alternative, '+'), (is_open(record, row), '?')];
+    let marks: String = marks.into_iter().filter(|(holds, _)| *holds).map(|(_, mark)| mark).collect();
+    format!("{rank:>2} {marks}").trim_end().to_string()
+}
+
+/// Whether a row may be beaten because a search was stopped. What the choice of one section at a time leaves open holds
+/// for all rows alike, and is said once.
+fn is_open(record: &Record, row: &RowRecord) -> bool {
+    record.search.reason.is_some() && !row.proved
+}
+
+/// The table of figures by row, and what its marks mean.
+fn figures(record: &Record, width: usize) -> String {
+    if rows(record).next().is_none() {
+        return String::new();
+    }
+    let collect = |figure: &dyn Fn(&RowRecord) -> Option<f64>| rows(record).map(figure).collect::<Vec<_>>();
+    let mut columns = vec![Column::left("row", rows(record).map(|row| label(record, row)).collect())];
+    if record.measure.name != "decibel" {
+        let errors = collect(&|row| row.ranking_error.map(|error| 100.0 * error));
+        columns.push(Column::right(format!("{}\nerror %", record.measure.name), decimal_column(&errors)));
+    }
+    let counted = |number: Option<usize>| number.map_or("-".to_string(), |number| number.to_string());
+    columns.push(Column::right("response\nerror dB", decimal_column(&collect(&|row| row.response_error_db))));
+    if rows(record).any(|row| row.error_at_hz.is_some()) {
+        columns.push(Column::right("largest\nat", rows(record).map(worst_frequency).collect()));
+    }
+    columns.extend([
+        Column::right("worst\nmiss %", decimal_column(&collect(&|row| row.worst_miss.map(|miss| 100.0 * miss)))),
+        Column::right("part\nnumbers", rows(record).map(|row| counted(row.part_numbers)).collect()),
+        Column::right("placed\nparts", rows(record).map(|row| row.placed_parts.to_string()).collect()),
+    ]);
+    let mut text = grid(&columns, 1, width);
+    if record.marked.is_some() {
+        let wanted = error_in_words(record.measure.unit, record.wanted.wanted_error);
+        text += &paragraph("* ", &format!("fewest part numbers within the wanted error of {wanted}"), width);
+    }
+    if record.shortlist.iter().any(|row| row.alternative) {
+        text += &paragraph("+ ", "an alternative: another row is as good or better in every respect", width);
+    }
+    if record.shortlist.iter().any(|row| is_open(record, row)) {
+        text += &paragraph("? ", "not proved: the search ended before better sets were ruled out", width);
+    }
+    text
+}
+
+/// Where the error is largest; nowhere in particular where it is nothing but rounding.
+fn worst_frequency(row: &RowRecord) -> String {
+    let hertz = row.error_at_hz.filter(|_| row.ranking_error.is_some_and(|error| error > 1e-9));
+    hertz.map_or("-".to_string(), |hertz| level(hertz, 3, "Hz"))
+}
+
+/// The values by slot, one table a section.
+fn values(record: &Record, width: usize) -> String {
+    if rows(record).next().is_none() {
+        return String::new();
+    }
+    let mut blocks = Vec::new();
+    for (index, section) in record.sections.iter().enumerate() {
+        let chosen: Vec<(String, &ChosenRecord)> =
+            rows(record).filter_map(|row| Some((label(record, row), row.sections.get(index)?))).collect();
+        let Some((_, first)) = chosen.first() else { continue };
+        let short_label = |label: &String| match label.as_str() {
+            "ideal parts" => "ideal".to_string(),
+            "nearest value to each" => "nearest".to_string(),
+            label => label.to_string(),
+        };
+        let mut columns = vec![Column::left("row", chosen.iter().map(|(label, _)| short_label(label)).collect())];
+        for slot in first.parts.iter().map(|part| &part.slot) {
+            let cell = |chosen: &ChosenRecord| chosen.parts.iter().find(|part| part.slot == *slot).map(notation);
+            let cells = chosen.iter().map(|(_, chosen)| cell(chosen).unwrap_or_default()).collect();
+            columns.push(Column::right(slot.clone(), cells));
+        }
+        let ohms = |value: f64| level(value, 2, "").replace(' ', "");
+        let here = |chosen: &ChosenRecord| chosen.impedance_ohm.map_or("-".to_string(), ohms);
+        columns.push(Column::right("level", chosen.iter().map(|(_, chosen)| here(chosen)).collect()));
+        // Levels are decades apart, so two digits tell them apart.
+        let others = |chosen: &ChosenRecord| {
+            let names = chosen.levels_ohm.iter().map(|&level| ohms(level)).filter(|name| *name != here(chosen));
+            names.collect::<Vec<_>>().join(" ")
+        };
+        let others: Vec<String> = chosen.iter().map(|(_, chosen)| others(chosen)).collect();
+        if others.iter().any(|names| !names.is_empty()) {
+            columns.push(Column::left("also at", others));
+        }
+        let title = format!("Values of section {} ({}), level in ohms:", section.name, section.circuit);
+        blocks.push(paragraph("", &title, width) + &grid(&columns, 1, width));
+    }
+    blocks.join("\n")
+}
+
+/// The value as it is printed on parts; one that cannot be bought is rounded to four digits.
+fn notation(part: &PartRecord) -> String {
+    part.notation.clone().unwrap_or_else(|| rounded_part(part.value, part.kind))
+}
+
+/// What to buy for the row that is taken first, and what it gives.
+fn detail(record: &Record, width: usize) -> String {
+    let Some(row) = record.marked_row().or(record.shortlist.first()) else { return String::new() };
+    let mut bought: BTreeMap<(Kind, Value), usize> = BTreeMap::new();
+    for part in row.sections.iter().flat_map(|section| &section.parts) {
+        if let Some(value) = part.notation.as_ref().and_then(|text| parse_part(text, part.kind).ok()) {
+            *bought.entry((part.kind, value)).or_default() += 1;
+        }
+    }
+    let rank = row.rank.map_or(String::new(), |rank| format!(" {rank}"));
+    let mut text = format!("Row{rank} needs, and gives:\n");
+    for kind in [Kind::Resistor, Kind::Capacitor] {
+        let of_kind = bought.iter().filter(|((known, _), _)| *known == kind);
+        let list: Vec<String> = of_kind
+            .map(|((kind, value), times)| unbroken(&format!("{times} x {}", format_part(*value, *kind))))
+            .collect();
+        if !list.is_empty() {
+            text += &paragraph(&format!("  {}: ", kind.letter()), &list.join(", "), width);
+        }
+    }
+    for (section, chosen) in record.sections.iter().zip(&row.sections) {
+        let figures = achieved_in_words(&chosen.achieved, &section.target);
+        text += &paragraph(&format!("  {}: ", section.name), &figures, width);
+    }
+    if let Some(offset) = row.gain_offset {
+        let line = format!("a flat gain offset of {} dB was taken out", short(-20.0 * offset.log10(), 3));
+        text += &paragraph("  ", &line, width);
+    }
+    text
+}
+
+/// Achieved figures with their distance from the target.
+fn achieved_in_words(achieved: &Achieved, target: &TargetRecord) -> String {
+    let figure = |name: &str, shown: String, value: f64, ideal: f64| {
+        unbroken(&format!("{name} {shown} ({})", percent(value / ideal - 1.0)))
+    };
+    let mut words = Vec::new();
+    if let Some(f0) = achieved.f0_hz {
+        words.push(figure("f0", level(f0, 6, "Hz"), f0, target.f0_hz));
+    }
+    if let (Some(q), Some(ideal)) = (achieved.q, target.q) {
+        words.push(figure("Q", short(q, 5), q, ideal));
+    }
+    if let Some(gain) = achieved.gain {
+        words.push(figure("gain", short(gain, 5), gain, target.gain));
+    }
+    if let (Some(fz), Some(ideal)) = (achieved.fz_hz, target.fz_hz) {
+        words.push(figure("fz", level(fz, 6, "Hz"), fz, ideal));
+    }
+    words.join(", ")
+}
+
+#[cfg(test)]
+mod tests {
+    #![allow(clippy::unwrap_used)]
+    use super::*;
+    use crate::report::sample;
+
+    fn shown(record: &Record, width: usize) -> String {
+        let mut bytes = Vec::new();
+        write_table(record, width, &mut bytes).unwrap();
+        String::from_utf8(bytes).unwrap()
+    }
+
+    #[test]
+    fn one_section() {
+        insta::assert_snapshot!(shown(&sample::record(), 80));
+    }
+
+    #[test]
+    fn two_sections() {
+        insta::assert_snapshot!(shown(&sample::two_sections(), 80));
+    }
+
+    #[test]
+    fn a_search_that_was_stopped() {
+        insta::assert_snapshot!(shown(&sample::stopped(), 80));
+    }
+
+    #[test]
+    fn another_measure() {
+        insta::assert_snapshot!(shown(&sample::vector(), 80));
+    }
+
+    #[test]
+    fn nothing_at_all_is_said_plainly() {
+        let mut record = sample::stopped();
+        record.shortlist.clear();
+        record.references.clear();
+        let text = shown(&record, 80);
+        assert!(
+            text.contains("Nothing was found before the search ended") && text.contains("C1/C2 >= 4 Q^2"),
+            "{text}"
+        );
+        assert!(!text.contains("row"), "{text}");
+    }
+
+    #[test]
+    fn lines_keep_the_width_and_are_plain() {
+        for record in [sample::record(), sample::two_sections(), sample::stopped(), sample::vector()] {
+            for width in [40, 60, 80, 132] {
+                let text = shown(&record, width);
+                assert!(text.lines().all(|line| line.chars().count() <= width), "{width}\n{text}");
+                assert!(!text.contains('\u{1b}') && text.is_ascii(), "{text}");
+                assert!(text.lines().all(|line| line.trim_end() == line), "{text}");
+            }
+        }
+    }
+}

@@ -1,0 +1,79 @@
+//! The README shows what the program prints: every console block is run, only the time taken may differ.
+
+#![allow(missing_docs, clippy::unwrap_used)]
+
+use std::process::Command;
+
+const README: &str = include_str!("../README.md");
+
+/// The fenced blocks of one language.
+fn blocks(language: &str) -> Vec<&'static str> {
+    let fence = format!("```{language}\n");
+    README.split(fence.as_str()).skip(1).map(|rest| rest.split("```").next().unwrap()).collect()
+}
+
+/// Words of a command line; double quotes hold words together.
+fn words(line: &str) -> Vec<String> {
+    let quoted = line.split('"').enumerate();
+    let parts = quoted.flat_map(|(i, part)| {
+        if i % 2 == 1 { vec![part.to_string()] } else { part.split_whitespace().map(String::from).collect() }
+    });
+    parts.collect()
+}
+
+/// The text with the time taken, which differs from run to run, replaced.
+fn masked(text: &str) -> String {
+    let mask = |line: &str| match line.split_once(" nodes visited, ") {
+        Some((before, _)) => format!("{before} nodes visited, some time"),
+        None => line.to_string(),
+    };
+    text.lines().map(mask).collect::<Vec<_>>().join("\n")
+}
+
+#[test]
+fn console_blocks_are_what_the_program_prints() {
+    let mut run = 0;
+    for block in blocks("console") {
+        let (first, rest) = block.split_once('\n').unwrap();
+        let command = first.strip_prefix("$ ").unwrap();
+        if command.starts_with("cargo") {
+            continue;
+        }
+        let (code, expected) = match rest.strip_prefix("? ").and_then(|r| r.split_once('\n')) {
+            Some((code, expected)) => (code.parse().unwrap(), expected),
+            None => (0, rest),
+        };
+        let output = Command::new(env!("CARGO_BIN_EXE_roundwell"))
+            .args(&words(command)[1..])
+            .current_dir(env!("CARGO_MANIFEST_DIR"))
+            .output()
+            .unwrap();
+        assert_eq!(output.status.code(), Some(code), "{command}");
+        let printed = String::from_utf8(output.stdout).unwrap();
+        assert_eq!(masked(&printed), masked(expected), "{command}");
+        run += 1;
+    }
+    assert!(run >= 4, "{run} blocks were run");
+}
+
+#[test]
+fn the_job_shown_is_the_example() {
+    let job = std::fs::read_to_string("data/examples/vibration-logger.ron").unwrap();
+    assert_eq!(blocks("ron"), [job]);
+}
+
+/// Every example job runs and finds something.
+#[test]
+fn every_example_finds_something() {
+    let mut run = 0;
+    for entry in std::fs::read_dir("data/examples").unwrap() {
+        let path = entry.unwrap().path();
+        if path.extension().is_some_and(|e| e == "ron") {
+            let status =
+                Command::new(env!("CARGO_BIN_EXE_roundwell")).arg("shortlist").arg(&path).output().unwrap().status;
+            assert_eq!(status.code(), Some(0), "{}", path.display());
+            run += 1;
+        }
+    }
+    assert!(run >= 3);
+}
