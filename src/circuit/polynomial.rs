@@ -44,11 +44,11 @@ impl Polynomial {
     }
 
     fn add_term(&mut self, exponents: Vec<u8>, coefficient: i64) {
-        let entry = self.terms.entry(exponents);
-        let value = entry.or_insert(0);
-        *value += coefficient;
-        if *value == 0 {
-            self.terms.retain(|_, c| *c != 0);
+        let sum = self.terms.get(&exponents).copied().unwrap_or(0) + coefficient;
+        if sum == 0 {
+            self.terms.remove(&exponents);
+        } else {
+            self.terms.insert(exponents, sum);
         }
     }
 

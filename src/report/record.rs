@@ -267,6 +267,13 @@ pub struct PieceRecord {
     pub value: f64,
 }
 
+/// The frequency of an angular frequency that came from one: what the detour over 2π left in the last digits is taken
+/// out, so that 1 kHz is 1000 and not 999.9999999999999.
+fn hertz(w: f64) -> f64 {
+    let f = w / TAU;
+    format!("{f:.13e}").parse().unwrap_or(f)
+}
+
 /// A number that is one.
 fn known(number: f64) -> Option<f64> {
     number.is_finite().then_some(number)
@@ -403,7 +410,7 @@ impl MeasureRecord {
             definition: measure.describe(),
             unit: measure.unit(),
             weights,
-            band_hz: [low / TAU, high / TAU],
+            band_hz: [hertz(low), hertz(high)],
             floor_db,
             ignore_gain,
         }
@@ -438,10 +445,10 @@ impl SectionRecord {
             name: target.name.clone(),
             target: TargetRecord {
                 shape: Shape::name(target.shape),
-                f0_hz: target.w0 / TAU,
+                f0_hz: hertz(target.w0),
                 q: target.q,
                 gain: target.gain,
-                fz_hz: target.wz.map(|wz| wz / TAU),
+                fz_hz: target.wz.map(hertz),
             },
             circuit: section.circuit.id.clone(),
             output: section.output().name.clone(),

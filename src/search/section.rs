@@ -183,7 +183,10 @@ impl Search<'_> {
                 }
             }
         }
-        members.into_par_iter().filter_map(|member| Family::new(self.model, member, &windows)).collect()
+        // A stop leaves families out here; the level that follows then reports it.
+        let build =
+            |member| self.monitor.stop().is_none().then(|| Family::new(self.model, member, &windows)).flatten();
+        members.into_par_iter().filter_map(build).collect()
     }
 
     /// How many partial sets a level is expected to have.
@@ -195,6 +198,9 @@ impl Search<'_> {
     /// Searches all families for sets up to an error; `None` if it was stopped. What was found until then is kept.
     fn search_level(&mut self, families: &[Family], count: usize, level: f64) -> Option<()> {
         let windows = self.windows(level);
+        if self.monitor.stop().is_some() {
+            return None;
+        }
         let plans: Vec<_> = families.par_iter().filter_map(|f| f.plan(&windows)).collect();
         // Large families are divided by the values of their first variable, small ones are done in one go.
         const LARGE: f64 = 20_000.0;
