@@ -41,7 +41,7 @@
 //! let values: Vec<String> = (best.sections[0].parts.iter())
 //!     .filter_map(|part| Some(format_part(part.value?, part.kind)))
 //!     .collect();
-//! assert_eq!(values, ["3k6", "5k1", "62n"]);
+//! assert_eq!(values, ["6k8", "75k", "33n", "1n5"]);
 //! assert!(best.proved && best.deviation.error < 0.1);
 //! # Ok(())
 //! # }

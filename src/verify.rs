@@ -56,6 +56,14 @@ pub enum VerifyError {
         /// What the search said.
         claimed: usize,
     },
+    /// A limit of the job is not kept.
+    #[error("row {row} does not keep the job's limit on {what}")]
+    Limit {
+        /// Row, counted from 1.
+        row: usize,
+        /// What is limited.
+        what: &'static str,
+    },
     /// Rows out of order, or one that another beats in everything.
     #[error("row {row} does not belong where it stands: {why}")]
     Order {
@@ -103,6 +111,16 @@ fn check_row(problem: &Problem, yardstick: &Yardstick, number: usize, row: &Row)
     for (what, found, claimed) in counts {
         if found != claimed {
             return Err(VerifyError::Count { row: number, what, found, claimed });
+        }
+    }
+    if problem.goals.max_part_numbers.is_some_and(|most| bought.len() > most) {
+        return Err(VerifyError::Limit { row: number, what: "part numbers" });
+    }
+    if let Some((low, high)) = problem.goals.impedance {
+        // The level is a rounded mean; the range was compared with the same mean.
+        let outside = |z: f64| z < low * (1.0 - 1e-9) || z > high * (1.0 + 1e-9);
+        if row.sections.iter().any(|chosen| chosen.impedance.is_some_and(outside)) {
+            return Err(VerifyError::Limit { row: number, what: "impedance" });
         }
     }
     let found = error(problem, yardstick, row);
@@ -157,7 +175,7 @@ fn error(problem: &Problem, yardstick: &Yardstick, row: &Row) -> f64 {
             .iter()
             .enumerate()
             .map(section)
-            .fold(0.0, |worst, e| if e > worst { e } else { worst });
+            .fold(0.0, |worst, e| if e > worst || e.is_nan() { e } else { worst });
     }
     yardstick.frequencies().map(at).fold(0.0, |worst, e| if e > worst || e.is_nan() { e } else { worst })
 }

@@ -54,6 +54,12 @@ pub struct SearchRecord {
     pub seconds: f64,
     /// Whether anything lies within the error limit; otherwise the rows are the nearest that exist.
     pub within_limit: bool,
+    /// How many more rows there are than were wanted.
+    pub more_rows: usize,
+    /// The fewest part numbers of what was found, where the limit on part numbers is below that.
+    pub fewest_found: Option<usize>,
+    /// Whether sets of the sections were left out when they were combined, being too many.
+    pub thinned: bool,
     /// Each section's own search.
     pub sections: Vec<SectionSearch>,
 }
@@ -327,6 +333,9 @@ impl SearchRecord {
             nodes: outcome.nodes,
             seconds,
             within_limit: outcome.within_limit,
+            more_rows: outcome.more_rows,
+            fewest_found: outcome.fewest_found,
+            thinned: outcome.thinned,
             sections: outcome.sections.iter().map(|section| SectionSearch::new(section, problem, unit)).collect(),
         }
     }
@@ -365,11 +374,6 @@ impl SectionSearch {
 /// What was proved for a section, in words.
 fn statement(summary: &SectionSummary, problem: &Problem, unit: &str) -> String {
     let within = format!("within {}", error_in_words(unit, summary.error_limit));
-    if !summary.complete {
-        return format!(
-            "not proved: very large families were left out in the search {within}, nearer sets may exist"
-        );
-    }
     let none = format!("no set {within} on these shelves, in this circuit, beats the front");
     match &summary.proof {
         Proof::Exhaustive(End::AllCounts) => format!("proved: {none}"),
@@ -383,9 +387,9 @@ fn statement(summary: &SectionSummary, problem: &Problem, unit: &str) -> String 
         }
         Proof::Stopped { reason, complete_below } => {
             let done = match complete_below {
-                0..=1 => "nothing is proved".to_string(),
-                2 => "only sets with one part number were searched to the end".to_string(),
-                below => format!("sets with up to {} part numbers were searched to the end", below - 1),
+                // One resistor and one capacitor value at least: before that there is nothing to rule out.
+                0..=2 => "nothing is proved yet".to_string(),
+                below => format!("all sets with up to {} part numbers are searched or ruled out", below - 1),
             };
             format!("stopped, {}: {done}, better sets with {complete_below} or more may exist", reason.describe())
         }

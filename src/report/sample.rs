@@ -145,7 +145,6 @@ fn outcome(problem: &Problem) -> Outcome {
         nodes: 789,
         error_limit: 0.25,
         front: front.clone(),
-        complete: true,
         silent: vec!["RA".to_string(), "RB".to_string()],
         interchangeable: Vec::new(),
         unmet: Vec::new(),
@@ -157,6 +156,9 @@ fn outcome(problem: &Problem) -> Outcome {
         marked: (0..rows.len())
             .filter(|&index| rows[index].deviation.error <= problem.goals.wanted_error)
             .min_by_key(|&index| rows[index].part_numbers),
+        more_rows: 0,
+        fewest_found: None,
+        thinned: false,
         within_limit: true,
         stopped: None,
         sets: 123_456 * sections.len() as u64,

@@ -69,6 +69,10 @@ fn searched(record: &Record, width: usize) -> String {
         let caution = "The sections were chosen one at a time and only then combined, part numbers counted over the whole \
                        board: a better board may exist.";
         text += &paragraph("        ", caution, width);
+        if search.thinned {
+            let caution = "There were too many combinations: some sets of the sections were left out.";
+            text += &paragraph("        ", caution, width);
+        }
     }
     if let Some(reason) = &search.reason {
         text += &paragraph("        ", &format!("Stopped: {reason}. What is not proved is marked ?."), width);
@@ -123,14 +127,22 @@ fn outcome(record: &Record, width: usize) -> String {
     let mut text = String::new();
     let [limit, wanted] = [record.wanted.error_limit, record.wanted.wanted_error]
         .map(|error| unbroken(&error_in_words(record.measure.unit, error)));
-    if record.shortlist.is_empty() {
+    if let (true, Some(fewest)) = (record.shortlist.is_empty(), record.search.fewest_found) {
+        let most = record.wanted.max_part_numbers.map_or(String::new(), |most| format!(" of {most}"));
+        let line = format!("Nothing found keeps the limit{most} on part numbers: the fewest are {fewest}.");
+        text += &paragraph("", &line, width);
+    } else if record.shortlist.is_empty() {
         let line = match record.search.reason {
             Some(_) => "Nothing was found before the search ended.",
             None => "No set exists on these shelves that gives this response in this circuit.",
         };
         text += &paragraph("", line, width);
     } else if !record.search.within_limit {
-        let which = if record.search.reason.is_some() { "the nearest found" } else { "the nearest that exist" };
+        let which = match (&record.search.reason, record.sections.len()) {
+            (None, 1) => "the nearest that exist",
+            (None, _) => "the nearest found, with the sections chosen one at a time",
+            (Some(_), _) => "the nearest found",
+        };
         let line = format!("Nothing lies within the error limit of {limit}: these are {which}.");
         text += &paragraph("", &line, width);
     } else if record.marked.is_none() {
@@ -195,6 +207,10 @@ fn figures(record: &Record, width: usize) -> String {
     }
     if record.shortlist.iter().any(|row| row.alternative) {
         text += &paragraph("+ ", "an alternative: another row is as good or better in every respect", width);
+    }
+    if record.search.more_rows > 0 {
+        let line = format!("{} more, not listed: ask for more rows", record.search.more_rows);
+        text += &paragraph("  ", &line, width);
     }
     if record.shortlist.iter().any(|row| is_open(record, row)) {
         text += &paragraph("? ", "not proved: the search ended before better sets were ruled out", width);

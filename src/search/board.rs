@@ -8,12 +8,12 @@ use crate::circuit::Need;
 use crate::target::{Biquad, Deviation, Figures, Measure, Section, Yardstick};
 use crate::units::{Kind, Value};
 
-use super::canonical::{impedance, in_ohms, shifted, with_silent};
+use super::canonical::{canonical, impedance, in_ohms, shifted, with_silent};
 use super::front::{ErrorKey, Found, Proof};
 use super::ideal::{self, Ideal};
 use super::limits::{Monitor, StopReason};
 use super::model::{Group, Model};
-use super::problem::{Problem, SectionProblem};
+use super::problem::{Goals, Problem, SectionProblem};
 use super::section::{self, SectionFront};
 
 /// One part of a row.
@@ -79,9 +79,6 @@ pub struct SectionSummary {
     pub nodes: u64,
     /// The error limit in force in the end: larger than the job's where nothing lay within that.
     pub error_limit: f64,
-    /// Whether nothing was left out: beyond the job's error limit, where nothing lies within it, families that would take
-    /// too long are.
-    pub complete: bool,
     /// The section's own front: part numbers and error, the latter in the unit of the measure.
     pub front: Vec<(usize, f64)>,
     /// Names of the slots that do not reach the response.
@@ -97,6 +94,12 @@ pub struct SectionSummary {
 pub struct Outcome {
     /// The rows by error, then part numbers: the front, with alternatives where asked for.
     pub rows: Vec<Row>,
+    /// How many more rows there are than the job wants listed.
+    pub more_rows: usize,
+    /// The fewest part numbers of any board that was found, where the job's limit is below that and so nothing is listed.
+    pub fewest_found: Option<usize>,
+    /// Whether some sets of the sections' fronts were left out when the sections were combined, being too many.
+    pub thinned: bool,
     /// Unrounded parts: capacitors on the shelf where possible, resistors exact.
     pub ideal: Option<Row>,
     /// The ideal parts, each rounded to the nearest value of its shelf.
@@ -122,11 +125,14 @@ struct Prepared<'a> {
     front: SectionFront,
 }
 
-/// Where several sections have more combinations of front rows than this, rows of the largest error are left out.
-const MOST_COMBINATIONS: usize = 50_000;
+/// Where several sections have more combinations of sets than this, their lists are thinned.
+const MOST_COMBINATIONS: usize = 20_000;
+
+/// How many combinations are formed even when the job was stopped meanwhile.
+const LEAST_COMBINATIONS: usize = 500;
 
 /// Where the sections of one combination can stand at more combinations of impedance levels, only the preferred is taken.
-const MOST_LEVELS: usize = 2_000;
+const MOST_LEVELS: usize = 256;
 
 /// Searches a job. The outcome is the same for any number of threads.
 ///
@@ -144,27 +150,28 @@ pub fn shortlist(problem: &Problem, monitor: &dyn Monitor) -> Outcome {
             let model = Model::new(section)?;
             let yardstick = Yardstick::new(std::slice::from_ref(&section.target), criterion);
             let front = section::search(&model, &yardstick, &problem.goals, monitor)?;
-            Some(Prepared { problem: section, model, front })
+            let mut prepared = Prepared { problem: section, model, front };
+            prepared.fall_back(&yardstick, &problem.goals);
+            Some(prepared)
         })
         .collect();
-    let board = Board { problem, whole: &whole, prepared: &prepared };
-    let (rows, within_limit) = if prepared.len() == problem.sections.len() { board.rows() } else { (vec![], false) };
-    let wanted = ErrorKey::new(problem.goals.wanted_error);
-    let marked = (0..rows.len())
-        .filter(|&i| ErrorKey::new(rows[i].deviation.error) <= wanted)
-        .min_by_key(|&i| (rows[i].part_numbers, rows[i].placed_parts, i));
+    let board = Board { problem, whole: &whole, prepared: &prepared, monitor };
+    let listed = if prepared.len() == problem.sections.len() { board.rows() } else { Listed::default() };
     let (ideal, nearest) = board.references();
     let stopped = prepared.iter().find_map(|p| match p.front.proof {
         Proof::Stopped { reason, .. } => Some(reason),
         Proof::Exhaustive(_) => None,
     });
     Outcome {
-        rows,
+        rows: listed.rows,
+        more_rows: listed.more,
+        fewest_found: listed.fewest_found,
+        thinned: listed.thinned,
         ideal,
         nearest,
         sections: prepared.iter().map(Prepared::summary).collect(),
-        marked,
-        within_limit,
+        marked: listed.marked,
+        within_limit: listed.within_limit,
         stopped,
         sets: prepared.iter().map(|p| p.front.sets).sum(),
         nodes: prepared.iter().map(|p| p.front.nodes).sum(),
@@ -172,6 +179,24 @@ pub fn shortlist(problem: &Problem, monitor: &dyn Monitor) -> Outcome {
 }
 
 impl Prepared<'_> {
+    /// Gives a section for which a stopped search found nothing its rounded ideal parts, so that what was found for the
+    /// other sections is not lost.
+    fn fall_back(&mut self, yardstick: &Yardstick, goals: &Goals) {
+        if !self.front.rows.is_empty() || matches!(self.front.proof, Proof::Exhaustive(_)) {
+            return;
+        }
+        let ignore_gain = yardstick.criterion().ignore_gain;
+        let found = ideal::solve(&self.model, &self.problem.target, ignore_gain).and_then(|ideal| {
+            let rounded = self.rounded(&ideal);
+            let mut found = canonical(&self.model, goals, &rounded[..self.model.active])?;
+            let response = self.model.biquad(&found.values[..self.model.active]);
+            found.error = yardstick.deviation(&[response]).error;
+            found.key = ErrorKey::new(found.error);
+            found.error.is_finite().then_some(found)
+        });
+        self.front.rows.extend(found.map(|found| vec![found]));
+    }
+
     fn summary(&self) -> SectionSummary {
         let circuit = &self.problem.circuit;
         let names =
@@ -192,7 +217,6 @@ impl Prepared<'_> {
             sets: self.front.sets,
             nodes: self.front.nodes,
             error_limit: self.front.limit,
-            complete: !self.front.left_out,
             front: self.front.rows.iter().map(|row| (row[0].part_numbers, row[0].error)).collect(),
             silent: silent.map(|&s| circuit.slots[s].name.clone()).collect(),
             interchangeable: self.model.symmetries.iter().map(swap).collect(),
@@ -251,53 +275,87 @@ struct Board<'a> {
     problem: &'a Problem,
     whole: &'a Yardstick,
     prepared: &'a [Prepared<'a>],
+    monitor: &'a dyn Monitor,
+}
+
+/// The rows of a shortlist and what is to be said of them; see [`Outcome`].
+#[derive(Default)]
+struct Listed {
+    rows: Vec<Row>,
+    more: usize,
+    fewest_found: Option<usize>,
+    thinned: bool,
+    marked: Option<usize>,
+    within_limit: bool,
 }
 
 impl Board<'_> {
-    /// The rows of the shortlist, and whether they lie within the error limit.
-    fn rows(&self) -> (Vec<Row>, bool) {
-        let mut combinations = self.combinations();
+    /// The rows of the shortlist.
+    fn rows(&self) -> Listed {
+        let goals = &self.problem.goals;
+        let (mut combinations, thinned) = self.combinations();
+        let fewest = combinations.iter().map(|c| c.part_numbers).min();
+        combinations.retain(|c| goals.max_part_numbers.is_none_or(|most| c.part_numbers <= most));
         combinations.sort_by(|a, b| {
             let rank = |c: &Combination| (c.key, c.part_numbers, c.placed_parts);
             rank(a).cmp(&rank(b)).then_with(|| a.values.cmp(&b.values))
         });
-        let limit = ErrorKey::new(self.problem.goals.error_limit);
-        let within = combinations.first().is_some_and(|best| best.key <= limit);
-        combinations.retain(|c| !within || c.key <= limit);
+        let limit = ErrorKey::new(goals.error_limit);
+        let within_limit = combinations.first().is_some_and(|best| best.key <= limit);
+        combinations.retain(|c| !within_limit || c.key <= limit);
         // By ascending error, a combination is on the front if it needs fewer parts of some sort than all before it.
         let mut front: Vec<(usize, usize)> = Vec::new();
         let mut alternatives: BTreeMap<usize, usize> = BTreeMap::new();
-        let mut rows = Vec::new();
+        let mut picked: Vec<(&Combination, bool)> = Vec::new();
         for c in &combinations {
             let beaten = front.iter().any(|&(n, p)| n <= c.part_numbers && p <= c.placed_parts);
             if beaten {
                 let used = alternatives.entry(c.part_numbers).or_insert(0);
                 let same = front.iter().any(|&(n, _)| n == c.part_numbers);
-                if !same || *used >= self.problem.goals.alternatives {
+                if !same || *used >= goals.alternatives {
                     continue;
                 }
                 *used += 1;
             } else {
                 front.push((c.part_numbers, c.placed_parts));
             }
-            rows.push(self.row(c, beaten));
+            picked.push((c, beaten));
         }
-        rows.truncate(self.problem.goals.rows);
-        (rows, within)
+        let wanted = ErrorKey::new(goals.wanted_error);
+        let marked = (0..picked.len())
+            .filter(|&i| picked[i].0.key <= wanted)
+            .min_by_key(|&i| (picked[i].0.part_numbers, picked[i].0.placed_parts, i));
+        // Where there are too many, alternatives go first, then rows from the end, but never the marked one.
+        let mut kept: Vec<usize> = (0..picked.len()).collect();
+        kept.sort_by_key(|&i| (Some(i) != marked, picked[i].1, i));
+        kept.truncate(goals.rows);
+        kept.sort_unstable();
+        Listed {
+            rows: kept.iter().map(|&i| self.row(picked[i].0, picked[i].1)).collect(),
+            more: picked.len() - kept.len(),
+            fewest_found: fewest.filter(|_| combinations.is_empty()),
+            thinned,
+            marked: marked.and_then(|m| kept.iter().position(|&i| i == m)),
+            within_limit,
+        }
     }
 
-    /// All combinations of one set of each section's front, or as many as are affordable.
-    fn combinations(&self) -> Vec<Combination> {
+    /// All combinations of one set of each section, or, where they are too many, of thinned lists; and whether they were.
+    fn combinations(&self) -> (Vec<Combination>, bool) {
         let mut lists: Vec<Vec<(usize, usize)>> = (self.prepared.iter())
             .map(|p| {
                 let rows = p.front.rows.iter().enumerate();
                 rows.flat_map(|(i, row)| (0..row.len()).map(move |k| (i, k))).collect()
             })
             .collect();
-        while lists.iter().map(Vec::len).product::<usize>() > MOST_COMBINATIONS {
-            if let Some(longest) = lists.iter_mut().max_by_key(|list| list.len()) {
-                longest.remove(0);
-            }
+        let size = |lists: &[Vec<(usize, usize)>]| lists.iter().map(Vec::len).fold(1usize, usize::saturating_mul);
+        let mut thinned = false;
+        while size(&lists) > MOST_COMBINATIONS {
+            // The longest list gives up its last alternative, then its row with the most part numbers.
+            let Some(longest) = lists.iter_mut().max_by_key(|list| list.len()) else { break };
+            let last = longest.iter().rposition(|&(_, k)| k > 0).unwrap_or(longest.len() - 1);
+            longest.remove(last);
+            thinned = true;
         }
         let mut choices: Vec<Vec<(usize, usize)>> = vec![Vec::new()];
         for list in &lists {
@@ -306,7 +364,11 @@ impl Board<'_> {
                 .flat_map(|head| list.iter().map(move |&next| head.iter().copied().chain([next]).collect::<Vec<_>>()))
                 .collect();
         }
-        choices.into_par_iter().map(|origin| self.combination(origin)).collect()
+        // What was found by the time of a stop is still combined, as far as that takes no time.
+        let combine = |(i, origin): (usize, Vec<(usize, usize)>)| {
+            (i < LEAST_COMBINATIONS || self.monitor.stop().is_none()).then(|| self.combination(origin))
+        };
+        (choices.into_par_iter().enumerate().filter_map(combine).collect(), thinned)
     }
 
     fn combination(&self, origin: Vec<(usize, usize)>) -> Combination {

@@ -10,6 +10,8 @@ pub enum StopReason {
     TimeLimit,
     /// The user interrupted it.
     Interrupted,
+    /// Nothing lay within the job's error limit, and beyond it families that would take too long were left out.
+    TooLarge,
 }
 
 impl StopReason {
@@ -18,6 +20,9 @@ impl StopReason {
         match self {
             StopReason::TimeLimit => "the time limit was reached",
             StopReason::Interrupted => "it was interrupted",
+            StopReason::TooLarge => {
+                "nothing lies within the error limit, and very large families beyond it were left out"
+            }
         }
     }
 }

@@ -1,6 +1,8 @@
 //! One section made ready for the search: groups of slots that carry one value, and which of them matter.
 
-use crate::circuit::Transfer;
+use std::collections::BTreeSet;
+
+use crate::circuit::{Polynomial, Transfer};
 use crate::parts::Shelf;
 use crate::target::Biquad;
 use crate::units::{Kind, Value};
@@ -124,8 +126,8 @@ impl Model {
 
 /// Removes a variable on which the ratio does not depend: the leading coefficient in it, of all coefficients alike.
 fn without_factor(transfer: &Transfer, variable: usize) -> Transfer {
-    let degree = |list: &[crate::circuit::Polynomial]| list.iter().map(|p| p.degree_in(variable)).max().unwrap_or(0);
-    let lead = |list: &[crate::circuit::Polynomial]| {
+    let degree = |list: &[Polynomial]| list.iter().map(|p| p.degree_in(variable)).max().unwrap_or(0);
+    let lead = |list: &[Polynomial]| {
         let top = degree(list);
         list.iter().map(|p| p.coefficient_of(variable, top)).collect()
     };
@@ -169,10 +171,12 @@ fn symmetries(transfer: &Transfer, groups: &[Group]) -> Vec<Vec<usize>> {
     closure(found, n)
 }
 
-/// The group that the permutations generate, the identity left out, in a fixed order.
+/// The group that the permutations generate, the identity left out, in a fixed order; or only the permutations
+/// themselves where the group is very large. Any part of it is sound: it then lists some sets twice.
 fn closure(generators: Vec<Vec<usize>>, n: usize) -> Vec<Vec<usize>> {
+    const LARGEST: usize = 1_000;
     let identity: Vec<usize> = (0..n).collect();
-    let mut all = std::collections::BTreeSet::from([identity.clone()]);
+    let mut all = BTreeSet::from([identity.clone()]);
     let mut open = vec![identity.clone()];
     while let Some(order) = open.pop() {
         for generator in &generators {
@@ -180,6 +184,9 @@ fn closure(generators: Vec<Vec<usize>>, n: usize) -> Vec<Vec<usize>> {
             if all.insert(product.clone()) {
                 open.push(product);
             }
+        }
+        if all.len() > LARGEST {
+            return generators;
         }
     }
     all.remove(&identity);

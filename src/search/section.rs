@@ -11,7 +11,7 @@ use crate::units::{Kind, Value};
 use super::canonical::{canonical, distinct};
 use super::family::{Family, Visitor};
 use super::front::{Best, End, ErrorKey, Found, Proof};
-use super::limits::{Monitor, Progress};
+use super::limits::{Monitor, Progress, StopReason};
 use super::model::{Model, partitions};
 use super::problem::Goals;
 use super::window::{Window, WindowMaker};
@@ -29,8 +29,6 @@ pub(crate) struct SectionFront {
     pub nodes: u64,
     /// The error limit that was in force in the end: larger than the job's where nothing lay within that.
     pub limit: f64,
-    /// Whether families were left out beyond the job's error limit, because they would have taken too long.
-    pub left_out: bool,
 }
 
 /// By how much the error limit grows from level to level while nothing is found.
@@ -44,7 +42,7 @@ const DEARER: f64 = 1.5;
 const FARTHEST: f64 = 300.0;
 
 /// Expected partial sets beyond which a level is left out, once nothing was found within the job's error limit.
-const AFFORDABLE: f64 = 3e8;
+const AFFORDABLE: f64 = 3e7;
 
 /// Searches one section.
 pub(crate) fn search(
@@ -64,7 +62,7 @@ pub(crate) fn search(
         best: Best::new(goals.alternatives + 1),
         sets: 0,
         nodes: 0,
-        left_out: false,
+        left_out: None,
     };
     Some(search.run())
 }
@@ -80,26 +78,24 @@ struct Search<'a> {
     best: Best,
     sets: u64,
     nodes: u64,
-    left_out: bool,
+    /// The smallest number of different values for which something was left out.
+    left_out: Option<usize>,
 }
 
 impl Search<'_> {
     fn run(&mut self) -> SectionFront {
         let mut limit = self.goals.error_limit;
         let mut proof = self.walk_counts(self.goals.error_resolution, limit, f64::INFINITY);
-        while self.best.front().is_empty() && matches!(proof, Proof::Exhaustive(_)) && limit < FARTHEST {
+        let halted = |proof: &Proof| matches!(proof, Proof::Stopped { .. });
+        while self.best.front().is_empty() && !halted(&proof) && limit < FARTHEST {
             let from = limit;
             limit *= LEVEL_FACTOR;
             proof = self.walk_counts(from, limit, AFFORDABLE);
         }
-        SectionFront {
-            rows: self.best.front(),
-            proof,
-            sets: self.sets,
-            nodes: self.nodes,
-            limit,
-            left_out: self.left_out,
+        if let (Some(complete_below), false) = (self.left_out, halted(&proof)) {
+            proof = Proof::Stopped { reason: StopReason::TooLarge, complete_below };
         }
+        SectionFront { rows: self.best.front(), proof, sets: self.sets, nodes: self.nodes, limit }
     }
 
     /// The windows for sets up to an error.
@@ -132,7 +128,7 @@ impl Search<'_> {
             loop {
                 let next = (level * LEVEL_FACTOR).min(cap);
                 if affordable.is_finite() && self.expected(&families, level) > affordable {
-                    self.left_out = true;
+                    self.left_out = Some(self.left_out.map_or(k, |least| least.min(k)));
                     break;
                 }
                 if level < cap && self.expected(&families, next) < DEARER * self.expected(&families, level) {
@@ -140,7 +136,7 @@ impl Search<'_> {
                     continue;
                 }
                 if self.search_level(&families, k, level).is_none() {
-                    let reason = self.monitor.stop().unwrap_or(super::StopReason::Interrupted);
+                    let reason = self.monitor.stop().unwrap_or(StopReason::Interrupted);
                     return Proof::Stopped { reason, complete_below: k };
                 }
                 // A set of this count may also have come from fewer variables and a silent slot: what counts is
@@ -164,6 +160,9 @@ impl Search<'_> {
         let mut members = Vec::new();
         for r in 0..=count {
             for of_resistors in partitions(resistors, r) {
+                if self.monitor.stop().is_some() {
+                    return Vec::new();
+                }
                 for of_capacitors in partitions(capacitors, count - r) {
                     let (mut next_r, mut next_c) = (of_resistors.iter(), of_capacitors.iter());
                     let member: Vec<usize> = groups
@@ -192,7 +191,8 @@ impl Search<'_> {
     /// How many partial sets a level is expected to have.
     fn expected(&mut self, families: &[Family], level: f64) -> f64 {
         let windows = self.windows(level);
-        families.par_iter().filter_map(|f| Some(f.plan(&windows)?.nodes)).collect::<Vec<_>>().iter().sum()
+        let nodes = |f: &Family| self.monitor.stop().is_none().then(|| Some(f.plan(&windows)?.nodes)).flatten();
+        families.par_iter().filter_map(nodes).collect::<Vec<_>>().iter().sum()
     }
 
     /// Searches all families for sets up to an error; `None` if it was stopped. What was found until then is kept.

@@ -102,9 +102,8 @@ impl<'a> WindowMaker<'a> {
             Measure::Weighted(weights) => self.weighted(&weights, limit),
         };
         for window in &mut windows {
-            let margin = SLACK * window.low.abs().min(window.high.abs());
-            window.low -= margin;
-            window.high += margin;
+            window.low -= SLACK * window.low.abs();
+            window.high += SLACK * window.high.abs();
         }
         // Poles in the left half plane, whatever else holds.
         let order = self.section.shape.order();

@@ -1,5 +1,7 @@
 //! The measure by which a realised cascade is compared with its target.
 
+use num_complex::Complex64;
+
 use super::section::{Biquad, Section};
 
 /// How strongly each relative miss counts in the weighted measure; zero takes a figure out.
@@ -203,7 +205,7 @@ impl Yardstick {
                     .filter_map(|(miss, weight)| miss.filter(|_| weight > 0.0).map(|miss| miss * weight))
                     .sum::<f64>()
             })
-            .fold(0.0, f64::max);
+            .fold(0.0, |worst, error| if error > worst || error.is_nan() { error } else { worst });
         Deviation { error, at: None, offset: None }
     }
 
@@ -273,9 +275,26 @@ impl Yardstick {
         (0.5 * (from + to)).exp()
     }
 
+    /// Whether no flat factor c brings |c H/H* − 1| within `limit` at all frequencies well above the floor: there every
+    /// ratio H/H* must lie within an angle of asin(limit) about the real axis, and the largest and smallest of them
+    /// within (1 + limit)/(1 − limit).
+    fn is_hopeless(&self, achieved: &[Biquad], limit: f64) -> bool {
+        if limit >= 1.0 {
+            return false;
+        }
+        let (mut lowest, mut highest) = (f64::INFINITY, 0.0f64);
+        self.order.iter().map(|&i| &self.grid[i]).filter(|sample| sample.power > self.floor).any(|sample| {
+            let value = |sections: &[Biquad]| sections.iter().map(|h| h.value(sample.w)).product::<Complex64>();
+            let ratio = value(achieved) / value(&self.targets);
+            (lowest, highest) = (lowest.min(ratio.norm()), highest.max(ratio.norm()));
+            ratio.re <= 0.0
+                || ratio.im.abs() > limit * ratio.norm()
+                || highest * (1.0 - limit) > lowest * (1.0 + limit)
+        })
+    }
+
     fn vector(&self, achieved: &[Biquad], limit: f64) -> Option<Deviation> {
-        let value =
-            |sections: &[Biquad], w: f64| sections.iter().map(|h| h.value(w)).product::<num_complex::Complex64>();
+        let value = |sections: &[Biquad], w: f64| sections.iter().map(|h| h.value(w)).product::<Complex64>();
         let off = |w: f64, factor: f64| {
             let ideal = value(&self.targets, w);
             (value(achieved, w) * factor - ideal).norm() / ideal.norm().max(self.floor.sqrt())
@@ -295,14 +314,15 @@ impl Yardstick {
             Some(worst)
         };
         let factor = if self.criterion.ignore_gain {
-            // The largest error is a convex function of the factor; the best one lies near the mean gain ratio.
-            let logs: Vec<f64> = (self.grid.iter().filter(|s| s.power > self.floor))
-                .map(|s| (s.power / power(achieved, s.x)).ln())
-                .filter(|log| log.is_finite())
-                .collect();
-            let centre = 0.5 * logs.iter().sum::<f64>() / logs.len() as f64;
+            if self.is_hopeless(achieved, limit) {
+                return None;
+            }
+            // The largest error is a convex function of the factor; the best one lies among the gain ratios.
+            let ratios = self.grid.iter().filter(|s| s.power > self.floor);
+            let logs = ratios.map(|s| 0.5 * (s.power / power(achieved, s.x)).ln()).filter(|log| log.is_finite());
+            let (low, high) = logs.fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), log| (l.min(log), h.max(log)));
             let worst = |u: f64| largest(u.exp(), f64::INFINITY).map_or(f64::NEG_INFINITY, |(e, _)| -e);
-            golden_maximum((centre - 1.0, centre + 1.0), worst).exp()
+            golden_maximum((low, high), worst).exp()
         } else {
             1.0
         };
@@ -379,13 +399,13 @@ fn spread_order(len: usize) -> Vec<usize> {
         .collect()
 }
 
-/// Where `f` is largest in the interval, by golden section: exact to about 1e-7 of the interval for one hump.
+/// Where `f` is largest in the interval, by golden section: to rounding for one hump.
 fn golden_maximum(span: (f64, f64), f: impl Fn(f64) -> f64) -> f64 {
     const RATIO: f64 = 0.618_033_988_749_894_8;
     let (mut a, mut b) = span;
     let (mut c, mut d) = (b - RATIO * (b - a), a + RATIO * (b - a));
     let (mut fc, mut fd) = (f(c), f(d));
-    for _ in 0..34 {
+    for _ in 0..70 {
         if fc >= fd {
             (b, d, fd) = (d, c, fc);
             c = b - RATIO * (b - a);
