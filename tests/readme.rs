@@ -53,13 +53,19 @@ fn console_blocks_are_what_the_program_prints() {
         assert_eq!(masked(&printed), masked(expected), "{command}");
         run += 1;
     }
-    assert!(run >= 4, "{run} blocks were run");
+    assert!(run >= 6, "{run} blocks were run");
 }
 
 #[test]
 fn the_job_shown_is_the_example() {
     let job = std::fs::read_to_string("data/examples/vibration-logger.ron").unwrap();
     assert_eq!(blocks("ron"), [job]);
+}
+
+#[test]
+fn the_stock_list_shown_is_the_example() {
+    let list = std::fs::read_to_string("data/examples/parts-tin.csv").unwrap();
+    assert_eq!(blocks("csv"), [list]);
 }
 
 /// Every example job runs and finds something.

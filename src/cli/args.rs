@@ -5,6 +5,7 @@ use std::path::PathBuf;
 use clap::builder::PossibleValuesParser;
 use clap::{Args, Parser, Subcommand, ValueEnum};
 
+use crate::parts::STOCK_COLUMNS;
 use crate::report::CSV_COLUMNS;
 use crate::target::Shape;
 
@@ -39,6 +40,9 @@ pub enum Command {
     /// Show a series of preferred values, or the neighbours of values in it.
     #[command(allow_negative_numbers = true)]
     Values(ValuesArgs),
+    /// Read back a stock list: what was understood, what is wrong, what is odd.
+    #[command(after_help = STOCK_HELP, after_long_help = stock_long_help())]
+    Stock(StockArgs),
 }
 
 const SHORTLIST_HELP: &str = "\
@@ -60,6 +64,23 @@ fn shortlist_long_help() -> String {
     )
 }
 
+const STOCK_HELP: &str = "\
+A stock list is CSV in UTF-8, with comma, semicolon or tab between the cells. Its header names the
+columns, in any order; only kind and value are required.
+
+Examples:
+  roundwell stock drawer.csv
+  roundwell stock - --format json --out stock.json
+
+Exit codes: 0 every line can be used, 2 bad input or usage, or a line that cannot be used;
+the other lines are shown all the same.";
+
+/// The long help of `stock`: with the columns of a stock list.
+fn stock_long_help() -> String {
+    let columns = STOCK_COLUMNS.map(|(words, meaning)| format!("  {}\n      {meaning}", words.join(", ")));
+    format!("{STOCK_HELP}\n\nColumns, each with the other words for it:\n{}", columns.join("\n"))
+}
+
 /// How a shortlist is written.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq, ValueEnum)]
 pub enum Format {
@@ -72,9 +93,9 @@ pub enum Format {
     Csv,
 }
 
-/// How a circuit is written.
+/// How a circuit or a stock list is written.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq, ValueEnum)]
-pub enum CircuitFormat {
+pub enum ShowFormat {
     /// Text to read.
     #[default]
     Table,
@@ -240,7 +261,7 @@ pub struct CircuitsArgs {
     pub circuit: Option<String>,
     /// How to write it.
     #[arg(long, value_enum, default_value_t)]
-    pub format: CircuitFormat,
+    pub format: ShowFormat,
     /// Characters to the line.
     #[arg(long, value_name = "COUNT", default_value_t = 80, value_parser = clap::value_parser!(u16).range(40..=1000))]
     pub width: u16,
@@ -257,6 +278,22 @@ pub struct ValuesArgs {
     /// What the values are: R for ohms, C for farads [default: what the unit or prefix says].
     #[arg(long, value_parser = ["R", "C"], ignore_case = true)]
     pub kind: Option<String>,
+}
+
+/// `stock`.
+#[derive(Debug, Args)]
+pub struct StockArgs {
+    /// The stock list (CSV), or - for standard input.
+    pub file: PathBuf,
+    /// How to write it.
+    #[arg(long, value_enum, default_value_t)]
+    pub format: ShowFormat,
+    /// Write to this file in place of standard output; it is replaced only when all is written.
+    #[arg(long, value_name = "FILE")]
+    pub out: Option<PathBuf>,
+    /// Characters to the line of a table.
+    #[arg(long, value_name = "COUNT", default_value_t = 80, value_parser = clap::value_parser!(u16).range(40..=1000))]
+    pub width: u16,
 }
 
 /// The name of a shape on the command line.

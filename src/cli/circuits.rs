@@ -6,7 +6,7 @@ use std::sync::Arc;
 use serde::Serialize;
 
 use super::FOUND;
-use super::args::{CircuitFormat, CircuitsArgs};
+use super::args::{CircuitsArgs, ShowFormat};
 use super::failure::Failure;
 use super::files::{is_file_name, read_circuit};
 use super::output::Output;
@@ -22,13 +22,13 @@ use crate::units::Kind;
 pub fn run(args: &CircuitsArgs) -> Result<u8, Failure> {
     let width = usize::from(args.width);
     let text = match (&args.circuit, args.format) {
-        (None, CircuitFormat::Table) => overview(library(), width),
-        (None, CircuitFormat::Json) => json(&library().iter().map(CircuitRecord::new).collect::<Vec<_>>()),
+        (None, ShowFormat::Table) => overview(library(), width),
+        (None, ShowFormat::Json) => json(&library().iter().map(CircuitRecord::new).collect::<Vec<_>>()),
         (Some(name), format) => {
             let circuit = chosen(name)?;
             match format {
-                CircuitFormat::Table => one(&circuit, width),
-                CircuitFormat::Json => json(&CircuitRecord::new(&circuit)),
+                ShowFormat::Table => one(&circuit, width),
+                ShowFormat::Json => json(&CircuitRecord::new(&circuit)),
             }
         }
     };

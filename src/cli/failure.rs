@@ -48,7 +48,7 @@ impl Failure {
     pub fn reading(path: &Path, error: &io::Error) -> Failure {
         let message = format!("cannot read {}: {}", path.display(), plain(error));
         let help = match error.kind() {
-            io::ErrorKind::NotFound => "check the path; `roundwell --help` shows how a job is given",
+            io::ErrorKind::NotFound => "check the path; `roundwell --help` shows the commands",
             io::ErrorKind::IsADirectory => "name a file in it",
             _ => "",
         };

@@ -1,4 +1,4 @@
-//! Reading: job files and circuit files.
+//! Reading: job files, circuit files and stock lists.
 
 use std::collections::BTreeMap;
 use std::fs::File;
@@ -18,6 +18,18 @@ const LONGEST: u64 = 4_000_000;
 /// # Errors
 /// What cannot be opened or read, is a directory, is too long, or is not UTF-8.
 pub fn read_text(path: &Path) -> Result<String, Failure> {
+    String::from_utf8(read_bytes(path)?).map_err(|error| {
+        let place = error.utf8_error().valid_up_to();
+        let message = format!("{} is not UTF-8 text: see byte {}", path.display(), place + 1);
+        Failure::input(Fault::at("", message).help("save it as UTF-8"))
+    })
+}
+
+/// Reads a file, from standard input if the path is `-`.
+///
+/// # Errors
+/// What cannot be opened or read, is a directory, or is too long.
+pub fn read_bytes(path: &Path) -> Result<Vec<u8>, Failure> {
     let mut bytes = Vec::new();
     let read = if path == Path::new("-") {
         io::stdin().lock().take(LONGEST + 1).read_to_end(&mut bytes)
@@ -29,11 +41,7 @@ pub fn read_text(path: &Path) -> Result<String, Failure> {
         let message = format!("{} is longer than {LONGEST} bytes", path.display());
         return Err(Failure::input(Fault::at("", message).help("is it a text file?")));
     }
-    String::from_utf8(bytes).map_err(|error| {
-        let place = error.utf8_error().valid_up_to();
-        let message = format!("{} is not UTF-8 text: see byte {}", path.display(), place + 1);
-        Failure::input(Fault::at("", message).help("save it as UTF-8"))
-    })
+    Ok(bytes)
 }
 
 /// Whether a circuit is named by a file.

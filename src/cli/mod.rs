@@ -8,6 +8,7 @@ mod output;
 mod progress;
 mod settings;
 mod shortlist;
+mod stock;
 mod values;
 
 use std::ffi::OsString;
@@ -45,6 +46,7 @@ pub fn run(words: impl IntoIterator<Item = OsString>) -> ExitCode {
         Command::Shortlist(args) => shortlist::run(args),
         Command::Circuits(args) => circuits::run(args),
         Command::Values(args) => values::run(args),
+        Command::Stock(args) => stock::run(args),
     };
     // The panic's own message has been told by then.
     ExitCode::from(match catch_unwind(AssertUnwindSafe(command)) {

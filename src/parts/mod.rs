@@ -1,10 +1,16 @@
-//! The parts that may be bought: preferred number series, and the shelf of values allowed in a slot.
+//! The parts that may be bought or are there: preferred number series, the shelf of values allowed in a slot, and
+//! the stock list of a drawer.
 
 mod series;
 mod shelf;
+mod stock;
 
 pub use series::{Series, UnknownSeries};
 pub use shelf::{Shelf, ShelfError};
+pub use stock::{
+    AtLine, Dielectric, DielectricClass, Film, Price, STOCK_COLUMNS, Stock, StockError, StockFault, StockLine,
+    StockOddity, TemperatureCoefficient, Tolerance, ToleranceError,
+};
 
 use crate::units::Value;
 

@@ -102,6 +102,11 @@ pub fn unbroken(text: &str) -> String {
     text.replace(' ', "\u{a0}")
 }
 
+/// The text with a blank for every control character: such a character would break a column, or change the terminal.
+pub fn printable(text: &str) -> String {
+    text.chars().map(|sign| if sign.is_control() { ' ' } else { sign }).collect()
+}
+
 /// Text broken between words into lines of at most `width` characters, each with a line end; the first begins with
 /// `first`, the others with as many blanks. A word that is longer than a line stays whole, and so does what is
 /// [`unbroken`].
@@ -173,6 +178,11 @@ mod tests {
         let text = grid(&columns, 0, 4 * 18 + 3 * 2);
         assert_eq!(text.lines().count(), 3, "{text}");
         assert!(text.lines().all(|line| line.chars().count() <= 78), "{text}");
+    }
+
+    #[test]
+    fn control_characters_become_blanks() {
+        assert_eq!(printable("a\u{1b}[31m\r\n\u{9b}µ"), "a [31m   µ");
     }
 
     #[test]

@@ -1,10 +1,11 @@
-//! The result of a search as one plain record, and its renderers. Each renderer writes to a writer; none opens files.
+//! The result of a search as one plain record, a stock list as another, and their renderers. Each renderer writes to a writer; none opens files.
 
 mod csv;
 mod json;
 mod layout;
 mod numbers;
 mod record;
+mod stock;
 mod table;
 
 #[cfg(test)]
@@ -12,10 +13,14 @@ mod sample;
 
 pub use csv::{CSV_COLUMNS, write_csv};
 pub use json::write_json;
-pub use layout::{Align, Column, grid, paragraph, unbroken};
+pub use layout::{Align, Column, grid, paragraph, printable, unbroken};
 pub use numbers::{error_in_words, percent};
 pub use record::{
     Achieved, ChosenRecord, FORMAT, FrontPoint, MeasureRecord, PartRecord, PieceRecord, Record, RowRecord,
     SearchRecord, SectionRecord, SectionSearch, ShelfRecord, TargetRecord, WantedRecord,
+};
+pub use stock::{
+    AmountOfStock, DielectricOfStock, KindOfStock, LineOfStock, PriceRecord, STOCK_FORMAT, StockRecord, StockRemark,
+    TemperatureCoefficientRecord, ToleranceRecord, write_stock_json, write_stock_table,
 };
 pub use table::write_table;
