@@ -78,7 +78,7 @@ struct Search<'a> {
     best: Best,
     sets: u64,
     nodes: u64,
-    /// The smallest number of different values for which something was left out.
+    /// The smallest number of part numbers for which something was left out.
     left_out: Option<usize>,
 }
 
@@ -95,7 +95,14 @@ impl Search<'_> {
         if let (Some(complete_below), false) = (self.left_out, halted(&proof)) {
             proof = Proof::Stopped { reason: StopReason::TooLarge, complete_below };
         }
-        SectionFront { rows: self.best.front(), proof, sets: self.sets, nodes: self.nodes, limit }
+        let mut rows = self.best.front();
+        if matches!(proof, Proof::Exhaustive(_)) {
+            // What a silent slot made of sets with fewer values may lie beyond the end of the front.
+            let resolution = ErrorKey::new(self.goals.error_resolution);
+            let end = rows.iter().position(|row| row[0].key < resolution);
+            rows.truncate(end.map_or(rows.len(), |end| end + 1));
+        }
+        SectionFront { rows, proof, sets: self.sets, nodes: self.nodes, limit }
     }
 
     /// The windows for sets up to an error.
@@ -128,7 +135,8 @@ impl Search<'_> {
             loop {
                 let next = (level * LEVEL_FACTOR).min(cap);
                 if affordable.is_finite() && self.expected(&families, level) > affordable {
-                    self.left_out = Some(self.left_out.map_or(k, |least| least.min(k)));
+                    let below = k + extra;
+                    self.left_out = Some(self.left_out.map_or(below, |least| least.min(below)));
                     break;
                 }
                 if level < cap && self.expected(&families, next) < DEARER * self.expected(&families, level) {
@@ -137,7 +145,7 @@ impl Search<'_> {
                 }
                 if self.search_level(&families, k, level).is_none() {
                     let reason = self.monitor.stop().unwrap_or(StopReason::Interrupted);
-                    return Proof::Stopped { reason, complete_below: k };
+                    return Proof::Stopped { reason, complete_below: k + extra };
                 }
                 // A set of this count may also have come from fewer variables and a silent slot: what counts is
                 // whether anything within this level can still be missing.
