@@ -358,6 +358,17 @@ const OWN: &str = r#"(
 "#;
 
 #[test]
+fn control_characters_of_a_circuit_file_are_refused() {
+    let folder = tempfile::tempdir().unwrap();
+    for (what, hostile) in [("Own low-pass", "Own\\u{1b}[31m"), ("\"A1\"", "\"A1\\n\""), ("\"a\"", "\"a\\t\"")] {
+        fs::write(folder.path().join("own.ron"), OWN.replace(what, hostile)).unwrap();
+        let told = refused(&run(folder.path(), "circuits own.ron"));
+        assert!(told.contains("own.ron:") && told.contains("control character"), "{told}");
+        assert!(!told.contains('\u{1b}'), "{told:?}");
+    }
+}
+
+#[test]
 fn a_circuit_file_is_taken_like_any_circuit() {
     let job = r#"(sections: [(shape: FirstOrderLowPass, f0: "1 kHz", circuit: "own.ron")])"#;
     let folder = tempfile::tempdir().unwrap();

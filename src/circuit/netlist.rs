@@ -5,7 +5,7 @@ use thiserror::Error;
 
 use super::nodal::{Network, Transfer};
 use crate::target::Shape;
-use crate::text::{self, Fault};
+use crate::text::{self, CONTROL_HELP, Fault, control_character, with_article};
 use crate::units::Kind;
 
 /// A place for one resistor or capacitor.
@@ -201,6 +201,27 @@ struct RawCircuit {
     notes: Vec<String>,
 }
 
+impl RawCircuit {
+    /// Every text that is shown, with its path. Other names must repeat one of these.
+    fn texts(&self) -> Vec<(String, &str)> {
+        let mut texts = vec![("id".to_string(), self.id.as_str()), ("title".into(), &self.title)];
+        texts.push(("source".into(), &self.source));
+        for (i, (name, from, to)) in self.elements.iter().enumerate() {
+            let members = [name, from, to].into_iter().enumerate();
+            texts.extend(members.map(|(k, text)| (format!("elements[{i}][{k}]"), text.as_str())));
+        }
+        for (i, amp) in self.op_amps.iter().enumerate() {
+            let members = [("name", &amp.name), ("plus", &amp.plus), ("minus", &amp.minus), ("out", &amp.out)];
+            texts.extend(members.map(|(key, text)| (format!("op_amps[{i}].{key}"), text.as_str())));
+        }
+        texts.extend(self.outputs.iter().enumerate().map(|(i, o)| (format!("outputs[{i}].name"), o.name.as_str())));
+        texts.extend(self.needs.iter().enumerate().map(|(i, n)| (format!("needs[{i}].why"), n.why.as_str())));
+        texts.extend(self.sensible_q.iter().map(|q| ("sensible_q.why".into(), q.why.as_str())));
+        texts.extend(self.notes.iter().enumerate().map(|(i, note)| (format!("notes[{i}]"), note.as_str())));
+        texts
+    }
+}
+
 #[derive(Deserialize)]
 #[serde(deny_unknown_fields, rename = "OpAmp")]
 struct RawOpAmp {
@@ -281,6 +302,11 @@ impl Reader {
     }
 
     fn circuit(&mut self, raw: RawCircuit) -> Option<Circuit> {
+        for (path, text) in raw.texts() {
+            if let Some(message) = control_character(text) {
+                self.fault(path, message, CONTROL_HELP);
+            }
+        }
         for (i, (name, from, to)) in raw.elements.iter().enumerate() {
             self.element(i, name, from, to);
         }
@@ -415,7 +441,7 @@ impl Reader {
         let keep: Vec<Option<usize>> = (0..self.slots.len()).map(|s| (!without.contains(&s)).then_some(s)).collect();
         let transfer = full.substituted(&keep, self.slots.len());
         if let Some(problem) = shape_problem(raw.shape, &transfer) {
-            let message = format!("node `{}` does not give a {}: {problem}", raw.node, raw.shape.name());
+            let message = format!("node `{}` does not give {}: {problem}", raw.node, with_article(raw.shape.name()));
             self.fault(format!("{path}.shape"), message, "name the shape that the network gives at this node");
             return None;
         }

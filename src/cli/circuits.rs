@@ -23,12 +23,12 @@ pub fn run(args: &CircuitsArgs) -> Result<u8, Failure> {
     let width = usize::from(args.width);
     let text = match (&args.circuit, args.format) {
         (None, ShowFormat::Table) => overview(library(), width),
-        (None, ShowFormat::Json) => json(&library().iter().map(CircuitRecord::new).collect::<Vec<_>>()),
+        (None, ShowFormat::Json) => json(&library().iter().map(CircuitRecord::new).collect::<Vec<_>>())?,
         (Some(name), format) => {
             let circuit = chosen(name)?;
             match format {
                 ShowFormat::Table => one(&circuit, width),
-                ShowFormat::Json => json(&CircuitRecord::new(&circuit)),
+                ShowFormat::Json => json(&CircuitRecord::new(&circuit))?,
             }
         }
     };
@@ -180,9 +180,9 @@ impl OutputRecord {
     }
 }
 
-fn json(value: &impl Serialize) -> String {
-    // Strings, numbers and lists: nothing that JSON cannot hold.
-    serde_json::to_string_pretty(value).unwrap_or_default() + "\n"
+fn json(value: &impl Serialize) -> Result<String, Failure> {
+    let text = serde_json::to_string_pretty(value).map_err(|error| Failure::Unwritable(error.to_string()))?;
+    Ok(text + "\n")
 }
 
 /// What a slot moves: figures, and the `null` of a notch or the `match` of zeros and poles of an all-pass.
@@ -376,7 +376,7 @@ mod tests {
     #[test]
     fn json_gives_the_netlist() {
         let circuit = find("tow-thomas").unwrap();
-        let value: serde_json::Value = serde_json::from_str(&json(&CircuitRecord::new(circuit))).unwrap();
+        let value: serde_json::Value = serde_json::from_str(&json(&CircuitRecord::new(circuit)).unwrap()).unwrap();
         assert_eq!(value["elements"][0]["name"], "RG");
         assert_eq!(value["elements"][0]["nodes"], serde_json::json!(["in", "n1"]));
         assert_eq!(value["op_amps"][0]["minus"], "n1");

@@ -16,6 +16,8 @@ pub struct Faulty {
     pub text: String,
     /// What is wrong with it.
     pub faults: Vec<Fault>,
+    /// Whether more is checked only once these are put right.
+    pub is_first_round: bool,
 }
 
 /// A command that cannot give a result.
@@ -34,6 +36,8 @@ pub enum Failure {
     },
     /// The result failed its independent check.
     Unverified(VerifyError),
+    /// The result cannot be put into its format.
+    Unwritable(String),
     /// The threads cannot be started.
     Threads(String),
 }
@@ -41,7 +45,12 @@ pub enum Failure {
 impl Failure {
     /// One fault of the command line, or of a file as a whole.
     pub fn input(fault: Fault) -> Failure {
-        Failure::Input(vec![Faulty { file: String::new(), text: String::new(), faults: vec![fault] }])
+        Failure::Input(vec![Faulty {
+            file: String::new(),
+            text: String::new(),
+            faults: vec![fault],
+            is_first_round: false,
+        }])
     }
 
     /// A file that cannot be read.
@@ -58,7 +67,7 @@ impl Failure {
     /// The exit code: 1 for faults of the program, 2 for everything that the user can put right.
     pub fn exit_code(&self) -> u8 {
         match self {
-            Failure::Unverified(_) => INTERNAL_FAULT,
+            Failure::Unverified(_) | Failure::Unwritable(_) => INTERNAL_FAULT,
             Failure::Input(_) | Failure::Output { .. } | Failure::Threads(_) => BAD_INPUT,
         }
     }
@@ -69,12 +78,22 @@ impl Failure {
         match self {
             Failure::Input(texts) => {
                 let shown = texts.iter().map(|text| render(&text.faults, &text.file, &text.text, styled));
-                shown.collect::<Vec<_>>().join("\n")
+                let mut shown = shown.collect::<Vec<_>>().join("\n");
+                if texts.iter().any(|text| text.is_first_round) {
+                    let count: usize = texts.iter().map(|text| text.faults.len()).sum();
+                    let what = if count == 1 { "this is" } else { "these are" };
+                    shown += &format!("\nnote: more is checked once {what} put right\n");
+                }
+                shown
             }
             Failure::Output { target, error, help } => one(format!("cannot write {target}: {}", plain(error)), help),
             Failure::Unverified(error) => {
                 let message = format!("internal fault: the result failed its independent check: {error}");
                 one(message, "no set is shown; please report this with the job")
+            }
+            Failure::Unwritable(error) => {
+                let message = format!("internal fault: the result cannot be put into its format: {error}");
+                one(message, "please report this with the command")
             }
             Failure::Threads(error) => one(format!("cannot start the threads: {error}"), "ask for fewer --threads"),
         }
@@ -93,12 +112,24 @@ fn plain(error: &io::Error) -> String {
 mod tests {
     use super::*;
 
+    fn in_one_line(failure: &Failure) -> String {
+        failure.show(false).split_whitespace().collect::<Vec<_>>().join(" ")
+    }
+
     #[test]
     fn a_result_that_fails_its_check_is_an_internal_fault() {
         let error = VerifyError::Tie { row: 2, section: "A".to_string() };
         let failure = Failure::Unverified(error.clone());
         assert_eq!(failure.exit_code(), 1);
-        assert!(failure.show(false).contains(&error.to_string()) && failure.show(false).contains("no set is shown"));
+        let shown = in_one_line(&failure);
+        assert!(shown.contains(&error.to_string()) && shown.contains("no set is shown"), "{shown}");
+    }
+
+    #[test]
+    fn a_result_that_fits_no_format_is_an_internal_fault() {
+        let failure = Failure::Unwritable("key must be a string".to_string());
+        assert_eq!(failure.exit_code(), 1);
+        assert!(in_one_line(&failure).contains("key must be a string"));
     }
 
     #[test]

@@ -56,7 +56,9 @@ pub fn is_file_name(name: &str) -> bool {
 pub fn read_circuit(path: &Path) -> Result<Circuit, Failure> {
     let text = read_text(path)?;
     Circuit::parse(&text).map_err(|error| {
-        Failure::Input(vec![Faulty { file: path.display().to_string(), text, faults: error.faults }])
+        // What the network gives is checked only where its text is sound, whose faults have no path.
+        let is_first_round = error.faults.iter().all(|fault| fault.path.is_empty());
+        Failure::Input(vec![Faulty { file: path.display().to_string(), text, faults: error.faults, is_first_round }])
     })
 }
 

@@ -47,7 +47,9 @@ impl Settings {
                 }
                 Err(more) => {
                     faults.extend(more);
-                    return Err(source.failure(faults, Vec::new()));
+                    // Where nothing is given, nothing is there to be checked.
+                    let is_first_round = !section_flags(&args.section).is_empty();
+                    return Err(source.failure(faults, Vec::new(), is_first_round));
                 }
             }
         }
@@ -56,7 +58,7 @@ impl Settings {
             Ok(Job { problem, time_limit }) if faults.is_empty() => Ok(Settings { problem, time_limit }),
             resolved => {
                 faults.extend(resolved.err().unwrap_or_default());
-                Err(source.failure(faults, circuits.faulty))
+                Err(source.failure(faults, circuits.faulty, false))
             }
         }
     }
@@ -78,7 +80,7 @@ impl Source {
 
     fn job(&self) -> Result<JobFile, Failure> {
         match self.path {
-            Some(_) => JobFile::parse(&self.text).map_err(|faults| self.failure(faults, Vec::new())),
+            Some(_) => JobFile::parse(&self.text).map_err(|faults| self.failure(faults, Vec::new(), true)),
             None => Ok(JobFile::default()),
         }
     }
@@ -89,12 +91,12 @@ impl Source {
     }
 
     /// Faults of the job, and before them those of the circuit files that it names.
-    fn failure(&self, faults: Vec<Fault>, mut others: Vec<Faulty>) -> Failure {
+    fn failure(&self, faults: Vec<Fault>, mut others: Vec<Faulty>, is_first_round: bool) -> Failure {
         let faults = match self.path {
             Some(_) => located(&self.text, faults),
             None => faults.into_iter().map(without_file).collect(),
         };
-        others.push(Faulty { file: self.name.clone(), text: self.text.clone(), faults });
+        others.push(Faulty { file: self.name.clone(), text: self.text.clone(), faults, is_first_round });
         Failure::Input(others)
     }
 }

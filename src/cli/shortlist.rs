@@ -32,7 +32,7 @@ pub fn run(args: &ShortlistArgs) -> Result<u8, Failure> {
 
     verify(problem, &outcome).map_err(Failure::Unverified)?;
     let record = Record::new(problem, &outcome, seconds);
-    output.write(&written(&record, args.output.format, usize::from(args.output.width)))?;
+    output.write(&written(&record, args.output.format, usize::from(args.output.width))?)?;
     Ok(exit_code(&outcome))
 }
 
@@ -45,13 +45,12 @@ fn exit_code(outcome: &Outcome) -> u8 {
 }
 
 /// The record in the wanted format.
-fn written(record: &Record, format: Format, width: usize) -> Vec<u8> {
+fn written(record: &Record, format: Format, width: usize) -> Result<Vec<u8>, Failure> {
     let mut bytes = Vec::new();
     let result = match format {
         Format::Table => write_table(record, width, &mut bytes),
         Format::Json => write_json(record, &mut bytes),
         Format::Csv => write_csv(record, &mut bytes),
     };
-    debug_assert!(result.is_ok(), "memory takes everything");
-    bytes
+    result.map(|()| bytes).map_err(|error| Failure::Unwritable(error.to_string()))
 }

@@ -24,7 +24,7 @@ pub fn run(args: &StockArgs) -> Result<u8, Failure> {
         Failure::input(Fault::at("", message))
     })?;
     let record = StockRecord::new(&name, &stock);
-    Output::open(args.out.as_deref())?.write(&written(&record, args.format, usize::from(args.width)))?;
+    Output::open(args.out.as_deref())?.write(&written(&record, args.format, usize::from(args.width))?)?;
     match record.faulty_lines {
         0 => Ok(FOUND),
         faulty => {
@@ -40,12 +40,12 @@ fn name_of(path: &Path) -> String {
 }
 
 /// The record in the wanted format.
-fn written(record: &StockRecord, format: ShowFormat, width: usize) -> Vec<u8> {
+fn written(record: &StockRecord, format: ShowFormat, width: usize) -> Result<Vec<u8>, Failure> {
     let mut bytes = Vec::new();
     let result = match format {
         ShowFormat::Table => write_stock_table(record, width, &mut bytes),
         ShowFormat::Json => write_stock_json(record, &mut bytes),
     };
-    debug_assert!(result.is_ok(), "memory takes everything");
-    bytes
+    result.map_err(|error| Failure::Unwritable(error.to_string()))?;
+    Ok(bytes)
 }

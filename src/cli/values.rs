@@ -42,7 +42,12 @@ fn answer(args: &ValuesArgs) -> Result<String, Failure> {
         }
     }
     if !faults.is_empty() {
-        return Err(Failure::Input(vec![Faulty { file: String::new(), text: String::new(), faults }]));
+        return Err(Failure::Input(vec![Faulty {
+            file: String::new(),
+            text: String::new(),
+            faults,
+            is_first_round: false,
+        }]));
     }
     Ok(match (values.as_slice(), series.as_slice()) {
         ([], []) => overview(),
@@ -162,11 +167,14 @@ mod tests {
     #[test]
     fn all_faults_are_told() {
         insta::assert_snapshot!(told(&["ten", "-1"], &["E25", "E12"], Some("R")), @r#"
-        error: --series: "E25" is no series of preferred numbers: write E3, E6, E12, E24, E48, E96 or E192
+        error: --series: "E25" is no series of preferred numbers: write E3, E6, E12,
+               E24, E48, E96 or E192
 
-        error: cannot read "ten" as a resistor value: expected a number in ohms, or one with m, R, k, M, G or T, for example 4k7, 2R2 or 1M
+        error: cannot read "ten" as a resistor value: expected a number in ohms, or one
+               with m, R, k, M, G or T, for example 4k7, 2R2 or 1M
 
-        error: "-1" is not positive: a resistor value is larger than zero, for example 4k7, 2R2 or 1M
+        error: "-1" is not positive: a resistor value is larger than zero, for example
+               4k7, 2R2 or 1M
         "#);
     }
 }

@@ -37,7 +37,7 @@ written! {
         title: Scalar,
         /// The sections in signal order; the only key that a job cannot do without.
         sections: Vec<SectionFile>,
-        /// Identifier of the circuit of each section that names none; otherwise the shape decides.
+        /// Identifier of the circuit of each section that names none; otherwise shape and sign of the gain decide.
         circuit: Scalar,
         /// Name of the output to take; otherwise the first of the wanted shape and sign.
         output: Scalar,

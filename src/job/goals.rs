@@ -7,9 +7,10 @@ use super::desk::{At, Checked, Desk, Place};
 use super::file::{JobFile, MeasureFile};
 use super::given::Scalar;
 use super::section::number;
-use crate::search::Goals;
+use crate::parts::Shelf;
+use crate::search::{Goals, SectionProblem};
 use crate::target::{Criterion, Measure, Weights};
-use crate::units::{Kind, parse_decibels, parse_frequency, parse_number, parse_part};
+use crate::units::{Kind, format_part, parse_decibels, parse_frequency, parse_number, parse_part};
 
 /// A whole number between two bounds.
 fn whole(name: &str, low: usize, high: usize) -> impl Fn(&str) -> Result<usize, String> {
@@ -32,10 +33,19 @@ fn positive<E: Display>(
     }
 }
 
-/// The criterion. `all_pass` is the name of an all-pass section, if the job has one.
-pub(super) fn criterion(desk: &mut Desk, job: &JobFile, all_pass: Option<&str>) -> Checked<Criterion> {
+/// Sections that not every measure can judge, each by the name of one, if the job has any.
+#[derive(Clone, Copy, Debug, Default)]
+pub(super) struct Delicate<'a> {
+    /// An all-pass.
+    pub all_pass: Option<&'a str>,
+    /// A notch whose null depends on the part values.
+    pub inexact_notch: Option<&'a str>,
+}
+
+/// The criterion.
+pub(super) fn criterion(desk: &mut Desk, job: &JobFile, delicate: Delicate) -> Checked<Criterion> {
     let root = Place::job();
-    let measure = measure(desk, root.find("measure", &job.measure), all_pass);
+    let measure = measure(desk, root.find("measure", &job.measure), delicate);
     let band = desk.range(root.find("band", &job.band), parse_frequency);
     let floor = desk.optional(root.find("floor", &job.floor), positive("floor", 300.0, parse_decibels));
     let usual = Criterion::default();
@@ -47,14 +57,15 @@ pub(super) fn criterion(desk: &mut Desk, job: &JobFile, all_pass: Option<&str>) 
     })
 }
 
-fn measure(desk: &mut Desk, found: Option<At<'_, MeasureFile>>, all_pass: Option<&str>) -> Checked<Measure> {
+fn measure(desk: &mut Desk, found: Option<At<'_, MeasureFile>>, delicate: Delicate) -> Checked<Measure> {
+    let Delicate { all_pass, inexact_notch } = delicate;
     let Some(At { value, place }) = found else {
         return Ok(if all_pass.is_some() { Measure::Vector } else { Measure::Decibel });
     };
     match (value, all_pass) {
         (MeasureFile::Decibel, Some(name)) => {
             let message = format!("the magnitude in dB says nothing about the all-pass section {name}");
-            Err(desk.note(&place, message, "write measure: Vector, or Weighted(..)"))
+            Err(desk.note(&place, message, "write measure: Vector"))
         }
         (MeasureFile::Decibel, None) => Ok(Measure::Decibel),
         (MeasureFile::Vector, _) => Ok(Measure::Vector),
@@ -67,11 +78,46 @@ fn measure(desk: &mut Desk, found: Option<At<'_, MeasureFile>>, all_pass: Option
             let f0 = f0?.unwrap_or(0.0);
             let [q, gain, fz] = [q?.unwrap_or(0.0), gain?.unwrap_or(0.0), fz?.unwrap_or(f0)];
             if f0 + q + gain + fz > 0.0 {
-                return Ok(Measure::Weighted(Weights { f0, q, gain, fz }));
+                return match (all_pass, inexact_notch) {
+                    (Some(name), _) => {
+                        let message =
+                            format!("the weighted misses say nothing about the zeros of the all-pass section {name}");
+                        Err(desk.note(&place, message, "write measure: Vector"))
+                    }
+                    (None, Some(name)) => {
+                        let message = format!(
+                            "the weighted misses say nothing about the depth of the null of section {name}, which \
+                             depends on the part values"
+                        );
+                        let help = "keep the ties of the circuit, or write measure: Decibel or Vector";
+                        Err(desk.note(&place, message, help))
+                    }
+                    (None, None) => Ok(Measure::Weighted(Weights { f0, q, gain, fz })),
+                };
             }
             Err(desk.note(&place, "every weight is zero", "write Weighted(f0: 1, q: 0.2, gain: 1), for example"))
         }
     }
+}
+
+/// Notes an impedance range in which no resistor of a section lies.
+pub(super) fn check_impedance(desk: &mut Desk, job: &JobFile, goals: &Goals, section: &SectionProblem) {
+    let Some(At { value: (from, to), place }) = Place::job().find("impedance", &job.impedance) else { return };
+    let Some((low, high)) = goals.impedance else { return };
+    let resistors = section.output().filled(&section.circuit).map(|slot| &section.shelves[slot]);
+    let spans = resistors.filter(|shelf| shelf.kind() == Kind::Resistor).map(Shelf::span);
+    let whole = spans.reduce(|a, b| (a.0.min(b.0), a.1.max(b.1)));
+    let Some((least, most)) = whole.filter(|(least, most)| high < least.to_f64() || most.to_f64() < low) else {
+        return;
+    };
+    let [least, most] = [least, most].map(|value| format_part(value, Kind::Resistor));
+    let name = &section.target.name;
+    let message = format!(
+        "no impedance from {} to {} is possible: the resistors of section {name} run from {least} to {most}",
+        from.text(),
+        to.text()
+    );
+    desk.note(&place, message, "choose a range among them, or other resistors");
 }
 
 /// The goals; errors are in the unit of the measure.

@@ -5,14 +5,17 @@ use std::time::Duration;
 
 use super::desk::{At, Checked, Desk, Noted, Place};
 use super::file::{JobFile, SectionFile};
-use super::goals::{criterion, goals};
-use super::section::{Circuits, Written};
+use super::goals::{Delicate, check_impedance, criterion, goals};
+use super::section::{Circuits, Written, has_inexact_null};
 use super::shelf::shelf;
 use super::slots::{Board, Stock};
 use crate::circuit::Circuit;
 use crate::search::{Problem, SectionProblem};
-use crate::text::Fault;
+use crate::text::{CONTROL_HELP, Fault, control_character};
 use crate::units::{Kind, parse_seconds};
+
+/// The most characters that the name of a section may have: it stands before lines of the report.
+const LONGEST_NAME: usize = 40;
 
 /// A job with everything resolved and checked.
 #[derive(Clone, Debug)]
@@ -46,6 +49,11 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits) -> Checked<Job> 
         let help = "write sections: [(shape: LowPass, f0: \"1 kHz\", q: 0.7071)], for example";
         desk.note(&place, "the job has no sections", help);
     }
+    if let Some(At { value: title, place }) = root.find("title", &job.title)
+        && let Some(message) = control_character(title.text())
+    {
+        desk.note(&place, message, CONTROL_HELP);
+    }
     let resistors = shelf(desk, root.find("resistors", &job.resistors), Kind::Resistor);
     let capacitors = shelf(desk, root.find("capacitors", &job.capacitors), Kind::Capacitor);
     let stock = Stock { resistors, capacitors };
@@ -55,6 +63,14 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits) -> Checked<Job> 
     for (index, file) in files.iter().enumerate() {
         let place = place.item(index);
         let name = file.name.as_ref().map_or_else(|| (index + 1).to_string(), |name| name.value.text().to_string());
+        if let Some(message) = control_character(&name) {
+            desk.note(&place.of("name", &file.name), message, CONTROL_HELP);
+        }
+        let length = name.chars().count();
+        if length > LONGEST_NAME {
+            let message = format!("the name has {length} characters, {LONGEST_NAME} at most are shown");
+            desk.note(&place.of("name", &file.name), message, "shorten it; the title may be longer");
+        }
         if names.contains(&name) {
             let message = format!("two sections are named {name}");
             desk.note(&place.of("name", &file.name), message, "give each section its own name");
@@ -65,9 +81,17 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits) -> Checked<Job> 
 
     let all_pass =
         files.iter().zip(&names).find(|(file, _)| file.shape.as_ref().is_some_and(|shape| shape.value.is_all_pass()));
-    let criterion = criterion(desk, job, all_pass.map(|(_, name)| name.as_str()));
+    let inexact_notch = sections.iter().flatten().find(|section| has_inexact_null(section));
+    let delicate = Delicate {
+        all_pass: all_pass.map(|(_, name)| name.as_str()),
+        inexact_notch: inexact_notch.map(|section| section.target.name.as_str()),
+    };
+    let criterion = criterion(desk, job, delicate);
     let measure = criterion.as_ref().map(|criterion| criterion.measure).map_err(|noted| *noted);
     let goals = goals(desk, job, measure);
+    if let Ok(goals) = &goals {
+        sections.iter().flatten().for_each(|section| check_impedance(desk, job, goals, section));
+    }
     let seconds = |text: &str| {
         let seconds = parse_seconds(text).map_err(|error| error.to_string())?;
         Duration::try_from_secs_f64(seconds).map_err(|error| error.to_string())
@@ -90,7 +114,7 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits) -> Checked<Job> 
 fn section(desk: &mut Desk, written: &Written, stock: &Stock, circuits: Circuits) -> Checked<SectionProblem> {
     let (file, place) = (written.file, &written.place);
     let target = written.target(desk);
-    let circuit = written.circuit(desk, circuits);
+    let circuit = written.circuit(desk, circuits, &target);
     let mut own = |found: Option<At<'_, _>>, kind, of_job: &Checked<_>| match found {
         Some(at) => shelf(desk, Some(at), kind),
         None => of_job.clone(),

@@ -5,10 +5,11 @@ use std::sync::Arc;
 
 use super::desk::{At, Checked, Desk, Noted, Place};
 use super::file::{JobFile, SectionFile, Sign};
-use super::given::Given;
-use crate::circuit::{Circuit, Output, Polynomial, library};
-use crate::target::{Section, Shape};
-use crate::text::suggestion;
+use super::given::{Given, Scalar};
+use crate::circuit::{Circuit, Output, Polynomial, Transfer, find, library};
+use crate::search::SectionProblem;
+use crate::target::{Section, SectionError, Shape};
+use crate::text::{suggestion, with_article};
 use crate::units::{parse_angular, parse_frequency, parse_number};
 
 /// Finds a circuit by its identifier.
@@ -61,7 +62,11 @@ impl Written<'_> {
         }
         let (shape, w0, wz, gain) = (shape?, w0?, wz?, gain?.unwrap_or(1.0));
         if let Some(at) = place.find("poles", &file.poles).filter(|_| shape.order() == 1) {
-            return Err(desk.note(&at.place, format!("a {} section has one pole", shape.name()), "write f0 instead"));
+            return Err(desk.note(
+                &at.place,
+                format!("{} section has one pole", with_article(shape.name())),
+                "write f0 instead",
+            ));
         }
         let (w0, q) = match poles? {
             Some((w0, q)) => (w0, Some(q)),
@@ -74,7 +79,11 @@ impl Written<'_> {
                 _ if file.fz.is_some() => place.of("fz", &file.fz),
                 _ => place.of("wz", &file.wz),
             };
-            desk.note(&culprit, error.to_string(), "")
+            let message = match error {
+                SectionError::Mismatch { shape, problem } => format!("{} section {problem}", with_article(shape)),
+                other => other.to_string(),
+            };
+            desk.note(&culprit, message, "")
         })
     }
 
@@ -128,12 +137,25 @@ impl Written<'_> {
         self.place.find(key, of_section).or_else(|| Place::job().find(key, of_job))
     }
 
-    /// The circuit: the one that is named, or the usual one for the shape.
-    pub fn circuit(&self, desk: &mut Desk, circuits: Circuits) -> Checked<Arc<Circuit>> {
-        let named = self.either("circuit", &self.file.circuit, &self.job.circuit);
+    /// The circuit that is named.
+    fn named_circuit(&self) -> Option<At<'_, Scalar>> {
+        self.either("circuit", &self.file.circuit, &self.job.circuit)
+    }
+
+    /// Whether any sign of the gain will do.
+    fn takes_either_sign(&self) -> bool {
+        self.either("sign", &self.file.sign, &self.job.sign).is_some_and(|at| *at.value == Sign::Either)
+    }
+
+    /// The circuit: the one that is named, or the usual one for the target.
+    pub fn circuit(&self, desk: &mut Desk, circuits: Circuits, target: &Checked<Section>) -> Checked<Arc<Circuit>> {
+        let named = self.named_circuit();
         let (id, place) = match &named {
             Some(at) => (at.value.text(), &at.place),
-            None => (usual_circuit(self.file.shape.as_ref().ok_or(Noted)?.value), &self.place),
+            None => {
+                let target = target.as_ref().map_err(|noted| *noted)?;
+                (usual_circuit(target, self.takes_either_sign()), &self.place)
+            }
         };
         circuits(id).map_err(|message| {
             let known: Vec<&str> = library().iter().map(|circuit| circuit.id.as_str()).collect();
@@ -141,21 +163,27 @@ impl Written<'_> {
         })
     }
 
-    /// The index of the output to take. Gives the target the sign of the output where the sign does not matter.
+    /// The index of the output to take. Gives the target the sign of the output where the sign does not matter, and where
+    /// neither circuit nor gain is written and no usual circuit has a positive gain.
     pub fn output(&self, desk: &mut Desk, circuit: &Circuit, target: &mut Section) -> Checked<usize> {
         let offers = self.offers(desk, circuit, target.shape)?;
-        let either = self.either("sign", &self.file.sign, &self.job.sign).is_some_and(|at| *at.value == Sign::Either);
-        let wanted = if target.gain > 0.0 { 1 } else { -1 };
+        let is_usual = self.named_circuit().is_none();
+        let either = self.takes_either_sign();
+        let free = either || is_usual && self.file.gain.is_none();
+        let wanted = sign_of(target);
         let sign = |&index: &usize| circuit.outputs[index].gain_sign();
-        let fits = |index: &usize| either || sign(index).is_none_or(|sign| sign == wanted);
-        let Some(index) = offers.iter().copied().find(fits) else {
+        let fits = |index: &usize| either || has_sign(&circuit.outputs[*index], wanted);
+        let nearest = || offers.first().copied().filter(|_| free);
+        let Some(index) = offers.iter().copied().find(fits).or_else(nearest) else {
             let place = self.place.of("gain", &self.file.gain);
-            let given = if wanted > 0 { "inverted" } else { "without inversion" };
-            let message = format!("{} gives a {} only {given}", circuit.id, target.shape.name());
+            let only = if wanted > 0 { "negative" } else { "positive" };
+            let usual = if is_usual { ", taken by default," } else { "" };
+            let shape = with_article(target.shape.name());
+            let message = format!("{}{usual} gives {shape} only with {only} gain", circuit.id);
             let help = format!("write gain: {} or sign: Either, or take another circuit", -target.gain);
             return Err(desk.note(&place, message, help));
         };
-        if let (true, Some(sign)) = (either, sign(&index)) {
+        if let (true, Some(sign)) = (free, sign(&index)) {
             target.gain = target.gain.abs() * f64::from(sign);
         }
         Ok(index)
@@ -184,8 +212,8 @@ impl Written<'_> {
             }
             (Some(at), Some(&index)) => {
                 let given = circuit.outputs[index].shape.name();
-                let message =
-                    format!("`{}` of {} gives a {given}, not a {}", at.value.text(), circuit.id, shape.name());
+                let [given, wanted] = [given, shape.name()].map(with_article);
+                let message = format!("`{}` of {} gives {given}, not {wanted}", at.value.text(), circuit.id);
                 desk.note(&at.place, message, format!("the outputs are {all}"))
             }
             (None, _) => {
@@ -194,7 +222,8 @@ impl Written<'_> {
                 let gives = |circuit: &&Circuit| circuit.outputs.iter().any(|output| output.shape == shape);
                 let others: Vec<&str> = library().iter().filter(gives).map(|circuit| circuit.id.as_str()).collect();
                 let others = others.join(", ");
-                desk.note(&place, message, format!("its outputs are {all}; a {} comes from {others}", shape.name()))
+                let wanted = with_article(shape.name());
+                desk.note(&place, message, format!("its outputs are {all}; {wanted} comes from {others}"))
             }
         })
     }
@@ -221,12 +250,23 @@ impl Written<'_> {
     }
 }
 
+/// The transfer function of an output with one variable for the slots of each group.
+fn merged(output: &Output, slots: usize, equal: &[Vec<usize>]) -> Transfer {
+    let leader = |slot| equal.iter().find(|group| group.contains(&slot)).map_or(slot, |group| group[0]);
+    let map: Vec<Option<usize>> = (0..slots).map(|slot| Some(leader(slot))).collect();
+    output.transfer.substituted(&map, slots)
+}
+
+/// Whether a section is a notch whose null depends on the part values, with its equal slots being equal.
+pub(super) fn has_inexact_null(section: &SectionProblem) -> bool {
+    let transfer = merged(section.output(), section.circuit.slots.len(), &section.equal);
+    section.target.shape == Shape::Notch && transfer.numerator.get(1).is_some_and(|middle| !middle.is_empty())
+}
+
 /// The gain of an output as its shape defines it, where it is the same for all part values once the slots of each
 /// group are equal.
 fn fixed_gain(output: &Output, slots: usize, equal: &[Vec<usize>], target: &Section) -> Option<f64> {
-    let leader = |slot| equal.iter().find(|group| group.contains(&slot)).map_or(slot, |group| group[0]);
-    let map: Vec<Option<usize>> = (0..slots).map(|slot| Some(leader(slot))).collect();
-    let transfer = output.transfer.substituted(&map, slots);
+    let transfer = merged(output, slots, equal);
     let power = match target.shape {
         Shape::HighPass => 2,
         Shape::BandPass | Shape::FirstOrderHighPass => 1,
@@ -240,14 +280,39 @@ fn fixed_gain(output: &Output, slots: usize, equal: &[Vec<usize>], target: &Sect
     (constant(&n) && constant(&d)).then(|| n.value(&ones) / d.value(&ones))
 }
 
-/// The circuit that is taken for a shape where a job names none; common practice.
-fn usual_circuit(shape: Shape) -> &'static str {
-    match shape {
-        Shape::LowPass | Shape::BandPass => "tow-thomas",
-        Shape::HighPass => "state-variable",
-        Shape::Notch | Shape::AllPass => "feed-forward-biquad",
-        Shape::FirstOrderLowPass => "rc-low-pass",
-        Shape::FirstOrderHighPass => "rc-high-pass",
-        Shape::FirstOrderAllPass => "first-order-all-pass",
+/// The sign of a target's gain.
+fn sign_of(target: &Section) -> i8 {
+    if target.gain > 0.0 { 1 } else { -1 }
+}
+
+/// Whether an output can have a gain of that sign.
+fn has_sign(output: &Output, wanted: i8) -> bool {
+    output.gain_sign().is_none_or(|sign| sign == wanted)
+}
+
+/// The circuit that is taken where a job names none: the first usual one with a gain of the wanted sign, or otherwise
+/// the first.
+fn usual_circuit(target: &Section, either: bool) -> &'static str {
+    let usual = usual_circuits(target);
+    let wanted = sign_of(target);
+    let fits = |id: &&&str| {
+        let mut outputs = find(id).into_iter().flat_map(|circuit| &circuit.outputs);
+        outputs.any(|output| output.shape == target.shape && (either || has_sign(output, wanted)))
+    };
+    usual.iter().find(fits).unwrap_or(&usual[0])
+}
+
+/// The circuits that are usual for a target, the most general first; common practice.
+fn usual_circuits(target: &Section) -> &'static [&'static str] {
+    // A Fliege notch has its zero at the pole frequency.
+    let symmetric = target.wz.is_some_and(|wz| (wz / target.w0 - 1.0).abs() < 1e-9);
+    match target.shape {
+        Shape::LowPass | Shape::BandPass => &["tow-thomas"],
+        Shape::HighPass => &["state-variable"],
+        Shape::Notch if symmetric => &["feed-forward-biquad", "fliege-notch"],
+        Shape::Notch | Shape::AllPass => &["feed-forward-biquad"],
+        Shape::FirstOrderLowPass => &["rc-low-pass", "inverting-low-pass"],
+        Shape::FirstOrderHighPass => &["rc-high-pass"],
+        Shape::FirstOrderAllPass => &["first-order-all-pass", "first-order-all-pass-lead"],
     }
 }

@@ -2,6 +2,8 @@
 
 use comfy_table::{CellAlignment, ContentArrangement, LineStyle, Table, TableStyle};
 
+use crate::text::wrapped;
+
 /// On which side the cells of a column stand.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 pub enum Align {
@@ -108,28 +110,13 @@ pub fn printable(text: &str) -> String {
 }
 
 /// Text broken between words into lines of at most `width` characters, each with a line end; the first begins with
-/// `first`, the others with as many blanks. A word that is longer than a line stays whole, and so does what is
-/// [`unbroken`].
+/// `first`, the others with as many blanks, but never more than half the width. A word that is longer than a line stays
+/// whole, and so does what is [`unbroken`].
 pub fn paragraph(first: &str, text: &str, width: usize) -> String {
-    let indent = first.chars().count();
-    let room = width.max(NARROWEST).saturating_sub(indent);
-    let mut lines: Vec<String> = vec![String::new()];
-    let mut used = 0;
-    for word in text.split(' ').filter(|word| !word.is_empty()) {
-        let length = word.chars().count();
-        if used > 0 && used + 1 + length > room {
-            lines.push(String::new());
-            used = 0;
-        }
-        if let Some(line) = lines.last_mut() {
-            if used > 0 {
-                line.push(' ');
-                used += 1;
-            }
-            line.push_str(&word.replace('\u{a0}', " "));
-            used += length;
-        }
-    }
+    let width = width.max(NARROWEST);
+    let start = first.chars().count();
+    let indent = start.min(width / 2);
+    let lines = wrapped(text, width.saturating_sub(start), width - indent);
     let blanks = " ".repeat(indent);
     let starts = std::iter::once(first).chain(std::iter::repeat(blanks.as_str()));
     starts.zip(&lines).map(|(start, line)| format!("{}\n", format!("{start}{line}").trim_end())).collect()
@@ -195,6 +182,10 @@ mod tests {
         let text = paragraph("", &format!("{} {}", "x".repeat(35), unbroken("10 kHz")), 40);
         assert_eq!(text, format!("{}\n10 kHz\n", "x".repeat(35)));
         assert_eq!(paragraph("- ", "", 80), "-\n");
+        let text = paragraph(&format!("{}: ", "x".repeat(28)), &"word ".repeat(6), 40);
+        assert_eq!(text, format!("{}: word word\n{}word word word word\n", "x".repeat(28), " ".repeat(20)));
+        let text = paragraph(&format!("{}: ", "x".repeat(38)), "word", 40);
+        assert_eq!(text, format!("{}:\n{}word\n", "x".repeat(38), " ".repeat(20)));
         assert_eq!(paragraph("", &"x".repeat(90), 80), "x".repeat(90) + "\n");
     }
 }

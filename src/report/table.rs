@@ -17,7 +17,7 @@ use crate::units::{Kind, Value, format_part, parse_part};
 /// Those of the writer.
 pub fn write_table(record: &Record, width: usize, out: &mut dyn Write) -> io::Result<()> {
     let blocks = [
-        if record.title.is_empty() { String::new() } else { record.title.clone() + "\n" },
+        if record.title.is_empty() { String::new() } else { paragraph("", &record.title, width) },
         searched(record, width),
         outcome(record, width),
         figures(record, width),

@@ -5,12 +5,14 @@ mod names;
 mod read;
 mod render;
 mod scan;
+mod words;
 
 use std::ops::Range;
 
 pub use names::suggestion;
 pub use read::parse;
 pub use render::render;
+pub use words::{CONTROL_HELP, control_character, with_article, wrapped};
 
 /// One thing that is wrong with a text, a file or a flag.
 #[derive(Clone, Debug, PartialEq, Eq)]

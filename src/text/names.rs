@@ -1,15 +1,15 @@
 //! Names that were probably meant.
 
-/// Advice for a name that does not exist: the nearest one that does, and all of them.
+/// Advice for a name that does not exist: the nearest one that does, or otherwise all of them.
 ///
 /// `list` introduces the names, such as `the keys here are`. Letter case and signs do not count, so `low_pass` is near
 /// `LowPass`; nothing is suggested where fewer than two thirds of the letters agree.
 pub fn suggestion<S: AsRef<str>>(name: &str, list: &str, known: &[S]) -> String {
     let known: Vec<&str> = known.iter().map(AsRef::as_ref).collect();
-    let all = if known.is_empty() { String::new() } else { format!("{list} {}", known.join(", ")) };
     match nearest(name, &known) {
-        Some(near) => format!("did you mean `{near}`? {all}"),
-        None => all,
+        Some(near) => format!("did you mean `{near}`?"),
+        None if known.is_empty() => String::new(),
+        None => format!("{list} {}", known.join(", ")),
     }
 }
 
@@ -67,8 +67,8 @@ mod tests {
     }
 
     #[test]
-    fn advice_lists_what_exists() {
-        assert_eq!(suggestion("gian", "the keys are", &["gain", "q"]), "did you mean `gain`? the keys are gain, q");
+    fn advice_names_the_nearest_or_lists_what_exists() {
+        assert_eq!(suggestion("gian", "the keys are", &["gain", "q"]), "did you mean `gain`?");
         assert_eq!(suggestion("x", "the keys are", &["gain", "q"]), "the keys are gain, q");
         assert_eq!(suggestion::<&str>("x", "the keys are", &[]), "");
     }

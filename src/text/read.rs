@@ -198,7 +198,7 @@ mod tests {
         2 |     name: "µΩ", /* µ */ gian: 2, parts: [
           |                         ^^^^
           |
-          = help: did you mean `gain`? the keys are name, gain, colour, pair, parts
+          = help: did you mean `gain`?
 
         error: there is no key `nam` here
          --> part.ron:3:4
@@ -206,7 +206,7 @@ mod tests {
         3 |         (nam: "x"),
           |          ^^^
           |
-          = help: did you mean `name`? the keys are name, gain, colour, pair, parts
+          = help: did you mean `name`?
 
         error: expected a text in quotes
          --> part.ron:4:10
@@ -226,7 +226,7 @@ mod tests {
         4 |         (name: 3, gain: "4", colour: darkred),
           |                                      ^^^^^^^
           |
-          = help: did you mean `DarkRed`? they are DarkRed, LightBlue
+          = help: did you mean `DarkRed`?
 
         error: the key `gain` is there twice
          --> part.ron:5:24

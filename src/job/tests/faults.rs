@@ -95,10 +95,10 @@ fn faults_of_figures() {
         1e7 -> gain must lie between 1e-6 and 1e6 or between -1e6 and -1e-6, found 1e7
     shape: Lowpass, f0: [1], q: 1, gian: 1
         Lowpass -> `Lowpass` is none of the names that can stand here
-            did you mean `LowPass`? they are LowPass, HighPass, BandPass, Notch, AllPass, FirstOrderLowPass, FirstOrderHighPass, FirstOrderAllPass
+            did you mean `LowPass`?
         [1] -> expected a number or a text in quotes
         gian -> there is no key `gian` here
-            did you mean `gain`? the keys are name, shape, f0, w0, poles, q, gain, fz, wz, circuit, output, sign, resistors, capacitors, slots, equal, untie
+            did you mean `gain`?
     "#);
 }
 
@@ -117,10 +117,10 @@ fn faults_of_circuits_and_outputs() {
     insta::assert_snapshot!(told(&texts, in_low_pass), @r#"
     circuit: "tow-tomas"
         "tow-tomas" -> there is no circuit `tow-tomas`
-            did you mean `tow-thomas`? the circuits are akerberg-mossberg, feed-forward-biquad, first-order-all-pass, first-order-all-pass-lead, fliege-notch, inverting-low-pass, multiple-feedback-band-pass, multiple-feedback-low-pass, rc-high-pass, rc-low-pass, sallen-key-high-pass, sallen-key-low-pass, sallen-key-low-pass-gain, state-variable, tow-thomas
+            did you mean `tow-thomas`?
     output: "lowpass"
         "lowpass" -> tow-thomas has no output `lowpass`
-            did you mean `low-pass`? the outputs are band-pass, low-pass, low-pass-inverted
+            did you mean `low-pass`?
     output: "band-pass"
         "band-pass" -> `band-pass` of tow-thomas gives a band-pass, not a low-pass
             the outputs are band-pass (band-pass), low-pass (low-pass), low-pass-inverted (low-pass)
@@ -128,7 +128,7 @@ fn faults_of_circuits_and_outputs() {
         LowPass -> fliege-notch gives no low-pass
             its outputs are notch (notch); a low-pass comes from akerberg-mossberg, multiple-feedback-low-pass, sallen-key-low-pass, sallen-key-low-pass-gain, state-variable, tow-thomas
     circuit: "multiple-feedback-low-pass"
-        (shape: LowPass, f0: "1k", q: 1, circuit: "multiple-feedback-low-pass") -> multiple-feedback-low-pass gives a low-pass only inverted
+        (shape: LowPass, f0: "1k", q: 1, circuit: "multiple-feedback-low-pass") -> multiple-feedback-low-pass gives a low-pass only with negative gain
             write gain: -1 or sign: Either, or take another circuit
     circuit: "sallen-key-low-pass", gain: 2
         2 -> the gain of sallen-key-low-pass is 1 for all part values
@@ -137,7 +137,7 @@ fn faults_of_circuits_and_outputs() {
         1.5 -> the gain of sallen-key-low-pass-gain is 2 for all part values
             write gain: 2, set ignore_gain: true for the job, or take another circuit
     circuit: "sallen-key-low-pass", gain: -1
-        -1 -> sallen-key-low-pass gives a low-pass only without inversion
+        -1 -> sallen-key-low-pass gives a low-pass only with positive gain
             write gain: 1 or sign: Either, or take another circuit
     "#);
     let unity = "circuit: \"sallen-key-low-pass\", gain: 2";
@@ -204,6 +204,76 @@ fn faults_of_slots() {
 }
 
 #[test]
+fn faults_of_names() {
+    let long = format!("name: \"{}\"", "x".repeat(41));
+    insta::assert_snapshot!(told(&[&long, "name: \"a\\nb\""], in_low_pass), @r#"
+    name: "xxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxx"
+        "xxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxxx" -> the name has 41 characters, 40 at most are shown
+            shorten it; the title may be longer
+    name: "a\nb"
+        "a\nb" -> the control character \u{a} cannot be shown
+            leave out line breaks, tabs and other control characters
+    "#);
+    assert!(read(&in_low_pass(&format!("name: \"{}\"", "Ω".repeat(40)))).is_ok());
+}
+
+#[test]
+fn faults_of_signs_and_measures() {
+    let weighted = |inner: &str| format!("(sections: [({inner})], measure: Weighted(f0: 1))");
+    let texts = [
+        "shape: AllPass, f0: 1, q: 1",
+        "shape: Notch, f0: 1, q: 1, circuit: \"fliege-notch\", untie: true",
+        "shape: Notch, f0: 1, q: 1, circuit: \"fliege-notch\", untie: [[\"R7\", \"R8\"]]",
+    ];
+    insta::assert_snapshot!(told(&texts, weighted), @r#"
+    shape: AllPass, f0: 1, q: 1
+        Weighted(f0: 1) -> the weighted misses say nothing about the zeros of the all-pass section 1
+            write measure: Vector
+    shape: Notch, f0: 1, q: 1, circuit: "fliege-notch", untie: true
+        Weighted(f0: 1) -> the weighted misses say nothing about the depth of the null of section 1, which depends on the part values
+            keep the ties of the circuit, or write measure: Decibel or Vector
+    shape: Notch, f0: 1, q: 1, circuit: "fliege-notch", untie: [["R7", "R8"]]
+        Weighted(f0: 1) -> the weighted misses say nothing about the depth of the null of section 1, which depends on the part values
+            keep the ties of the circuit, or write measure: Decibel or Vector
+    "#);
+    // Its null needs R6 R8 = R4 R7, which pairs across the ties keep too; that of the feed-forward biquad needs nothing.
+    for inner in [
+        "circuit: \"fliege-notch\"",
+        "circuit: \"fliege-notch\", untie: true, equal: [[\"R6\", \"R7\"], [\"R4\", \"R8\"]]",
+        "circuit: \"feed-forward-biquad\", gain: -1, untie: true",
+    ] {
+        sound(&weighted(&format!("shape: Notch, f0: 1, q: 1, {inner}")));
+    }
+    let texts = [
+        "shape: Notch, f0: 1, q: 1, fz: 2, gain: 1",
+        "shape: AllPass, f0: 1, q: 1, gain: 1",
+        "shape: BandPass, f0: 1, q: 1, gain: 2",
+        "shape: HighPass, f0: 1, q: 1, gain: -2",
+        "shape: AllPass, f0: 1, q: 1, circuit: \"feed-forward-biquad\"",
+        "shape: AllPass, f0: 1",
+    ];
+    insta::assert_snapshot!(told(&texts, in_section), @r#"
+    shape: Notch, f0: 1, q: 1, fz: 2, gain: 1
+        1 -> feed-forward-biquad, taken by default, gives a notch only with negative gain
+            write gain: -1 or sign: Either, or take another circuit
+    shape: AllPass, f0: 1, q: 1, gain: 1
+        1 -> feed-forward-biquad, taken by default, gives an all-pass only with negative gain
+            write gain: -1 or sign: Either, or take another circuit
+    shape: BandPass, f0: 1, q: 1, gain: 2
+        2 -> tow-thomas, taken by default, gives a band-pass only with negative gain
+            write gain: -2 or sign: Either, or take another circuit
+    shape: HighPass, f0: 1, q: 1, gain: -2
+        -2 -> state-variable, taken by default, gives a high-pass only with positive gain
+            write gain: 2 or sign: Either, or take another circuit
+    shape: AllPass, f0: 1, q: 1, circuit: "feed-forward-biquad"
+        (shape: AllPass, f0: 1, q: 1, circuit: "feed-forward-biquad") -> feed-forward-biquad gives an all-pass only with negative gain
+            write gain: -1 or sign: Either, or take another circuit
+    shape: AllPass, f0: 1
+        (shape: AllPass, f0: 1) -> an all-pass section needs a q (or two poles)
+    "#);
+}
+
+#[test]
 fn faults_of_shelves() {
     let texts = [
         "resistors: (series: E7, from: \"10 nF\", to: 0), capacitors: (values: [\"1k\", \"1n\", -1])",
@@ -234,9 +304,9 @@ fn faults_of_shelves() {
             widen the range, or name another series or other values
     resistors: [], capacitors: (form: "1n", serie: E6)
         form -> there is no key `form` here
-            did you mean `from`? the keys are series, values, from, to, exclude
+            did you mean `from`?
         serie -> there is no key `serie` here
-            did you mean `series`? the keys are series, values, from, to, exclude
+            did you mean `series`?
     resistors: [], capacitors: [(values: [])]
         [] -> the resistor shelf is empty: widen its range, or add a series or single values
         (values: []) -> the capacitor shelf is empty: none of its values lies in its range
@@ -262,6 +332,9 @@ fn faults_of_the_job() {
         "measure: Weighted(f0: -1, q: \"x\", fz: 1e9)",
         "measure: Weighted(w0: 1)",
         "measure: decibels",
+        "impedance: (1, 900)",
+        "impedance: (\"1M1\", \"2M\")",
+        "title: \"a\\u{1b}[31m\"",
     ];
     insta::assert_snapshot!(told(&texts, in_job), @r#"
     band: ("20 kHz", "10 Hz"), floor: "0 dB", rows: 0, alternatives: -1, max_part_numbers: 2.5
@@ -301,7 +374,16 @@ fn faults_of_the_job() {
             the keys are f0, q, gain, fz
     measure: decibels
         decibels -> `decibels` is none of the names that can stand here
-            did you mean `Decibel`? they are Decibel, Vector, Weighted
+            did you mean `Decibel`?
+    impedance: (1, 900)
+        (1, 900) -> no impedance from 1 to 900 is possible: the resistors of section 1 run from 1k to 1M
+            choose a range among them, or other resistors
+    impedance: ("1M1", "2M")
+        ("1M1", "2M") -> no impedance from 1M1 to 2M is possible: the resistors of section 1 run from 1k to 1M
+            choose a range among them, or other resistors
+    title: "a\u{1b}[31m"
+        "a\u{1b}[31m" -> the control character \u{1b} cannot be shown
+            leave out line breaks, tabs and other control characters
     "#);
     let texts = [
         "()",
@@ -322,7 +404,7 @@ fn faults_of_the_job() {
             give each section its own name
     (measure: Decibel, sections: [(name: "A", shape: FirstOrderAllPass, f0: 1, sign: Either)])
         Decibel -> the magnitude in dB says nothing about the all-pass section A
-            write measure: Vector, or Weighted(..)
+            write measure: Vector
     (circuit: "x", output: "y", sections: [(shape: LowPass, f0: 1, q: 1), (shape: LowPass, f0: 2, q: 1)])
         "x" -> there is no circuit `x`
             the circuits are akerberg-mossberg, feed-forward-biquad, first-order-all-pass, first-order-all-pass-lead, fliege-notch, inverting-low-pass, multiple-feedback-band-pass, multiple-feedback-low-pass, rc-high-pass, rc-low-pass, sallen-key-high-pass, sallen-key-low-pass, sallen-key-low-pass-gain, state-variable, tow-thomas
@@ -352,9 +434,12 @@ fn all_faults_are_shown_in_text_order_with_their_places() {
     4 |         (shape: HighPass, gain: 1,
       |                 ^^^^^^^^
       |
-      = help: its outputs are band-pass (band-pass), low-pass (low-pass), low-pass-inverted (low-pass); a high-pass comes from sallen-key-high-pass, state-variable
+      = help: its outputs are band-pass (band-pass), low-pass (low-pass),
+              low-pass-inverted (low-pass); a high-pass comes from
+              sallen-key-high-pass, state-variable
 
-    error: cannot read "x" as a level: expected a finite number in dB, for example 0.1 dB
+    error: cannot read "x" as a level: expected a finite number in dB, for example
+           0.1 dB
      --> job.ron:6:9
       |
     6 |     floor: "x")

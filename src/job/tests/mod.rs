@@ -153,6 +153,17 @@ fn defaults_are_those_of_the_trade() {
         ("shape: FirstOrderLowPass, f0: 1", "rc-low-pass", "low-pass"),
         ("shape: FirstOrderHighPass, f0: 1", "rc-high-pass", "high-pass"),
         ("shape: FirstOrderAllPass, f0: 1, sign: Either", "first-order-all-pass", "all-pass"),
+        // Where no sign was asked for, that of the circuit is taken.
+        ("shape: BandPass, f0: 1, q: 1", "tow-thomas", "band-pass"),
+        ("shape: HighPass, f0: 1, q: 1", "state-variable", "high-pass"),
+        ("shape: Notch, f0: 1, q: 1", "fliege-notch", "notch"),
+        ("shape: Notch, f0: 1, q: 1, fz: 1", "fliege-notch", "notch"),
+        ("shape: Notch, f0: 1, q: 1, gain: -1", "feed-forward-biquad", "notch"),
+        ("shape: Notch, f0: 1, q: 1, fz: 2", "feed-forward-biquad", "notch"),
+        ("shape: AllPass, f0: 1, q: 1", "feed-forward-biquad", "all-pass"),
+        ("shape: FirstOrderLowPass, f0: 1, gain: -2", "inverting-low-pass", "low-pass"),
+        ("shape: FirstOrderAllPass, f0: 1", "first-order-all-pass", "all-pass"),
+        ("shape: FirstOrderAllPass, f0: 1, gain: -1", "first-order-all-pass-lead", "all-pass"),
     ] {
         let problem = one(inner);
         let section = &problem.sections[0];
@@ -214,9 +225,11 @@ fn flags_win_and_are_named() {
     });
     let faults = resolve(&job, &mut circuits).unwrap_err();
     insta::assert_snapshot!(render(&located(&text, faults), "job.ron", &text, false), @r#"
-    error: --resistors: "E5" is no series of preferred numbers: write E3, E6, E12, E24, E48, E96 or E192
+    error: --resistors: "E5" is no series of preferred numbers: write E3, E6, E12,
+           E24, E48, E96 or E192
 
-    error: --resistors: "10n" is a capacitor value where a resistor value is needed: write one such as 4k7, 2R2 or 1M
+    error: --resistors: "10n" is a capacitor value where a resistor value is needed:
+           write one such as 4k7, 2R2 or 1M
 
     error: --measure: every weight is zero
      |
