@@ -432,7 +432,9 @@ impl Board<'_> {
     fn row(&self, combination: &Combination, alternative: bool) -> Row {
         let single = self.prepared.len() == 1;
         let proved = self.prepared.iter().all(|p| match p.front.proof {
-            Proof::Exhaustive(_) => true,
+            // Where a silent slot may cost a part number, further sets of a count can stem from fewer values than were
+            // searched so far: then only the first of each count is proved.
+            Proof::Exhaustive(_) => !alternative || p.model.silent_groups_are_free(),
             Proof::Stopped { complete_below, .. } => combination.part_numbers < complete_below,
         });
         let chosen =

@@ -118,6 +118,14 @@ impl Model {
         [0, 1, 2].map(|k| self.transfer.numerator.get(k).is_some_and(|p| !p.is_empty()))
     }
 
+    /// Whether the silent groups can always take a value that is there already, so that they never cost a part number.
+    pub fn silent_groups_are_free(&self) -> bool {
+        self.silent_groups().iter().all(|silent| {
+            let mut alike = self.active_groups().iter().filter(|g| g.kind == silent.kind).peekable();
+            alike.peek().is_some() && alike.all(|g| g.shelf.values().iter().all(|v| silent.shelf.contains(*v)))
+        })
+    }
+
     /// How many combinations of shelf values there are for the active groups.
     pub fn combinations(&self) -> f64 {
         self.active_groups().iter().map(|g| g.shelf.len() as f64).product()
