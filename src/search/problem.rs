@@ -80,7 +80,7 @@ pub struct Goals {
     pub rows: usize,
     /// How many further sets to list for each number of part numbers.
     pub alternatives: usize,
-    /// The geometric mean of the resistances of each section must lie in this range, ohms.
+    /// The geometric mean of the resistances that set the response of each section must lie in this range, ohms.
     pub impedance: Option<(f64, f64)>,
 }
 

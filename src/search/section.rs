@@ -34,6 +34,9 @@ pub(crate) struct SectionFront {
 /// By how much the error limit grows from level to level while nothing is found.
 const LEVEL_FACTOR: f64 = 3.0;
 
+/// The least error limit that a level begins with: about the step in which errors are compared.
+const LEAST_LEVEL: f64 = 1e-7;
+
 /// A level is passed over where the next is not dearer than this, in expected partial sets.
 const DEARER: f64 = 1.5;
 
@@ -131,7 +134,8 @@ impl Search<'_> {
             let Some(cap) = cap.map(|cap| cap.min(limit)) else {
                 return Proof::Exhaustive(End::Resolution);
             };
-            let mut level = first.min(cap);
+            // A resolution of zero would never grow.
+            let mut level = first.max(LEAST_LEVEL).min(cap);
             loop {
                 let next = (level * LEVEL_FACTOR).min(cap);
                 if affordable.is_finite() && self.expected(&families, level) > affordable {

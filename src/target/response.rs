@@ -111,8 +111,8 @@ pub(crate) struct Sample {
 /// The maximum over the band is taken at stated frequencies, so that anybody can recompute it: both ends of the band and
 /// equal logarithmic steps between them, 200 or a little more to the decade; further ones about a pole pair whose
 /// half-width 1/(2Q) is less than eight such steps, about the zero of a notch, and where |H*| crosses the floor. The true
-/// maximum exceeds this one by at most about 0.3 % of itself, for a notch 2 %, where the realised null falls between two
-/// frequencies.
+/// maximum exceeds this one by at most about 0.3 % of itself; for a notch, whose realised null may fall between two
+/// frequencies, by more.
 #[derive(Clone, Debug)]
 pub struct Yardstick {
     criterion: Criterion,
