@@ -8,7 +8,7 @@ use std::sync::Arc;
 
 use divan::Bencher;
 use roundwell::circuit::find;
-use roundwell::parts::{Series, Shelf};
+use roundwell::parts::{Series, Shelf, Supply};
 use roundwell::search::{Goals, Problem, SectionProblem, Unwatched, shortlist};
 use roundwell::target::{Criterion, Measure, Section, Shape};
 use roundwell::units::{Kind, parse_part};
@@ -118,7 +118,13 @@ impl Case {
             criterion.measure = Measure::Vector;
             goals = Goals { wanted_error: 0.01, error_limit: 0.12, error_resolution: 1e-4, ..goals };
         }
-        Problem { title: self.name.into(), sections: vec![self.section()], criterion, goals }
+        Problem {
+            title: self.name.into(),
+            sections: vec![self.section()],
+            criterion,
+            goals,
+            supply: Supply::default(),
+        }
     }
 }
 
@@ -131,6 +137,7 @@ fn eighth_order() -> Problem {
         sections: sections.to_vec(),
         criterion: Criterion::default(),
         goals: Goals::default(),
+        supply: Supply::default(),
     }
 }
 

@@ -10,7 +10,7 @@
 //! use std::sync::Arc;
 //!
 //! use roundwell::circuit::find;
-//! use roundwell::parts::{Series, Shelf};
+//! use roundwell::parts::{Series, Shelf, Supply};
 //! use roundwell::search::{Goals, Problem, SectionProblem, Unwatched, shortlist};
 //! use roundwell::target::{Criterion, Section, Shape};
 //! use roundwell::units::{Kind, format_part, parse_part};
@@ -33,6 +33,7 @@
 //!     sections: vec![section],
 //!     criterion: Criterion::default(),
 //!     goals: Goals::default(),
+//!     supply: Supply::default(),
 //! };
 //!
 //! let outcome = shortlist(&problem, &Unwatched);

@@ -4,14 +4,16 @@
 //! numerically, frequency by frequency, and parts, counts and order are checked against the job itself. A set that
 //! fails is a fault of the program and must not be shown.
 
-use std::collections::BTreeSet;
+use std::collections::{BTreeMap, BTreeSet};
 
 use num_complex::Complex64;
 use thiserror::Error;
 
 use crate::circuit::{response, solve};
-use crate::search::{Chosen, ErrorKey, Outcome, Problem, Row};
+use crate::parts::{Buying, Choice};
+use crate::search::{Chosen, ErrorKey, Joint, Outcome, Part, Problem, Rank, Row};
 use crate::target::{Measure, Section, Yardstick};
+use crate::units::Kind;
 
 /// What does not hold of an outcome.
 #[derive(Clone, Debug, PartialEq, Error)]
@@ -84,54 +86,166 @@ pub fn verify(problem: &Problem, outcome: &Outcome) -> Result<(), VerifyError> {
     for (index, row) in outcome.rows.iter().enumerate() {
         check_row(problem, &yardstick, index + 1, row)?;
     }
-    check_order(outcome)
+    check_order(problem.goals.rank, outcome)
 }
 
 fn check_row(problem: &Problem, yardstick: &Yardstick, number: usize, row: &Row) -> Result<(), VerifyError> {
-    let mut bought = BTreeSet::new();
-    let mut placed = 0;
-    for (section, chosen) in problem.sections.iter().zip(&row.sections) {
-        let name = || section.target.name.clone();
-        for slot in section.output().filled(&section.circuit) {
-            let part = chosen.parts.iter().find(|p| p.slot == slot).and_then(|p| Some((p.kind, p.value?)));
-            let Some((kind, value)) = part.filter(|(_, value)| section.shelves[slot].contains(*value)) else {
-                let slot = section.circuit.slots[slot].name.clone();
-                return Err(VerifyError::Part { row: number, section: name(), slot });
-            };
-            bought.insert((kind, value));
-            placed += 1;
-        }
-        let value_of = |slot: &usize| chosen.parts.iter().find(|p| p.slot == *slot).and_then(|p| p.value);
-        if section.equal.iter().any(|group| group.iter().map(value_of).collect::<BTreeSet<_>>().len() > 1) {
-            return Err(VerifyError::Tie { row: number, section: name() });
-        }
+    let alike = [row.sections.as_slice()];
+    let differing: Vec<&[Chosen]> = row.boards.iter().map(|board| board.sections.as_slice()).collect();
+    let boards = if differing.is_empty() { &alike[..] } else { &differing };
+    let mut counted = Counted::default();
+    let mut measured = BTreeSet::new();
+    for sections in boards {
+        counted = counted.largest(&check_board(problem, number, sections, &mut measured)?);
     }
-    let counts =
-        [("part numbers", bought.len(), row.part_numbers.unwrap_or(0)), ("placed parts", placed, row.placed_parts)];
-    for (what, found, claimed) in counts {
+    let claimed =
+        Counted { part_numbers: row.part_numbers, placed_parts: Some(row.placed_parts), to_buy: row.to_buy };
+    for (what, found, claimed) in [
+        ("part numbers", counted.part_numbers, claimed.part_numbers),
+        ("placed parts", counted.placed_parts, claimed.placed_parts),
+        ("part numbers to buy", counted.to_buy, claimed.to_buy.or(Some(0))),
+    ] {
+        let [found, claimed] = [found, claimed].map(|count| count.unwrap_or(0));
         if found != claimed {
             return Err(VerifyError::Count { row: number, what, found, claimed });
         }
     }
-    if problem.goals.max_part_numbers.is_some_and(|most| bought.len() > most) {
+    if problem.goals.max_part_numbers.zip(counted.part_numbers).is_some_and(|(most, count)| count > most) {
         return Err(VerifyError::Limit { row: number, what: "part numbers" });
+    }
+    if counted.to_buy.is_some_and(|count| count > problem.supply.buying.most()) {
+        return Err(VerifyError::Limit { row: number, what: "part numbers to buy" });
     }
     if let Some((low, high)) = problem.goals.impedance {
         // The level is a rounded mean; the range was compared with the same mean.
         let outside = |z: f64| z < low * (1.0 - 1e-9) || z > high * (1.0 + 1e-9);
-        if row.sections.iter().any(|chosen| chosen.impedance.is_some_and(outside)) {
+        if boards.iter().any(|sections| sections.iter().any(|chosen| chosen.impedance.is_some_and(outside))) {
             return Err(VerifyError::Limit { row: number, what: "impedance" });
         }
     }
-    let found = error(problem, yardstick, row);
-    let claimed = row.deviation.error;
-    // Where Q is high both routes lose digits in the same proportion as the response itself is sensitive.
-    const AGREEMENT: f64 = 1e-6;
-    if (found - claimed).abs() <= AGREEMENT * (1.0 + claimed.abs()) {
-        Ok(())
-    } else {
-        Err(VerifyError::Response { row: number, found, claimed })
+    let offset = row.deviation.offset.unwrap_or(1.0);
+    let mut claims = vec![(row.sections.as_slice(), row.deviation.error, Some(offset))];
+    claims.extend(row.boards.iter().map(|board| (board.sections.as_slice(), board.error, row.deviation.offset)));
+    for (sections, claimed, offset) in claims {
+        // The offset of a board that differs is its own: only the worst board's is known here.
+        let Some(offset) = offset.or((!problem.criterion.ignore_gain).then_some(1.0)) else { continue };
+        if problem.criterion.ignore_gain && sections != row.sections.as_slice() {
+            continue;
+        }
+        let found = error(problem, yardstick, sections, offset);
+        // Where Q is high both routes lose digits in the same proportion as the response itself is sensitive.
+        const AGREEMENT: f64 = 1e-6;
+        let agrees = (found - claimed).abs() <= AGREEMENT * (1.0 + claimed.abs());
+        // The row's error is that of its worst board.
+        if !agrees || found > row.deviation.error + AGREEMENT * (1.0 + claimed.abs()) {
+            return Err(VerifyError::Response { row: number, found, claimed });
+        }
     }
+    for (section, chosen) in boards.iter().flat_map(|sections| problem.sections.iter().zip(*sections)) {
+        if let Some(part) = chosen.parts.iter().find(|part| !is_made_of_its_pieces(part)) {
+            let slot = section.circuit.slots[part.slot].name.clone();
+            return Err(VerifyError::Part { row: number, section: section.target.name.clone(), slot });
+        }
+    }
+    Ok(())
+}
+
+/// What a board takes.
+#[derive(Clone, Copy, Debug, Default)]
+struct Counted {
+    part_numbers: Option<usize>,
+    placed_parts: Option<usize>,
+    to_buy: Option<usize>,
+}
+
+impl Counted {
+    fn largest(&self, other: &Counted) -> Counted {
+        Counted {
+            part_numbers: self.part_numbers.max(other.part_numbers),
+            placed_parts: self.placed_parts.max(other.placed_parts),
+            to_buy: self.to_buy.max(other.to_buy),
+        }
+    }
+}
+
+/// Checks the parts of one board against the shelves, the ties and the stock, and counts them.
+fn check_board(
+    problem: &Problem,
+    number: usize,
+    sections: &[Chosen],
+    measured: &mut BTreeSet<Choice>,
+) -> Result<Counted, VerifyError> {
+    let supply = &problem.supply;
+    let mut used: BTreeMap<(Kind, Choice), u64> = BTreeMap::new();
+    for (section, chosen) in problem.sections.iter().zip(sections) {
+        let name = || section.target.name.clone();
+        let mut pairs = 0;
+        for slot in section.output().filled(&section.circuit) {
+            let fits = |part: &&Part| {
+                let pair = matches!((part.pieces.len(), part.joint), (2, Some(joint))
+                    if section.pairs.joints.get(slot).is_some_and(|allowed| allowed.contains(&joint)));
+                let single = part.pieces.len() == 1 && part.value == Some(part.pieces[0].value);
+                (pair || single) && part.pieces.iter().all(|piece| section.shelves[slot].contains(*piece))
+            };
+            let Some(part) = chosen.parts.iter().find(|p| p.slot == slot).filter(fits) else {
+                let slot = section.circuit.slots[slot].name.clone();
+                return Err(VerifyError::Part { row: number, section: name(), slot });
+            };
+            pairs += usize::from(part.pieces.len() == 2);
+            part.pieces.iter().for_each(|&piece| *used.entry((part.kind, piece)).or_default() += 1);
+        }
+        if pairs > section.pairs.most {
+            return Err(VerifyError::Limit { row: number, what: "pairs" });
+        }
+        let of = |slot: &usize| chosen.parts.iter().find(|p| p.slot == *slot).map(|part| (&part.pieces, part.joint));
+        if section.equal.iter().any(|group| group.windows(2).any(|two| of(&two[0]) != of(&two[1]))) {
+            return Err(VerifyError::Tie { row: number, section: name() });
+        }
+    }
+    let (mut numbers, mut bought) = (BTreeSet::new(), BTreeSet::new());
+    for (&(kind, choice), &count) in &used {
+        let lot = supply.lot_of(choice);
+        let there = lot.map_or(u64::MAX, |lot| lot.available.unwrap_or(u64::MAX));
+        // Without a list everything is there; with one, what is in no line must be bought.
+        let missing = match lot {
+            None => supply.has_stock(),
+            Some(lot) if lot.measured.is_some() => {
+                if count > 1 || there == 0 || !measured.insert(choice) {
+                    return Err(VerifyError::Limit { row: number, what: "measured parts, each there once" });
+                }
+                false
+            }
+            Some(_) => count * supply.boards + supply.spares > there,
+        };
+        let part_number = supply.part_number(kind, choice);
+        numbers.insert(part_number);
+        if missing {
+            if supply.buying == Buying::Forbidden {
+                return Err(VerifyError::Limit { row: number, what: "the stock" });
+            }
+            bought.insert(part_number);
+        }
+    }
+    Ok(Counted {
+        part_numbers: Some(numbers.len()),
+        placed_parts: Some(used.values().sum::<u64>() as usize),
+        to_buy: Some(bought.len()),
+    })
+}
+
+/// Whether the value of a slot is that of its parts together: resistors add in series, capacitors in parallel, otherwise the
+/// reciprocals do.
+fn is_made_of_its_pieces(part: &Part) -> bool {
+    let values: Vec<f64> = part.pieces.iter().map(|piece| piece.value.to_f64()).collect();
+    let adds = matches!(
+        (part.kind, part.joint),
+        (_, None) | (Kind::Resistor, Some(Joint::Series)) | (Kind::Capacitor, Some(Joint::Parallel))
+    );
+    let whole = match adds {
+        true => values.iter().sum::<f64>(),
+        false => 1.0 / values.iter().map(|value| 1.0 / value).sum::<f64>(),
+    };
+    (whole / part.ideal - 1.0).abs() < 1e-12
 }
 
 /// The response of a chosen section's netlist.
@@ -142,13 +256,12 @@ fn numeric(problem: &Problem, index: usize, chosen: &Chosen, w: f64) -> Complex6
     response(&section.circuit, section.output(), &values, w).unwrap_or(Complex64::new(f64::NAN, f64::NAN))
 }
 
-/// The error of a row from the netlist alone, by the definitions of [`Measure`].
-fn error(problem: &Problem, yardstick: &Yardstick, row: &Row) -> f64 {
+/// The error of a board from the netlist alone, by the definitions of [`Measure`], with a flat gain factor taken in.
+fn error(problem: &Problem, yardstick: &Yardstick, sections: &[Chosen], offset: f64) -> f64 {
     let cascade = |w: f64| -> Complex64 {
-        row.sections.iter().enumerate().map(|(k, chosen)| numeric(problem, k, chosen, w)).product()
+        sections.iter().enumerate().map(|(k, chosen)| numeric(problem, k, chosen, w)).product()
     };
     let ideal = |w: f64| -> Complex64 { problem.sections.iter().map(|s| s.target.ideal().value(w)).product() };
-    let offset = row.deviation.offset.unwrap_or(1.0);
     let largest = yardstick.frequencies().map(|w| ideal(w).norm()).fold(0.0, f64::max);
     let floor = largest * 10f64.powf(-problem.criterion.floor_db / 20.0);
     let at = |w: f64| {
@@ -164,7 +277,7 @@ fn error(problem: &Problem, yardstick: &Yardstick, row: &Row) -> f64 {
         let weights = [weights.f0, weights.q, gain, weights.fz];
         let section = |(k, section): (usize, &crate::search::SectionProblem)| {
             let misses =
-                fitted(problem, k, &row.sections[k]).map(|h| section.target.misses(&section.target.figures_of(&h)));
+                fitted(problem, k, &sections[k]).map(|h| section.target.misses(&section.target.figures_of(&h)));
             misses.map_or(f64::NAN, |misses| {
                 let terms = misses.into_iter().zip(weights).filter(|(_, weight)| *weight > 0.0);
                 terms.filter_map(|(miss, weight)| Some(miss? * weight)).sum::<f64>()
@@ -213,16 +326,30 @@ fn least_squares(rows: &[Vec<f64>], unknowns: usize) -> Option<Vec<f64>> {
     Some(solve(system)?.into_iter().map(|z| z.re).collect())
 }
 
-fn check_order(outcome: &Outcome) -> Result<(), VerifyError> {
-    let rank = |row: &Row| (ErrorKey::new(row.deviation.error), row.part_numbers, row.placed_parts);
+fn check_order(rank: Rank, outcome: &Outcome) -> Result<(), VerifyError> {
+    let error = |row: &Row| (ErrorKey::new(row.deviation.error), row.part_numbers, row.to_buy, row.placed_parts);
+    let first = |row: &Row| match rank {
+        Rank::Error => None,
+        Rank::PartNumbers => row.part_numbers.map(|count| count as u64),
+        Rank::ToBuy => row.to_buy.map(|count| count as u64),
+        Rank::Cost => row.cost,
+    };
+    let rank_of = |row: &Row| (first(row), error(row));
     for (index, row) in outcome.rows.iter().enumerate() {
         let number = index + 1;
-        if index > 0 && rank(&outcome.rows[index - 1]) > rank(row) {
+        if index > 0 && rank_of(&outcome.rows[index - 1]) > rank_of(row) {
             return Err(VerifyError::Order { row: number, why: "the row before it is worse" });
         }
-        let beaten = outcome.rows[..index]
-            .iter()
-            .any(|before| before.part_numbers <= row.part_numbers && before.placed_parts <= row.placed_parts);
+        let takes_no_more = |one: &Row, other: &Row| {
+            error(one).0 <= error(other).0
+                && one.part_numbers <= other.part_numbers
+                && one.placed_parts <= other.placed_parts
+                && one.to_buy <= other.to_buy
+                && (rank != Rank::Cost || one.cost <= other.cost)
+        };
+        let mut others = outcome.rows.iter().enumerate().filter(|(i, _)| *i != index);
+        // Of rows that are equal in everything the first counts.
+        let beaten = others.any(|(i, other)| takes_no_more(other, row) && (i < index || !takes_no_more(row, other)));
         if beaten && !row.alternative {
             return Err(VerifyError::Order { row: number, why: "another row beats it in everything" });
         }
@@ -237,10 +364,10 @@ mod tests {
 
     use super::*;
     use crate::circuit::find;
-    use crate::parts::{Series, Shelf};
+    use crate::parts::{Series, Shelf, Supply};
     use crate::search::{Goals, SectionProblem, Unwatched, shortlist};
     use crate::target::{Criterion, Shape, Weights};
-    use crate::units::{Kind, Value, parse_part};
+    use crate::units::{Value, parse_part};
 
     fn problem(measure: Measure) -> Problem {
         let shelf = |kind, series: Series, from: &str, to: &str| {
@@ -253,7 +380,13 @@ mod tests {
         let circuit = Arc::new(find("tow-thomas").unwrap().clone());
         let section = SectionProblem::new(target, circuit, "low-pass", &resistors, &capacitors).unwrap();
         let criterion = Criterion { measure, ..Criterion::default() };
-        Problem { title: String::new(), sections: vec![section], criterion, goals: Goals::default() }
+        Problem {
+            title: String::new(),
+            sections: vec![section],
+            criterion,
+            goals: Goals::default(),
+            supply: Supply::default(),
+        }
     }
 
     #[test]

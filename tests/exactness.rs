@@ -10,7 +10,7 @@ use std::collections::BTreeSet;
 use std::sync::Arc;
 
 use roundwell::circuit::Circuit;
-use roundwell::parts::Shelf;
+use roundwell::parts::{Shelf, Supply};
 use roundwell::search::{Goals, Part, Problem, SectionProblem, Unwatched, shortlist};
 use roundwell::target::{Criterion, Measure, Section, Shape, Weights};
 use roundwell::units::{Kind, Value};
@@ -626,7 +626,13 @@ fn boards_are_what_they_say() {
         of("C", "rc-low-pass", "low-pass", first(Shape::FirstOrderLowPass, 2e3, 1.0)),
     ];
     let goals = wide(20.0);
-    let board = Problem { title: "board".into(), sections, criterion: Criterion::default(), goals };
+    let board = Problem {
+        title: "board".into(),
+        sections,
+        criterion: Criterion::default(),
+        goals,
+        supply: Supply::default(),
+    };
     let outcome = shortlist(&board, &Unwatched);
     assert!(outcome.within_limit && !outcome.rows.is_empty());
     for (section, summary) in board.sections.iter().zip(&outcome.sections) {

@@ -7,7 +7,7 @@ mod support;
 
 use std::f64::consts::FRAC_1_SQRT_2;
 
-use roundwell::parts::{Series, Shelf};
+use roundwell::parts::{Series, Shelf, Supply};
 use roundwell::search::{Goals, Outcome, Problem, Row, SectionProblem, Unwatched, shortlist};
 use roundwell::target::{Biquad, Criterion, Figures, Section, Shape};
 use roundwell::units::{Kind, format_part, parse_part};
@@ -255,7 +255,13 @@ fn anti_alias_filter() {
         assert!((best.deviation.error - error).abs() <= 0.0005, "{}", best.deviation.error);
     }
     let sections = vec![of("A", 0.5412), of("B", 1.3066)];
-    let board = Problem { title: "Anti-alias filter".into(), sections, criterion, goals: all_rows() };
+    let board = Problem {
+        title: "Anti-alias filter".into(),
+        sections,
+        criterion,
+        goals: all_rows(),
+        supply: Supply::default(),
+    };
     let outcome = shortlist(&board, &Unwatched);
     outcome.rows.iter().for_each(|row| check_row(&board, row));
     // The two best sections together give 0.103 dB; another pair may compensate each other better.

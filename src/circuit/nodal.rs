@@ -49,9 +49,51 @@ impl Transfer {
 
     /// Whether the response stays the same when slots are permuted: slot k takes the place of slot `order[k]`.
     pub fn is_invariant_under(&self, order: &[usize]) -> bool {
+        if self.visibly_moves_under(order) {
+            return false;
+        }
         let map: Vec<Option<usize>> = order.iter().copied().map(Some).collect();
         let of = |list: &[Polynomial]| list.iter().map(|p| p.substituted(&map, order.len())).collect::<Vec<_>>();
         product(&self.numerator, &of(&self.denominator)) == product(&self.denominator, &of(&self.numerator))
+    }
+
+    /// Whether the response differs at one point by far more than rounding: cheaper than the comparison of polynomials.
+    fn visibly_moves_under(&self, order: &[usize]) -> bool {
+        const S: f64 = 1.3;
+        let here: Vec<f64> = (0..order.len()).map(|k| 1.0 + 0.618 * k as f64).collect();
+        let there: Vec<f64> = order.iter().map(|&k| here[k]).collect();
+        let at = |list: &[Polynomial], x: &[f64]| list.iter().rev().fold(0.0, |sum, p| sum * S + p.value(x));
+        let left = at(&self.numerator, &here) * at(&self.denominator, &there);
+        let right = at(&self.numerator, &there) * at(&self.denominator, &here);
+        (left - right).abs() > 1e-9 * (left.abs() + right.abs())
+    }
+
+    /// The transfer function with the part of one variable made of two: the variable is the first of them, a new last
+    /// variable the second. `in_row` (admittances a, b) gives ab/(a + b), otherwise the two add up.
+    ///
+    /// Two resistors or two capacitors in series have the admittance ab/(a + b), in parallel a + b.
+    pub(crate) fn paired(&self, variable: usize, in_row: bool) -> Transfer {
+        let count = self.capacitors.len() + 1;
+        let same: Vec<Option<usize>> = (0..count - 1).map(Some).collect();
+        let [first, second] = [variable, count - 1].map(|v| Polynomial::variable(v, count));
+        let (sum, both) = (first.plus(&second), first.times(&second));
+        let all = self.numerator.iter().chain(&self.denominator);
+        let top = all.map(|p| p.degree_in(variable)).max().unwrap_or(0);
+        let expanded = |p: &Polynomial| {
+            (0..=p.degree_in(variable)).fold(Polynomial::zero(), |total, power| {
+                let rest = p.coefficient_of(variable, power).substituted(&same, count);
+                // With N and D both times (a + b)^top no denominator is left.
+                let with = match in_row {
+                    true => both.power(power, count).times(&sum.power(top - power, count)),
+                    false => sum.power(power, count),
+                };
+                total.plus(&rest.times(&with))
+            })
+        };
+        let of = |list: &[Polynomial]| list.iter().map(expanded).collect();
+        let mut capacitors = self.capacitors.clone();
+        capacitors.push(self.capacitors[variable]);
+        Transfer { numerator: of(&self.numerator), denominator: of(&self.denominator), capacitors }.simplified()
     }
 
     /// Takes out a monomial common to all coefficients, common powers of s, and vanishing leading coefficients.

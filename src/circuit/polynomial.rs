@@ -119,6 +119,11 @@ impl Polynomial {
         Polynomial::from_terms(kept)
     }
 
+    /// The polynomial to a power.
+    pub fn power(&self, exponent: u8, variables: usize) -> Polynomial {
+        (0..exponent).fold(Polynomial::constant(1, variables), |product, _| product.times(self))
+    }
+
     /// The highest power of a variable.
     pub fn degree_in(&self, variable: usize) -> u8 {
         self.terms.keys().map(|e| e[variable]).max().unwrap_or(0)

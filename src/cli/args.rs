@@ -116,6 +116,9 @@ pub struct ShortlistArgs {
     pub parts: PartsArgs,
 
     #[command(flatten)]
+    pub stock: DrawerArgs,
+
+    #[command(flatten)]
     pub goals: GoalArgs,
 
     #[command(flatten)]
@@ -194,6 +197,39 @@ pub struct PartsArgs {
     pub impedance: Option<String>,
 }
 
+/// The stock that is drawn on, and pairs.
+#[derive(Debug, Default, Args)]
+#[command(next_help_heading = "Stock and pairs")]
+pub struct DrawerArgs {
+    /// Stock list (CSV) to draw on: shelves then give the range, and the series that may be bought.
+    #[arg(long, value_name = "FILE")]
+    pub stock: Option<PathBuf>,
+    /// Leave out lines of the stock list that cannot be used.
+    #[arg(long, value_name = "BOOL", num_args = 0..=1, require_equals = true, default_missing_value = "true")]
+    pub skip_bad_lines: Option<bool>,
+    /// Boards that the stock must do for [default: 1].
+    #[arg(long, value_name = "COUNT")]
+    pub boards: Option<String>,
+    /// How many of each part used shall be left over [default: 0].
+    #[arg(long, value_name = "COUNT")]
+    pub spares: Option<String>,
+    /// What may be bought beside the stock: none, any, or at most so many part numbers [default: none].
+    #[arg(long, value_name = "COUNT")]
+    pub buy: Option<String>,
+    /// Leave ceramic capacitors of class 2 (X7R and the like) in the drawer.
+    #[arg(long, value_name = "BOOL", num_args = 0..=1, require_equals = true, default_missing_value = "true")]
+    pub bar_class_2: Option<bool>,
+    /// Let each of several boards with measured parts have its own other parts too.
+    #[arg(long, value_name = "BOOL", num_args = 0..=1, require_equals = true, default_missing_value = "true")]
+    pub own_set_per_board: Option<bool>,
+    /// Where two parts may take the place of one, separated by commas.
+    #[arg(long, value_name = "KINDS", value_delimiter = ',', value_parser = ["resistors", "capacitors", "series-capacitors"])]
+    pub pairs: Vec<String>,
+    /// Slots of a section that may hold a pair [default: 1].
+    #[arg(long, value_name = "COUNT", requires = "pairs")]
+    pub pairs_at_most: Option<String>,
+}
+
 /// How sets are judged, and what is wanted.
 #[derive(Debug, Default, Args)]
 #[command(next_help_heading = "Error and goals")]
@@ -228,6 +264,9 @@ pub struct GoalArgs {
     /// Further sets to list for each number of part numbers [default: 0].
     #[arg(long, value_name = "COUNT")]
     pub alternatives: Option<String>,
+    /// What the rows are ranked by first; cost then takes part in the front [default: error].
+    #[arg(long, value_parser = ["error", "part-numbers", "to-buy", "cost"])]
+    pub rank: Option<String>,
     /// How long to search, such as 10s [default: to the end].
     #[arg(long, value_name = "TIME")]
     pub time_limit: Option<String>,

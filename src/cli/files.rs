@@ -8,6 +8,8 @@ use std::sync::Arc;
 
 use super::failure::{Failure, Faulty};
 use crate::circuit::{Circuit, find};
+use crate::parts::Stock;
+use crate::report::printable;
 use crate::text::Fault;
 
 /// No text file is longer, in bytes; so a device that never ends is not read forever.
@@ -42,6 +44,21 @@ pub fn read_bytes(path: &Path) -> Result<Vec<u8>, Failure> {
         return Err(Failure::input(Fault::at("", message).help("is it a text file?")));
     }
     Ok(bytes)
+}
+
+/// Reads a stock list that a job draws on; what is wrong with single lines is left in it.
+///
+/// # Errors
+/// In a sentence: what cannot be read, or is no stock list.
+pub fn read_stock(path: &Path) -> Result<Stock, String> {
+    let bytes = read_bytes(path).map_err(|failure| match failure {
+        Failure::Input(texts) => {
+            let faults = texts.into_iter().flat_map(|text| text.faults);
+            faults.map(|fault| fault.message).collect::<Vec<_>>().join("; ")
+        }
+        other => other.show(false).trim_end().to_string(),
+    })?;
+    Stock::read(&bytes).map_err(|error| printable(&format!("{}: {error}", path.display())))
 }
 
 /// Whether a circuit is named by a file.

@@ -3,14 +3,15 @@
 use std::path::{Path, PathBuf};
 use std::time::Duration;
 
-use super::args::{GoalArgs, PartsArgs, SectionArgs, ShortlistArgs, shape_flag};
+use super::args::{DrawerArgs, GoalArgs, PartsArgs, SectionArgs, ShortlistArgs, shape_flag};
 use super::failure::{Failure, Faulty};
-use super::files::{Circuits, is_file_name, read_text};
+use super::files::{Circuits, is_file_name, read_stock, read_text};
 use crate::job::{
-    Given, Job, JobFile, MeasureFile, Scalar, Scalars, SectionFile, ShelfFile, Shelves, Sign, SlotFile, Slots, Untie,
-    resolve,
+    Given, Job, JobFile, Joints, MeasureFile, PairsFile, Scalar, Scalars, SectionFile, ShelfFile, Shelves, Sign,
+    SlotFile, Slots, Untie, resolve,
 };
-use crate::search::Problem;
+use crate::parts::Stock;
+use crate::search::{Joint, Problem, Rank};
 use crate::target::Shape;
 use crate::text::{Fault, located};
 
@@ -54,7 +55,8 @@ impl Settings {
             }
         }
         let mut circuits = Circuits::new(source.folder());
-        match resolve(&job, &mut |name| circuits.get(name)) {
+        let stock = noted(&mut faults, source.stock(&job));
+        match resolve(&job, &mut |name| circuits.get(name), stock.as_ref()) {
             Ok(Job { problem, time_limit }) if faults.is_empty() => Ok(Settings { problem, time_limit }),
             resolved => {
                 faults.extend(resolved.err().unwrap_or_default());
@@ -88,6 +90,16 @@ impl Source {
     /// The folder from which the job names circuit files: its own.
     fn folder(&self) -> PathBuf {
         self.path.as_deref().and_then(Path::parent).map(Path::to_path_buf).unwrap_or_default()
+    }
+
+    /// The stock list that the job names: from its own folder, or by a flag from the working folder.
+    fn stock(&self, job: &JobFile) -> Option<Result<Stock, Fault>> {
+        let Given { value, flag } = job.stock.as_ref()?;
+        let path = match flag {
+            Some(_) => PathBuf::from(value.text()),
+            None => self.folder().join(value.text()),
+        };
+        Some(read_stock(&path).map_err(|message| Fault::at(flag.unwrap_or("stock"), message)))
     }
 
     /// Faults of the job, and before them those of the circuit files that it names.
@@ -146,8 +158,20 @@ fn lay_over(job: &mut JobFile, args: &ShortlistArgs) -> Vec<Fault> {
         error_resolution,
         rows,
         alternatives,
+        rank,
         time_limit,
     } = &args.goals;
+    let DrawerArgs {
+        stock,
+        skip_bad_lines,
+        boards,
+        spares,
+        buy,
+        bar_class_2,
+        own_set_per_board,
+        pairs,
+        pairs_at_most,
+    } = &args.stock;
     let shelf = |flag, text: &Option<String>| text.as_deref().map(|text| ShelfFile::from_flag(flag, text));
     let range = |flag, text: &Option<String>| text.as_deref().map(|text| Given::range(flag, text));
     let over = JobFile {
@@ -172,6 +196,15 @@ fn lay_over(job: &mut JobFile, args: &ShortlistArgs) -> Vec<Fault> {
         alternatives: scalar("--alternatives", alternatives),
         impedance: noted(&mut faults, range("--impedance", impedance)),
         time_limit: scalar("--time-limit", time_limit),
+        stock: stock.as_deref().map(|path| Given::flag("--stock", path.to_string_lossy().as_ref())),
+        skip_bad_lines: given("--skip-bad-lines", *skip_bad_lines),
+        boards: scalar("--boards", boards),
+        spares: scalar("--spares", spares),
+        buy: scalar("--buy", buy),
+        bar_class_2: given("--bar-class-2", *bar_class_2),
+        pairs: (!pairs.is_empty()).then(|| Given::flag("--pairs", pairs_of(pairs, pairs_at_most))),
+        rank: rank.as_deref().map(|rank| Given::flag("--rank", rank_of(rank))),
+        own_set_per_board: given("--own-set-per-board", *own_set_per_board),
     };
     for section in job.sections.iter_mut().flat_map(|sections| &mut sections.value) {
         clear(&mut section.circuit, &over.circuit);
@@ -179,6 +212,7 @@ fn lay_over(job: &mut JobFile, args: &ShortlistArgs) -> Vec<Fault> {
         clear(&mut section.sign, &over.sign);
         clear(&mut section.resistors, &over.resistors);
         clear(&mut section.capacitors, &over.capacitors);
+        clear(&mut section.pairs, &over.pairs);
     }
     job.overlay(over);
     exclude(
@@ -196,6 +230,31 @@ fn lay_over(job: &mut JobFile, args: &ShortlistArgs) -> Vec<Fault> {
         |section| &mut section.capacitors,
     );
     faults
+}
+
+/// The pairs that a flag allows.
+fn pairs_of(kinds: &[String], at_most: &Option<String>) -> PairsFile {
+    let names = |name: &str| kinds.iter().any(|kind| kind == name);
+    let joints = |wanted: [(bool, Joint); 2]| {
+        let joints: Vec<Joint> = wanted.iter().filter(|(wanted, _)| *wanted).map(|(_, joint)| *joint).collect();
+        (!joints.is_empty()).then(|| Given::flag("--pairs", Joints(joints)))
+    };
+    let resistors = names("resistors");
+    PairsFile {
+        resistors: joints([(resistors, Joint::Series), (resistors, Joint::Parallel)]),
+        capacitors: joints([(names("series-capacitors"), Joint::Series), (names("capacitors"), Joint::Parallel)]),
+        slots: None,
+        at_most: scalar("--pairs-at-most", at_most),
+    }
+}
+
+fn rank_of(name: &str) -> Rank {
+    match name {
+        "part-numbers" => Rank::PartNumbers,
+        "to-buy" => Rank::ToBuy,
+        "cost" => Rank::Cost,
+        _ => Rank::Error,
+    }
 }
 
 /// Takes away what a section says where a flag says something else.

@@ -1,5 +1,6 @@
 //! The job file as it is written (RON): every key may be missing, scalars are kept as text.
 
+use std::collections::BTreeMap;
 use std::fmt;
 
 use serde::Deserialize;
@@ -8,6 +9,7 @@ use serde::de::{Deserializer, Error, MapAccess, SeqAccess, Visitor};
 
 use super::given::{Given, Scalar, Scalars};
 use super::shelf::Shelves;
+use crate::search::{Joint, Rank};
 use crate::target::Shape;
 use crate::text::{self, Fault};
 
@@ -71,6 +73,62 @@ written! {
         impedance: (Scalar, Scalar),
         /// How long to search.
         time_limit: Scalar,
+        /// The stock list (CSV) that is drawn on, named from the folder of the job file.
+        stock: Scalar,
+        /// Whether lines of the stock list that cannot be used are left out; otherwise they are faults.
+        skip_bad_lines: bool,
+        /// How many boards the stock must do for; 1.
+        boards: Scalar,
+        /// How many of each part used shall be left over; 0.
+        spares: Scalar,
+        /// What may be bought beside the stock: `none`, `any`, or at most so many part numbers; none.
+        buy: Scalar,
+        /// Whether ceramic capacitors of class 2 stay in the drawer; false.
+        bar_class_2: bool,
+        /// Where two parts may take the place of one; nowhere.
+        pairs: PairsFile,
+        /// What the rows are ranked by; the error.
+        rank: Rank,
+        /// Whether each of several boards with measured parts may have other parts beside them; false.
+        own_set_per_board: bool,
+    }
+}
+
+written! {
+    /// Where two parts may take the place of one.
+    PairsFile as "Pairs" {
+        /// How two resistors may be joined.
+        resistors: Joints,
+        /// How two capacitors may be joined.
+        capacitors: Joints,
+        /// How the parts of single slots may be joined, by slot name; wins over the kind.
+        slots: BTreeMap<String, Joints>,
+        /// How many slots of a section may hold a pair; 1.
+        at_most: Scalar,
+    }
+}
+
+/// The ways in which two parts may be joined.
+#[derive(Clone, Debug, Default, PartialEq, Eq)]
+pub struct Joints(pub Vec<Joint>);
+
+impl<'de> Deserialize<'de> for Joints {
+    fn deserialize<D: Deserializer<'de>>(deserializer: D) -> Result<Self, D::Error> {
+        #[derive(Deserialize)]
+        #[serde(rename = "Joint")]
+        enum Written {
+            Series,
+            Parallel,
+        }
+        let written: Vec<Written> = Vec::deserialize(deserializer)?;
+        let joint = |written: &Written| match written {
+            Written::Series => Joint::Series,
+            Written::Parallel => Joint::Parallel,
+        };
+        let mut joints: Vec<Joint> = written.iter().map(joint).collect();
+        joints.sort_unstable();
+        joints.dedup();
+        Ok(Joints(joints))
     }
 }
 
@@ -111,6 +169,8 @@ written! {
         equal: Vec<Vec<Scalar>>,
         /// Ties of the circuit that do not hold.
         untie: Untie,
+        /// Where two parts may take the place of one.
+        pairs: PairsFile,
     }
 }
 

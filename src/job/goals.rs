@@ -13,7 +13,7 @@ use crate::target::{Criterion, Measure, Weights};
 use crate::units::{Kind, format_part, parse_decibels, parse_frequency, parse_number, parse_part};
 
 /// A whole number between two bounds.
-fn whole(name: &str, low: usize, high: usize) -> impl Fn(&str) -> Result<usize, String> {
+pub(super) fn whole(name: &str, low: usize, high: usize) -> impl Fn(&str) -> Result<usize, String> {
     move |text| {
         let number = text.parse().ok().filter(|number| (low..=high).contains(number));
         number.ok_or_else(|| format!("{name} must be a whole number from {low} to {high}, found {text}"))
@@ -139,6 +139,8 @@ pub(super) fn goals(desk: &mut Desk, job: &JobFile, measure: Checked<Measure>) -
         rows: rows?.unwrap_or(usual.rows),
         alternatives: alternatives?.unwrap_or(usual.alternatives),
         impedance: impedance?.map(|(low, high)| (low.to_f64(), high.to_f64())),
+        rank: job.rank.as_ref().map_or(usual.rank, |given| given.value),
+        each_board_its_own: job.own_set_per_board.as_ref().is_some_and(|given| given.value),
     })
 }
 

@@ -12,11 +12,12 @@ mod resolve;
 mod section;
 mod shelf;
 mod slots;
+mod stock;
 
 #[cfg(test)]
 mod tests;
 
-pub use file::{JobFile, MeasureFile, SectionFile, Sign, SlotFile, Slots, Untie};
+pub use file::{JobFile, Joints, MeasureFile, PairsFile, SectionFile, Sign, SlotFile, Slots, Untie};
 pub use given::{Given, Scalar, Scalars};
 pub use resolve::{Job, resolve};
 pub use shelf::{ShelfFile, Shelves};

@@ -8,8 +8,10 @@ use super::file::{JobFile, SectionFile};
 use super::goals::{Delicate, check_impedance, criterion, goals};
 use super::section::{Circuits, Written, has_inexact_null};
 use super::shelf::shelf;
-use super::slots::{Board, Stock};
+use super::slots::{Board, ByKind};
+use super::stock::{Source, check_rank, pairs};
 use crate::circuit::Circuit;
+use crate::parts::{Shelf, Stock};
 use crate::search::{Problem, SectionProblem};
 use crate::text::{CONTROL_HELP, Fault, control_character};
 use crate::units::{Kind, parse_seconds};
@@ -28,7 +30,8 @@ pub struct Job {
 
 /// Resolves a job: fills in the defaults, finds the circuits, chooses the outputs, puts the shelves together.
 ///
-/// `circuits` gives the circuit of an identifier, or says what is wrong with it.
+/// `circuits` gives the circuit of an identifier, or says what is wrong with it; `stock` is the stock list that the job
+/// names, as read.
 ///
 /// # Errors
 /// All faults that can be told independently, by their paths in the job file or their flags;
@@ -36,12 +39,13 @@ pub struct Job {
 pub fn resolve(
     job: &JobFile,
     circuits: &mut dyn FnMut(&str) -> Result<Arc<Circuit>, String>,
+    stock: Option<&Stock>,
 ) -> Result<Job, Vec<Fault>> {
     let mut desk = Desk::default();
-    resolved(&mut desk, job, circuits).map_err(|Noted| desk.faults)
+    resolved(&mut desk, job, circuits, stock).map_err(|Noted| desk.faults)
 }
 
-fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits) -> Checked<Job> {
+fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits, stock: Option<&Stock>) -> Checked<Job> {
     let root = Place::job();
     let files: &[SectionFile] = job.sections.as_ref().map_or(&[], |given| &given.value);
     let place = root.key("sections");
@@ -54,9 +58,15 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits) -> Checked<Job> 
     {
         desk.note(&place, message, CONTROL_HELP);
     }
-    let resistors = shelf(desk, root.find("resistors", &job.resistors), Kind::Resistor);
-    let capacitors = shelf(desk, root.find("capacitors", &job.capacitors), Kind::Capacitor);
-    let stock = Stock { resistors, capacitors };
+    // A stock that cannot be used leaves nothing to say of the shelves; all else is still checked, as if there were none.
+    let source = Source::new(desk, job, stock);
+    let source = &match source {
+        Ok(source) => source,
+        Err(Noted) => Source::new(desk, &JobFile::default(), None)?,
+    };
+    let resistors = shelf(desk, root.find("resistors", &job.resistors), Kind::Resistor, source);
+    let capacitors = shelf(desk, root.find("capacitors", &job.capacitors), Kind::Capacitor, source);
+    let of_kind = ByKind { resistors, capacitors };
 
     let mut names: Vec<String> = Vec::new();
     let mut sections = Vec::new();
@@ -76,7 +86,7 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits) -> Checked<Job> 
             desk.note(&place.of("name", &file.name), message, "give each section its own name");
         }
         names.push(name.clone());
-        sections.push(section(desk, &Written { job, file, place, name }, &stock, circuits));
+        sections.push(section(desk, &Written { job, file, place, name }, (&of_kind, source), circuits));
     }
 
     let all_pass =
@@ -92,6 +102,8 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits) -> Checked<Job> 
     if let Ok(goals) = &goals {
         sections.iter().flatten().for_each(|section| check_impedance(desk, job, goals, section));
     }
+    let shelves: Vec<&Shelf> = sections.iter().flatten().flat_map(|section| &section.shelves).collect();
+    check_rank(desk, job, source, &shelves);
     let seconds = |text: &str| {
         let seconds = parse_seconds(text).map_err(|error| error.to_string())?;
         Duration::try_from_secs_f64(seconds).map_err(|error| error.to_string())
@@ -106,32 +118,40 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits) -> Checked<Job> 
             sections: sections.into_iter().collect::<Checked<_>>()?,
             criterion: criterion?,
             goals: goals?,
+            supply: source.supply.clone(),
         },
         time_limit: time_limit?,
     })
 }
 
-fn section(desk: &mut Desk, written: &Written, stock: &Stock, circuits: Circuits) -> Checked<SectionProblem> {
+fn section(
+    desk: &mut Desk,
+    written: &Written,
+    (of_kind, source): (&ByKind, &Source),
+    circuits: Circuits,
+) -> Checked<SectionProblem> {
     let (file, place) = (written.file, &written.place);
     let target = written.target(desk);
     let circuit = written.circuit(desk, circuits, &target);
     let mut own = |found: Option<At<'_, _>>, kind, of_job: &Checked<_>| match found {
-        Some(at) => shelf(desk, Some(at), kind),
+        Some(at) => shelf(desk, Some(at), kind, source),
         None => of_job.clone(),
     };
-    let stock = Stock {
-        resistors: own(place.find("resistors", &file.resistors), Kind::Resistor, &stock.resistors),
-        capacitors: own(place.find("capacitors", &file.capacitors), Kind::Capacitor, &stock.capacitors),
+    let of_kind = ByKind {
+        resistors: own(place.find("resistors", &file.resistors), Kind::Resistor, &of_kind.resistors),
+        capacitors: own(place.find("capacitors", &file.capacitors), Kind::Capacitor, &of_kind.capacitors),
     };
     let (mut target, circuit) = (target?, circuit?);
     let output = written.output(desk, &circuit, &mut target)?;
 
-    let board = Board { circuit: &circuit, output: &circuit.outputs[output], file, place };
-    let shelves = board.shelves(desk, &stock);
+    let board = Board { circuit: &circuit, output: &circuit.outputs[output], file, place, source };
+    let of_section = place.find("pairs", &file.pairs);
+    let pairs = pairs(desk, of_section.or_else(|| Place::job().find("pairs", &written.job.pairs)), &circuit);
+    let shelves = board.shelves(desk, &of_kind);
     let equal = board.equal(desk)?;
     let gain = written.check_gain(desk, &circuit, board.output, &equal, &target);
     let mut shelves = shelves?;
     board.narrow(desk, &mut shelves, &equal)?;
     gain?;
-    Ok(SectionProblem { target, circuit, output, shelves, equal })
+    Ok(SectionProblem { target, circuit, output, shelves, equal, pairs: pairs? })
 }

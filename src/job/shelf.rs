@@ -8,7 +8,8 @@ use serde::de::{Deserializer, MapAccess, SeqAccess, Visitor};
 
 use super::desk::{At, Checked, Desk, Place};
 use super::given::{Given, Scalar, Scalars};
-use crate::parts::{Series, Shelf};
+use super::stock::Source;
+use crate::parts::{Choice, Series, Shelf};
 use crate::text::Fault;
 use crate::units::{Kind, Value, format_part, parse_part};
 
@@ -84,8 +85,8 @@ impl ShelfFile {
         Ok(Given::flag(flag, Shelves(vec![shelf])))
     }
 
-    /// The values, at least one.
-    fn resolve(&self, desk: &mut Desk, place: &Place, kind: Kind) -> Checked<Vec<Value>> {
+    /// The choices, at least one.
+    fn resolve(&self, desk: &mut Desk, place: &Place, kind: Kind, source: &Source) -> Checked<Vec<Choice>> {
         let part = |text: &str| parse_part(text, kind);
         let series = desk.list(place.find("series", &self.series), str::parse::<Series>);
         let listed = desk.list(place.find("values", &self.values), part);
@@ -106,7 +107,9 @@ impl ShelfFile {
             series.push(desk.value(place, &usual, str::parse)?);
         }
         // A range that is not written holds for series only.
-        let mut values = listed;
+        let has_series = !series.is_empty();
+        let ranged = |value: Value, from: Value, to: Value| has_series && from <= value && value <= to;
+        let mut values = listed.clone();
         values.retain(|value| from.is_none_or(|from| from <= *value) && to.is_none_or(|to| *value <= to));
         let from = from.map_or_else(|| desk.value(place, &low, part), Ok)?;
         let to = to.map_or_else(|| desk.value(place, &high, part), Ok)?;
@@ -124,7 +127,9 @@ impl ShelfFile {
             let message = format!("the {} shelf is empty: every value is excluded", kind.name());
             return Err(desk.note(&place.key("exclude"), message, "exclude fewer values, or widen the range"));
         }
-        Ok(values)
+        let is_wanted =
+            |label: Value| (ranged(label, from, to) || listed.contains(&label)) && !exclude.contains(&label);
+        Ok(source.choices(kind, values, is_wanted))
     }
 }
 
@@ -137,12 +142,17 @@ fn usual(kind: Kind) -> [&'static str; 3] {
 }
 
 /// The shelf of a kind, by default the usual one.
-pub(super) fn shelf(desk: &mut Desk, found: Option<At<'_, Shelves>>, kind: Kind) -> Checked<Shelf> {
+pub(super) fn shelf(desk: &mut Desk, found: Option<At<'_, Shelves>>, kind: Kind, source: &Source) -> Checked<Shelf> {
     let usual = Shelves(vec![ShelfFile::default()]);
     let At { value: Shelves(files), place } = found.unwrap_or(At { value: &usual, place: Place::job() });
     let members = files.iter().enumerate();
-    let values: Vec<Checked<Vec<Value>>> =
-        members.map(|(i, file)| file.resolve(desk, &place.item(i), kind)).collect();
-    let values: Vec<Vec<Value>> = values.into_iter().collect::<Checked<_>>()?;
-    Shelf::new(kind, values.into_iter().flatten()).map_err(|error| desk.note(&place, error.to_string(), ""))
+    let choices: Vec<Checked<Vec<Choice>>> =
+        members.map(|(i, file)| file.resolve(desk, &place.item(i), kind, source)).collect();
+    let choices: Vec<Choice> = choices.into_iter().collect::<Checked<Vec<_>>>()?.into_iter().flatten().collect();
+    if choices.is_empty() && source.supply.has_stock() {
+        let message = format!("no {} in stock lies in the range, and nothing may be bought", kind.name());
+        let help = "widen the range (by default it is 1k to 1M and 1n to 1u), or allow buying with buy or --buy";
+        return Err(desk.note(&place, message, help));
+    }
+    Shelf::of_choices(kind, choices).map_err(|error| desk.note(&place, error.to_string(), ""))
 }

@@ -6,18 +6,19 @@ use super::desk::{At, Checked, Desk, Place};
 use super::file::{SectionFile, SlotFile, Slots, Untie};
 use super::given::Scalar;
 use super::shelf::shelf;
+use super::stock::Source;
 use crate::circuit::{Circuit, Output};
-use crate::parts::Shelf;
+use crate::parts::{Shelf, ShelfError};
 use crate::text::suggestion;
 use crate::units::{Kind, parse_part};
 
 /// The shelves of a section by kind of part.
-pub(super) struct Stock {
+pub(super) struct ByKind {
     pub resistors: Checked<Shelf>,
     pub capacitors: Checked<Shelf>,
 }
 
-impl Stock {
+impl ByKind {
     fn of(&self, kind: Kind) -> Checked<&Shelf> {
         let shelf = match kind {
             Kind::Resistor => &self.resistors,
@@ -34,6 +35,8 @@ pub(super) struct Board<'a> {
     pub file: &'a SectionFile,
     /// Where the section stands.
     pub place: &'a Place,
+    /// What its parts are taken from.
+    pub source: &'a Source,
 }
 
 impl Board<'_> {
@@ -61,14 +64,14 @@ impl Board<'_> {
     }
 
     /// The shelf of each slot.
-    pub fn shelves(&self, desk: &mut Desk, stock: &Stock) -> Checked<Vec<Shelf>> {
+    pub fn shelves(&self, desk: &mut Desk, of_kind: &ByKind) -> Checked<Vec<Shelf>> {
         let mut shelves: Vec<Checked<Shelf>> =
-            self.circuit.slots.iter().map(|slot| stock.of(slot.kind).cloned()).collect();
+            self.circuit.slots.iter().map(|slot| of_kind.of(slot.kind).cloned()).collect();
         if let Some(At { value: Slots(slots), place }) = self.place.find("slots", &self.file.slots) {
             for (name, file) in slots {
                 let place = place.key(name);
                 match self.filled(desk, &place, name) {
-                    Ok(slot) => shelves[slot] = self.own(desk, &place, file, slot, stock),
+                    Ok(slot) => shelves[slot] = self.own(desk, &place, file, slot, of_kind),
                     // One more member, so that the whole list fails.
                     Err(noted) => shelves.push(Err(noted)),
                 }
@@ -78,7 +81,7 @@ impl Board<'_> {
     }
 
     /// The shelf of a slot for which the section says something.
-    fn own(&self, desk: &mut Desk, place: &Place, file: &SlotFile, slot: usize, stock: &Stock) -> Checked<Shelf> {
+    fn own(&self, desk: &mut Desk, place: &Place, file: &SlotFile, slot: usize, of_kind: &ByKind) -> Checked<Shelf> {
         let kind = self.circuit.slots[slot].kind;
         let part = |text: &str| parse_part(text, kind);
         if let Some(pin) = place.find("pin", &file.pin) {
@@ -87,14 +90,16 @@ impl Board<'_> {
                 return Err(desk.note(&pin.place, message, "leave out either the pin or the others"));
             }
             let value = desk.value(&pin.place, pin.value, part)?;
-            return Shelf::new(kind, [value]).map_err(|error| desk.note(&pin.place, error.to_string(), ""));
+            return self.source.pinned(desk, &pin.place, kind, value);
         }
         let exclude = desk.list(place.find("exclude", &file.exclude), part);
         let own = match place.find("shelf", &file.shelf) {
-            Some(at) => shelf(desk, Some(at), kind)?,
-            None => stock.of(kind)?.clone(),
+            Some(at) => shelf(desk, Some(at), kind, self.source)?,
+            None => of_kind.of(kind)?.clone(),
         };
-        own.without(&exclude?).map_err(|error| desk.note(&place.of("exclude", &file.exclude), error.to_string(), ""))
+        self.source.without(&own, &exclude?).ok_or_else(|| {
+            desk.note(&place.of("exclude", &file.exclude), ShelfError::NothingLeft(kind).to_string(), "")
+        })
     }
 
     /// Groups of slots that must carry the same value: ties in force and the section's own, merged where they meet.

@@ -4,13 +4,15 @@
 mod series;
 mod shelf;
 mod stock;
+mod supply;
 
 pub use series::{Series, UnknownSeries};
-pub use shelf::{Shelf, ShelfError};
+pub use shelf::{Choice, Shelf, ShelfError};
 pub use stock::{
     AtLine, Dielectric, DielectricClass, Film, Price, STOCK_COLUMNS, Stock, StockError, StockFault, StockLine,
     StockOddity, TemperatureCoefficient, Tolerance, ToleranceError,
 };
+pub use supply::{Buying, Lot, LotId, Origin, Supply};
 
 use crate::units::Value;
 

@@ -1,11 +1,28 @@
-//! The shelf: which values may go into a slot.
+//! The shelf: which parts may go into a slot.
 
 use thiserror::Error;
 
 use super::closer;
+use super::supply::LotId;
 use crate::units::{Kind, Value, format_part, range_in_words};
 
-/// The values of one kind of part that are allowed: ascending, distinct, and never none.
+/// What may be placed: a value of a series, or parts of a stock list.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash)]
+pub struct Choice {
+    /// The value that counts in the response, in ohms or farads: as measured, else as labelled.
+    pub value: Value,
+    /// The lot of the [`Supply`](super::Supply) it is taken from; `None` for any part of this value.
+    pub lot: Option<LotId>,
+}
+
+impl From<Value> for Choice {
+    /// Any part of this value.
+    fn from(value: Value) -> Choice {
+        Choice { value, lot: None }
+    }
+}
+
+/// The choices of one kind of part that are allowed: ascending, distinct, and never none.
 ///
 /// ```
 /// use roundwell::parts::{Series, Shelf};
@@ -20,6 +37,8 @@ use crate::units::{Kind, Value, format_part, range_in_words};
 #[derive(Clone, Debug, PartialEq, Eq)]
 pub struct Shelf {
     kind: Kind,
+    choices: Vec<Choice>,
+    /// The values of the choices, each once.
     values: Vec<Value>,
 }
 
@@ -50,16 +69,27 @@ impl Shelf {
     /// [`ShelfError::Empty`] without a value, [`ShelfError::OutOfRange`] for the smallest value that
     /// is outside [`Kind::range`].
     pub fn new(kind: Kind, values: impl IntoIterator<Item = Value>) -> Result<Shelf, ShelfError> {
-        let mut values: Vec<Value> = values.into_iter().collect();
-        values.sort_unstable();
+        Shelf::of_choices(kind, values.into_iter().map(Choice::from))
+    }
+
+    /// A shelf of these choices, in any order; those given twice count once.
+    ///
+    /// # Errors
+    /// As for [`Shelf::new`].
+    pub fn of_choices(kind: Kind, choices: impl IntoIterator<Item = Choice>) -> Result<Shelf, ShelfError> {
+        let mut choices: Vec<Choice> = choices.into_iter().collect();
+        choices.sort_unstable();
+        choices.dedup();
+        match choices.iter().find(|choice| !kind.allows(choice.value)) {
+            Some(choice) => Err(ShelfError::OutOfRange { kind, value: choice.value }),
+            None => Shelf::sorted(kind, choices).ok_or(ShelfError::Empty(kind)),
+        }
+    }
+
+    fn sorted(kind: Kind, choices: Vec<Choice>) -> Option<Shelf> {
+        let mut values: Vec<Value> = choices.iter().map(|choice| choice.value).collect();
         values.dedup();
-        if values.is_empty() {
-            return Err(ShelfError::Empty(kind));
-        }
-        match values.iter().find(|value| !kind.allows(**value)) {
-            Some(&value) => Err(ShelfError::OutOfRange { kind, value }),
-            None => Ok(Shelf { kind, values }),
-        }
+        (!values.is_empty()).then_some(Shelf { kind, choices, values })
     }
 
     /// The kind of part.
@@ -67,14 +97,19 @@ impl Shelf {
         self.kind
     }
 
+    /// The choices, ascending by value and distinct.
+    pub fn choices(&self) -> &[Choice] {
+        &self.choices
+    }
+
     /// The values, ascending and distinct.
     pub fn values(&self) -> &[Value] {
         &self.values
     }
 
-    /// The count of values, at least one.
+    /// The count of choices, at least one.
     pub fn len(&self) -> usize {
-        self.values.len()
+        self.choices.len()
     }
 
     /// The smallest and the largest value.
@@ -82,9 +117,9 @@ impl Shelf {
         (self.values[0], self.values[self.values.len() - 1])
     }
 
-    /// Whether the value is on the shelf.
-    pub fn contains(&self, value: Value) -> bool {
-        self.values.binary_search(&value).is_ok()
+    /// Whether the choice is on the shelf; a value alone means any part of that value.
+    pub fn contains(&self, choice: impl Into<Choice>) -> bool {
+        self.choices.binary_search(&choice.into()).is_ok()
     }
 
     /// The value with the smallest ratio to `ideal`, given in ohms or farads; the smaller of two that
@@ -99,10 +134,9 @@ impl Shelf {
         }
     }
 
-    /// The values that are on both shelves, or `None` when there are none or the kinds differ.
+    /// The choices that are on both shelves, or `None` when there are none or the kinds differ.
     pub fn intersection(&self, other: &Shelf) -> Option<Shelf> {
-        let kept = |value: &Value| self.kind == other.kind && other.contains(*value);
-        self.filtered(kept)
+        self.filtered(|choice| self.kind == other.kind && other.contains(*choice))
     }
 
     /// The shelf without the given values; those that are not on it are ignored.
@@ -110,13 +144,12 @@ impl Shelf {
     /// # Errors
     /// [`ShelfError::NothingLeft`] when no value remains.
     pub fn without(&self, excluded: &[Value]) -> Result<Shelf, ShelfError> {
-        self.filtered(|value| !excluded.contains(value)).ok_or(ShelfError::NothingLeft(self.kind))
+        self.filtered(|choice| !excluded.contains(&choice.value)).ok_or(ShelfError::NothingLeft(self.kind))
     }
 
-    fn filtered(&self, keep: impl Fn(&Value) -> bool) -> Option<Shelf> {
-        let values: Vec<Value> = self.values.iter().copied().filter(keep).collect();
-        let kind = self.kind;
-        (!values.is_empty()).then_some(Shelf { kind, values })
+    /// The choices for which `keep` holds, or `None` when there are none.
+    pub fn filtered(&self, keep: impl Fn(&Choice) -> bool) -> Option<Shelf> {
+        Shelf::sorted(self.kind, self.choices.iter().copied().filter(keep).collect())
     }
 }
 

@@ -8,7 +8,7 @@ use std::sync::Arc;
 
 use super::Record;
 use crate::circuit::find;
-use crate::parts::{Series, Shelf};
+use crate::parts::{Choice, Series, Shelf, Supply};
 use crate::search::{
     Chosen, End, Goals, Outcome, Part, Problem, Proof, Row, SectionProblem, SectionSummary, StopReason,
 };
@@ -64,6 +64,7 @@ pub fn problem(sections: usize) -> Problem {
         sections: [section("A", 0.5412), section("B", 1.3066)].into_iter().take(sections).collect(),
         criterion: Criterion::default(),
         goals: Goals { wanted_error: 0.4, ..Goals::default() },
+        supply: Supply::default(),
     }
 }
 
@@ -107,7 +108,8 @@ fn outcome(problem: &Problem) -> Outcome {
                         Some(values) => Some(values[slot]),
                         None => (kind == Kind::Capacitor).then(|| parse_part("10n", kind).unwrap()),
                     };
-                    Part { slot, kind, ideal: exact[slot], value }
+                    let pieces = value.into_iter().map(Choice::from).collect();
+                    Part { slot, kind, ideal: exact[slot], value, pieces, joint: None }
                 };
                 let parts: Vec<Part> = (0..section.circuit.slots.len()).map(part).collect();
                 numbers.extend(parts.iter().filter_map(|part| Some((part.kind, part.value?))));
@@ -132,7 +134,10 @@ fn outcome(problem: &Problem) -> Outcome {
             worst_miss: pairs.map(|(s, chosen)| s.target.worst_miss(&chosen.achieved)).fold(0.0, f64::max),
             alternative: false,
             proved: true,
+            to_buy: None,
+            cost: None,
             sections,
+            boards: Vec::new(),
         }
     };
     let rows = vec![row(Some(0)), row(Some(1))];

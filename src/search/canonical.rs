@@ -2,44 +2,121 @@
 
 use std::collections::{BTreeMap, BTreeSet};
 
-use crate::units::{Kind, Value};
+use crate::parts::{Choice, Origin, Supply};
+use crate::units::Kind;
 
-use super::front::{ErrorKey, Found};
+use super::assign::design;
+use super::front::{ErrorKey, Found, Takes};
 use super::model::{Group, Model};
 use super::problem::Goals;
 
-/// How many different values there are, resistors and capacitors counted apart.
-pub(crate) fn distinct(groups: &[Group], values: &[Value]) -> usize {
-    groups.iter().map(|g| g.kind).zip(values).collect::<BTreeSet<_>>().len()
+/// What parts come to on one board.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub(crate) struct Tally {
+    /// What they take.
+    pub takes: Takes,
+    /// What they cost, in millionths; `None` where a price is not known.
+    pub cost: Option<u64>,
+}
+
+/// Counts the parts of a board, given by kind, choice and number of bodies; `None` where the stock does not suffice for all
+/// boards and no more may be bought.
+pub(crate) fn tally(supply: &Supply, parts: impl IntoIterator<Item = (Kind, Choice, u64)>) -> Option<Tally> {
+    let mut used: BTreeMap<(Kind, Choice), u64> = BTreeMap::new();
+    for (kind, choice, bodies) in parts {
+        *used.entry((kind, choice)).or_default() += bodies;
+    }
+    let (mut numbers, mut bought) = (BTreeSet::new(), BTreeSet::new());
+    for (&(kind, choice), &bodies) in &used {
+        let number = supply.part_number(kind, choice);
+        if supply.obtain(choice, bodies)? == Origin::Bought && supply.has_stock() {
+            bought.insert(number);
+        }
+        numbers.insert(number);
+    }
+    let cost = used.iter().map(|((_, choice), bodies)| Some(supply.price(*choice)? * bodies)).sum();
+    let takes = Takes {
+        part_numbers: numbers.len(),
+        bought: bought.len(),
+        placed_parts: used.values().sum::<u64>() as usize,
+    };
+    (takes.bought <= supply.buying.most()).then_some(Tally { takes, cost })
+}
+
+/// The parts of a section: of each group its kind, its choice and how many bodies it places.
+pub(crate) fn parts<'a>(
+    groups: &'a [Group],
+    choices: &'a [Choice],
+) -> impl Iterator<Item = (Kind, Choice, u64)> + 'a {
+    groups.iter().zip(choices).map(|(group, &choice)| (group.kind, choice, group.bodies()))
+}
+
+/// How many part numbers there are.
+pub(crate) fn distinct(supply: &Supply, groups: &[Group], choices: &[Choice]) -> usize {
+    let numbers = groups.iter().zip(choices).map(|(group, &choice)| supply.part_number(group.kind, choice));
+    numbers.collect::<BTreeSet<_>>().len()
+}
+
+/// The impedance that is preferred where nothing else decides, ohms.
+const USUAL: f64 = 1e4;
+
+/// The middle of the wanted impedances, ohms.
+pub(crate) fn preferred_impedance(goals: &Goals) -> f64 {
+    goals.impedance.map_or(USUAL, |(from, to)| (from * to).sqrt())
 }
 
 /// The representative of all sets that differ from this one by a decade of impedance or by interchangeable slots, with
-/// the silent groups filled; `None` if none of them lies in the wanted impedance range. Its error is not yet known.
-pub(crate) fn canonical(model: &Model, goals: &Goals, values: &[Value]) -> Option<Found> {
+/// the silent groups filled; `None` if none of them lies in the wanted impedance range, or can be had. Its error is not
+/// yet known.
+pub(crate) fn canonical(
+    model: &Model,
+    form: usize,
+    supply: &Supply,
+    goals: &Goals,
+    choices: &[Choice],
+) -> Option<Found> {
     let groups = model.active_groups();
     // No shelf spans more decades than this.
     const DECADES: i32 = 40;
-    let at_level = |level: i32| -> Option<Vec<Value>> {
-        let shifted = shifted(groups, values, level)?;
+    let at_level = |level: i32| -> Option<(Vec<Choice>, Tally)> {
+        let shifted = shifted(groups, choices, level)?;
         let wanted = goals.impedance.is_none_or(|(from, to)| {
             impedance(groups, &in_ohms(&shifted)).is_none_or(|level| (from..=to).contains(&level))
         });
-        wanted.then(|| with_silent(model, shifted))
+        if wanted { with_silent(model, supply, shifted) } else { None }
     };
-    let levels: Vec<(i32, Vec<Value>)> = (-DECADES..=DECADES).filter_map(|k| Some((k, at_level(k)?))).collect();
-    let count = |values: &[Value]| distinct(&model.groups, values);
-    let part_numbers = levels.iter().map(|(_, values)| count(values)).min()?;
-    let cheapest: Vec<&(i32, Vec<Value>)> = levels.iter().filter(|(_, v)| count(v) == part_numbers).collect();
-    let (lowest, base) = cheapest.first()?;
-    let levels = cheapest.iter().map(|(k, _)| k - lowest).collect();
+    // What is in stock in one decade says nothing of another.
+    let movable = choices.iter().all(|choice| choice.lot.is_none());
+    let reach = if movable { -DECADES..=DECADES } else { 0..=0 };
+    let levels: Vec<(i32, Vec<Choice>, Tally)> =
+        reach.filter_map(|k| at_level(k).map(|(choices, tally)| (k, choices, tally))).collect();
+    let least = levels.iter().map(|(_, _, tally)| tally.takes).min()?;
+    let cheapest = || levels.iter().filter(|(_, _, tally)| tally.takes == least);
+    let (lowest, base, tally) = cheapest().next()?;
     let image = |order: &Vec<usize>| {
-        let mut image: Vec<Value> = order.iter().map(|&k| base[k]).collect();
+        let mut image: Vec<Choice> = order.iter().map(|&k| base[k]).collect();
         image.extend(&base[model.active..]);
         image
     };
-    let values = model.symmetries.iter().map(image).chain([base.clone()]).min()?;
+    // Sets that differ in measured parts only must end up with everything else in the same slots.
+    let order = |choices: &Vec<Choice>| (design(supply, &model.groups, choices), choices.clone());
+    let chosen = match model.symmetries.is_empty() {
+        true => base.clone(),
+        false => model.symmetries.iter().map(image).chain([base.clone()]).min_by_key(order)?,
+    };
+    let distance = impedance(groups, &in_ohms(&chosen)).map_or(0.0, |z| (z / preferred_impedance(goals)).ln().abs());
     let error = f64::INFINITY;
-    Some(Found { error, key: ErrorKey::new(error), part_numbers, values, levels })
+    Some(Found {
+        error,
+        key: ErrorKey::new(error),
+        takes: tally.takes,
+        cost: tally.cost,
+        awkward: if movable { 0 } else { (distance * 1e3) as u32 },
+        form,
+        choices: chosen,
+        levels: cheapest().map(|(k, _, _)| k - lowest).collect(),
+        boards: Vec::new(),
+    })
 }
 
 /// The impedance level: geometric mean of the resistances, ohms; `None` without a resistor. Values in ohms and farads.
@@ -52,74 +129,95 @@ pub(crate) fn impedance(groups: &[Group], values: &[f64]) -> Option<f64> {
 }
 
 /// Part values as ohms and farads.
-pub(crate) fn in_ohms(values: &[Value]) -> Vec<f64> {
-    values.iter().map(|v| v.to_f64()).collect()
+pub(crate) fn in_ohms(choices: &[Choice]) -> Vec<f64> {
+    choices.iter().map(|choice| choice.value.to_f64()).collect()
 }
 
-/// The values at another impedance level: resistors times a power of ten, capacitors divided by it; `None` if the
+/// The choices at another impedance level: resistors times a power of ten, capacitors divided by it; `None` if the
 /// shelves do not have them.
-pub(crate) fn shifted(groups: &[Group], values: &[Value], level: i32) -> Option<Vec<Value>> {
-    let shift = |(group, value): (&Group, &Value)| {
+pub(crate) fn shifted(groups: &[Group], choices: &[Choice], level: i32) -> Option<Vec<Choice>> {
+    if level == 0 {
+        return Some(choices.to_vec());
+    }
+    let shift = |(group, choice): (&Group, &Choice)| {
         let decades = if group.kind == Kind::Resistor { level } else { -level };
-        value.shifted(decades).filter(|v| group.shelf.contains(*v))
+        let value = choice.value.shifted(decades)?;
+        Some(Choice { value, lot: choice.lot }).filter(|choice| group.shelf.contains(*choice))
     };
-    groups.iter().zip(values).map(shift).collect()
+    groups.iter().zip(choices).map(shift).collect()
 }
 
-/// Adds values for the groups that do not reach the response, with as few new part numbers as possible: a value already
-/// there (the one nearest to the impedance level), else one of a smallest set of values that serves all that are left.
-pub(crate) fn with_silent(model: &Model, active: Vec<Value>) -> Vec<Value> {
-    let silent = model.silent_groups();
+/// Adds choices for the groups that do not reach the response, with as few new part numbers as possible, then as little
+/// to buy, then near to the impedance level; and counts the whole. `None` where the stock does not suffice.
+pub(crate) fn with_silent(model: &Model, supply: &Supply, active: Vec<Choice>) -> Option<(Vec<Choice>, Tally)> {
+    if model.silent_groups().is_empty() {
+        let tally = tally(supply, parts(&model.groups, &active))?;
+        return Some((active, tally));
+    }
     let level = impedance(model.active_groups(), &in_ohms(&active));
-    let distance = |group: &Group, v: &Value| {
+    let mut filling = Filling { model, supply, level, best: None };
+    filling.fill(active, 0.0);
+    filling.best.map(|(_, _, choices, tally)| (choices, tally))
+}
+
+/// The search for the best choices of the silent groups.
+struct Filling<'a> {
+    model: &'a Model,
+    supply: &'a Supply,
+    level: Option<f64>,
+    best: Option<(Takes, f64, Vec<Choice>, Tally)>,
+}
+
+impl Filling<'_> {
+    fn distance(&self, group: &Group, choice: &Choice) -> f64 {
         let (low, high) = group.shelf.span();
         let middle = (low.to_f64() * high.to_f64()).sqrt();
-        let wanted = if group.kind == Kind::Resistor { level.unwrap_or(middle) } else { middle };
-        (v.to_f64() / wanted).ln().abs()
-    };
-    let nearest = |group: &Group, values: &mut dyn Iterator<Item = Value>| {
-        values
-            .filter(|v| group.shelf.contains(*v))
-            .min_by(|a, b| distance(group, a).total_cmp(&distance(group, b)).then(a.cmp(b)))
-    };
-    let there = |kind: Kind| {
-        let alike = model.active_groups().iter().zip(&active).filter(move |(g, _)| g.kind == kind);
-        alike.map(|(_, v)| *v)
-    };
-    let mut chosen: Vec<Option<Value>> = silent.iter().map(|g| nearest(g, &mut there(g.kind))).collect();
-    for kind in [Kind::Resistor, Kind::Capacitor] {
-        let left: Vec<usize> = (0..silent.len()).filter(|&i| chosen[i].is_none() && silent[i].kind == kind).collect();
-        let fresh = fewest_values(&left.iter().map(|&i| &silent[i]).collect::<Vec<_>>(), &distance);
-        left.into_iter().for_each(|i| chosen[i] = nearest(&silent[i], &mut fresh.iter().copied()));
+        let wanted = if group.kind == Kind::Resistor { self.level.unwrap_or(middle) } else { middle };
+        (choice.value.to_f64() / wanted).ln().abs()
     }
-    active.into_iter().chain(chosen.into_iter().flatten()).collect()
-}
 
-/// A smallest set of values such that each group's shelf has one of them.
-fn fewest_values(groups: &[&Group], distance: &dyn Fn(&Group, &Value) -> f64) -> Vec<Value> {
-    // Values that serve the same groups are alike: of them the nearest to the first group's level is kept.
-    let mut serving: BTreeMap<Vec<bool>, Value> = BTreeMap::new();
-    for group in groups {
-        for v in group.shelf.values() {
-            let serves = groups.iter().map(|g| g.shelf.contains(*v)).collect();
-            let kept = serving.entry(serves).or_insert(*v);
-            if distance(groups[0], v) < distance(groups[0], kept) {
-                *kept = *v;
+    /// Fills the groups that are left in every way that could be the best.
+    fn fill(&mut self, choices: Vec<Choice>, distance: f64) {
+        let groups = &self.model.groups;
+        let Some(group) = groups.get(choices.len()) else {
+            let Some(tally) = tally(self.supply, parts(groups, &choices)) else { return };
+            let better = self.best.as_ref().is_none_or(|(takes, least, values, _)| {
+                tally.takes.cmp(takes).then(distance.total_cmp(least)).then_with(|| choices.cmp(values)).is_lt()
+            });
+            if better {
+                self.best = Some((tally.takes, distance, choices, tally));
             }
+            return;
+        };
+        let there = groups.iter().zip(&choices).filter(|(g, _)| g.kind == group.kind).map(|(_, c)| *c);
+        let mut candidates: BTreeSet<Choice> = there.filter(|choice| group.shelf.contains(*choice)).collect();
+        // A new one costs a part number. Only a stock can make that worth while: by leaving something unbought.
+        if candidates.is_empty() || self.supply.has_stock() {
+            candidates.extend(self.fresh(choices.len()));
+        }
+        for choice in candidates {
+            let mut longer = choices.clone();
+            longer.push(choice);
+            self.fill(longer, distance + self.distance(group, &choice));
         }
     }
-    let candidates: Vec<(Vec<bool>, Value)> = serving.into_iter().collect();
-    (0..=groups.len()).find_map(|size| cover(&candidates, &vec![false; groups.len()], size)).unwrap_or_default()
-}
 
-/// At most `size` of the candidates that together serve all groups not yet served.
-fn cover(candidates: &[(Vec<bool>, Value)], served: &[bool], size: usize) -> Option<Vec<Value>> {
-    let Some(open) = served.iter().position(|s| !s) else { return Some(Vec::new()) };
-    let size = size.checked_sub(1)?;
-    candidates.iter().filter(|(serves, _)| serves[open]).find_map(|(serves, value)| {
-        let now: Vec<bool> = served.iter().zip(serves).map(|(a, b)| a | b).collect();
-        let mut rest = cover(candidates, &now, size)?;
-        rest.push(*value);
-        Some(rest)
-    })
+    /// New choices for a group: those that serve the same of the groups still open, and of which the stock holds enough
+    /// for as many bodies, are alike; of them the nearest to the impedance level is kept.
+    fn fresh(&self, index: usize) -> Vec<Choice> {
+        let open = &self.model.groups[index..];
+        let alike: Vec<&Group> = open.iter().filter(|g| g.kind == open[0].kind).collect();
+        let bodies = alike.iter().map(|g| g.bodies()).sum::<u64>();
+        let mut nearest: BTreeMap<(Vec<bool>, u64, bool), Choice> = BTreeMap::new();
+        for choice in open[0].shelf.choices() {
+            let serves = alike.iter().map(|g| g.shelf.contains(*choice)).collect();
+            let enough = (1..=bodies).take_while(|&b| self.supply.suffices(*choice, b)).count() as u64;
+            let endless = self.supply.obtain(*choice, bodies).is_some();
+            let kept = nearest.entry((serves, enough, endless)).or_insert(*choice);
+            if self.distance(&open[0], choice) < self.distance(&open[0], kept) {
+                *kept = *choice;
+            }
+        }
+        nearest.into_values().collect()
+    }
 }

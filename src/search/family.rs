@@ -7,38 +7,56 @@
 use std::collections::BTreeMap;
 
 use crate::circuit::{Polynomial, Transfer};
-use crate::parts::Shelf;
+use crate::parts::{Choice, Origin, Shelf, Supply};
 use crate::target::Biquad;
-use crate::units::{Kind, Value};
+use crate::units::Kind;
 
 use super::model::Model;
 use super::window::{Coefficient, Window};
 
-/// A variable of a family: one value for all its groups.
+/// A variable of a family: one choice for all its groups.
 #[derive(Clone, Debug)]
 struct Variable {
-    /// The values by ascending admittance.
-    values: Vec<Value>,
+    /// The choices by ascending admittance.
+    choices: Vec<Choice>,
     /// Their admittances: 1/R, or C.
     admittances: Vec<f64>,
-    /// A number for each value that is the same wherever this value of this kind stands in the family.
+    /// A number for each choice that is the same wherever this choice of this kind stands in the family.
     numbers: Vec<u32>,
+    /// Which of them must be bought.
+    bought: Vec<bool>,
+    /// What all bodies of it cost on one board, in millionths; 0 where the price is not known.
+    costs: Vec<u64>,
 }
 
 impl Variable {
-    fn new(shelf: &Shelf, known: &mut BTreeMap<(Kind, Value), u32>) -> Variable {
-        let mut values = shelf.values().to_vec();
+    /// A variable for so many bodies on each board; `None` if no choice can be had so often.
+    fn new(
+        shelf: &Shelf,
+        bodies: u64,
+        supply: &Supply,
+        known: &mut BTreeMap<(Kind, Choice), u32>,
+    ) -> Option<Variable> {
+        let origin = |choice: Choice| Some((choice, supply.obtain(choice, bodies)?));
+        let mut choices: Vec<(Choice, Origin)> = shelf.choices().iter().copied().filter_map(origin).collect();
         if shelf.kind() == Kind::Resistor {
-            values.reverse();
+            choices.reverse();
         }
-        let admittance = |v: &Value| if shelf.kind() == Kind::Resistor { 1.0 / v.to_f64() } else { v.to_f64() };
-        let admittances = values.iter().map(admittance).collect();
-        let mut number = |v: &Value| {
-            let next = known.len() as u32;
-            *known.entry((shelf.kind(), *v)).or_insert(next)
+        let admittance = |choice: &Choice| {
+            let value = choice.value.to_f64();
+            if shelf.kind() == Kind::Resistor { 1.0 / value } else { value }
         };
-        let numbers = values.iter().map(&mut number).collect();
-        Variable { values, admittances, numbers }
+        let mut number = |choice: &Choice| {
+            let next = known.len() as u32;
+            *known.entry((shelf.kind(), *choice)).or_insert(next)
+        };
+        (!choices.is_empty()).then(|| Variable {
+            admittances: choices.iter().map(|(choice, _)| admittance(choice)).collect(),
+            numbers: choices.iter().map(|(choice, _)| number(choice)).collect(),
+            bought: choices.iter().map(|(_, origin)| *origin == Origin::Bought).collect(),
+            costs: choices.iter().map(|(choice, _)| supply.price(*choice).unwrap_or(0) * bodies).collect(),
+            choices: choices.into_iter().map(|(choice, _)| choice).collect(),
+        })
     }
 }
 
@@ -85,18 +103,21 @@ impl Flat {
 
 impl Family {
     /// The family in which active group k carries variable `member[k]`, with the figures that windows are given for;
-    /// `None` if groups that share a variable share no shelf value.
-    pub fn new(model: &Model, member: Vec<usize>, windows: &[Window]) -> Option<Family> {
+    /// `None` if groups that share a variable share no choice that can be had often enough.
+    pub fn new(model: &Model, supply: &Supply, member: Vec<usize>, windows: &[Window]) -> Option<Family> {
         let count = member.iter().max().map_or(0, |m| m + 1);
         let mut shelves: Vec<Option<Shelf>> = vec![None; count];
+        let mut bodies = vec![0; count];
         for (group, &variable) in model.active_groups().iter().zip(&member) {
+            bodies[variable] += group.bodies();
             shelves[variable] = Some(match shelves[variable].take() {
                 None => group.shelf.clone(),
                 Some(shelf) => shelf.intersection(&group.shelf)?,
             });
         }
         let mut known = BTreeMap::new();
-        let variables: Vec<Variable> = shelves.iter().flatten().map(|s| Variable::new(s, &mut known)).collect();
+        let variable = |(shelf, &bodies): (&Shelf, &u64)| Variable::new(shelf, bodies, supply, &mut known);
+        let variables: Vec<Variable> = shelves.iter().flatten().zip(&bodies).map(variable).collect::<Option<_>>()?;
         let map: Vec<Option<usize>> = member.iter().copied().map(Some).collect();
         let transfer = model.transfer.substituted(&map, count);
         let middle: Vec<f64> = variables.iter().map(|v| v.admittances[v.admittances.len() / 2]).collect();
@@ -137,7 +158,12 @@ impl Family {
                 |c: &Condition| if c.low * c.high > 0.0 { (c.high / c.low).ln().abs() } else { f64::INFINITY };
             step.sort_by(|a, b| a.solution.cmp(&b.solution).then_with(|| width(a).total_cmp(&width(b))));
         }
-        Some(Plan { family: self, order, steps, nodes })
+        let cheapest = |&v: &usize| self.variables[v].costs.iter().copied().min().unwrap_or(0);
+        let mut rest_cost = vec![0; order.len() + 1];
+        for (depth, v) in order.iter().enumerate().rev() {
+            rest_cost[depth] = rest_cost[depth + 1] + cheapest(v);
+        }
+        Some(Plan { family: self, order, steps, rest_cost, nodes })
     }
 
     /// The order of variables with the fewest expected partial sets, by dynamic programming over sets of variables, and
@@ -154,7 +180,7 @@ impl Family {
             let mut count: f64 = 1.0;
             for (v, variable) in self.variables.iter().enumerate() {
                 if set >> v & 1 == 1 {
-                    count *= variable.values.len() as f64;
+                    count *= variable.choices.len() as f64;
                 }
             }
             // Windows of independent figures thin out independently; dependent ones add nothing.
@@ -429,14 +455,25 @@ pub(crate) struct Plan<'a> {
     family: &'a Family,
     order: Vec<usize>,
     steps: Vec<Vec<Condition>>,
+    /// By depth, what the variables from there on cost at least.
+    rest_cost: Vec<u64>,
     /// Expected number of partial sets.
     pub nodes: f64,
 }
 
+/// What a set may use up.
+#[derive(Clone, Copy, Debug)]
+pub(crate) struct Budget {
+    /// How many part numbers may be bought.
+    pub bought: usize,
+    /// What the parts of a board may cost at most, in millionths.
+    pub cost: u64,
+}
+
 /// What a walk through a plan meets.
 pub(crate) trait Visitor {
-    /// A set whose figures lie in all windows: the values of the active groups and the transfer function.
-    fn set(&mut self, values: &dyn Fn() -> Vec<Value>, response: &Biquad);
+    /// A set whose figures lie in all windows: the choices of the active groups and the transfer function.
+    fn set(&mut self, choices: &dyn Fn() -> Vec<Choice>, response: &Biquad);
     /// Whether to stop, asked now and then.
     fn stopped(&mut self) -> bool;
 }
@@ -444,14 +481,21 @@ pub(crate) trait Visitor {
 impl Plan<'_> {
     /// How many values the first variable has.
     pub fn roots(&self) -> usize {
-        self.order.first().map_or(1, |&v| self.family.variables[v].values.len())
+        self.order.first().map_or(1, |&v| self.family.variables[v].choices.len())
     }
 
-    /// Visits every set in the windows whose first variable's index lies in `roots`; counts partial and whole sets.
-    pub fn walk(&self, roots: std::ops::Range<usize>, visitor: &mut dyn Visitor) -> u64 {
+    /// What any of its sets costs at least.
+    pub fn least_cost(&self) -> u64 {
+        self.rest_cost[0]
+    }
+
+    /// Visits every set in the windows and the budget whose first variable's index lies in `roots`; counts partial and
+    /// whole sets.
+    pub fn walk(&self, roots: std::ops::Range<usize>, budget: Budget, visitor: &mut dyn Visitor) -> u64 {
         let n = self.order.len();
         let mut walk = Walk {
             plan: self,
+            budget,
             chosen: vec![0.0; n],
             index: vec![0; n],
             taken: vec![0; n],
@@ -459,13 +503,14 @@ impl Plan<'_> {
             halted: false,
             visitor,
         };
-        walk.descend(0, Some(roots));
+        walk.descend(0, (0, 0), Some(roots));
         walk.nodes
     }
 }
 
 struct Walk<'a, 'b> {
     plan: &'a Plan<'a>,
+    budget: Budget,
     /// Admittances by depth.
     chosen: Vec<f64>,
     /// Value indices by depth.
@@ -478,7 +523,8 @@ struct Walk<'a, 'b> {
 }
 
 impl Walk<'_, '_> {
-    fn descend(&mut self, depth: usize, roots: Option<std::ops::Range<usize>>) {
+    /// Goes on from a partial set that needs so many part numbers bought and costs so much.
+    fn descend(&mut self, depth: usize, spent: (usize, u64), roots: Option<std::ops::Range<usize>>) {
         let plan = self.plan;
         let Some(&v) = plan.order.get(depth) else { return self.leaf() };
         let variable = &plan.family.variables[v];
@@ -514,6 +560,10 @@ impl Walk<'_, '_> {
             if self.taken[..depth].contains(&variable.numbers[i]) {
                 continue;
             }
+            let (bought, cost) = (spent.0 + usize::from(variable.bought[i]), spent.1 + variable.costs[i]);
+            if bought > self.budget.bought || cost + plan.rest_cost[depth + 1] > self.budget.cost {
+                continue;
+            }
             if !trials.iter().all(|(condition, coefficients)| condition.admits(coefficients, y)) {
                 continue;
             }
@@ -527,7 +577,7 @@ impl Walk<'_, '_> {
             self.chosen[depth] = y;
             self.index[depth] = i;
             self.taken[depth] = variable.numbers[i];
-            self.descend(depth + 1, None);
+            self.descend(depth + 1, (bought, cost), None);
         }
     }
 
@@ -539,13 +589,13 @@ impl Walk<'_, '_> {
         }
         let fill = |list: &[Flat]| [0, 1, 2].map(|k| list.get(k).map_or(0.0, |p| p.value(&x)));
         let response = Biquad { num: fill(&family.numerator), den: fill(&family.denominator) };
-        let values = || {
+        let choices = || {
             let mut of = vec![0; self.index.len()];
             for (&v, &i) in plan.order.iter().zip(&self.index) {
                 of[v] = i;
             }
-            family.member.iter().map(|&v| family.variables[v].values[of[v]]).collect()
+            family.member.iter().map(|&v| family.variables[v].choices[of[v]]).collect()
         };
-        self.visitor.set(&values, &response);
+        self.visitor.set(&choices, &response);
     }
 }

@@ -1,9 +1,9 @@
 //! What a search found: sets in one total order, the front, and how much of it is proved.
 
 use std::cmp::Ordering;
-use std::collections::{BTreeMap, BTreeSet};
+use std::collections::BTreeMap;
 
-use crate::units::Value;
+use crate::parts::Choice;
 
 use super::limits::StopReason;
 
@@ -33,24 +33,73 @@ impl ErrorKey {
     }
 }
 
-/// One set for one section. The order is that of the shortlist: error, then part numbers, then the values in slot order.
+/// What a set takes beside its error: of two sets, one is no worse if it takes no more of anything.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash)]
+pub(crate) struct Takes {
+    /// Different part numbers.
+    pub part_numbers: usize,
+    /// Part numbers that must be bought.
+    pub bought: usize,
+    /// Bodies on the board.
+    pub placed_parts: usize,
+}
+
+impl Takes {
+    /// Whether this is no more than `other` in anything.
+    pub fn is_within(&self, other: &Takes) -> bool {
+        self.part_numbers <= other.part_numbers
+            && self.bought <= other.bought
+            && self.placed_parts <= other.placed_parts
+    }
+}
+
+/// One set for one section. The order is that of the shortlist: error, then part numbers, what must be bought, cost, the
+/// distance from a usual impedance where a stock gives no choice of it, and last the choices in slot order.
 #[derive(Clone, Debug)]
 pub(crate) struct Found {
-    /// Its error in the unit of the measure.
+    /// Its error in the unit of the measure; the largest over all boards where these differ.
     pub error: f64,
     /// The same as a key.
     pub key: ErrorKey,
-    /// How many different values it needs, resistors and capacitors counted apart.
-    pub part_numbers: usize,
-    /// The value of each group of slots, at the lowest impedance level at which the set exists.
-    pub values: Vec<Value>,
+    /// What it takes.
+    pub takes: Takes,
+    /// What the parts of one board cost, in millionths; `None` where a price is not known. The most where boards differ.
+    pub cost: Option<u64>,
+    /// How far the impedance is from a usual one: 0 for a set that exists in every decade.
+    pub awkward: u32,
+    /// Which form of the section it fills.
+    pub form: usize,
+    /// The choice of each group of slots, at the lowest impedance level at which the set exists; where boards differ, that
+    /// of the worst.
+    pub choices: Vec<Choice>,
     /// Decades by which it can be shifted upwards in impedance and still exists, 0 included.
     pub levels: Vec<i32>,
+    /// Where boards differ: the form, the choices and the error of each.
+    pub boards: Vec<BoardSet>,
+}
+
+/// The set of one board among several that differ.
+#[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord)]
+pub(crate) struct BoardSet {
+    /// Its error as a key.
+    pub key: ErrorKey,
+    /// Which form of the section it fills.
+    pub form: usize,
+    /// The choice of each group of slots.
+    pub choices: Vec<Choice>,
 }
 
 impl Found {
-    fn rank(&self) -> (ErrorKey, usize, &[Value]) {
-        (self.key, self.part_numbers, &self.values)
+    #[allow(clippy::type_complexity, reason = "compared, never stored")]
+    fn rank(&self) -> (ErrorKey, Takes, bool, u64, u32, usize, &[Choice], &[BoardSet]) {
+        let cost = (self.cost.is_none(), self.cost.unwrap_or(0));
+        (self.key, self.takes, cost.0, cost.1, self.awkward, self.form, &self.choices, &self.boards)
+    }
+
+    /// Whether both have the same values everywhere, from whatever lots.
+    fn has_values_of(&self, other: &Found) -> bool {
+        let same_form = self.form == other.form && self.boards.is_empty() && other.boards.is_empty();
+        same_form && self.choices.iter().map(|c| c.value).eq(other.choices.iter().map(|c| c.value))
     }
 }
 
@@ -74,53 +123,89 @@ impl PartialEq for Found {
 
 impl Eq for Found {}
 
-/// The best sets by number of part numbers, a limited number of each.
+/// The best sets by what they take, a limited number of each; and, where the cost counts, all that are cheaper than the
+/// better ones.
 #[derive(Clone, Debug)]
 pub(crate) struct Best {
     capacity: usize,
-    by_count: BTreeMap<usize, BTreeSet<Found>>,
+    cost_counts: bool,
+    by_takes: BTreeMap<Takes, Vec<Found>>,
 }
 
 impl Best {
-    pub fn new(capacity: usize) -> Best {
-        Best { capacity, by_count: BTreeMap::new() }
+    pub fn new(capacity: usize, cost_counts: bool) -> Best {
+        Best { capacity, cost_counts, by_takes: BTreeMap::new() }
     }
 
     pub fn insert(&mut self, found: Found) {
-        let list = self.by_count.entry(found.part_numbers).or_default();
-        list.insert(found);
-        if list.len() > self.capacity {
-            list.pop_last();
+        let list = self.by_takes.entry(found.takes).or_default();
+        if let Some(alike) = list.iter().position(|kept| kept.has_values_of(&found)) {
+            if list[alike] <= found && !(self.cost_counts && found.cost < list[alike].cost) {
+                return;
+            }
+            list.remove(alike);
         }
+        let place = list.partition_point(|kept| *kept < found);
+        if list.get(place).is_some_and(|kept| *kept == found) {
+            return;
+        }
+        list.insert(place, found);
+        let mut cheapest = None;
+        let (capacity, cost_counts, mut index) = (self.capacity, self.cost_counts, 0);
+        list.retain(|kept| {
+            index += 1;
+            let cheaper = cheapest.is_none_or(|least| kept.cost < least);
+            if cheaper {
+                cheapest = Some(kept.cost);
+            }
+            index <= capacity || (cost_counts && cheaper)
+        });
     }
 
     pub fn merge(&mut self, other: Best) {
-        other.by_count.into_values().flatten().for_each(|found| self.insert(found));
+        other.by_takes.into_values().flatten().for_each(|found| self.insert(found));
     }
 
-    /// The largest key by which a set of this count would still be kept; `None` while any would.
-    pub fn worst_kept(&self, count: usize) -> Option<ErrorKey> {
-        let list = self.by_count.get(&count)?;
-        (list.len() >= self.capacity).then(|| list.last().map(|f| f.key)).flatten()
+    /// The largest key by which a set that takes this would still be kept; `None` while any would.
+    pub fn worst_kept(&self, takes: &Takes) -> Option<ErrorKey> {
+        let list = self.by_takes.get(takes)?;
+        (list.len() >= self.capacity && !self.cost_counts).then(|| list.last().map(|f| f.key)).flatten()
     }
 
-    /// The best error among sets with at most `count` part numbers.
-    pub fn error_up_to(&self, count: usize) -> Option<ErrorKey> {
-        self.by_count.range(..=count).filter_map(|(_, list)| Some(list.first()?.key)).min()
+    /// The sets that take no more than this.
+    fn within<'a>(&'a self, most: &'a Takes) -> impl Iterator<Item = &'a Found> {
+        self.by_takes.iter().filter(|(takes, _)| takes.is_within(most)).flat_map(|(_, list)| list)
     }
 
-    /// For each count on the front its sets, best first: the first improves on every smaller count.
+    /// The best error among sets that take no more than this.
+    pub fn error_within(&self, most: &Takes) -> Option<ErrorKey> {
+        self.within(most).map(|found| found.key).min()
+    }
+
+    /// The lowest cost among sets that take no more than this and have at most this error.
+    pub fn cost_within(&self, most: &Takes, key: ErrorKey) -> Option<u64> {
+        self.within(most).filter(|found| found.key <= key).filter_map(|found| found.cost).min()
+    }
+
+    /// The best error of all.
+    pub fn error(&self) -> Option<ErrorKey> {
+        self.by_takes.values().filter_map(|list| Some(list.first()?.key)).min()
+    }
+
+    /// Whether there is no set.
+    pub fn is_empty(&self) -> bool {
+        self.by_takes.is_empty()
+    }
+
+    /// For each takings on the front its sets, best first: the first of each improves on all that take no more.
     pub fn front(&self) -> Vec<Vec<Found>> {
-        let mut rows: Vec<Vec<Found>> = Vec::new();
-        let mut best: Option<ErrorKey> = None;
-        for list in self.by_count.values() {
-            let Some(first) = list.first() else { continue };
-            if best.is_none_or(|best| first.key < best) {
-                best = Some(first.key);
-                rows.push(list.iter().cloned().collect());
-            }
-        }
-        rows
+        let improves = |takes: &Takes, first: &Found| {
+            let smaller = self.by_takes.iter().filter(|(other, _)| *other != takes && other.is_within(takes));
+            smaller.filter_map(|(_, list)| list.first()).all(|other| first.key < other.key)
+        };
+        let rows = self.by_takes.iter().filter_map(|(takes, list)| Some((takes, list, list.first()?)));
+        let kept = rows.filter(|(takes, _, first)| self.cost_counts || improves(takes, first));
+        kept.map(|(_, list, _)| list.clone()).collect()
     }
 }
 
@@ -162,20 +247,43 @@ mod tests {
         assert_eq!(ErrorKey::new(key.ceiling() * (1.0 - 1e-11)), key);
     }
 
-    #[test]
-    fn the_front_has_only_improvements() {
-        let found = |error, part_numbers| Found {
+    fn found(error: f64, part_numbers: usize, placed_parts: usize, cost: Option<u64>) -> Found {
+        Found {
             error,
             key: ErrorKey::new(error),
-            part_numbers,
-            values: Vec::new(),
+            takes: Takes { part_numbers, bought: 0, placed_parts },
+            cost,
+            awkward: 0,
+            form: placed_parts,
+            choices: Vec::new(),
             levels: vec![0],
-        };
-        let mut best = Best::new(1);
-        for (error, count) in [(0.5, 3), (0.2, 4), (0.4, 3), (0.2, 5), (0.1, 6)] {
-            best.insert(found(error, count));
+            boards: Vec::new(),
         }
-        let rows: Vec<_> = best.front().iter().map(|row| (row[0].part_numbers, row[0].key)).collect();
-        assert_eq!(rows, [(3, ErrorKey::new(0.4)), (4, ErrorKey::new(0.2)), (6, ErrorKey::new(0.1))]);
+    }
+
+    #[test]
+    fn the_front_has_only_improvements() {
+        let mut best = Best::new(1, false);
+        for (error, count, placed) in
+            [(0.5, 3, 6), (0.2, 4, 6), (0.4, 3, 6), (0.2, 5, 6), (0.1, 6, 6), (0.3, 3, 7), (0.3, 4, 7)]
+        {
+            best.insert(found(error, count, placed, None));
+        }
+        let rows = best.front();
+        let rows: Vec<_> =
+            rows.iter().map(|r| (r[0].takes.part_numbers, r[0].takes.placed_parts, r[0].error)).collect();
+        assert_eq!(rows, [(3, 6, 0.4), (3, 7, 0.3), (4, 6, 0.2), (6, 6, 0.1)]);
+    }
+
+    #[test]
+    fn cheaper_sets_are_kept_where_the_cost_counts() {
+        let mut best = Best::new(1, true);
+        for (form, (error, cost)) in [(0.1, 50), (0.3, 40), (0.2, 60), (0.4, 10)].into_iter().enumerate() {
+            best.insert(Found { form, ..found(error, 3, 6, Some(cost)) });
+        }
+        let costs: Vec<_> = best.front()[0].iter().map(|f| f.cost).collect();
+        assert_eq!(costs, [50, 40, 10].map(Some));
+        let takes = Takes { part_numbers: 3, bought: 0, placed_parts: 6 };
+        assert_eq!(best.cost_within(&takes, ErrorKey::new(0.35)), Some(40));
     }
 }

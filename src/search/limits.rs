@@ -12,6 +12,8 @@ pub enum StopReason {
     Interrupted,
     /// Nothing lay within the job's error limit, and beyond it families that would take too long were left out.
     TooLarge,
+    /// There were too many ways to give measured parts to the boards.
+    Assignment,
 }
 
 impl StopReason {
@@ -23,6 +25,7 @@ impl StopReason {
             StopReason::TooLarge => {
                 "nothing lies within the error limit, and very large families beyond it were left out"
             }
+            StopReason::Assignment => "there are too many ways to give the measured parts to the boards",
         }
     }
 }

@@ -1,5 +1,6 @@
 //! The exact search for buyable sets, and the continuous solve beside it.
 
+mod assign;
 mod board;
 mod canonical;
 mod family;
@@ -9,9 +10,10 @@ mod limits;
 mod model;
 mod problem;
 mod section;
+mod shortage;
 mod window;
 
-pub use board::{Chosen, Outcome, Part, Row, SectionSummary, shortlist};
+pub use board::{BuiltBoard, Chosen, Outcome, Part, Row, SectionSummary, shortlist};
 pub use front::{End, ErrorKey, Proof};
 pub use limits::{Monitor, Progress, StopReason, Unwatched};
-pub use problem::{Goals, Problem, SectionProblem};
+pub use problem::{Goals, Joint, Pairs, Problem, Rank, SectionProblem};

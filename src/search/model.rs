@@ -3,13 +3,14 @@
 use std::collections::BTreeSet;
 
 use crate::circuit::{Polynomial, Transfer};
-use crate::parts::Shelf;
+use crate::parts::{Choice, Shelf, Supply};
 use crate::target::Biquad;
-use crate::units::{Kind, Value};
+use crate::units::Kind;
 
-use super::problem::SectionProblem;
+use super::problem::{Joint, SectionProblem};
 
-/// Slots that carry one value: those of an equality in force, or a single slot.
+/// Parts that are alike: those of slots that must be equal, or that of a single slot; where a slot holds a pair, one of
+/// its two.
 #[derive(Clone, Debug)]
 pub(crate) struct Group {
     /// Slot indices, ascending.
@@ -18,6 +19,15 @@ pub(crate) struct Group {
     pub kind: Kind,
     /// What may go into all of them.
     pub shelf: Shelf,
+    /// For one of a pair: how it is joined with the group of the same slots.
+    pub joint: Option<Joint>,
+}
+
+impl Group {
+    /// How many bodies it places.
+    pub fn bodies(&self) -> u64 {
+        self.slots.len() as u64
+    }
 }
 
 /// A section in terms of groups. The first [`Model::active`] groups reach the response, the others do not.
@@ -31,16 +41,69 @@ pub(crate) struct Model {
     pub transfer: Transfer,
     /// Permutations of the active groups, the identity left out, that leave response and shelves as they are.
     pub symmetries: Vec<Vec<usize>>,
-    /// Filled slots.
+    /// Bodies on the board.
     pub placed_parts: usize,
     /// Part numbers that any set needs beside those of the active groups: 1 where a silent group's shelf shares no value
     /// with any active one, a lower bound where several do so.
     pub least_extra: usize,
+    /// Whether several resistors, or several capacitors, of different value may be one part number: measured parts of one
+    /// nominal value.
+    pub measured: [bool; 2],
 }
 
 impl Model {
+    /// The section with single parts, and with pairs in each way that is allowed, by placed parts; none if slots that must
+    /// be equal share no value. Of ways that interchangeable slots make alike one is given.
+    pub fn forms(section: &SectionProblem, supply: &Supply) -> Vec<Model> {
+        let Some(single) = Model::new(section, supply) else { return Vec::new() };
+        let allowed: Vec<Vec<Option<Joint>>> = (single.active_groups().iter())
+            .map(|group| {
+                let both = [Joint::Series, Joint::Parallel].into_iter();
+                let everywhere = |joint: &Joint| {
+                    group.slots.iter().all(|&s| section.pairs.joints.get(s).is_some_and(|j| j.contains(joint)))
+                };
+                [None].into_iter().chain(both.filter(everywhere).map(Some)).collect()
+            })
+            .collect();
+        let mut ways: Vec<Vec<Option<Joint>>> = vec![Vec::new()];
+        for choices in &allowed {
+            ways =
+                ways.iter().flat_map(|way| choices.iter().map(move |&j| [way.as_slice(), &[j]].concat())).collect();
+            ways.retain(|way| {
+                let pairs = way.iter().zip(single.active_groups()).filter(|(joint, _)| joint.is_some());
+                pairs.map(|(_, group)| group.slots.len()).sum::<usize>() <= section.pairs.most
+            });
+        }
+        ways.retain(|way| {
+            !single.symmetries.iter().any(|order| {
+                let image: Vec<Option<Joint>> = order.iter().map(|&k| way[k]).collect();
+                image < *way && image.iter().zip(&allowed).all(|(joint, allowed)| allowed.contains(joint))
+            })
+        });
+        let mut forms: Vec<Model> = ways.iter().map(|way| single.with_pairs(way)).collect();
+        forms.sort_by_key(|form| form.placed_parts);
+        forms
+    }
+
+    /// The same section with pairs in the active groups for which a joint is given.
+    fn with_pairs(&self, joints: &[Option<Joint>]) -> Model {
+        let mut form = self.clone();
+        let silent = form.groups.split_off(self.active);
+        for (index, &joint) in joints.iter().enumerate() {
+            let Some(joint) = joint else { continue };
+            form.transfer = form.transfer.paired(index, joint == Joint::Series);
+            form.groups[index].joint = Some(joint);
+            form.groups.push(form.groups[index].clone());
+            form.placed_parts += form.groups[index].slots.len();
+        }
+        form.active = form.groups.len();
+        form.symmetries = symmetries(&form.transfer, &form.groups);
+        form.groups.extend(silent);
+        form
+    }
+
     /// Groups the slots of a section; `None` if slots that must be equal share no value.
-    pub fn new(section: &SectionProblem) -> Option<Model> {
+    pub fn new(section: &SectionProblem, supply: &Supply) -> Option<Model> {
         let output = section.output();
         let filled: Vec<usize> = output.filled(&section.circuit).collect();
         let mut lists: Vec<Vec<usize>> = Vec::new();
@@ -59,7 +122,7 @@ impl Model {
             for &slot in &slots[1..] {
                 shelf = shelf.intersection(&section.shelves[slot])?;
             }
-            groups.push(Group { kind: section.circuit.slots[slots[0]].kind, slots, shelf });
+            groups.push(Group { kind: section.circuit.slots[slots[0]].kind, slots, shelf, joint: None });
         }
         let place = |groups: &[Group]| -> Vec<Option<usize>> {
             (0..section.circuit.slots.len()).map(|slot| groups.iter().position(|g| g.slots.contains(&slot))).collect()
@@ -87,7 +150,11 @@ impl Model {
             alike.into_iter().all(|g| g.shelf.intersection(&silent.shelf).is_none())
         };
         let least_extra = usize::from(groups[count..].iter().any(apart));
-        Some(Model { groups, active: count, transfer, symmetries, placed_parts: filled.len(), least_extra })
+        let measured = [Kind::Resistor, Kind::Capacitor].map(|kind| {
+            let choices = groups[..count].iter().filter(|g| g.kind == kind).flat_map(|g| g.shelf.choices());
+            choices.into_iter().any(|&choice| supply.lot_of(choice).is_some_and(|lot| lot.measured.is_some()))
+        });
+        Some(Model { groups, active: count, transfer, symmetries, placed_parts: filled.len(), least_extra, measured })
     }
 
     /// The active groups.
@@ -101,8 +168,8 @@ impl Model {
     }
 
     /// The transfer function for values of the active groups.
-    pub fn biquad(&self, values: &[Value]) -> Biquad {
-        let values: Vec<f64> = values.iter().map(|v| v.to_f64()).collect();
+    pub fn biquad(&self, choices: &[Choice]) -> Biquad {
+        let values: Vec<f64> = choices.iter().map(|choice| choice.value.to_f64()).collect();
         self.biquad_of(&values)
     }
 
@@ -118,11 +185,61 @@ impl Model {
         [0, 1, 2].map(|k| self.transfer.numerator.get(k).is_some_and(|p| !p.is_empty()))
     }
 
+    /// The fewest and the most part numbers of sets with so many different choices of resistors and of capacitors.
+    pub fn part_numbers_of(&self, resistors: usize, capacitors: usize) -> (usize, usize) {
+        let least = |count: usize, measured: bool| if measured { count.min(1) } else { count };
+        (least(resistors, self.measured[0]) + least(capacitors, self.measured[1]), resistors + capacitors)
+    }
+
+    /// How many active groups of resistors and of capacitors there are.
+    pub fn kinds(&self) -> (usize, usize) {
+        let resistors = self.active_groups().iter().filter(|g| g.kind == Kind::Resistor).count();
+        (resistors, self.active - resistors)
+    }
+
+    /// The fewest and the most part numbers that any set needs.
+    pub fn part_numbers(&self) -> (usize, usize) {
+        let (resistors, capacitors) = self.kinds();
+        let (fewest, _) = self.part_numbers_of(resistors.min(1), capacitors.min(1));
+        (fewest + self.least_extra, resistors + capacitors + self.least_extra)
+    }
+
+    /// Whether measured parts may be among the active ones.
+    pub fn is_measured(&self) -> bool {
+        self.measured.contains(&true)
+    }
+
+    /// The ways to share so many choices of resistors and of capacitors among the active groups: the number of the choice
+    /// of each group. Of ways that a symmetry maps onto each other one is given.
+    pub fn members(&self, of_resistors: usize, of_capacitors: usize) -> Vec<Vec<usize>> {
+        let (resistors, capacitors) = self.kinds();
+        let mut members = Vec::new();
+        for by_resistor in partitions(resistors, of_resistors) {
+            for by_capacitor in partitions(capacitors, of_capacitors) {
+                let (mut next_r, mut next_c) = (by_resistor.iter(), by_capacitor.iter());
+                let next = |group: &Group| match group.kind {
+                    Kind::Resistor => next_r.next().copied(),
+                    Kind::Capacitor => next_c.next().map(|c| c + of_resistors),
+                };
+                let member: Vec<usize> = self.active_groups().iter().filter_map(next).collect();
+                let own = renumbered(&member, of_resistors);
+                let mirrored = self.symmetries.iter().any(|order| {
+                    let image: Vec<usize> = order.iter().map(|&k| member[k]).collect();
+                    renumbered(&image, of_resistors) < own
+                });
+                if !mirrored {
+                    members.push(member);
+                }
+            }
+        }
+        members
+    }
+
     /// Whether the silent groups can always take a value that is there already, so that they never cost a part number.
     pub fn silent_groups_are_free(&self) -> bool {
         self.silent_groups().iter().all(|silent| {
             let mut alike = self.active_groups().iter().filter(|g| g.kind == silent.kind).peekable();
-            alike.peek().is_some() && alike.all(|g| g.shelf.values().iter().all(|v| silent.shelf.contains(*v)))
+            alike.peek().is_some() && alike.all(|g| g.shelf.choices().iter().all(|c| silent.shelf.contains(*c)))
         })
     }
 
@@ -201,9 +318,21 @@ fn closure(generators: Vec<Vec<usize>>, n: usize) -> Vec<Vec<usize>> {
     all.into_iter().collect()
 }
 
+/// The same partition with its blocks numbered by first appearance, resistors (blocks below `r`) and capacitors apart.
+fn renumbered(member: &[usize], r: usize) -> Vec<usize> {
+    let mut names: Vec<usize> = Vec::new();
+    let mut number = |block: usize| {
+        names.iter().position(|&n| n == block).unwrap_or_else(|| {
+            names.push(block);
+            names.len() - 1
+        })
+    };
+    member.iter().map(|&block| 2 * number(block) + usize::from(block >= r)).collect()
+}
+
 /// Set partitions of `n` items into exactly `blocks` blocks, as block numbers by item: the first item is in block 0, each
 /// new block takes the next number.
-pub(crate) fn partitions(n: usize, blocks: usize) -> Vec<Vec<usize>> {
+fn partitions(n: usize, blocks: usize) -> Vec<Vec<usize>> {
     fn extend(prefix: &mut Vec<usize>, used: usize, n: usize, blocks: usize, out: &mut Vec<Vec<usize>>) {
         let left = n - prefix.len();
         if used + left < blocks {

@@ -2,8 +2,10 @@
 
 use std::sync::Arc;
 
+use serde::Deserialize;
+
 use crate::circuit::{Circuit, Output};
-use crate::parts::Shelf;
+use crate::parts::{Shelf, Supply};
 use crate::target::{Criterion, Section};
 use crate::units::Kind;
 
@@ -18,6 +20,26 @@ pub struct Problem {
     pub criterion: Criterion,
     /// What is wanted of the result.
     pub goals: Goals,
+    /// The stock that is drawn on, and for how many boards.
+    pub supply: Supply,
+}
+
+/// How two parts may stand together in a slot.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash)]
+pub enum Joint {
+    /// One after the other.
+    Series,
+    /// Side by side.
+    Parallel,
+}
+
+/// Where two parts may take the place of one.
+#[derive(Clone, Debug, Default, PartialEq, Eq)]
+pub struct Pairs {
+    /// The joints allowed in each slot, in slot order; slots beyond the list allow none.
+    pub joints: Vec<Vec<Joint>>,
+    /// How many slots of the section may hold a pair.
+    pub most: usize,
 }
 
 /// One section: a target, the circuit that shall realise it, and what may go into each slot.
@@ -33,6 +55,8 @@ pub struct SectionProblem {
     pub shelves: Vec<Shelf>,
     /// Groups of slots that must carry the same value: ties in force and the job's own, disjoint, two slots or more.
     pub equal: Vec<Vec<usize>>,
+    /// Where two parts may take the place of one.
+    pub pairs: Pairs,
 }
 
 impl SectionProblem {
@@ -56,7 +80,7 @@ impl SectionProblem {
             tie.iter().copied().filter(|slot| !circuit.outputs[output].without.contains(slot)).collect()
         };
         let equal = circuit.ties.iter().map(filled).filter(|tie| tie.len() > 1).collect();
-        Some(SectionProblem { target, circuit, output, shelves, equal })
+        Some(SectionProblem { target, circuit, output, shelves, equal, pairs: Pairs::default() })
     }
 
     /// The output that is taken.
@@ -82,6 +106,24 @@ pub struct Goals {
     pub alternatives: usize,
     /// The geometric mean of the resistances that set the response of each section must lie in this range, ohms.
     pub impedance: Option<(f64, f64)>,
+    /// What the rows are ranked by.
+    pub rank: Rank,
+    /// Where measured parts go to several boards: whether each board may have other parts beside them too.
+    pub each_board_its_own: bool,
+}
+
+/// What rows are ranked by first; the others follow in the order given here.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Deserialize)]
+pub enum Rank {
+    /// The error.
+    #[default]
+    Error,
+    /// Part numbers.
+    PartNumbers,
+    /// Part numbers that must be bought.
+    ToBuy,
+    /// The cost of the parts of a board, which then takes part in the front.
+    Cost,
 }
 
 impl Default for Goals {
@@ -95,6 +137,8 @@ impl Default for Goals {
             rows: 10,
             alternatives: 0,
             impedance: None,
+            rank: Rank::Error,
+            each_board_its_own: false,
         }
     }
 }

@@ -1,25 +1,27 @@
 //! The exact front of one section.
 
 use std::collections::BTreeMap;
+use std::ops::Range;
 use std::sync::atomic::{AtomicBool, AtomicUsize, Ordering};
 
 use rayon::prelude::*;
 
+use crate::parts::{Choice, Supply};
 use crate::target::{Biquad, Yardstick};
-use crate::units::{Kind, Value};
 
+use super::assign::{Candidates, items};
 use super::canonical::{canonical, distinct};
-use super::family::{Family, Visitor};
-use super::front::{Best, End, ErrorKey, Found, Proof};
+use super::family::{Budget, Family, Visitor};
+use super::front::{Best, End, ErrorKey, Found, Proof, Takes};
 use super::limits::{Monitor, Progress, StopReason};
-use super::model::{Model, partitions};
-use super::problem::Goals;
+use super::model::Model;
+use super::problem::{Goals, Rank};
 use super::window::{Window, WindowMaker};
 
 /// What the search of one section gave.
 #[derive(Clone, Debug)]
 pub(crate) struct SectionFront {
-    /// For each number of part numbers on the front its sets, best first.
+    /// For each takings on the front its sets, best first.
     pub rows: Vec<Vec<Found>>,
     /// What is proved of it.
     pub proof: Proof,
@@ -47,31 +49,36 @@ const FARTHEST: f64 = 300.0;
 /// Expected partial sets beyond which a level is left out, once nothing was found within the job's error limit.
 const AFFORDABLE: f64 = 3e7;
 
-/// Searches one section.
+/// Searches one section in all its forms.
 pub(crate) fn search(
-    model: &Model,
+    forms: &[Model],
+    supply: &Supply,
     yardstick: &Yardstick,
     goals: &Goals,
     monitor: &dyn Monitor,
 ) -> Option<SectionFront> {
-    let maker = WindowMaker::new(yardstick, model.numerator())?;
+    let maker = WindowMaker::new(yardstick, forms.first()?.numerator())?;
+    let cost_counts = goals.rank == Rank::Cost;
     let mut search = Search {
-        model,
+        forms,
+        supply,
         yardstick,
         goals,
         monitor,
         maker,
         windows: BTreeMap::new(),
-        best: Best::new(goals.alternatives + 1),
+        best: Best::new(goals.alternatives + 1, cost_counts),
         sets: 0,
         nodes: 0,
         left_out: None,
+        assignment_open: false,
     };
     Some(search.run())
 }
 
 struct Search<'a> {
-    model: &'a Model,
+    forms: &'a [Model],
+    supply: &'a Supply,
     yardstick: &'a Yardstick,
     goals: &'a Goals,
     monitor: &'a dyn Monitor,
@@ -83,6 +90,8 @@ struct Search<'a> {
     nodes: u64,
     /// The smallest number of part numbers for which something was left out.
     left_out: Option<usize>,
+    /// Whether an assignment of measured parts to boards was given up for being too large.
+    assignment_open: bool,
 }
 
 impl Search<'_> {
@@ -90,7 +99,7 @@ impl Search<'_> {
         let mut limit = self.goals.error_limit;
         let mut proof = self.walk_counts(self.goals.error_resolution, limit, f64::INFINITY);
         let halted = |proof: &Proof| matches!(proof, Proof::Stopped { .. });
-        while self.best.front().is_empty() && !halted(&proof) && limit < FARTHEST {
+        while self.best.is_empty() && !halted(&proof) && limit < FARTHEST {
             let from = limit;
             limit *= LEVEL_FACTOR;
             proof = self.walk_counts(from, limit, AFFORDABLE);
@@ -98,14 +107,27 @@ impl Search<'_> {
         if let (Some(complete_below), false) = (self.left_out, halted(&proof)) {
             proof = Proof::Stopped { reason: StopReason::TooLarge, complete_below };
         }
+        if self.assignment_open && !halted(&proof) {
+            proof = Proof::Stopped { reason: StopReason::Assignment, complete_below: 0 };
+        }
         let mut rows = self.best.front();
-        if matches!(proof, Proof::Exhaustive(_)) {
+        if matches!(proof, Proof::Exhaustive(_)) && !self.cost_counts() {
             // What a silent slot made of sets with fewer values may lie beyond the end of the front.
             let resolution = ErrorKey::new(self.goals.error_resolution);
-            let end = rows.iter().position(|row| row[0].key < resolution);
-            rows.truncate(end.map_or(rows.len(), |end| end + 1));
+            let ends: Vec<Takes> =
+                rows.iter().filter(|row| row[0].key < resolution).map(|row| row[0].takes).collect();
+            rows.retain(|row| !ends.iter().any(|end| *end != row[0].takes && end.is_within(&row[0].takes)));
         }
         SectionFront { rows, proof, sets: self.sets, nodes: self.nodes, limit }
+    }
+
+    /// Whether measured parts go to several boards of which each may be its own.
+    fn boards_differ(&self) -> bool {
+        self.goals.each_board_its_own && self.supply.boards > 1 && self.forms.iter().any(Model::is_measured)
+    }
+
+    fn cost_counts(&self) -> bool {
+        self.goals.rank == Rank::Cost
     }
 
     /// The windows for sets up to an error.
@@ -115,142 +137,192 @@ impl Search<'_> {
         self.windows.entry(key).or_insert_with(|| self.maker.windows(key.ceiling())).clone()
     }
 
-    /// Walks the number of different values upwards, each up to `limit` in levels that begin at `first`; levels that are
-    /// not affordable are left out.
+    /// Walks what a set takes upwards, part numbers first: each up to `limit` in levels that begin at `first`; levels that
+    /// are not affordable are left out.
     fn walk_counts(&mut self, first: f64, limit: f64, affordable: f64) -> Proof {
-        let count = |kind| self.model.active_groups().iter().filter(|g| g.kind == kind).count();
-        let (resistors, capacitors) = (count(Kind::Resistor), count(Kind::Capacitor));
-        let fewest = usize::from(resistors > 0) + usize::from(capacitors > 0);
-        let most = resistors + capacitors;
-        let extra = self.model.least_extra;
-        let allowed = self.goals.max_part_numbers.unwrap_or(most + extra);
-        for k in fewest..=most.min(allowed.saturating_sub(extra)) {
-            let families = self.families(k, (resistors, capacitors));
-            // A set with more part numbers must be strictly better than every one with fewer.
-            let cap = match self.best.error_up_to(k + extra) {
-                Some(best) if self.goals.alternatives == 0 => best.below().map(ErrorKey::ceiling),
-                _ => Some(limit),
-            };
-            let Some(cap) = cap.map(|cap| cap.min(limit)) else {
-                return Proof::Exhaustive(End::Resolution);
-            };
-            // A resolution of zero would never grow.
-            let mut level = first.max(LEAST_LEVEL).min(cap);
-            loop {
-                let next = (level * LEVEL_FACTOR).min(cap);
-                if affordable.is_finite() && self.expected(&families, level) > affordable {
-                    let below = k + extra;
-                    self.left_out = Some(self.left_out.map_or(below, |least| least.min(below)));
-                    break;
-                }
-                if level < cap && self.expected(&families, next) < DEARER * self.expected(&families, level) {
-                    level = next;
-                    continue;
-                }
-                if self.search_level(&families, k, level).is_none() {
-                    let reason = self.monitor.stop().unwrap_or(StopReason::Interrupted);
-                    return Proof::Stopped { reason, complete_below: k + extra };
-                }
-                // A set of this count may also have come from fewer variables and a silent slot: what counts is
-                // whether anything within this level can still be missing.
-                if level >= cap || self.best.worst_kept(k + extra).is_some_and(|key| key <= ErrorKey::new(level)) {
-                    break;
-                }
-                level = next;
-            }
-            if self.best.error_up_to(k + extra).is_some_and(|key| key < ErrorKey::new(self.goals.error_resolution)) {
-                return Proof::Exhaustive(if k < most { End::Resolution } else { End::AllCounts });
+        let spans: Vec<(usize, usize)> = self.forms.iter().map(Model::part_numbers).collect();
+        let fewest = spans.iter().map(|span| span.0).min().unwrap_or(0);
+        let most = spans.iter().map(|span| span.1).max().unwrap_or(0);
+        let allowed = self.goals.max_part_numbers.unwrap_or(most);
+        let resolution = ErrorKey::new(self.goals.error_resolution);
+        let mut by_placed: Vec<Range<usize>> = Vec::new();
+        for (index, form) in self.forms.iter().enumerate() {
+            match by_placed.last_mut() {
+                Some(range) if self.forms[range.start].placed_parts == form.placed_parts => range.end = index + 1,
+                _ => by_placed.push(index..index + 1),
             }
         }
-        Proof::Exhaustive(if allowed < most + extra { End::CountLimit } else { End::AllCounts })
+        let mut passed_over = false;
+        for part_numbers in fewest..=most.min(allowed) {
+            let from = |range: &Range<usize>| if self.boards_differ() { 0 } else { range.start };
+            let ranges: Vec<Range<usize>> = by_placed.iter().map(|range| from(range)..range.end).collect();
+            let families: Vec<Vec<(usize, Family)>> =
+                ranges.into_iter().map(|range| self.families(range, part_numbers)).collect();
+            let most_bought = if self.supply.has_stock() { self.supply.buying.most().min(part_numbers) } else { 0 };
+            for bought in 0..=most_bought {
+                for (range, families) in by_placed.iter().zip(&families) {
+                    let placed_parts = self.forms[range.start].placed_parts;
+                    let takes = Takes { part_numbers, bought, placed_parts };
+                    if !self.cost_counts() && self.best.error_within(&takes).is_some_and(|key| key < resolution) {
+                        passed_over = true;
+                        continue;
+                    }
+                    if let Some(stopped) = self.walk(families, takes, (first, limit), affordable) {
+                        return stopped;
+                    }
+                }
+            }
+            // Everything that takes more starts from here.
+            let least = Takes { part_numbers, bought: 0, placed_parts: self.forms[0].placed_parts };
+            let settled = self.best.error_within(&least).is_some_and(|key| key < resolution);
+            if settled && !self.cost_counts() {
+                return Proof::Exhaustive(if part_numbers < most { End::Resolution } else { End::AllCounts });
+            }
+        }
+        Proof::Exhaustive(match (allowed < most, passed_over) {
+            (true, _) => End::CountLimit,
+            (false, true) => End::Resolution,
+            (false, false) => End::AllCounts,
+        })
     }
 
-    /// The families with exactly `count` variables, one of each class under the section's symmetries.
-    fn families(&mut self, count: usize, (resistors, capacitors): (usize, usize)) -> Vec<Family> {
-        let groups = self.model.active_groups();
+    /// Walks the families of one lot of takings, level by level, until the best is found; gives a proof back only where the
+    /// search was stopped.
+    fn walk(
+        &mut self,
+        families: &[(usize, Family)],
+        takes: Takes,
+        (first, limit): (f64, f64),
+        affordable: f64,
+    ) -> Option<Proof> {
+        // A set that takes more must be strictly better than every one that takes less.
+        let cap = match self.best.error_within(&takes) {
+            Some(best) if self.goals.alternatives == 0 && !self.cost_counts() => best.below().map(ErrorKey::ceiling),
+            _ => Some(limit),
+        };
+        let cap = cap?.min(limit);
+        // A resolution of zero would never grow.
+        let mut level = first.max(LEAST_LEVEL).min(cap);
+        let mut searched: Option<ErrorKey> = None;
+        loop {
+            let next = (level * LEVEL_FACTOR).min(cap);
+            if affordable.is_finite() && self.expected(families, level) > affordable {
+                let below = takes.part_numbers;
+                self.left_out = Some(self.left_out.map_or(below, |least| least.min(below)));
+                return None;
+            }
+            if level < cap && self.expected(families, next) < DEARER * self.expected(families, level) {
+                level = next;
+                continue;
+            }
+            // Beyond what has been searched only a cheaper set is wanted.
+            let known = searched.and_then(|key| self.best.cost_within(&takes, key));
+            let cost = match known.filter(|_| self.cost_counts()) {
+                Some(0) => return None,
+                Some(known) => known - 1,
+                None => u64::MAX,
+            };
+            if self.search_level(families, takes, Budget { bought: takes.bought, cost }, level).is_none() {
+                let reason = self.monitor.stop().unwrap_or(StopReason::Interrupted);
+                return Some(Proof::Stopped { reason, complete_below: takes.part_numbers });
+            }
+            searched = Some(ErrorKey::new(level));
+            // A set that takes this may also have come from fewer variables and a silent slot: what counts is whether
+            // anything within this level can still be missing.
+            if level >= cap || self.best.worst_kept(&takes).is_some_and(|key| key <= ErrorKey::new(level)) {
+                return None;
+            }
+            level = next;
+        }
+    }
+
+    /// The families of some forms whose sets may have that many part numbers, one of each class under the symmetries of
+    /// the form.
+    fn families(&mut self, forms: Range<usize>, part_numbers: usize) -> Vec<(usize, Family)> {
         let windows = self.windows(self.goals.error_resolution);
-        let mut members = Vec::new();
-        for r in 0..=count {
-            for of_resistors in partitions(resistors, r) {
-                if self.monitor.stop().is_some() {
-                    return Vec::new();
-                }
-                for of_capacitors in partitions(capacitors, count - r) {
-                    let (mut next_r, mut next_c) = (of_resistors.iter(), of_capacitors.iter());
-                    let member: Vec<usize> = groups
-                        .iter()
-                        .filter_map(|g| match g.kind {
-                            Kind::Resistor => next_r.next().copied(),
-                            Kind::Capacitor => next_c.next().map(|c| c + r),
-                        })
-                        .collect();
-                    let mirrored = self.model.symmetries.iter().any(|order| {
-                        let image: Vec<usize> = order.iter().map(|&k| member[k]).collect();
-                        renumbered(&image, r) < renumbered(&member, r)
-                    });
-                    if !mirrored {
-                        members.push(member);
+        let mut members: Vec<(usize, Vec<usize>)> = Vec::new();
+        for index in forms {
+            let form = &self.forms[index];
+            let Some(wanted) = part_numbers.checked_sub(form.least_extra) else { continue };
+            let (resistors, capacitors) = form.kinds();
+            for r in 0..=resistors {
+                for c in 0..=capacitors {
+                    let (least, most) = form.part_numbers_of(r, c);
+                    // Where boards may differ altogether, one of them may do with less than another.
+                    if least <= wanted && (wanted <= most || self.boards_differ()) {
+                        members.extend(form.members(r, c).into_iter().map(|member| (index, member)));
+                    }
+                    if self.monitor.stop().is_some() {
+                        return Vec::new();
                     }
                 }
             }
         }
         // A stop leaves families out here; the level that follows then reports it.
-        let build =
-            |member| self.monitor.stop().is_none().then(|| Family::new(self.model, member, &windows)).flatten();
+        let build = |(index, member): (usize, Vec<usize>)| {
+            let family = || Family::new(&self.forms[index], self.supply, member, &windows);
+            Some((index, self.monitor.stop().is_none().then(family).flatten()?))
+        };
         members.into_par_iter().filter_map(build).collect()
     }
 
     /// How many partial sets a level is expected to have.
-    fn expected(&mut self, families: &[Family], level: f64) -> f64 {
+    fn expected(&mut self, families: &[(usize, Family)], level: f64) -> f64 {
         let windows = self.windows(level);
-        let nodes = |f: &Family| self.monitor.stop().is_none().then(|| Some(f.plan(&windows)?.nodes)).flatten();
+        let nodes =
+            |(_, f): &(usize, Family)| self.monitor.stop().is_none().then(|| Some(f.plan(&windows)?.nodes)).flatten();
         families.par_iter().filter_map(nodes).collect::<Vec<_>>().iter().sum()
     }
 
     /// Searches all families for sets up to an error; `None` if it was stopped. What was found until then is kept.
-    fn search_level(&mut self, families: &[Family], count: usize, level: f64) -> Option<()> {
+    fn search_level(&mut self, families: &[(usize, Family)], takes: Takes, budget: Budget, level: f64) -> Option<()> {
         let windows = self.windows(level);
         if self.monitor.stop().is_some() {
             return None;
         }
-        let plans: Vec<_> = families.par_iter().filter_map(|f| f.plan(&windows)).collect();
+        let mut plans: Vec<_> =
+            families.par_iter().filter_map(|(form, family)| Some((*form, family.plan(&windows)?))).collect();
+        plans.retain(|(_, plan)| plan.least_cost() <= budget.cost);
         // Large families are divided by the values of their first variable, small ones are done in one go.
         const LARGE: f64 = 20_000.0;
         let mut tasks = Vec::new();
-        for plan in &plans {
+        for (form, plan) in &plans {
             let roots = plan.roots();
             let size = if plan.nodes > LARGE { ((roots as f64 * LARGE / plan.nodes) as usize).max(1) } else { roots };
             let mut start = 0;
             while start < roots {
-                tasks.push((plan, start..(start + size).min(roots)));
+                tasks.push((*form, plan, start..(start + size).min(roots)));
                 start += size;
             }
         }
-        let best_error = self.best.error_up_to(usize::MAX).map(ErrorKey::ceiling);
+        let best_error = self.best.error().map(ErrorKey::ceiling);
         let (finished, total) = (AtomicUsize::new(0), tasks.len().max(1));
         let stopped = AtomicBool::new(false);
         let results: Vec<(Collector<'_>, u64)> = tasks
             .into_par_iter()
-            .map(|(plan, roots)| {
+            .map(|(form, plan, roots)| {
                 let mut collector = Collector {
-                    model: self.model,
+                    model: &self.forms[form],
+                    form,
+                    supply: self.supply,
                     yardstick: self.yardstick,
                     goals: self.goals,
                     monitor: self.monitor,
                     stopped: &stopped,
-                    count,
+                    takes,
                     limit: level,
-                    best: Best::new(self.goals.alternatives + 1),
+                    best: Best::new(self.goals.alternatives + 1, self.cost_counts()),
+                    candidates: Candidates::default(),
                     sets: 0,
                 };
                 if collector.stopped() {
                     return (collector, 0);
                 }
-                let nodes = plan.walk(roots, &mut collector);
+                let nodes = plan.walk(roots, budget, &mut collector);
                 let done = finished.fetch_add(1, Ordering::Relaxed) + 1;
                 self.monitor.progress(&Progress {
                     section: &self.yardstick.sections()[0].name,
-                    part_numbers: count,
+                    part_numbers: takes.part_numbers,
                     error_limit: level,
                     best: best_error,
                     done: done as f64 / total as f64,
@@ -258,64 +330,70 @@ impl Search<'_> {
                 (collector, nodes)
             })
             .collect();
+        let mut candidates = Candidates::default();
         for (collector, nodes) in results {
             self.nodes += nodes;
             self.sets += collector.sets;
             self.best.merge(collector.best);
+            candidates.merge(collector.candidates);
         }
+        // All sets within the level are there, so the best assignment within it is among them.
+        let boards = usize::try_from(self.supply.boards).unwrap_or(usize::MAX);
+        let (assigned, open) = candidates.assigned(boards);
+        assigned.into_iter().for_each(|found| self.best.insert(found));
+        self.assignment_open |= open;
         (!stopped.load(Ordering::Relaxed)).then_some(())
     }
-}
-
-/// The same partition with its blocks numbered by first appearance, resistors (blocks below `r`) and capacitors apart.
-fn renumbered(member: &[usize], r: usize) -> Vec<usize> {
-    let mut names: Vec<usize> = Vec::new();
-    let mut number = |block: usize| {
-        names.iter().position(|&n| n == block).unwrap_or_else(|| {
-            names.push(block);
-            names.len() - 1
-        })
-    };
-    member.iter().map(|&block| 2 * number(block) + usize::from(block >= r)).collect()
 }
 
 /// Evaluates the sets of one task and keeps the best.
 struct Collector<'a> {
     model: &'a Model,
+    form: usize,
+    supply: &'a Supply,
     yardstick: &'a Yardstick,
     goals: &'a Goals,
     monitor: &'a dyn Monitor,
     stopped: &'a AtomicBool,
-    count: usize,
+    takes: Takes,
     limit: f64,
     best: Best,
+    /// Sets for several boards that differ.
+    candidates: Candidates,
     sets: u64,
 }
 
 impl Visitor for Collector<'_> {
-    fn set(&mut self, values: &dyn Fn() -> Vec<Value>, response: &Biquad) {
+    fn set(&mut self, choices: &dyn Fn() -> Vec<Choice>, response: &Biquad) {
         self.sets += 1;
         // The set is judged in its canonical form below; this first look may differ from that by rounding.
-        let limit = self
-            .best
-            .worst_kept(self.count + self.model.least_extra)
-            .map_or(self.limit, |key| key.ceiling().min(self.limit));
+        let limit = self.best.worst_kept(&self.takes).map_or(self.limit, |key| key.ceiling().min(self.limit));
         let order = self.yardstick.sections()[0].shape.order();
         if !response.is_stable(order) || self.yardstick.within(&[*response], limit * (1.0 + 1e-9) + 1e-12).is_none() {
             return;
         }
-        let values = values();
-        if distinct(self.model.active_groups(), &values) < self.count {
+        let choices = choices();
+        let groups = self.model.active_groups();
+        // Measured parts are there once: with several boards such a set serves one of them.
+        let boards_differ = self.supply.boards > 1 && self.model.is_measured();
+        let own = boards_differ && self.goals.each_board_its_own;
+        if !own && distinct(self.supply, groups, &choices) + self.model.least_extra < self.takes.part_numbers {
             return;
         }
-        let Some(mut found) = canonical(self.model, self.goals, &values) else { return };
-        if self.goals.max_part_numbers.is_some_and(|most| found.part_numbers > most) {
+        let Some(mut found) = canonical(self.model, self.form, self.supply, self.goals, &choices) else { return };
+        if self.goals.max_part_numbers.is_some_and(|most| found.takes.part_numbers > most) {
             return;
         }
-        let achieved = self.model.biquad(&found.values[..self.model.active]);
+        let achieved = self.model.biquad(&found.choices[..self.model.active]);
         if let Some(deviation) = self.yardstick.within(&[achieved], limit + 1e-12) {
             (found.error, found.key) = (deviation.error, ErrorKey::new(deviation.error));
-            self.best.insert(found);
+            if boards_differ && (own || !items(self.supply, &found.choices).is_empty()) {
+                if found.takes.is_within(&self.takes) || !own {
+                    self.candidates.insert(self.supply, &self.model.groups, found, own);
+                }
+            } else {
+                self.best.insert(found);
+            }
         }
     }
 

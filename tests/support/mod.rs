@@ -17,7 +17,7 @@ use std::sync::Arc;
 
 use num_complex::Complex64;
 use roundwell::circuit::{self, Circuit};
-use roundwell::parts::{Series, Shelf};
+use roundwell::parts::{Series, Shelf, Supply};
 use roundwell::search::{Chosen, Goals, Outcome, Problem, Row, SectionProblem, Unwatched, shortlist};
 use roundwell::target::{Criterion, Measure, Section, Shape};
 use roundwell::units::{Kind, Value, parse_part};
@@ -90,7 +90,7 @@ pub fn wide(error_limit: f64) -> Goals {
 pub fn problem(section: SectionProblem, goals: Goals) -> Problem {
     let measure = if section.target.shape.is_all_pass() { Measure::Vector } else { Measure::Decibel };
     let criterion = Criterion { measure, ..Criterion::default() };
-    Problem { title: "test".into(), sections: vec![section], criterion, goals }
+    Problem { title: "test".into(), sections: vec![section], criterion, goals, supply: Supply::default() }
 }
 
 /// Ways to change what may go into single slots.

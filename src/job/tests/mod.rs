@@ -23,7 +23,7 @@ fn circuits(id: &str) -> Result<Arc<Circuit>, String> {
 }
 
 fn read(text: &str) -> Result<Job, Vec<Fault>> {
-    let resolved = JobFile::parse(text).and_then(|job| resolve(&job, &mut circuits));
+    let resolved = JobFile::parse(text).and_then(|job| resolve(&job, &mut circuits, None));
     resolved.map_err(|faults| located(text, faults))
 }
 
@@ -209,7 +209,7 @@ fn flags_win_and_are_named() {
         band: Some(Given::range("--band", "10 Hz .. 1 kHz").unwrap()),
         ..JobFile::default()
     });
-    let problem = resolve(&job, &mut circuits).unwrap().problem;
+    let problem = resolve(&job, &mut circuits, None).unwrap().problem;
     let section = &problem.sections[0];
     assert_eq!((problem.goals.rows, problem.criterion.floor_db.to_string()), (7, "40".to_string()));
     assert_eq!(section.circuit.id, "state-variable");
@@ -223,7 +223,7 @@ fn flags_win_and_are_named() {
         measure: Some(Given::flag("--measure", MeasureFile::Weighted { f0: None, q: None, gain: None, fz: None })),
         ..JobFile::default()
     });
-    let faults = resolve(&job, &mut circuits).unwrap_err();
+    let faults = resolve(&job, &mut circuits, None).unwrap_err();
     insta::assert_snapshot!(render(&located(&text, faults), "job.ron", &text, false), @r#"
     error: --resistors: "E5" is no series of preferred numbers: write E3, E6, E12,
            E24, E48, E96 or E192
