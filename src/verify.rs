@@ -10,7 +10,7 @@ use num_complex::Complex64;
 use thiserror::Error;
 
 use crate::circuit::{response, solve};
-use crate::parts::{Buying, Choice};
+use crate::parts::Choice;
 use crate::search::{Chosen, ErrorKey, Joint, Outcome, Part, Problem, Rank, Row};
 use crate::target::{Measure, Section, Yardstick};
 use crate::units::Kind;
@@ -220,7 +220,7 @@ fn check_board(
         let part_number = supply.part_number(kind, choice);
         numbers.insert(part_number);
         if missing {
-            if supply.buying == Buying::Forbidden {
+            if !supply.buys(kind) {
                 return Err(VerifyError::Limit { row: number, what: "the stock" });
             }
             bought.insert(part_number);

@@ -213,8 +213,9 @@ pub struct DrawerArgs {
     /// How many of each part used shall be left over [default: 0].
     #[arg(long, value_name = "COUNT")]
     pub spares: Option<String>,
-    /// What may be bought beside the stock: none, any, or at most so many part numbers [default: none].
-    #[arg(long, value_name = "COUNT")]
+    /// What may be bought beside the stock: none, any, or at most so many part numbers; resistors, or resistors:2, of one
+    /// kind only [default: none].
+    #[arg(long, value_name = "[KIND:]COUNT")]
     pub buy: Option<String>,
     /// Leave ceramic capacitors of class 2 (X7R and the like) in the drawer.
     #[arg(long, value_name = "BOOL", num_args = 0..=1, require_equals = true, default_missing_value = "true")]

@@ -1,6 +1,8 @@
 //! The result of a search as one plain record, a stock list as another, and their renderers. Each renderer writes to a writer; none opens files.
 
 mod csv;
+mod detail;
+mod drawn;
 mod json;
 mod layout;
 mod numbers;
@@ -12,6 +14,7 @@ mod table;
 mod sample;
 
 pub use csv::{CSV_COLUMNS, write_csv};
+pub use drawn::{BoardRecord, SupplyRecord, TakenRecord};
 pub use json::write_json;
 pub use layout::{Align, Column, grid, paragraph, printable, unbroken};
 pub use numbers::{error_in_words, percent};

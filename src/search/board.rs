@@ -644,7 +644,7 @@ impl Board<'_> {
             all.flat_map(|(p, rounded)| super::canonical::parts(&p.forms[0].groups, rounded))
         };
         let mut endless = self.problem.supply.clone();
-        endless.buying = Buying::Allowed;
+        (endless.buying, endless.buying_only) = (Buying::Allowed, None);
         let tally = tally(&endless, parts());
         (
             Some(self.assembled(exact, None, false, false)),
