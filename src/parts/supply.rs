@@ -133,6 +133,21 @@ impl Supply {
         Supply { lots, has_stock: true, boards: 1, spares: 0, buying: Buying::Forbidden, buying_only: None }
     }
 
+    /// Adds parts that are there already, as many as it takes, and gives the choice of them.
+    pub fn keep(&mut self, kind: Kind, value: Value) -> Choice {
+        let id = LotId(self.lots.len() as u32);
+        self.lots.push(Lot {
+            kind,
+            nominal: value,
+            measured: None,
+            available: None,
+            price: None,
+            lines: Vec::new(),
+            part_number: id,
+        });
+        Choice { value, lot: Some(id) }
+    }
+
     /// Whether there is a stock list.
     pub fn has_stock(&self) -> bool {
         self.has_stock

@@ -117,7 +117,7 @@ fn standing(part: &PartRecord) -> String {
 }
 
 /// Achieved figures with their distance from the target.
-fn achieved_in_words(achieved: &Achieved, target: &TargetRecord) -> String {
+pub(super) fn achieved_in_words(achieved: &Achieved, target: &TargetRecord) -> String {
     let figure = |name: &str, shown: String, value: f64, ideal: f64| {
         unbroken(&format!("{name} {shown} ({})", percent(value / ideal - 1.0)))
     };

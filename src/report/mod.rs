@@ -8,6 +8,7 @@ mod layout;
 mod numbers;
 mod record;
 mod stock;
+mod swap;
 mod table;
 
 #[cfg(test)]
@@ -25,5 +26,8 @@ pub use record::{
 pub use stock::{
     AmountOfStock, DielectricOfStock, KindOfStock, LineOfStock, PriceRecord, STOCK_FORMAT, StockRecord, StockRemark,
     TemperatureCoefficientRecord, ToleranceRecord, write_stock_json, write_stock_table,
+};
+pub use swap::{
+    ChangeRecord, ImpossibleRecord, ReplacementRecord, SWAP_FORMAT, SwapRecord, write_swap_json, write_swap_table,
 };
 pub use table::write_table;

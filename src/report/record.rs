@@ -536,7 +536,7 @@ fn notation(part: &Part) -> Option<String> {
 }
 
 impl ChosenRecord {
-    fn new(supply: &Supply, section: &SectionProblem, chosen: &Chosen) -> ChosenRecord {
+    pub(super) fn new(supply: &Supply, section: &SectionProblem, chosen: &Chosen) -> ChosenRecord {
         let Figures { w0, q, gain, wz } = chosen.achieved;
         let part = |part: &Part| PartRecord {
             slot: section.circuit.slots[part.slot].name.clone(),

@@ -262,7 +262,7 @@ impl Prepared<'_> {
 }
 
 /// The needs of a section's output that its shelves cannot meet, with both sides.
-fn unmet(section: &SectionProblem) -> Vec<String> {
+pub(crate) fn unmet(section: &SectionProblem) -> Vec<String> {
     let circuit = &section.circuit;
     let output = section.output();
     let q = section.target.q.unwrap_or(0.5);
@@ -754,38 +754,8 @@ impl Prepared<'_> {
     }
 
     /// A chosen section from the values of all its groups.
-    fn chosen(&self, form: usize, values: &[(f64, Option<Choice>)], mut levels: Vec<f64>) -> Chosen {
-        let form = &self.forms[form];
-        let active: Vec<f64> = values[..form.active].iter().map(|(v, _)| *v).collect();
-        let achieved = self.problem.target.figures_of(&form.biquad_of(&active));
-        let mut parts: Vec<Part> = Vec::new();
-        for (group, &(ideal, choice)) in form.groups.iter().zip(values) {
-            for &slot in &group.slots {
-                let other = parts.iter_mut().find(|part| part.slot == slot);
-                match (other, group.joint) {
-                    (Some(first), Some(joint)) => {
-                        first.ideal = Part::joined(group.kind, joint, first.ideal, ideal);
-                        first.value = None;
-                        first.pieces.extend(choice);
-                        first.pieces.sort_unstable_by(|a, b| b.cmp(a));
-                    }
-                    _ => parts.push(Part {
-                        slot,
-                        kind: group.kind,
-                        ideal,
-                        value: choice.map(|choice| choice.value),
-                        pieces: choice.into_iter().collect(),
-                        joint: group.joint,
-                    }),
-                }
-            }
-        }
-        parts.sort_by_key(|part| part.slot);
-        let impedance = impedance(form.active_groups(), &active);
-        if levels.is_empty() {
-            levels.extend(impedance);
-        }
-        Chosen { parts, achieved, impedance, levels }
+    fn chosen(&self, form: usize, values: &[(f64, Option<Choice>)], levels: Vec<f64>) -> Chosen {
+        chosen(self.problem, &self.forms[form], values, levels)
     }
 
     /// The transfer function of a chosen section.
@@ -799,4 +769,43 @@ impl Prepared<'_> {
         let values: Vec<f64> = single.active_groups().iter().map(value).collect();
         single.biquad_of(&values)
     }
+}
+
+/// A chosen section from the values of all its groups.
+pub(crate) fn chosen(
+    section: &SectionProblem,
+    form: &Model,
+    values: &[(f64, Option<Choice>)],
+    mut levels: Vec<f64>,
+) -> Chosen {
+    let active: Vec<f64> = values[..form.active].iter().map(|(v, _)| *v).collect();
+    let achieved = section.target.figures_of(&form.biquad_of(&active));
+    let mut parts: Vec<Part> = Vec::new();
+    for (group, &(ideal, choice)) in form.groups.iter().zip(values) {
+        for &slot in &group.slots {
+            let other = parts.iter_mut().find(|part| part.slot == slot);
+            match (other, group.joint) {
+                (Some(first), Some(joint)) => {
+                    first.ideal = Part::joined(group.kind, joint, first.ideal, ideal);
+                    first.value = None;
+                    first.pieces.extend(choice);
+                    first.pieces.sort_unstable_by(|a, b| b.cmp(a));
+                }
+                _ => parts.push(Part {
+                    slot,
+                    kind: group.kind,
+                    ideal,
+                    value: choice.map(|choice| choice.value),
+                    pieces: choice.into_iter().collect(),
+                    joint: group.joint,
+                }),
+            }
+        }
+    }
+    parts.sort_by_key(|part| part.slot);
+    let impedance = impedance(form.active_groups(), &active);
+    if levels.is_empty() {
+        levels.extend(impedance);
+    }
+    Chosen { parts, achieved, impedance, levels }
 }

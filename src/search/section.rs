@@ -57,25 +57,23 @@ pub(crate) fn search(
     goals: &Goals,
     monitor: &dyn Monitor,
 ) -> Option<SectionFront> {
-    let maker = WindowMaker::new(yardstick, forms.first()?.numerator())?;
-    let cost_counts = goals.rank == Rank::Cost;
-    let mut search = Search {
-        forms,
-        supply,
-        yardstick,
-        goals,
-        monitor,
-        maker,
-        windows: BTreeMap::new(),
-        best: Best::new(goals.alternatives + 1, cost_counts),
-        sets: 0,
-        nodes: 0,
-        left_out: None,
-        assignment_open: false,
-    };
-    Some(search.run())
+    Some(Search::new(forms, supply, yardstick, goals, monitor)?.run())
 }
 
+/// The sets of least error, whatever they take: for each takings as many as there are rows and alternatives wanted, so that
+/// the nearest of all are among them.
+pub(crate) fn nearest(
+    forms: &[Model],
+    supply: &Supply,
+    yardstick: &Yardstick,
+    goals: &Goals,
+    monitor: &dyn Monitor,
+) -> Option<SectionFront> {
+    let mut search = Search::new(forms, supply, yardstick, goals, monitor)?;
+    let proof = search.walk_counts(goals.error_resolution, goals.error_limit, f64::INFINITY);
+    let rows = search.best.all();
+    Some(SectionFront { rows, proof, sets: search.sets, nodes: search.nodes, limit: goals.error_limit })
+}
 struct Search<'a> {
     forms: &'a [Model],
     supply: &'a Supply,
@@ -94,7 +92,30 @@ struct Search<'a> {
     assignment_open: bool,
 }
 
-impl Search<'_> {
+impl<'a> Search<'a> {
+    fn new(
+        forms: &'a [Model],
+        supply: &'a Supply,
+        yardstick: &'a Yardstick,
+        goals: &'a Goals,
+        monitor: &'a dyn Monitor,
+    ) -> Option<Search<'a>> {
+        Some(Search {
+            forms,
+            supply,
+            yardstick,
+            goals,
+            monitor,
+            maker: WindowMaker::new(yardstick, forms.first()?.numerator())?,
+            windows: BTreeMap::new(),
+            best: Best::new(goals.alternatives + 1, goals.rank == Rank::Cost),
+            sets: 0,
+            nodes: 0,
+            left_out: None,
+            assignment_open: false,
+        })
+    }
+
     fn run(&mut self) -> SectionFront {
         let mut limit = self.goals.error_limit;
         let mut proof = self.walk_counts(self.goals.error_resolution, limit, f64::INFINITY);
