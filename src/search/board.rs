@@ -223,7 +223,7 @@ impl Prepared<'_> {
         let single = &self.forms[0];
         let found = ideal::solve(single, &self.problem.target, ignore_gain).and_then(|ideal| {
             let rounded = self.rounded(&ideal);
-            let mut found = canonical(single, 0, self.supply, goals, &rounded[..single.active])?;
+            let mut found = canonical(single, 0, self.supply, goals, &rounded[..single.active]).into_iter().next()?;
             let response = single.biquad(&found.choices[..single.active]);
             found.error = self.yardstick.deviation(&[response]).error;
             found.key = ErrorKey::new(found.error);
@@ -544,17 +544,27 @@ impl Board<'_> {
         let middle = preferred_impedance(&self.problem.goals);
         let form = &prepared.forms[found.form];
         let groups = form.active_groups();
-        let mut levels: Vec<SetAtLevel> = (found.levels.iter())
-            .filter_map(|&level| {
-                let shifted = shifted(groups, &found.choices[..groups.len()], level)?;
-                let (choices, _) = with_silent(form, prepared.supply, shifted)?;
-                Some(SetAtLevel { form: found.form, choices, levels: found.levels.clone(), level })
+        let cost_counts = self.problem.goals.rank == Rank::Cost;
+        let own = |tally: &Tally| tally.takes == found.takes && (!cost_counts || tally.cost == found.cost);
+        let at = |&level: &i32| {
+            let shifted = shifted(groups, &found.choices[..groups.len()], level);
+            let filled = shifted.map(|shifted| with_silent(form, prepared.supply, shifted, cost_counts));
+            filled.unwrap_or_default().into_iter().map(move |(choices, tally)| (level, choices, tally))
+        };
+        // Other ways to fill the silent slots may be needed where several sections draw on one stock.
+        let alone = self.prepared.len() == 1;
+        let mut levels: Vec<(bool, SetAtLevel)> = (found.levels.iter().flat_map(at))
+            .filter(|(_, _, tally)| !alone || own(tally))
+            .map(|(level, choices, tally)| {
+                (!own(&tally), SetAtLevel { form: found.form, choices, levels: found.levels.clone(), level })
             })
             .collect();
         let distance =
             |set: &SetAtLevel| impedance(groups, &in_ohms(&set.choices)).map_or(0.0, |z| (z / middle).ln().abs());
-        levels.sort_by(|a, b| distance(a).total_cmp(&distance(b)).then_with(|| a.cmp(b)));
-        levels
+        levels.sort_by(|(other, a), (than, b)| {
+            other.cmp(than).then(distance(a).total_cmp(&distance(b))).then_with(|| a.cmp(b))
+        });
+        levels.into_iter().map(|(_, set)| set).collect()
     }
 
     fn row(&self, combination: &Combination, alternative: bool) -> Row {
@@ -733,7 +743,8 @@ impl Prepared<'_> {
         };
         let nearest = single.active_groups().iter().zip(&ideal.values).map(|(g, &v)| of_value(g, g.shelf.nearest(v)));
         let active: Vec<Choice> = nearest.collect();
-        let whole = with_silent(single, self.supply, active.clone()).map(|(choices, _)| choices);
+        let whole = with_silent(single, self.supply, active.clone(), false).into_iter().next();
+        let whole = whole.map(|(choices, _)| choices);
         whole.unwrap_or_else(|| {
             let level = impedance(single.active_groups(), &in_ohms(&active)).unwrap_or(1.0);
             let silent = single.silent_groups().iter().map(|g| of_value(g, g.shelf.nearest(level)));

@@ -401,10 +401,25 @@ impl Visitor for Collector<'_> {
         if !own && distinct(self.supply, groups, &choices) + self.model.least_extra < self.takes.part_numbers {
             return;
         }
-        let Some(mut found) = canonical(self.model, self.form, self.supply, self.goals, &choices) else { return };
-        if self.goals.max_part_numbers.is_some_and(|most| found.takes.part_numbers > most) {
-            return;
+        for found in canonical(self.model, self.form, self.supply, self.goals, &choices) {
+            if self.goals.max_part_numbers.is_none_or(|most| found.takes.part_numbers <= most) {
+                self.keep(found, limit, boards_differ);
+            }
         }
+    }
+
+    fn stopped(&mut self) -> bool {
+        if self.monitor.stop().is_some() {
+            self.stopped.store(true, Ordering::Relaxed);
+        }
+        self.stopped.load(Ordering::Relaxed)
+    }
+}
+
+impl Collector<'_> {
+    /// Keeps a set whose response lies within the limit.
+    fn keep(&mut self, mut found: Found, limit: f64, boards_differ: bool) {
+        let own = boards_differ && self.goals.each_board_its_own;
         let achieved = self.model.biquad(&found.choices[..self.model.active]);
         if let Some(deviation) = self.yardstick.within(&[achieved], limit + 1e-12) {
             (found.error, found.key) = (deviation.error, ErrorKey::new(deviation.error));
@@ -416,12 +431,5 @@ impl Visitor for Collector<'_> {
                 self.best.insert(found);
             }
         }
-    }
-
-    fn stopped(&mut self) -> bool {
-        if self.monitor.stop().is_some() {
-            self.stopped.store(true, Ordering::Relaxed);
-        }
-        self.stopped.load(Ordering::Relaxed)
     }
 }
