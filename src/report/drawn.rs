@@ -19,6 +19,8 @@ pub struct SupplyRecord {
     pub spares: u64,
     /// How many different parts it holds, lines of the same choice counted once.
     pub lots: usize,
+    /// Lines of the list that cannot be used and were left out.
+    pub lines_left_out: usize,
     /// How many part numbers may be bought; `None` for as many as it takes.
     pub most_to_buy: Option<usize>,
     /// The only kind that may be bought, where it is one.
@@ -34,6 +36,7 @@ impl SupplyRecord {
             boards: supply.boards,
             spares: supply.spares,
             lots: supply.lots().count(),
+            lines_left_out: supply.lines_left_out,
             most_to_buy: Some(supply.buying).filter(|buying| *buying != Buying::Allowed).map(Buying::most),
             buying_only: supply.buying_only,
             currency: supply.currency().flatten().map(str::to_owned),
