@@ -9,6 +9,8 @@ use crate::parts::STOCK_COLUMNS;
 use crate::report::CSV_COLUMNS;
 use crate::target::Shape;
 
+pub use super::sections_args::SectionsArgs;
+
 /// From ideal filter sections to resistors and capacitors that can be bought, with a proof.
 #[derive(Debug, Parser)]
 #[command(name = "roundwell", version, max_term_width = 100, after_help = AFTER_HELP)]
@@ -19,8 +21,9 @@ pub struct Arguments {
 }
 
 const AFTER_HELP: &str = "\
-Example:
+Examples:
   roundwell shortlist --shape low-pass --f0 1k --q 0.7071 --circuit tow-thomas
+  roundwell sections --approximation butterworth --response low-pass --edge 1k --order 5
 
 Exit codes:
   0    found
@@ -35,6 +38,9 @@ pub enum Command {
     /// Search a job for the sets of parts that come closest with the fewest part numbers.
     #[command(after_help = SHORTLIST_HELP, after_long_help = shortlist_long_help(), allow_negative_numbers = true)]
     Shortlist(Box<ShortlistArgs>),
+    /// Turn the specification of a filter into sections, ready for a shortlist.
+    #[command(after_help = super::sections_args::HELP, allow_negative_numbers = true)]
+    Sections(Box<SectionsArgs>),
     /// List the circuits, or show one: nodes, slots, outputs, what each slot sets.
     Circuits(CircuitsArgs),
     /// Show a series of preferred values, or the neighbours of values in it.
@@ -327,6 +333,20 @@ mod tests {
     }
 
     #[test]
+    fn every_key_of_a_filter_has_a_flag() {
+        let command = Arguments::command();
+        let sections = command.find_subcommand("sections");
+        let flags: Vec<&str> = sections
+            .map(|command| command.get_arguments().filter_map(|arg| arg.get_long()).collect())
+            .unwrap_or_default();
+        let all = keys("(filter: (zzzzzzzzz: 1))");
+        assert!(all.len() > 15, "{all:?}");
+        for key in &all {
+            assert!(flags.contains(&key.replace('_', "-").as_str()), "--{key}");
+        }
+    }
+
+    #[test]
     fn every_key_of_a_job_file_has_a_flag() {
         let command = Arguments::command();
         let shortlist = command.find_subcommand("shortlist");
@@ -336,7 +356,7 @@ mod tests {
         let mut all = keys("(zzzzzzzzz: 1)");
         all.extend(keys("(sections: [(zzzzzzzzz: 1)])"));
         assert!(all.len() > 30, "{all:?}");
-        for key in all.iter().filter(|key| *key != "sections") {
+        for key in all.iter().filter(|key| !["sections", "filter"].contains(&key.as_str())) {
             let flag = if key == "slots" { "slot".to_string() } else { key.replace('_', "-") };
             assert!(flags.contains(&flag), "--{flag}");
         }

@@ -6,6 +6,7 @@
 
 mod desk;
 mod file;
+mod filter;
 mod given;
 mod goals;
 mod resolve;
@@ -16,7 +17,8 @@ mod slots;
 #[cfg(test)]
 mod tests;
 
-pub use file::{JobFile, MeasureFile, SectionFile, Sign, SlotFile, Slots, Untie};
+pub use file::{FilterFile, JobFile, MeasureFile, Response, SectionFile, Sign, SlotFile, Slots, Untie};
+pub use filter::resolve_filter;
 pub use given::{Given, Scalar, Scalars};
 pub use resolve::{Job, resolve};
 pub use shelf::{ShelfFile, Shelves};

@@ -5,6 +5,7 @@ use std::time::Duration;
 
 use super::desk::{At, Checked, Desk, Noted, Place};
 use super::file::{JobFile, SectionFile};
+use super::filter;
 use super::goals::{Delicate, check_impedance, criterion, goals};
 use super::section::{Circuits, Written, has_inexact_null};
 use super::shelf::shelf;
@@ -43,20 +44,13 @@ pub fn resolve(
 
 fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits) -> Checked<Job> {
     let root = Place::job();
-    let files: &[SectionFile] = job.sections.as_ref().map_or(&[], |given| &given.value);
-    let place = root.key("sections");
-    if files.is_empty() {
-        let help = "write sections: [(shape: LowPass, f0: \"1 kHz\", q: 0.7071)], for example";
-        desk.note(&place, "the job has no sections", help);
-    }
     if let Some(At { value: title, place }) = root.find("title", &job.title)
         && let Some(message) = control_character(title.text())
     {
         desk.note(&place, message, CONTROL_HELP);
     }
-    let resistors = shelf(desk, root.find("resistors", &job.resistors), Kind::Resistor);
-    let capacitors = shelf(desk, root.find("capacitors", &job.capacitors), Kind::Capacitor);
-    let stock = Stock { resistors, capacitors };
+    let stock = job_stock(desk, job);
+    let (files, place) = files(desk, job, &stock, circuits);
 
     let mut names: Vec<String> = Vec::new();
     let mut sections = Vec::new();
@@ -109,6 +103,34 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits) -> Checked<Job> 
         },
         time_limit: time_limit?,
     })
+}
+
+/// The shelves of the job.
+pub(super) fn job_stock(desk: &mut Desk, job: &JobFile) -> Stock {
+    let root = Place::job();
+    Stock {
+        resistors: shelf(desk, root.find("resistors", &job.resistors), Kind::Resistor),
+        capacitors: shelf(desk, root.find("capacitors", &job.capacitors), Kind::Capacitor),
+    }
+}
+
+/// The sections as they are written, or as the filter gives them, and where they stand.
+fn files(desk: &mut Desk, job: &JobFile, stock: &Stock, circuits: Circuits) -> (Vec<SectionFile>, Place) {
+    let root = Place::job();
+    let files = job.sections.as_ref().map_or(Vec::new(), |given| given.value.clone());
+    if let Some(at) = root.find("filter", &job.filter) {
+        if !files.is_empty() {
+            let help = "leave out either the filter or the sections";
+            desk.note(&at.place, "the job has a filter and sections", help);
+        }
+        return (filter::sections(desk, job, &at, stock, circuits).unwrap_or_default(), at.place);
+    }
+    let place = root.key("sections");
+    if files.is_empty() {
+        let help = "write sections: [(shape: LowPass, f0: \"1 kHz\", q: 0.7071)], for example";
+        desk.note(&place, "the job has no sections", help);
+    }
+    (files, place)
 }
 
 fn section(desk: &mut Desk, written: &Written, stock: &Stock, circuits: Circuits) -> Checked<SectionProblem> {

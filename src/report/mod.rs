@@ -1,6 +1,7 @@
 //! The result of a search as one plain record, a stock list as another, and their renderers. Each renderer writes to a writer; none opens files.
 
 mod csv;
+mod filter;
 mod json;
 mod layout;
 mod numbers;
@@ -12,6 +13,10 @@ mod table;
 mod sample;
 
 pub use csv::{CSV_COLUMNS, write_csv};
+pub use filter::{
+    ChoiceRecord, FilterRecord, LevelRecord, NotchRecord, OpAmpRecord, PoleRecord, SECTIONS_FORMAT, SectionOfFilter,
+    SectionsRecord, StopBandRecord, SwingRecord, write_sections_job, write_sections_json, write_sections_table,
+};
 pub use json::write_json;
 pub use layout::{Align, Column, grid, paragraph, printable, unbroken};
 pub use numbers::{error_in_words, percent};
