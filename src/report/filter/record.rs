@@ -189,6 +189,9 @@ pub struct ChoiceRecord {
     pub pairings: &'static str,
     /// `headroom`, `rising-q`, `falling-q` or `given`.
     pub sequence: &'static str,
+    /// Whether, for `headroom`, all orders were compared; otherwise the one that is best by the levels at gain 1, and those
+    /// by rising and by falling Q.
+    pub all_orders_compared: bool,
     /// `headroom`, `equal` or `given`.
     pub gains: &'static str,
     /// The peak at the output of the filter.
@@ -247,6 +250,7 @@ impl SectionsRecord {
                     Sequence::FallingQ => "falling-q",
                     Sequence::Given(_) => "given",
                 },
+                all_orders_compared: plan.cascade.has_all_orders,
                 gains: match request.gains {
                     Gains::Headroom => "headroom",
                     Gains::Equal => "equal",

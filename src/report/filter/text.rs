@@ -229,7 +229,10 @@ fn explained(record: &SectionsRecord) -> Vec<(&'static str, String)> {
     lines.push((
         "Sequence:",
         match choice.sequence {
-            "headroom" => "the order with the least swing of those compared",
+            "headroom" if choice.all_orders_compared => "the order with the least swing of all",
+            "headroom" => {
+                "the least swing of three: the best order by the levels at gain 1, by rising Q, by falling Q"
+            }
             "rising-q" => "by rising Q, as asked",
             "falling-q" => "by falling Q, as asked",
             _ => "as given",
@@ -237,10 +240,12 @@ fn explained(record: &SectionsRecord) -> Vec<(&'static str, String)> {
         .to_string(),
     ));
     let fixed: Vec<String> = (record.sections.iter().filter(|s| s.gain_is_fixed))
-        .map(|s| format!("section {} can only have {}", s.name, short(s.gain, 5)))
+        .map(|s| format!("section {} stays at {}: its circuit gives no other", s.name, short(s.gain, 5)))
         .collect();
     let mut gains = match choice.gains {
-        "headroom" => "the largest op-amp output of each section peaks as high as the last one's",
+        "headroom" => {
+            "the largest op-amp output of each section peaks as high as the last one's, as nearly as its parts let it"
+        }
         "equal" => "the same for each section",
         _ => "as given",
     }

@@ -71,6 +71,7 @@ pub fn cascade(
             nearest_zeros: nearest_zeros.map(f64::exp),
         },
         pairings,
+        has_all_orders: best.units.len() <= ALL_ORDERS,
         sections: sections(&best, &grid),
         parts,
     })

@@ -173,6 +173,9 @@ pub struct Cascade {
     pub swing: Swing,
     /// How many pairings of poles with zeros were compared for headroom.
     pub pairings: Pairings,
+    /// Whether all orders were solved for; otherwise the one that is best by the levels at gain 1, and those by rising and
+    /// by falling Q.
+    pub has_all_orders: bool,
     /// The peak of the last section's own output.
     pub output: Level,
 }

@@ -90,6 +90,9 @@ impl Unit {
 
     /// The same with another gain, solved anew; `None` where its circuit cannot give it.
     pub fn with_gain(&self, gain: f64) -> Option<Unit> {
+        if (gain / self.section.gain - 1.0).abs() < 1e-12 {
+            return Some(self.clone());
+        }
         match &self.stage {
             Some(stage) if self.is_counted => Unit::of_gain(stage, gain),
             stage => Some(Unit::alone(Section { gain, ..self.section.clone() }, stage.clone())),
