@@ -405,13 +405,13 @@ pub struct StockArgs {
     #[arg(long, value_name = "SHORTLIST")]
     pub need: Option<PathBuf>,
     /// The row of the shortlist.
-    #[arg(long, value_name = "COUNT", default_value_t = 1, requires = "need", value_parser = clap::value_parser!(u32).range(1..))]
-    pub row: u32,
+    #[arg(long, value_name = "COUNT", default_value_t = 1, requires = "need", value_parser = row_number)]
+    pub row: u64,
     /// Boards to build [default: those of the shortlist, or 1].
-    #[arg(long, value_name = "COUNT", requires = "need", value_parser = clap::value_parser!(u64).range(1..=1_000_000))]
+    #[arg(long, value_name = "COUNT", requires = "need", value_parser = board_count)]
     pub boards: Option<u64>,
     /// How many of each part used shall be left over [default: as in the shortlist, or 0].
-    #[arg(long, value_name = "COUNT", requires = "need", value_parser = clap::value_parser!(u64).range(0..=1_000_000))]
+    #[arg(long, value_name = "COUNT", requires = "need", value_parser = spare_count)]
     pub spares: Option<u64>,
     /// How to write it.
     #[arg(long, value_enum, default_value_t)]
@@ -422,6 +422,24 @@ pub struct StockArgs {
     /// Characters to the line of a table.
     #[arg(long, value_name = "COUNT", default_value_t = 80, value_parser = clap::value_parser!(u16).range(40..=1000))]
     pub width: u16,
+}
+
+/// A whole number within a range.
+fn whole(text: &str, low: u64, high: u64) -> Result<u64, String> {
+    let number = text.parse().ok().filter(|number| (low..=high).contains(number));
+    number.ok_or_else(|| format!("write a whole number from {low} to {high}, such as {}", low.max(2)))
+}
+
+fn row_number(text: &str) -> Result<u64, String> {
+    whole(text, 1, 10_000)
+}
+
+fn board_count(text: &str) -> Result<u64, String> {
+    whole(text, 1, crate::parts::Supply::MOST)
+}
+
+fn spare_count(text: &str) -> Result<u64, String> {
+    whole(text, 0, crate::parts::Supply::MOST)
 }
 
 /// The name of a shape on the command line.

@@ -118,6 +118,10 @@ impl Source {
     /// The stock list that the job names: from its own folder, or by a flag from the working folder.
     fn stock(&self, job: &JobFile) -> Option<Result<Stock, Fault>> {
         let Given { value, flag } = job.stock.as_ref()?;
+        if value.text() == "-" && self.path.as_deref() == Some(Path::new("-")) {
+            let message = "the job and the stock list cannot both come from standard input";
+            return Some(Err(Fault::at(flag.unwrap_or("stock"), message).help("name one of them as a file")));
+        }
         let path = match flag {
             Some(_) => PathBuf::from(value.text()),
             None => self.folder().join(value.text()),

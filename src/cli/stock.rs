@@ -21,6 +21,10 @@ use crate::text::Fault;
 /// written, lines that cannot be used.
 pub fn run(args: &StockArgs) -> Result<u8, Failure> {
     let name = name_of(&args.file);
+    if args.file == Path::new("-") && args.need.as_deref() == Some(Path::new("-")) {
+        let message = "the stock list and the shortlist cannot both come from standard input";
+        return Err(Failure::input(Fault::at("--need", message).help("name one of them as a file")));
+    }
     let bytes = read_bytes(&args.file)?;
     let stock = Stock::read(&bytes).map_err(|error| {
         let message = printable(&format!("{name}: {error}"));

@@ -55,6 +55,7 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits, stock: Option<&S
     }
     // A stock that cannot be used leaves nothing to say of the shelves; all else is still checked, as if there were none.
     let source = Source::new(desk, job, stock);
+    let is_sound = source.is_ok();
     let source = match &source {
         Ok(source) => source,
         Err(Noted) => &Source::default(),
@@ -97,7 +98,9 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits, stock: Option<&S
         sections.iter().flatten().for_each(|section| check_impedance(desk, job, goals, section));
     }
     let shelves: Vec<&Shelf> = sections.iter().flatten().flat_map(|section| &section.shelves).collect();
-    check_rank(desk, job, source, &shelves);
+    if is_sound {
+        check_rank(desk, job, source, &shelves);
+    }
     let seconds = |text: &str| {
         let seconds = parse_seconds(text).map_err(|error| error.to_string())?;
         Duration::try_from_secs_f64(seconds).map_err(|error| error.to_string())

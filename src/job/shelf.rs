@@ -150,8 +150,18 @@ pub(super) fn shelf(desk: &mut Desk, found: Option<At<'_, Shelves>>, kind: Kind,
         members.map(|(i, file)| file.resolve(desk, &place.item(i), kind, source)).collect();
     let choices: Vec<Choice> = choices.into_iter().collect::<Checked<Vec<_>>>()?.into_iter().flatten().collect();
     if choices.is_empty() && source.supply.has_stock() {
-        let message = format!("no {} in stock lies in the range, and nothing may be bought", kind.name());
-        let help = "widen the range (by default it is 1k to 1M and 1n to 1u), or allow buying with buy or --buy";
+        let single = files.iter().all(|file| file.series.is_none() && file.values.is_some());
+        let what = if single { "none of these values" } else { "no value in the range" };
+        let (message, help) = if source.has_barred(kind) {
+            let message = format!("{what} is in stock as a {} that is not of class 2", kind.name());
+            (message, "lift the bar on class 2, or allow buying with buy or --buy")
+        } else if single {
+            let message = format!("{what} is in stock as a {}, and nothing may be bought", kind.name());
+            (message, "name values that are in stock, or allow buying with buy or --buy")
+        } else {
+            let message = format!("{what} is in stock as a {}, and nothing may be bought", kind.name());
+            (message, "widen the range (by default it is 1k to 1M and 1n to 1u), or allow buying with buy or --buy")
+        };
         return Err(desk.note(&place, message, help));
     }
     Shelf::of_choices(kind, choices).map_err(|error| desk.note(&place, error.to_string(), ""))

@@ -93,6 +93,11 @@ impl Source {
         choices
     }
 
+    /// Whether parts of a kind stay in the drawer for being of class 2.
+    pub fn has_barred(&self, kind: Kind) -> bool {
+        self.bar_class_2 && self.supply.lots().any(|(_, lot)| lot.kind == kind && lot.is_class_2())
+    }
+
     /// A shelf without the choices whose label is one of `excluded`.
     pub fn without(&self, shelf: &Shelf, excluded: &[Value]) -> Option<Shelf> {
         shelf.filtered(|&choice| !excluded.contains(&self.label(choice)))

@@ -74,7 +74,9 @@ fn taken_in_words(record: &Record, taken: &super::TakenRecord) -> String {
         (buy, _) if buy == taken.need => format!(": {buy} to buy"),
         (buy, there) => format!(": {} of {}, {buy} to buy", taken.need, there.unwrap_or(0)),
     };
-    unbroken(&words)
+    // What is long may be broken at its blanks.
+    const LONG: usize = 34;
+    if words.chars().count() > LONG { words } else { unbroken(&words) }
 }
 
 /// The boards of a row that differ: which measured part stands where, and what each board gives.

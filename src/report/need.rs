@@ -1,12 +1,14 @@
 //! What a row of a shortlist takes from a stock list: what is left, and what is short.
 
+use std::collections::BTreeMap;
 use std::io::{self, Write};
 
 use serde::{Deserialize, Serialize};
 
 use super::layout::{Column, grid, paragraph, printable};
+use super::numbers::count;
 use super::record::FORMAT;
-use crate::parts::{Lot, Supply};
+use crate::parts::{Lot, LotId, Supply};
 use crate::text::Fault;
 use crate::units::{Kind, format_part, parse_part};
 
@@ -65,8 +67,12 @@ pub struct NeedLine {
 }
 
 #[derive(Deserialize)]
-struct List {
+struct Head {
     format: String,
+}
+
+#[derive(Deserialize)]
+struct List {
     title: String,
     stock: Option<ListStock>,
     shortlist: Vec<ListRow>,
@@ -116,12 +122,13 @@ impl NeedRecord {
         quantity: Quantity,
     ) -> Result<NeedRecord, Fault> {
         let fault = |message: String| Fault::at("", printable(&message));
-        let list: List = serde_json::from_str(json)
-            .map_err(|error| fault(format!("{file} is no shortlist: {error}")).help(HELP))?;
-        if list.format != FORMAT {
-            let message = format!("{file} has the format `{}`, {FORMAT} is expected", list.format);
+        let unreadable = |error: serde_json::Error| fault(format!("{file} is no shortlist: {error}")).help(HELP);
+        let head: Head = serde_json::from_str(json).map_err(unreadable)?;
+        if head.format != FORMAT {
+            let message = format!("{file} has the format `{}`, {FORMAT} is expected", head.format);
             return Err(fault(message).help(HELP));
         }
+        let list: List = serde_json::from_str(json).map_err(unreadable)?;
         let Some(found) = list.shortlist.iter().find(|found| found.rank == row) else {
             let rows = list.shortlist.len();
             let message = format!("{file} has no row {row}");
@@ -136,6 +143,14 @@ impl NeedRecord {
         }
         let boards = quantity.boards.or(list.stock.as_ref().map(|stock| stock.boards)).unwrap_or(1);
         let spares = quantity.spares.or(list.stock.as_ref().map(|stock| stock.spares)).unwrap_or(0);
+        let made_for = list.stock.as_ref().map_or(1, |stock| stock.boards);
+        if boards > made_for && found.taken.iter().any(|taken| taken.measured.is_some()) {
+            let message = format!("row {row} of {file} places measured parts on {}", boards_in_words(made_for));
+            let help = format!("make a shortlist for {}, or ask for fewer", boards_in_words(boards));
+            return Err(fault(message).help(help));
+        }
+        // Parts that fall on one lot share what there is.
+        let mut used: BTreeMap<LotId, u64> = BTreeMap::new();
         let as_listed = quantity.boards.is_none() && quantity.spares.is_none();
         let mut parts: Vec<NeedLine> = Vec::new();
         for taken in &found.taken {
@@ -144,15 +159,20 @@ impl NeedRecord {
                 None if as_listed => taken.need,
                 None => taken.per_board.saturating_mul(boards).saturating_add(spares),
             };
-            let lot = matching(supply, taken);
+            let matching = matching(supply, taken);
+            let lot = matching.map(|(_, lot)| lot);
+            let already = matching.map_or(0, |(id, _)| std::mem::replace(used.entry(id).or_default(), need));
+            if let Some((id, _)) = matching {
+                used.insert(id, already + need);
+            }
             let there = match lot {
                 None => Some(0),
-                Some(lot) => lot.available,
+                Some(lot) => lot.available.map(|there| there.saturating_sub(already)),
             };
             parts.push(NeedLine {
                 kind: taken.kind,
                 value: taken.notation.clone(),
-                wanted_grade: taken.grade.clone(),
+                wanted_grade: taken.grade.clone().filter(|_| list.stock.is_some()),
                 grade: lot.and_then(super::drawn::grade),
                 id: lot.and_then(Lot::id).map(str::to_owned),
                 lines: lot.map_or(Vec::new(), |lot| lot.lines.iter().map(|line| line.line).collect()),
@@ -178,13 +198,17 @@ impl NeedRecord {
 
 /// The lot for a part: of the same label and grade, else of the same label and with the most parts. A measured part is only
 /// itself.
-fn matching<'a>(supply: &'a Supply, taken: &ListTaken) -> Option<&'a Lot> {
+fn matching<'a>(supply: &'a Supply, taken: &ListTaken) -> Option<(LotId, &'a Lot)> {
     let label = parse_part(&taken.notation, taken.kind).ok()?;
     let measured = taken.measured.as_deref().map(|text| parse_part(text, taken.kind)).transpose().ok()?;
     let fits = |lot: &&Lot| lot.kind == taken.kind && lot.nominal == label && lot.measured == measured;
-    let lots: Vec<&Lot> = supply.lots().map(|(_, lot)| lot).filter(fits).collect();
-    let same = lots.iter().find(|lot| super::drawn::grade(lot) == taken.grade);
-    same.copied().or_else(|| lots.into_iter().max_by_key(|lot| lot.available.unwrap_or(u64::MAX)))
+    let lots: Vec<(LotId, &Lot)> = supply.lots().filter(|(_, lot)| fits(lot)).collect();
+    let same = lots.iter().find(|(_, lot)| super::drawn::grade(lot) == taken.grade);
+    same.copied().or_else(|| lots.into_iter().max_by_key(|(_, lot)| lot.available.unwrap_or(u64::MAX)))
+}
+
+fn boards_in_words(boards: u64) -> String {
+    if boards == 1 { "1 board".to_string() } else { format!("{} boards", count(boards)) }
 }
 
 /// Writes the record as indented JSON with a line end. The keys are the fields of [`NeedRecord`].
@@ -201,7 +225,7 @@ pub fn write_need_json(record: &NeedRecord, out: &mut dyn Write) -> io::Result<(
 /// # Errors
 /// Those of the writer.
 pub fn write_need_table(record: &NeedRecord, width: usize, out: &mut dyn Write) -> io::Result<()> {
-    let boards = if record.boards == 1 { "1 board".to_string() } else { format!("{} boards", record.boards) };
+    let boards = boards_in_words(record.boards);
     let spares = if record.spares == 0 { String::new() } else { format!(", {} of each left over", record.spares) };
     let of = if record.title.is_empty() { String::new() } else { format!(" of {}", printable(&record.title)) };
     let line = format!("Row {}{of}: {boards}{spares}, from {}", record.row, printable(&record.stock));
@@ -231,7 +255,8 @@ pub fn write_need_table(record: &NeedRecord, width: usize, out: &mut dyn Write) 
         columns.push(Column::right("short", rows().map(|part| part.short.to_string()).collect()));
     }
     text += &grid(&columns, 2, width);
-    for part in rows().filter(|part| part.grade != part.wanted_grade && !part.lines.is_empty()) {
+    let asked = |part: &&NeedLine| part.wanted_grade.is_some() && part.grade != part.wanted_grade;
+    for part in rows().filter(asked).filter(|part| !part.lines.is_empty()) {
         let [wanted, has] = [&part.wanted_grade, &part.grade].map(|grade| grade.as_deref().unwrap_or("no grade"));
         let line = format!("{} {}: the row has {wanted}, the list {has}", part.kind.letter(), part.value);
         text += &paragraph("! ", &printable(&line), width);

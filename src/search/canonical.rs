@@ -140,12 +140,26 @@ pub(crate) fn canonical(
     tallies.iter().filter(|tally| !beaten(tally)).filter_map(one).collect()
 }
 
-/// The impedance level: geometric mean of the resistances, ohms; `None` without a resistor. Values in ohms and farads.
+/// The impedance level: geometric mean of the resistances in the slots, ohms; `None` without a resistor. Values in ohms and
+/// farads.
 pub(crate) fn impedance(groups: &[Group], values: &[f64]) -> Option<f64> {
-    let logs: Vec<f64> = (groups.iter().zip(values))
-        .filter(|(g, _)| g.kind == Kind::Resistor)
-        .flat_map(|(g, v)| std::iter::repeat_n(v.ln(), g.slots.len()))
-        .collect();
+    let mut logs: Vec<f64> = Vec::new();
+    for (index, (group, &value)) in groups.iter().zip(values).enumerate() {
+        if group.kind != Kind::Resistor {
+            continue;
+        }
+        // The other of a pair stands in the same slots; the pair counts once, where the first of it stands.
+        let other = group.joint.and_then(|joint| {
+            let other = (0..groups.len()).find(|&k| k != index && groups[k].slots == group.slots)?;
+            Some((other, joint.value(group.kind, value, values[other])))
+        });
+        let resistance = match other {
+            Some((other, _)) if other < index => continue,
+            Some((_, whole)) => whole,
+            None => value,
+        };
+        logs.extend(std::iter::repeat_n(resistance.ln(), group.slots.len()));
+    }
     (!logs.is_empty()).then(|| (logs.iter().sum::<f64>() / logs.len() as f64).exp())
 }
 

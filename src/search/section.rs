@@ -1,16 +1,17 @@
 //! The exact front of one section.
 
-use std::collections::BTreeMap;
+use std::collections::{BTreeMap, BTreeSet};
 use std::ops::Range;
 use std::sync::atomic::{AtomicBool, AtomicUsize, Ordering};
 
 use rayon::prelude::*;
 
-use crate::parts::{Choice, Supply};
+use crate::parts::{Choice, Origin, Supply};
 use crate::target::{Biquad, Yardstick};
+use crate::units::{Kind, Value};
 
 use super::assign::{Candidates, items};
-use super::canonical::{canonical, distinct};
+use super::canonical::{canonical, distinct, parts};
 use super::family::{Budget, Family, Visitor};
 use super::front::{Best, End, ErrorKey, Found, Proof, Takes};
 use super::limits::{Monitor, Progress, StopReason};
@@ -419,8 +420,26 @@ impl Visitor for Collector<'_> {
 }
 
 impl Collector<'_> {
+    /// Whether a value is taken from several lots of which one would do: the same set with fewer part numbers is another.
+    fn splits_a_value(&self, found: &Found) -> bool {
+        if !self.supply.has_stock() || self.goals.rank == Rank::Cost {
+            return false;
+        }
+        let mut by_value: BTreeMap<(Kind, Value), (BTreeSet<Choice>, u64)> = BTreeMap::new();
+        for (kind, choice, bodies) in parts(&self.model.groups, &found.choices) {
+            let (lots, total) = by_value.entry((kind, choice.value)).or_default();
+            lots.insert(choice);
+            *total += bodies;
+        }
+        let enough = |choice: &Choice, total: u64| self.supply.obtain(*choice, total) == Some(Origin::Stock);
+        by_value.values().any(|(lots, total)| lots.len() > 1 && lots.iter().any(|choice| enough(choice, *total)))
+    }
+
     /// Keeps a set whose response lies within the limit.
     fn keep(&mut self, mut found: Found, limit: f64, boards_differ: bool) {
+        if self.splits_a_value(&found) {
+            return;
+        }
         let own = boards_differ && self.goals.each_board_its_own;
         let achieved = self.model.biquad(&found.choices[..self.model.active]);
         if let Some(deviation) = self.yardstick.within(&[achieved], limit + 1e-12) {

@@ -1,6 +1,6 @@
 //! Why a stock cannot suffice, whatever the response: what pinned and tied slots need of one part beside what there is.
 
-use std::collections::BTreeMap;
+use std::collections::{BTreeMap, BTreeSet};
 
 use crate::parts::{Choice, Supply};
 use crate::units::{Kind, format_part};
@@ -41,6 +41,7 @@ pub(crate) fn shortages(problem: &Problem, section: usize) -> Vec<String> {
             }
         }
     }
+    found.extend(in_all(problem, section, &models));
     for ((kind, choice), places) in pinned {
         let bodies = places.iter().map(|(_, group)| group.bodies()).sum();
         if places[0].0 == section && !supply.suffices(choice, bodies) {
@@ -53,6 +54,35 @@ pub(crate) fn shortages(problem: &Problem, section: usize) -> Vec<String> {
         }
     }
     found
+}
+
+/// Where all lots of a kind together do not suffice for all slots of that kind over the whole filter; told at the first
+/// section.
+fn in_all(problem: &Problem, section: usize, models: &[Option<Model>]) -> Vec<String> {
+    let supply = &problem.supply;
+    if section > 0 {
+        return Vec::new();
+    }
+    let of_kind = |kind: Kind| {
+        let groups: Vec<&Group> =
+            models.iter().flatten().flat_map(|model| &model.groups).filter(|group| group.kind == kind).collect();
+        let bodies: u64 = groups.iter().map(|group| group.bodies()).sum();
+        let choices: BTreeSet<Choice> = groups.iter().flat_map(|group| group.shelf.choices()).copied().collect();
+        let mut single = 0;
+        let mut enough = 0u64;
+        for choice in choices {
+            let lot = supply.lot_of(choice)?;
+            match lot.measured {
+                Some(_) => single += lot.available.unwrap_or(0),
+                None => enough += lot.available?.saturating_sub(supply.spares) / supply.boards,
+            }
+        }
+        let there = enough + single / supply.boards;
+        let boards = if supply.boards == 1 { "1 board".to_string() } else { format!("{} boards", supply.boards) };
+        (bodies > there && !supply.buys(kind))
+            .then(|| format!("{bodies} {}s on each of {boards}, the lots together suffice for {there}", kind.name()))
+    };
+    [Kind::Resistor, Kind::Capacitor].into_iter().filter_map(of_kind).collect()
 }
 
 fn names(problem: &Problem, section: usize, group: &Group) -> String {
