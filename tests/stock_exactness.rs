@@ -9,9 +9,9 @@
 mod drawer;
 mod support;
 
-use drawer::{Drawer, compare_drawer, paired, problem_size, target_of};
+use drawer::{Drawer, compare_drawer, paired, section_size, target_of};
 use roundwell::parts::{Buying, Choice, Series};
-use roundwell::search::{Goals, Joint, Outcome, Problem, Rank};
+use roundwell::search::{Goals, Joint, Outcome, Problem, Rank, SectionProblem};
 use roundwell::target::{Section, Shape};
 use roundwell::units::{Kind, Value, format_part};
 use support::*;
@@ -113,16 +113,32 @@ struct With {
     buying: bool,
     cost: bool,
     measured: bool,
+    /// Parts of one label that were measured and parts that were not.
+    mixed: bool,
     pairs: bool,
     demands: bool,
 }
 
-/// Lines of a stock list drawn at random, for so many values.
-fn lines(numbers: &mut Numbers, kind: Kind, count: usize, with: With) -> Vec<String> {
-    let (letter, all) = match kind {
-        Kind::Resistor => ("R", series(kind, Series::E12, "4k7", "47k")),
-        Kind::Capacitor => ("C", series(kind, Series::E6, "2n2", "47n")),
+/// Values drawn at random; now and then some of them a decade apart.
+fn drawn_values(numbers: &mut Numbers, kind: Kind, count: usize) -> Vec<Value> {
+    let all = match kind {
+        Kind::Resistor => series(kind, Series::E12, "4k7", "47k"),
+        Kind::Capacitor => series(kind, Series::E6, "2n2", "47n"),
     };
+    let mut taken = numbers.some_of(all.values(), count);
+    if numbers.below(3) == 0 {
+        let half = taken.len() / 2;
+        let shift = [1, -1][numbers.below(2)];
+        taken = taken.iter().take(half).flat_map(|value| [*value, value.shifted(shift).unwrap()]).collect();
+        taken.truncate(count);
+        taken.sort_unstable();
+    }
+    taken
+}
+
+/// Lines of a stock list drawn at random, for so many values.
+fn lines(numbers: &mut Numbers, kind: Kind, count: usize, boards: u64, with: With) -> Vec<String> {
+    let letter = if kind == Kind::Resistor { "R" } else { "C" };
     let mut lines = Vec::new();
     let quantity = |numbers: &mut Numbers| match numbers.below(10) {
         0 => String::new(),
@@ -130,19 +146,23 @@ fn lines(numbers: &mut Numbers, kind: Kind, count: usize, with: With) -> Vec<Str
         _ => (1 + numbers.below(12)).to_string(),
     };
     let prices = 1 + numbers.below(4);
-    let price = |numbers: &mut Numbers| if with.cost { format!("0.{}", 1 + numbers.below(prices)) } else { String::new() };
-    for value in numbers.some_of(all.values(), count) {
+    let price = |numbers: &mut Numbers| match with.cost {
+        true => format!("0.{}", 1 + numbers.below(prices)),
+        false => String::new(),
+    };
+    for value in drawn_values(numbers, kind, count) {
         let text = format_part(value, kind);
         let variants = if numbers.below(4) == 0 { 2 } else { 1 };
         let measured = if with.measured && numbers.below(3) > 0 { 1 + numbers.below(3) } else { 0 };
-        // Measured parts of one label at one price: what a board costs does not depend on which of them it has.
-        let (quantity_here, price_here) = (quantity(numbers), price(numbers));
+        let price_here = price(numbers);
         for variant in 0..variants {
             let tolerance = ["1%", "5%"][variant];
-            if measured > 0 && variant == 0 && numbers.below(2) == 0 {
+            let price_here = if measured == 0 { price(numbers) } else { price_here.clone() };
+            // Measured parts are of the first variant.
+            if measured > 0 && variant == 0 && !(with.mixed && numbers.below(2) == 0) {
                 continue;
             }
-            lines.push(format!("{letter},{text},{quantity_here},{tolerance},{price_here},"));
+            lines.push(format!("{letter},{text},{},{tolerance},{price_here},", quantity(numbers)));
             if numbers.below(8) == 0 {
                 lines.push(format!("{letter},{text},{},{tolerance},{price_here},", quantity(numbers)));
             }
@@ -151,72 +171,89 @@ fn lines(numbers: &mut Numbers, kind: Kind, count: usize, with: With) -> Vec<Str
             let off = 970 + numbers.below(61);
             let true_value = Value::new(value.mantissa() * off as u64, value.exponent() - 3).unwrap();
             let there = ["", "1", "1", "0"][numbers.below(4)];
-            lines.push(format!("{letter},{text},{there},1%,{price_here},{}", format_part(true_value, kind)));
+            // With several boards at one price: what a board costs does not depend on which of them it has.
+            let price = if boards > 1 { price_here.clone() } else { price(numbers) };
+            lines.push(format!("{letter},{text},{there},1%,{price},{}", format_part(true_value, kind)));
         }
     }
     lines
 }
 
-/// A problem drawn at random: a target near a set that exists, a small drawer, demands on slots.
-fn drawn(numbers: &mut Numbers, with: With) -> Option<Problem> {
-    let (id, output) = CIRCUITS[numbers.below(CIRCUITS.len())];
+/// A drawer drawn at random.
+fn drawn_drawer(numbers: &mut Numbers, with: With) -> Drawer {
     let (nr, nc) = (2 + numbers.below(3), 2 + numbers.below(2));
-    let mut drawer = if with.stock {
-        let mut all = lines(numbers, R, nr, with);
-        all.extend(lines(numbers, C, nc, with));
-        Drawer::lines(&all.iter().map(String::as_str).collect::<Vec<_>>())
-    } else {
-        let r = numbers.some_of(series(R, Series::E12, "4k7", "47k").values(), nr);
-        let c = numbers.some_of(series(C, Series::E6, "2n2", "47n").values(), nc);
-        Drawer::of_values(r, c)
-    };
-    if with.stock {
-        drawer = drawer.boards([1, 1, 2, 2, 3, 4][numbers.below(6)], [0, 0, 1, 2][numbers.below(4)]);
+    if !with.stock {
+        return Drawer::of_values(drawn_values(numbers, R, nr), drawn_values(numbers, C, nc));
     }
-    if with.measured {
-        drawer.supply.boards = 1 + numbers.below(3) as u64;
-    }
+    let boards = if with.measured { 1 + numbers.below(3) as u64 } else { [1, 1, 2, 2, 3, 4][numbers.below(6)] };
+    let mut all = lines(numbers, R, nr, boards, with);
+    all.extend(lines(numbers, C, nc, boards, with));
+    let mut drawer = Drawer::lines(&all.iter().map(String::as_str).collect::<Vec<_>>());
+    drawer = drawer.boards(boards, [0, 0, 1, 2][numbers.below(4)]);
     if with.buying {
         drawer.supply.buying =
             [Buying::AtMost(1), Buying::AtMost(2), Buying::AtMost(3), Buying::Allowed][numbers.below(4)];
         if !with.cost && numbers.below(2) == 0 {
             drawer = drawer.beside(R, ["13k", "13k 30k"][numbers.below(2)]);
         }
-    }
-    let placeholder = |shape: Shape| Section::new("A", shape, 1.0, (shape.order() == 2).then_some(1.0), 1.0, None);
-    let shape = library(id).output(output).unwrap().shape;
-    let mut section = drawer.section(placeholder(shape).unwrap(), id, output);
-    if with.demands {
-        let filled: Vec<usize> = section.output().filled(&section.circuit).collect();
-        for _ in 0..numbers.below(3) {
-            let slot = filled[numbers.below(filled.len())];
-            let together = section.equal.iter().find(|e| e.contains(&slot)).cloned().unwrap_or(vec![slot]);
-            match numbers.below(3) {
-                0 => {
-                    let choices = section.shelves[slot].choices();
-                    let label = |choice: &Choice| drawer.supply.lot_of(*choice).map_or(choice.value, |lot| lot.nominal);
-                    let pin = label(&choices[numbers.below(choices.len())]);
-                    let shelf = section.shelves[slot].filtered(|choice| label(choice) == pin).unwrap();
-                    together.iter().for_each(|&s| section.shelves[s] = shelf.clone());
-                }
-                1 => {
-                    let other = filled[numbers.below(filled.len())];
-                    let free = |s| !section.equal.iter().any(|e| e.contains(&s));
-                    let kind = |s: usize| section.circuit.slots[s].kind;
-                    if slot != other && kind(slot) == kind(other) && free(slot) && free(other) {
-                        section.shelves[other] = section.shelves[slot].clone();
-                        section.equal.push(vec![slot, other]);
-                    }
-                }
-                _ => {
-                    let shelf = section.shelves[slot].clone();
-                    let dropped = shelf.choices()[numbers.below(shelf.len())];
-                    if let Some(shelf) = shelf.filtered(|choice| *choice != dropped) {
-                        together.iter().for_each(|&s| section.shelves[s] = shelf.clone());
-                    }
+        if !with.cost && numbers.below(2) == 0 {
+            // Labels of which only measured parts are there.
+            for kind in [R, C] {
+                let lots = || drawer.supply.lots().map(|(_, lot)| lot).filter(move |lot| lot.kind == kind);
+                let is_plain = |value| lots().any(|lot| lot.nominal == value && lot.measured.is_none());
+                let label = lots().map(|lot| lot.nominal).find(|label| !is_plain(*label));
+                if let Some(label) = label {
+                    drawer = drawer.beside(kind, &format_part(label, kind));
                 }
             }
         }
+    }
+    drawer
+}
+
+/// Pins, ties and shelves of their own for slots drawn at random.
+fn demand_at_random(numbers: &mut Numbers, drawer: &Drawer, section: &mut SectionProblem) {
+    let filled: Vec<usize> = section.output().filled(&section.circuit).collect();
+    let label = |choice: &Choice| drawer.supply.lot_of(*choice).map_or(choice.value, |lot| lot.nominal);
+    for _ in 0..numbers.below(3) {
+        let slot = filled[numbers.below(filled.len())];
+        let together = section.equal.iter().find(|e| e.contains(&slot)).cloned().unwrap_or(vec![slot]);
+        match numbers.below(3) {
+            0 => {
+                let choices = section.shelves[slot].choices();
+                let pin = label(&choices[numbers.below(choices.len())]);
+                let shelf = section.shelves[slot].filtered(|choice| label(choice) == pin).unwrap();
+                together.iter().for_each(|&s| section.shelves[s] = shelf.clone());
+            }
+            1 => {
+                let other = filled[numbers.below(filled.len())];
+                let free = |s| !section.equal.iter().any(|e| e.contains(&s));
+                let kind = |s: usize| section.circuit.slots[s].kind;
+                if slot != other && kind(slot) == kind(other) && free(slot) && free(other) {
+                    section.shelves[other] = section.shelves[slot].clone();
+                    section.equal.push(vec![slot, other]);
+                }
+            }
+            _ => {
+                let shelf = section.shelves[slot].clone();
+                let dropped = shelf.choices()[numbers.below(shelf.len())];
+                if let Some(shelf) = shelf.filtered(|choice| *choice != dropped) {
+                    together.iter().for_each(|&s| section.shelves[s] = shelf.clone());
+                }
+            }
+        }
+    }
+}
+
+/// A section drawn at random: a target near a set that exists, demands on slots.
+fn drawn_section(numbers: &mut Numbers, drawer: &Drawer, with: With) -> Option<SectionProblem> {
+    let (id, output) = CIRCUITS[numbers.below(CIRCUITS.len())];
+    if std::env::var("EX_NOSILENT").is_ok() && (id.starts_with("tow") || id.starts_with("first-order-all")) { return None; } // EXPLORE
+    let shape = library(id).output(output).unwrap().shape;
+    let placeholder = Section::new("A", shape, 1.0, (shape.order() == 2).then_some(1.0), 1.0, None);
+    let mut section = drawer.section(placeholder.unwrap(), id, output);
+    if with.demands {
+        demand_at_random(numbers, drawer, &mut section);
     }
     if with.pairs {
         let joints = [&[Joint::Series][..], &[Joint::Parallel], &[Joint::Series, Joint::Parallel]];
@@ -240,10 +277,15 @@ fn drawn(numbers: &mut Numbers, with: With) -> Option<Problem> {
     }
     section.equal.iter().for_each(|equal| equal.iter().for_each(|&s| planted[s] = planted[equal[0]]));
     section.target = target_of(&section, &planted)?;
-    let mut goals = wide([40.0, 40.0, 10.0][numbers.below(3)]);
-    if shape.is_all_pass() {
-        goals = wide(2.0);
-    }
+    (section_size(&section) < 30_000.0).then_some(section)
+}
+
+/// A problem of one section drawn at random.
+fn drawn(numbers: &mut Numbers, with: With) -> Option<Problem> {
+    let drawer = drawn_drawer(numbers, with);
+    let section = drawn_section(numbers, &drawer, with)?;
+    let all_pass = section.target.shape.is_all_pass();
+    let mut goals = wide(if all_pass { 2.0 } else { [40.0, 40.0, 10.0][numbers.below(3)] });
     if with.demands && numbers.below(4) == 0 {
         goals.max_part_numbers = Some(2 + numbers.below(4));
     }
@@ -256,61 +298,87 @@ fn drawn(numbers: &mut Numbers, with: With) -> Option<Problem> {
     let mut problem = drawer.problem(section, goals);
     let w0 = problem.sections[0].target.w0;
     problem.criterion.band = [None, Some((w0 / 3.0, w0 * 2.0)), Some((w0 / 2.0, w0 * 4.0))][numbers.below(3)];
-    (problem_size(&problem) < 30_000.0).then_some(problem)
+    Some(problem)
 }
 
-/// Compares so many problems; says of all that fail, which.
-fn compare_drawn(seed: u64, count: usize, with: With) -> Vec<(Problem, Outcome)> {
-    let mut numbers = Numbers(seed);
+/// Compares so many problems of each seed; says of all that fail, which.
+fn compare_drawn(runs: &[(u64, usize, With)]) -> Vec<(Problem, Outcome)> {
     let (mut seen, mut failed) = (Vec::new(), Vec::new());
-    while seen.len() + failed.len() < count {
-        let Some(problem) = drawn(&mut numbers, with) else { continue };
-        let label = format!("seed {seed}, problem {}", seen.len() + failed.len());
-        match std::panic::catch_unwind(|| compare_drawer(&label, &problem)) {
-            Ok(outcome) => seen.push((problem, outcome)),
-            Err(_) => failed.push(label),
+    for &(seed, count, with) in runs {
+        let count = count * std::env::var("EX_COUNT").map_or(1, |c| c.parse::<usize>().unwrap()); // EXPLORE
+        let seed = seed + std::env::var("EX_SEED").map_or(0, |c| c.parse::<u64>().unwrap()); // EXPLORE
+        let mut numbers = Numbers(seed);
+        let mut number = 0;
+        while number < count {
+            let Some(problem) = drawn(&mut numbers, with) else { continue };
+            let label = format!("seed {seed}, problem {number}");
+            number += 1;
+            match std::panic::catch_unwind(|| compare_drawer(&label, &problem)) {
+                Ok(outcome) => seen.push((problem, outcome)),
+                Err(_) => failed.push(label),
+            }
         }
     }
-    assert!(failed.is_empty(), "{} of {count} failed: {failed:?}", failed.len());
+    assert!(failed.is_empty(), "{} failed: {failed:?}", failed.len());
     seen
 }
 
 #[test]
 fn drawn_with_stock() {
-    compare_drawn(1, 60, With { stock: true, ..With::default() });
-    compare_drawn(2, 60, With { stock: true, demands: true, ..With::default() });
+    compare_drawn(&[
+        (1, 60, With { stock: true, ..With::default() }),
+        (2, 60, With { stock: true, demands: true, ..With::default() }),
+    ]);
 }
 
 #[test]
 fn drawn_with_buying() {
-    compare_drawn(3, 60, With { stock: true, buying: true, ..With::default() });
-    compare_drawn(4, 60, With { stock: true, buying: true, demands: true, ..With::default() });
+    compare_drawn(&[
+        (3, 60, With { stock: true, buying: true, ..With::default() }),
+        (4, 60, With { stock: true, buying: true, demands: true, ..With::default() }),
+    ]);
 }
 
 #[test]
 fn drawn_with_cost() {
-    compare_drawn(5, 60, With { stock: true, buying: true, cost: true, ..With::default() });
-    compare_drawn(6, 60, With { stock: true, cost: true, demands: true, ..With::default() });
+    compare_drawn(&[
+        (5, 60, With { stock: true, buying: true, cost: true, ..With::default() }),
+        (6, 60, With { stock: true, cost: true, demands: true, ..With::default() }),
+    ]);
 }
 
 #[test]
 fn drawn_with_measured_parts() {
-    compare_drawn(7, 60, With { stock: true, measured: true, ..With::default() });
-    compare_drawn(8, 60, With { stock: true, measured: true, demands: true, ..With::default() });
+    compare_drawn(&[
+        (7, 60, With { stock: true, measured: true, ..With::default() }),
+        (8, 60, With { stock: true, measured: true, demands: true, ..With::default() }),
+    ]);
+}
+
+#[test]
+fn drawn_with_measured_and_unmeasured_parts_of_one_label() {
+    compare_drawn(&[
+        (16, 60, With { stock: true, measured: true, mixed: true, ..With::default() }),
+        (17, 60, With { stock: true, measured: true, mixed: true, buying: true, ..With::default() }),
+    ]);
 }
 
 #[test]
 fn drawn_with_pairs() {
-    compare_drawn(9, 40, With { pairs: true, ..With::default() });
-    compare_drawn(10, 40, With { pairs: true, demands: true, ..With::default() });
-    compare_drawn(11, 40, With { stock: true, pairs: true, demands: true, ..With::default() });
+    compare_drawn(&[
+        (9, 40, With { pairs: true, ..With::default() }),
+        (10, 40, With { pairs: true, demands: true, ..With::default() }),
+        (11, 40, With { stock: true, pairs: true, demands: true, ..With::default() }),
+    ]);
 }
 
 #[test]
 fn drawn_with_everything() {
-    compare_drawn(12, 40, With { stock: true, buying: true, pairs: true, ..With::default() });
-    compare_drawn(13, 40, With { stock: true, measured: true, pairs: true, ..With::default() });
-    compare_drawn(14, 40, With { stock: true, measured: true, buying: true, demands: true, ..With::default() });
-    let all = With { stock: true, buying: true, cost: true, measured: true, pairs: true, demands: true };
-    compare_drawn(15, 40, all);
+    let all = With { stock: true, buying: true, cost: true, measured: true, mixed: false, pairs: true, demands: true };
+    compare_drawn(&[
+        (12, 40, With { stock: true, buying: true, pairs: true, ..With::default() }),
+        (13, 40, With { stock: true, measured: true, pairs: true, ..With::default() }),
+        (14, 40, With { stock: true, measured: true, buying: true, demands: true, ..With::default() }),
+        (15, 40, all),
+    ]);
 }

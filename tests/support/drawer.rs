@@ -181,8 +181,15 @@ impl Things {
         choice.lot.map(|id| &self.of[&id])
     }
 
-    fn is_measured(&self, choice: &Choice) -> bool {
-        self.get(choice).is_some_and(|(_, thing)| thing.measured)
+    /// What must be the same on all boards.
+    fn alike(&self, choice: &Choice) -> Alike {
+        let has_measured = |number| self.of.values().any(|(_, thing)| thing.measured && thing.number == number);
+        match self.get(choice) {
+            Some((_, thing)) if thing.measured || LABELS_MIX && has_measured(thing.number) => {
+                Alike::Measured(thing.number)
+            }
+            _ => Alike::Plain(*choice),
+        }
     }
 
     /// What a board takes, and which measured parts, as bits; `None` where there is not enough.
@@ -318,6 +325,10 @@ enum Alike {
     Measured(usize),
 }
 
+/// Whether a slot may hold a measured part on one board and one of the same label that was not measured on another: all
+/// boards have the same labels in the same slots.
+const LABELS_MIX: bool = true;
+
 type Structure = Vec<(Option<Joint>, Vec<Alike>)>;
 
 /// All sets of a section.
@@ -334,7 +345,7 @@ pub struct Oracle<'a> {
     /// Sets that came onto the front, in words, for messages.
     pub shown: Vec<(Takes, f64, String)>,
     /// For boards of the same labels: what they take, and for each choice of measured parts the error.
-    structures: BTreeMap<Structure, (Takes, Vec<(u64, f64)>)>,
+    structures: BTreeMap<Structure, Vec<(Takes, u64, f64)>>,
     /// For boards each of its own: the least error by part numbers and measured parts.
     own: BTreeMap<(usize, u64), f64>,
 }
@@ -490,9 +501,9 @@ impl<'a> Oracle<'a> {
 
     fn judge_set(&mut self, chosen: &[usize], takes: Takes, measured: u64) {
         let boards = self.things.boards;
-        let own = self.problem.goals.each_board_its_own && boards > 1;
+        let own = is_each_its_own(self.problem);
         let mut limit = self.limit;
-        if measured == 0 || boards == 1 {
+        if boards == 1 || measured == 0 && !LABELS_MIX {
             limit = limit.min(self.front.best(&takes) + 1e-6);
         }
         if own {
@@ -509,27 +520,23 @@ impl<'a> Oracle<'a> {
             let best = self.own.entry((takes.part_numbers, measured)).or_insert(f64::INFINITY);
             *best = best.min(error);
         }
-        if measured == 0 || boards == 1 {
+        let stands_alone = measured == 0 || boards == 1;
+        if stands_alone {
             if steps(error) < steps(self.front.best(&takes)) {
                 let words = self.in_words(chosen);
                 self.shown.push((takes, error, words));
             }
             self.front.add(Point { error, takes });
-        } else if !own {
-            let alike = |choice: &Choice| match self.things.get(choice) {
-                Some((_, thing)) if thing.measured => Alike::Measured(thing.number),
-                _ => Alike::Plain(*choice),
-            };
+        }
+        if boards > 1 && !own {
             let of = |(group, &i): (&Group, &usize)| {
                 let held = &group.held[i];
-                let mut pieces: Vec<Alike> = held.pieces.iter().map(alike).collect();
+                let mut pieces: Vec<Alike> = held.pieces.iter().map(|piece| self.things.alike(piece)).collect();
                 pieces.sort_unstable();
                 (held.joint, pieces)
             };
             let structure: Structure = self.groups.iter().zip(chosen).map(of).collect();
-            let (known, boards) = self.structures.entry(structure).or_insert((takes, Vec::new()));
-            assert_eq!(*known, takes, "boards of the same labels take the same");
-            boards.push((measured, error));
+            self.structures.entry(structure).or_default().push((takes, measured, error));
         }
     }
 
@@ -560,9 +567,14 @@ impl<'a> Oracle<'a> {
 
     /// Boards of the same labels: the worst board as good as can be.
     fn assign(&mut self) {
-        for (_, (takes, boards)) in std::mem::take(&mut self.structures) {
-            if let Some(error) = worst_board(boards, self.things.boards) {
-                self.front.add(Point { error, takes });
+        for (_, boards) in std::mem::take(&mut self.structures) {
+            let every: BTreeSet<Takes> = boards.iter().map(|(takes, ..)| *takes).collect();
+            for most in every {
+                let within = boards.iter().filter(|(takes, ..)| takes.no_more_than(&most));
+                let within = within.map(|&(_, measured, error)| (measured, error)).collect();
+                if let Some(error) = worst_board(within, self.things.boards) {
+                    self.front.add(Point { error, takes: most });
+                }
             }
         }
     }
@@ -603,6 +615,16 @@ fn worst_board(mut boards: Vec<(u64, f64)>, count: u64) -> Option<f64> {
 }
 
 // ---- comparison ---------------------------------------------------------------------------------------------------
+
+/// Whether boards may differ in all their parts.
+fn is_each_its_own(problem: &Problem) -> bool {
+    let is_measured = |choice: &Choice| problem.supply.lot_of(*choice).is_some_and(|lot| lot.measured.is_some());
+    let on_shelves = |section: &SectionProblem| {
+        let mut slots = section.output().filled(&section.circuit);
+        slots.any(|slot| section.shelves[slot].choices().iter().any(is_measured))
+    };
+    problem.goals.each_board_its_own && problem.supply.boards > 1 && problem.sections.iter().any(on_shelves)
+}
 
 fn is_by_cost(problem: &Problem) -> bool {
     problem.goals.rank == Rank::Cost
@@ -697,9 +719,7 @@ fn drawer_in_words(problem: &Problem) -> String {
 /// Searches a problem of one section and compares with all its sets; gives back what was found.
 pub fn compare_drawer(label: &str, problem: &Problem) -> Outcome {
     let outcome = shortlist(problem, &Unwatched);
-    let own = problem.goals.each_board_its_own
-        && problem.supply.boards > 1
-        && problem.supply.lots().any(|(_, lot)| lot.measured.is_some());
+    let own = is_each_its_own(problem);
     let limit = problem.goals.error_limit;
     let oracle = Oracle::run(problem, limit);
     let sets = oracle.sets;
@@ -736,13 +756,18 @@ pub fn compare_drawer(label: &str, problem: &Problem) -> Outcome {
         let whole = Oracle::run(problem, f64::INFINITY).front;
         let nearest = whole.0.iter().map(|point| point.error).fold(f64::INFINITY, f64::min);
         match outcome.rows.first() {
-            None => assert!(nearest.is_infinite(), "nothing is listed, the nearest has {nearest}: {}", say()),
+            None => {
+                assert!(nearest.is_infinite(), "nothing is listed, the nearest has {nearest}: {}", say());
+                assert!(outcome.marked.is_none());
+            }
             Some(row) => {
                 let best = outcome.rows.iter().map(|row| row.deviation.error).fold(f64::INFINITY, f64::min);
                 assert!((best - nearest).abs() <= 1.5e-7 * (1.0 + nearest), "{row:?}: the nearest has {nearest}: {}", say());
             }
         }
     } else {
+        let short = outcome.sections[0].unmet.iter().find(|text| text.contains("in stock"));
+        assert_eq!(short, None, "there is enough: {}", say());
         assert!(outcome.within_limit, "there are sets within the limit: {}", say());
         assert!(expected.is(&found), "fronts differ: {}", say());
     }
@@ -796,11 +821,7 @@ pub fn check_drawer_row(problem: &Problem, row: &Row) -> Result<(), String> {
                     _ => return Err(format!("{name}: {:?} joined {:?}", part.pieces, part.joint)),
                 };
                 demand((part.ideal / value - 1.0).abs() < 1e-12, format!("{name}: {} is not {value}", part.ideal))?;
-                let alike = |choice: &Choice| match things.get(choice) {
-                    Some((_, thing)) if thing.measured => Alike::Measured(thing.number),
-                    _ => Alike::Plain(*choice),
-                };
-                let mut pieces: Vec<Alike> = part.pieces.iter().map(alike).collect();
+                let mut pieces: Vec<Alike> = part.pieces.iter().map(|piece| things.alike(piece)).collect();
                 pieces.sort_unstable();
                 structure.push((part.joint, pieces));
             }
@@ -867,8 +888,7 @@ pub fn target_of(section: &SectionProblem, slots: &[f64]) -> Option<Section> {
 }
 
 /// About how many sets there are.
-pub fn problem_size(problem: &Problem) -> f64 {
-    let section = &problem.sections[0];
+pub fn section_size(section: &SectionProblem) -> f64 {
     // Sets by how many of their slots hold a pair.
     let mut sets = vec![1.0];
     for group in groups(section) {
