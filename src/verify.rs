@@ -10,8 +10,10 @@ use num_complex::Complex64;
 use thiserror::Error;
 
 use crate::circuit::{response, solve};
-use crate::parts::{Buying, Choice};
-use crate::search::{Chosen, ErrorKey, Joint, Outcome, Part, Problem, Rank, Row};
+use crate::parts::Choice;
+use crate::search::{
+    Chosen, ErrorKey, Joint, Outcome, Part, Problem, Rank, Replacements, Row, SectionProblem, SwapProblem,
+};
 use crate::target::{Measure, Section, Yardstick};
 use crate::units::Kind;
 
@@ -220,7 +222,7 @@ fn check_board(
         let part_number = supply.part_number(kind, choice);
         numbers.insert(part_number);
         if missing {
-            if supply.buying == Buying::Forbidden {
+            if !supply.buys(kind) {
                 return Err(VerifyError::Limit { row: number, what: "the stock" });
             }
             bought.insert(part_number);
@@ -254,6 +256,48 @@ fn numeric(problem: &Problem, index: usize, chosen: &Chosen, w: f64) -> Complex6
     let mut values = vec![f64::NAN; section.circuit.slots.len()];
     chosen.parts.iter().for_each(|part| values[part.slot] = part.ideal);
     response(&section.circuit, section.output(), &values, w).unwrap_or(Complex64::new(f64::NAN, f64::NAN))
+}
+
+/// Rechecks every replacement: its parts against the shelves, and both its errors by solving the netlist numerically.
+///
+/// # Errors
+/// The first thing that does not hold.
+pub fn verify_replacements(problem: &SwapProblem, found: &Replacements) -> Result<(), VerifyError> {
+    let target = &problem.built.target;
+    let whole = Yardstick::new(std::slice::from_ref(target), problem.criterion);
+    let criterion = crate::target::Criterion { band: Some(whole.band()), ..problem.criterion };
+    let against = |target: &Section| Problem {
+        title: String::new(),
+        sections: vec![SectionProblem { target: target.clone(), ..problem.built.clone() }],
+        criterion,
+        goals: Default::default(),
+        supply: problem.supply.clone(),
+    };
+    let (built, wanted) = (against(&found.built_as_target), against(target));
+    for (row, replacement) in (1..).zip(&found.rows) {
+        let sections = std::slice::from_ref(&replacement.chosen);
+        for change in &replacement.changes {
+            if !problem.open[change.slot].contains(change.to) {
+                let slot = problem.built.circuit.slots[change.slot].name.clone();
+                return Err(VerifyError::Part { row, section: target.name.clone(), slot });
+            }
+        }
+        if replacement.others > problem.others {
+            return Err(VerifyError::Limit { row, what: "slots that may change" });
+        }
+        if problem.criterion.ignore_gain {
+            continue;
+        }
+        for (problem, claimed) in [(&built, replacement.against_built), (&wanted, replacement.against_target)] {
+            let targets = [problem.sections[0].target.clone()];
+            let found = error(problem, &Yardstick::new(&targets, criterion), sections, 1.0);
+            const AGREEMENT: f64 = 1e-6;
+            if (found - claimed).abs() > AGREEMENT * (1.0 + claimed.abs()) || found.is_nan() {
+                return Err(VerifyError::Response { row, found, claimed });
+            }
+        }
+    }
+    Ok(())
 }
 
 /// The error of a board from the netlist alone, by the definitions of [`Measure`], with a flat gain factor taken in.
@@ -365,7 +409,7 @@ mod tests {
     use super::*;
     use crate::circuit::find;
     use crate::parts::{Series, Shelf, Supply};
-    use crate::search::{Goals, SectionProblem, Unwatched, shortlist};
+    use crate::search::{Goals, Unwatched, shortlist};
     use crate::target::{Criterion, Shape, Weights};
     use crate::units::{Value, parse_part};
 

@@ -35,6 +35,9 @@ pub enum Command {
     /// Search a job for the sets of parts that come closest with the fewest part numbers.
     #[command(after_help = SHORTLIST_HELP, after_long_help = shortlist_long_help(), allow_negative_numbers = true)]
     Shortlist(Box<ShortlistArgs>),
+    /// Replace parts of a built section that are gone, with as few other changes as possible.
+    #[command(after_help = SWAP_HELP)]
+    Swap(Box<SwapArgs>),
     /// List the circuits, or show one: nodes, slots, outputs, what each slot sets.
     Circuits(CircuitsArgs),
     /// Show a series of preferred values, or the neighbours of values in it.
@@ -63,6 +66,17 @@ fn shortlist_long_help() -> String {
         columns.join("\n")
     )
 }
+
+const SWAP_HELP: &str = "\
+The job names the circuit and pins each slot to the value that is built in:
+  slots: {\"R1\": (pin: \"10k\"), ...}
+Its shelves, or a stock list, say what may take the place. Slots that must be equal change together.
+For each number of other changes the best replacements are listed, where they improve on fewer.
+
+Example:
+  roundwell swap built.ron --gone C1 --others 2 --capacitors 10n,15n,33n,47n
+
+Exit codes: 0 found, 1 internal fault, 2 bad input or usage, 3 nothing within the limit, 130 interrupted.";
 
 const STOCK_HELP: &str = "\
 A stock list is CSV in UTF-8, with comma, semicolon or tab between the cells. Its header names the
@@ -213,8 +227,9 @@ pub struct DrawerArgs {
     /// How many of each part used shall be left over [default: 0].
     #[arg(long, value_name = "COUNT")]
     pub spares: Option<String>,
-    /// What may be bought beside the stock: none, any, or at most so many part numbers [default: none].
-    #[arg(long, value_name = "COUNT")]
+    /// What may be bought beside the stock: none, any, or at most so many part numbers; resistors, or resistors:2, of one
+    /// kind only [default: none].
+    #[arg(long, value_name = "[KIND:]COUNT")]
     pub buy: Option<String>,
     /// Leave ceramic capacitors of class 2 (X7R and the like) in the drawer.
     #[arg(long, value_name = "BOOL", num_args = 0..=1, require_equals = true, default_missing_value = "true")]
@@ -291,6 +306,61 @@ pub struct OutputArgs {
     /// Threads to search with [default: one for each processor core].
     #[arg(long, value_name = "COUNT", value_parser = clap::value_parser!(u16).range(1..=1024))]
     pub threads: Option<u16>,
+}
+
+/// `swap`.
+#[derive(Debug, Default, Args)]
+pub struct SwapArgs {
+    /// The job file (RON), or - for standard input: each slot of the section is pinned to what is built in.
+    pub job: PathBuf,
+    /// A slot whose part is gone, as SLOT or, in a job of several sections, SECTION:SLOT; repeatable.
+    #[arg(long, value_name = "SLOT", required = true, value_delimiter = ',')]
+    pub gone: Vec<String>,
+    /// How many other slots may change.
+    #[arg(long, value_name = "COUNT", default_value_t = 1, value_parser = clap::value_parser!(u8).range(0..=8))]
+    pub others: u8,
+    /// What replacements are ranked by: the change against the section as built, or the error against the target.
+    #[arg(long, default_value = "built", value_parser = ["built", "target"])]
+    pub rank: String,
+    /// Replacements to list for each number of other changes.
+    #[arg(long, value_name = "COUNT", default_value_t = 5, value_parser = clap::value_parser!(u16).range(1..=1000))]
+    pub rows: u16,
+    /// No replacement beyond this error is listed [default: 1 dB or 12 %].
+    #[arg(long, value_name = "ERROR")]
+    pub error_limit: Option<String>,
+    /// What may be used as resistors [default: the job's, or E96:1k..1M].
+    #[arg(long, value_name = "SHELF")]
+    pub resistors: Option<String>,
+    /// What may be used as capacitors [default: the job's, or E12:1n..1u].
+    #[arg(long, value_name = "SHELF")]
+    pub capacitors: Option<String>,
+    /// Stock list (CSV) from which new parts are taken.
+    #[arg(long, value_name = "FILE")]
+    pub stock: Option<PathBuf>,
+    /// Leave out lines of the stock list that cannot be used.
+    #[arg(long, value_name = "BOOL", num_args = 0..=1, require_equals = true, default_missing_value = "true")]
+    pub skip_bad_lines: Option<bool>,
+    /// Boards for which new parts are needed [default: 1].
+    #[arg(long, value_name = "COUNT")]
+    pub boards: Option<String>,
+    /// What may be bought beside the stock, as for shortlist [default: none].
+    #[arg(long, value_name = "[KIND:]COUNT")]
+    pub buy: Option<String>,
+    /// Leave ceramic capacitors of class 2 (X7R and the like) in the drawer.
+    #[arg(long, value_name = "BOOL", num_args = 0..=1, require_equals = true, default_missing_value = "true")]
+    pub bar_class_2: Option<bool>,
+    /// How long to search, such as 10s [default: to the end].
+    #[arg(long, value_name = "TIME")]
+    pub time_limit: Option<String>,
+    /// How to write the replacements.
+    #[arg(long, value_enum, default_value_t)]
+    pub format: ShowFormat,
+    /// Write to this file in place of standard output; it is replaced only when all is written.
+    #[arg(long, value_name = "FILE")]
+    pub out: Option<PathBuf>,
+    /// Characters to the line of a table.
+    #[arg(long, value_name = "COUNT", default_value_t = 80, value_parser = clap::value_parser!(u16).range(40..=1000))]
+    pub width: u16,
 }
 
 /// `circuits`.

@@ -45,12 +45,12 @@ pub enum Failure {
 impl Failure {
     /// One fault of the command line, or of a file as a whole.
     pub fn input(fault: Fault) -> Failure {
-        Failure::Input(vec![Faulty {
-            file: String::new(),
-            text: String::new(),
-            faults: vec![fault],
-            is_first_round: false,
-        }])
+        Failure::inputs(vec![fault])
+    }
+
+    /// Faults that concern no text.
+    pub fn inputs(faults: Vec<Fault>) -> Failure {
+        Failure::Input(vec![Faulty { file: String::new(), text: String::new(), faults, is_first_round: false }])
     }
 
     /// A file that cannot be read.

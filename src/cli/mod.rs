@@ -9,6 +9,7 @@ mod progress;
 mod settings;
 mod shortlist;
 mod stock;
+mod swap;
 mod values;
 
 use std::ffi::OsString;
@@ -44,6 +45,7 @@ pub fn run(words: impl IntoIterator<Item = OsString>) -> ExitCode {
     };
     let command = || match &arguments.command {
         Command::Shortlist(args) => shortlist::run(args),
+        Command::Swap(args) => swap::run(args),
         Command::Circuits(args) => circuits::run(args),
         Command::Values(args) => values::run(args),
         Command::Stock(args) => stock::run(args),

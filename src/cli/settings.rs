@@ -31,6 +31,28 @@ impl Settings {
     /// All faults of the job file, of the circuit files that it names, and of the flags.
     pub fn new(args: &ShortlistArgs) -> Result<Settings, Failure> {
         let source = args.job.as_deref().map(Source::read).transpose()?.unwrap_or_default();
+        Settings::of(&source, args, |_| {})
+    }
+
+    /// A job as it is built, without its stock, and the same with all pins lifted.
+    ///
+    /// # Errors
+    /// Those of [`Settings::new`].
+    pub fn built_and_open(args: &ShortlistArgs) -> Result<(Settings, Settings), Failure> {
+        let source = args.job.as_deref().map(Source::read).transpose()?.unwrap_or_default();
+        let built = Settings::of(&source, args, |job| {
+            // What is built in is there, whatever the stock says.
+            (job.stock, job.skip_bad_lines, job.boards, job.spares) = (None, None, None, None);
+            (job.buy, job.bar_class_2, job.rank) = (None, None, None);
+        })?;
+        let open = Settings::of(&source, args, |job| {
+            let slots = job.sections.iter_mut().flat_map(|sections| &mut sections.value).flat_map(|s| &mut s.slots);
+            slots.flat_map(|slots| &mut slots.value.0).for_each(|(_, slot)| slot.pin = None);
+        })?;
+        Ok((built, open))
+    }
+
+    fn of(source: &Source, args: &ShortlistArgs, edit: impl Fn(&mut JobFile)) -> Result<Settings, Failure> {
         let mut job = source.job()?;
         let mut faults = lay_over(&mut job, args);
         if source.path.is_some() {
@@ -54,6 +76,7 @@ impl Settings {
                 }
             }
         }
+        edit(&mut job);
         let mut circuits = Circuits::new(source.folder());
         let stock = noted(&mut faults, source.stock(&job));
         match resolve(&job, &mut |name| circuits.get(name), stock.as_ref()) {

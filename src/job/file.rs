@@ -81,7 +81,8 @@ written! {
         boards: Scalar,
         /// How many of each part used shall be left over; 0.
         spares: Scalar,
-        /// What may be bought beside the stock: `none`, `any`, or at most so many part numbers; none.
+        /// What may be bought beside the stock: `none`, `any`, or at most so many part numbers, where wanted of one kind
+        /// only: `resistors` or `resistors:2`; none.
         buy: Scalar,
         /// Whether ceramic capacitors of class 2 stay in the drawer; false.
         bar_class_2: bool,

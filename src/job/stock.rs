@@ -55,7 +55,7 @@ impl Source {
         supply.boards = boards?.unwrap_or(1) as u64;
         supply.spares = spares?.unwrap_or(0) as u64;
         if stock.is_some() {
-            supply.buying = buying?.unwrap_or_default();
+            (supply.buying, supply.buying_only) = buying?.unwrap_or_default();
         }
         Ok(Source { supply, bar_class_2: job.bar_class_2.as_ref().is_some_and(|given| given.value) })
     }
@@ -70,7 +70,7 @@ impl Source {
             |lot: &Lot| lot.kind == kind && is_wanted(lot.nominal) && !(self.bar_class_2 && lot.is_class_2());
         let of_lot = |(id, lot): (LotId, &Lot)| Choice { value: lot.value(), lot: Some(id) };
         let mut choices: Vec<Choice> = self.supply.lots().filter(|(_, lot)| usable(lot)).map(of_lot).collect();
-        if self.supply.buying != Buying::Forbidden {
+        if self.supply.buys(kind) {
             // What the list names, in stock or not, is bought by its line.
             let listed = |value: &Value| {
                 self.supply.lots().any(|(_, lot)| usable(lot) && lot.measured.is_none() && lot.nominal == *value)
@@ -100,16 +100,32 @@ impl Source {
     }
 }
 
-/// How much may be bought.
-fn buying(text: &str) -> Result<Buying, String> {
-    match text {
-        "none" | "0" => Ok(Buying::Forbidden),
-        "any" => Ok(Buying::Allowed),
-        _ => match text.parse() {
-            Ok(most) if most <= 1000 => Ok(Buying::AtMost(most)),
-            _ => Err(format!("buy must be none, any, or the number of part numbers, at most 1000, found {text}")),
+/// How much may be bought, and of which kind only.
+fn buying(text: &str) -> Result<(Buying, Option<Kind>), String> {
+    let (kind, count) = match text.split_once(':') {
+        Some((kind, count)) => (kind, count),
+        None if ["resistors", "capacitors"].contains(&text) => (text, "any"),
+        None => ("", text),
+    };
+    let only = match kind {
+        "" => None,
+        "resistors" => Some(Kind::Resistor),
+        "capacitors" => Some(Kind::Capacitor),
+        _ => return Err(format!("`{kind}` is no kind of part: write resistors or capacitors, as in resistors:2")),
+    };
+    let most = match count {
+        "none" | "0" => Buying::Forbidden,
+        "any" => Buying::Allowed,
+        _ => match count.parse() {
+            Ok(most) if most <= 1000 => Buying::AtMost(most),
+            _ => {
+                return Err(format!(
+                    "buy must be none, any, resistors, capacitors, or a number of part numbers up to 1000, found {text}"
+                ));
+            }
         },
-    }
+    };
+    Ok((most, only))
 }
 
 /// Checks that rows can be ranked as wanted.

@@ -147,6 +147,11 @@ impl Shelf {
         self.filtered(|choice| !excluded.contains(&choice.value)).ok_or(ShelfError::NothingLeft(self.kind))
     }
 
+    /// A shelf of the same kind with this one choice; `None` where its value is out of range.
+    pub fn replaced(&self, only: Choice) -> Option<Shelf> {
+        Shelf::of_choices(self.kind, [only]).ok()
+    }
+
     /// The choices for which `keep` holds, or `None` when there are none.
     pub fn filtered(&self, keep: impl Fn(&Choice) -> bool) -> Option<Shelf> {
         Shelf::sorted(self.kind, self.choices.iter().copied().filter(keep).collect())

@@ -81,12 +81,21 @@ pub struct Supply {
     pub spares: u64,
     /// Whether parts may be bought beside the stock.
     pub buying: Buying,
+    /// The only kind that may be bought; `None` for both.
+    pub buying_only: Option<Kind>,
 }
 
 impl Default for Supply {
     /// No stock list: everything can be had.
     fn default() -> Self {
-        Supply { lots: Vec::new(), has_stock: false, boards: 1, spares: 0, buying: Buying::Allowed }
+        Supply {
+            lots: Vec::new(),
+            has_stock: false,
+            boards: 1,
+            spares: 0,
+            buying: Buying::Allowed,
+            buying_only: None,
+        }
     }
 }
 
@@ -121,7 +130,22 @@ impl Supply {
                 part_number,
             });
         }
-        Supply { lots, has_stock: true, boards: 1, spares: 0, buying: Buying::Forbidden }
+        Supply { lots, has_stock: true, boards: 1, spares: 0, buying: Buying::Forbidden, buying_only: None }
+    }
+
+    /// Adds parts that are there already, as many as it takes, and gives the choice of them.
+    pub fn keep(&mut self, kind: Kind, value: Value) -> Choice {
+        let id = LotId(self.lots.len() as u32);
+        self.lots.push(Lot {
+            kind,
+            nominal: value,
+            measured: None,
+            available: None,
+            price: None,
+            lines: Vec::new(),
+            part_number: id,
+        });
+        Choice { value, lot: Some(id) }
     }
 
     /// Whether there is a stock list.
@@ -178,9 +202,14 @@ impl Supply {
         if self.suffices(choice, per_board) {
             return Some(Origin::Stock);
         }
-        // A measured part is the only one of its sort.
-        let unique = self.lot_of(choice).is_some_and(|lot| lot.measured.is_some());
-        (!unique && self.buying != Buying::Forbidden).then_some(Origin::Bought)
+        // A measured part is the only one of its sort. What is in no lot is on a shelf only where it may be bought.
+        let to_be_had = self.lot_of(choice).is_none_or(|lot| lot.measured.is_none() && self.buys(lot.kind));
+        (to_be_had && self.buying != Buying::Forbidden).then_some(Origin::Bought)
+    }
+
+    /// Whether parts of a kind may be bought.
+    pub fn buys(&self, kind: Kind) -> bool {
+        self.buying != Buying::Forbidden && self.buying_only.is_none_or(|only| only == kind)
     }
 
     /// The price of one part of a choice in millionths; `None` where it is not known.

@@ -1,17 +1,21 @@
 //! The result of a search as one plain record, a stock list as another, and their renderers. Each renderer writes to a writer; none opens files.
 
 mod csv;
+mod detail;
+mod drawn;
 mod json;
 mod layout;
 mod numbers;
 mod record;
 mod stock;
+mod swap;
 mod table;
 
 #[cfg(test)]
 mod sample;
 
 pub use csv::{CSV_COLUMNS, write_csv};
+pub use drawn::{BoardRecord, SupplyRecord, TakenRecord};
 pub use json::write_json;
 pub use layout::{Align, Column, grid, paragraph, printable, unbroken};
 pub use numbers::{error_in_words, percent};
@@ -22,5 +26,8 @@ pub use record::{
 pub use stock::{
     AmountOfStock, DielectricOfStock, KindOfStock, LineOfStock, PriceRecord, STOCK_FORMAT, StockRecord, StockRemark,
     TemperatureCoefficientRecord, ToleranceRecord, write_stock_json, write_stock_table,
+};
+pub use swap::{
+    ChangeRecord, ImpossibleRecord, ReplacementRecord, SWAP_FORMAT, SwapRecord, write_swap_json, write_swap_table,
 };
 pub use table::write_table;

@@ -4,9 +4,10 @@ use std::f64::consts::TAU;
 
 use serde::Serialize;
 
+use super::drawn::{BoardRecord, SupplyRecord, TakenRecord, boards, class_2, piece, taken};
 use super::numbers::error_in_words;
-use crate::parts::Shelf;
-use crate::search::{Chosen, End, Outcome, Part, Problem, Proof, Row, SectionProblem, SectionSummary};
+use crate::parts::{Shelf, Supply};
+use crate::search::{Chosen, End, Joint, Outcome, Part, Problem, Proof, Row, SectionProblem, SectionSummary};
 use crate::target::{Criterion, Figures, Measure, Shape, Weights};
 use crate::units::{Kind, format_part};
 
@@ -27,6 +28,8 @@ pub struct Record {
     pub measure: MeasureRecord,
     /// What was wanted.
     pub wanted: WantedRecord,
+    /// The stock that was drawn on; `None` without a stock list.
+    pub stock: Option<SupplyRecord>,
     /// The sections in signal order.
     pub sections: Vec<SectionRecord>,
     /// Rank of the row with the fewest part numbers within the wanted error.
@@ -179,6 +182,8 @@ pub struct ShelfRecord {
     pub kind: Kind,
     /// How many values it has.
     pub values: usize,
+    /// How many choices there are: more than values where a stock holds one value in several sorts.
+    pub choices: usize,
     /// The smallest value, Ω or F.
     pub from: f64,
     /// The largest value, Ω or F.
@@ -209,12 +214,27 @@ pub struct RowRecord {
     pub part_numbers: Option<usize>,
     /// How many parts sit on the board.
     pub placed_parts: usize,
+    /// How many different parts must be bought beside the stock; `None` without a stock list.
+    pub to_buy: Option<usize>,
+    /// What the parts of one board cost, in the currency of the stock list; `None` where a price is not known. Where
+    /// boards differ, that of the dearest.
+    pub cost: Option<f64>,
+    /// The same in millionths.
+    #[serde(skip)]
+    pub cost_millionths: Option<u64>,
+    /// What is taken for all boards.
+    pub taken: Vec<TakenRecord>,
+    /// Section and slot of each ceramic of class 2 that reaches the response: its value moves with temperature, voltage
+    /// and age.
+    pub class_2: Vec<[String; 2]>,
     /// Whether it is not on the front but listed because alternatives were asked for.
     pub alternative: bool,
     /// Whether the row is proved to be the best of its kind.
     pub proved: bool,
-    /// The sections in signal order.
+    /// The sections in signal order; where boards differ, those of the worst board.
     pub sections: Vec<ChosenRecord>,
+    /// The boards, where measured parts make them differ.
+    pub boards: Vec<BoardRecord>,
 }
 
 /// One section of a row.
@@ -258,19 +278,30 @@ pub struct PartRecord {
     pub kind: Kind,
     /// Its value, Ω or F.
     pub value: f64,
-    /// The value in IEC 60062 notation; `None` for a value that cannot be bought.
+    /// The value in IEC 60062 notation, of a pair both with `+` between (in series) or `||` (in parallel); `None` for a
+    /// value that cannot be bought.
     pub notation: Option<String>,
+    /// How the two parts of a pair are joined: `series` or `parallel`.
+    pub joint: Option<&'static str>,
     /// The unrounded value that belongs here, Ω or F.
     pub ideal: Option<f64>,
-    /// What it is made of: one piece for a single part, none for a value that cannot be bought.
+    /// What it is made of: one piece for a single part, two for a pair, none for a value that cannot be bought.
     pub made_of: Vec<PieceRecord>,
 }
 
 /// A part to buy.
 #[derive(Clone, Debug, PartialEq, Serialize)]
 pub struct PieceRecord {
-    /// Its value, Ω or F.
+    /// Its value, Ω or F: as measured, else as labelled.
     pub value: f64,
+    /// The value on its label, in IEC 60062 notation.
+    pub notation: String,
+    /// The measured value of this one part, Ω or F.
+    pub measured: Option<f64>,
+    /// What the part or its drawer is called.
+    pub id: Option<String>,
+    /// The lines of the stock list that it is taken from.
+    pub lines: Vec<usize>,
 }
 
 /// The frequency of an angular frequency that came from one: what the detour over 2π left in the last digits is taken
@@ -289,7 +320,8 @@ impl Record {
     /// The record of a search that took `seconds`.
     pub fn new(problem: &Problem, outcome: &Outcome, seconds: f64) -> Record {
         let references = [("ideal parts", &outcome.ideal), ("nearest value to each", &outcome.nearest)];
-        let row = |row: &Row, rank, name| RowRecord::new(problem, row, rank, name);
+        let silent: Vec<Vec<String>> = outcome.sections.iter().map(|section| section.silent.clone()).collect();
+        let row = |row: &Row, rank, name| RowRecord::new(problem, &silent, row, rank, name);
         Record {
             format: FORMAT,
             title: problem.title.clone(),
@@ -302,6 +334,7 @@ impl Record {
                 max_part_numbers: problem.goals.max_part_numbers,
                 impedance_ohm: problem.goals.impedance.map(|(from, to)| [from, to]),
             },
+            stock: SupplyRecord::new(&problem.supply),
             sections: problem.sections.iter().map(SectionRecord::new).collect(),
             marked: outcome.marked.map(|index| index + 1),
             shortlist: outcome.rows.iter().zip(1..).map(|(found, rank)| row(found, Some(rank), None)).collect(),
@@ -439,7 +472,8 @@ impl SectionRecord {
             ShelfRecord {
                 slots: named(&slots),
                 kind,
-                values: shelf.len(),
+                values: shelf.values().len(),
+                choices: shelf.len(),
                 from: from.to_f64(),
                 to: to.to_f64(),
                 range: [from, to].map(|value| format_part(value, kind)),
@@ -463,7 +497,14 @@ impl SectionRecord {
 }
 
 impl RowRecord {
-    fn new(problem: &Problem, row: &Row, rank: Option<usize>, name: Option<&'static str>) -> RowRecord {
+    fn new(
+        problem: &Problem,
+        silent: &[Vec<String>],
+        row: &Row,
+        rank: Option<usize>,
+        name: Option<&'static str>,
+    ) -> RowRecord {
+        let chosen = |section: &SectionProblem, chosen: &Chosen| ChosenRecord::new(&problem.supply, section, chosen);
         RowRecord {
             rank,
             name,
@@ -476,21 +517,38 @@ impl RowRecord {
             placed_parts: row.placed_parts,
             alternative: row.alternative,
             proved: row.proved,
-            sections: problem.sections.iter().zip(&row.sections).map(|(s, c)| ChosenRecord::new(s, c)).collect(),
+            to_buy: row.to_buy,
+            cost: row.cost.map(|millionths| millionths as f64 / 1e6),
+            cost_millionths: row.cost,
+            taken: taken(&problem.supply, row),
+            class_2: class_2(problem, silent, row),
+            sections: problem.sections.iter().zip(&row.sections).map(|(s, c)| chosen(s, c)).collect(),
+            boards: boards(problem, row, chosen),
         }
     }
 }
 
+/// The values of what stands in a slot as they are written on parts.
+fn notation(part: &Part) -> Option<String> {
+    let between = if part.joint == Some(Joint::Parallel) { "||" } else { "+" };
+    let pieces: Vec<String> = part.pieces.iter().map(|piece| format_part(piece.value, part.kind)).collect();
+    (!pieces.is_empty()).then(|| pieces.join(between))
+}
+
 impl ChosenRecord {
-    fn new(section: &SectionProblem, chosen: &Chosen) -> ChosenRecord {
+    pub(super) fn new(supply: &Supply, section: &SectionProblem, chosen: &Chosen) -> ChosenRecord {
         let Figures { w0, q, gain, wz } = chosen.achieved;
         let part = |part: &Part| PartRecord {
             slot: section.circuit.slots[part.slot].name.clone(),
             kind: part.kind,
             value: part.value.map_or(part.ideal, |value| value.to_f64()),
-            notation: part.value.map(|value| format_part(value, part.kind)),
+            notation: notation(part),
+            joint: part.joint.map(|joint| match joint {
+                Joint::Series => "series",
+                Joint::Parallel => "parallel",
+            }),
             ideal: known(part.ideal),
-            made_of: part.value.map(|value| PieceRecord { value: value.to_f64() }).into_iter().collect(),
+            made_of: part.pieces.iter().map(|&choice| piece(supply, part.kind, choice)).collect(),
         };
         ChosenRecord {
             name: section.target.name.clone(),

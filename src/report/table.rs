@@ -1,14 +1,12 @@
 //! The record as a table for people: plain text without colour.
 
-use std::collections::BTreeMap;
 use std::io::{self, Write};
 
-use super::layout::{Column, grid, paragraph, unbroken};
-use super::numbers::{count, decimal_column, error_in_words, level, percent, rounded_part, short, span_of_time};
-use super::record::{
-    Achieved, ChosenRecord, MeasureRecord, PartRecord, Record, RowRecord, SectionSearch, TargetRecord,
-};
-use crate::units::{Kind, Value, format_part, parse_part};
+use super::detail::detail;
+use super::drawn::{SupplyRecord, money};
+use super::layout::{Column, grid, paragraph, printable, unbroken};
+use super::numbers::{count, decimal_column, error_in_words, level, rounded_part, short, span_of_time};
+use super::record::{ChosenRecord, MeasureRecord, PartRecord, Record, RowRecord, SectionSearch, TargetRecord};
 
 /// Writes the record as text of at most `width` characters to the line (40 at least; a name that is longer is not
 /// broken).
@@ -48,6 +46,10 @@ fn searched(record: &Record, width: usize) -> String {
                 (1, [value, _]) => format!("{slots}: {value} only"),
                 (values, [from, to]) => format!("{slots}: {values} {} values, {from} to {to}", shelf.kind.name()),
             };
+            let line = match shelf.choices > shelf.values {
+                true => format!("{line}, {} choices", shelf.choices),
+                false => line,
+            };
             text += &paragraph(indent, &line, width);
         }
         for group in &section.equal {
@@ -56,6 +58,9 @@ fn searched(record: &Record, width: usize) -> String {
         for line in search_in_words(search) {
             text += &paragraph(indent, &line, width);
         }
+    }
+    if let Some(stock) = &record.stock {
+        text += &paragraph("Stock:  ", &stock_in_words(stock), width);
     }
     let search = &record.search;
     let total = format!(
@@ -78,6 +83,21 @@ fn searched(record: &Record, width: usize) -> String {
         text += &paragraph("        ", &format!("Stopped: {reason}. What is not proved is marked ?."), width);
     }
     text + &paragraph("Error:  ", &measure_in_words(&record.measure), width)
+}
+
+fn stock_in_words(stock: &SupplyRecord) -> String {
+    let plural = |count: u64, what: &str| if count == 1 { format!("1 {what}") } else { format!("{count} {what}s") };
+    let mut words = format!("{} of parts for {}", plural(stock.lots as u64, "sort"), plural(stock.boards, "board"));
+    if stock.spares > 0 {
+        words += &format!(", {} of each part used left over", stock.spares);
+    }
+    let only = stock.buying_only.map_or(String::new(), |kind| format!(", {}s only", kind.name()));
+    words += &match stock.most_to_buy {
+        Some(0) => "; nothing is bought".to_string(),
+        Some(most) => format!("; at most {} bought{only}", plural(most as u64, "part number")),
+        None => format!("; what is missing is bought{only}"),
+    };
+    words
 }
 
 fn target_in_words(target: &TargetRecord) -> String {
@@ -200,6 +220,14 @@ fn figures(record: &Record, width: usize) -> String {
         Column::right("part\nnumbers", rows(record).map(|row| counted(row.part_numbers)).collect()),
         Column::right("placed\nparts", rows(record).map(|row| row.placed_parts.to_string()).collect()),
     ]);
+    if record.stock.as_ref().is_some_and(|stock| stock.most_to_buy != Some(0)) {
+        columns.push(Column::right("to\nbuy", rows(record).map(|row| counted(row.to_buy)).collect()));
+    }
+    if rows(record).any(|row| row.cost.is_some()) {
+        let currency = record.stock.as_ref().and_then(|stock| stock.currency.as_deref()).unwrap_or_default();
+        let costs = rows(record).map(|row| money(row.cost_millionths)).collect();
+        columns.push(Column::right(format!("cost\n{}", printable(currency)), costs));
+    }
     let mut text = grid(&columns, 1, width);
     if record.marked.is_some() {
         let wanted = error_in_words(record.measure.unit, record.wanted.wanted_error);
@@ -260,64 +288,24 @@ fn values(record: &Record, width: usize) -> String {
         let title = format!("Values of section {} ({}), level in ohms:", section.name, section.circuit);
         blocks.push(paragraph("", &title, width) + &grid(&columns, 1, width));
     }
-    blocks.join("\n")
-}
-
-/// The value as it is printed on parts; one that cannot be bought is rounded to four digits.
-fn notation(part: &PartRecord) -> String {
-    part.notation.clone().unwrap_or_else(|| rounded_part(part.value, part.kind))
-}
-
-/// What to buy for the row that is taken first, and what it gives.
-fn detail(record: &Record, width: usize) -> String {
-    let Some(row) = record.marked_row().or(record.shortlist.first()) else { return String::new() };
-    let mut bought: BTreeMap<(Kind, Value), usize> = BTreeMap::new();
-    for part in row.sections.iter().flat_map(|section| &section.parts) {
-        if let Some(value) = part.notation.as_ref().and_then(|text| parse_part(text, part.kind).ok()) {
-            *bought.entry((part.kind, value)).or_default() += 1;
-        }
-    }
-    let rank = row.rank.map_or(String::new(), |rank| format!(" {rank}"));
-    let mut text = format!("Row{rank} needs, and gives:\n");
-    for kind in [Kind::Resistor, Kind::Capacitor] {
-        let of_kind = bought.iter().filter(|((known, _), _)| *known == kind);
-        let list: Vec<String> = of_kind
-            .map(|((kind, value), times)| unbroken(&format!("{times} x {}", format_part(*value, *kind))))
-            .collect();
-        if !list.is_empty() {
-            text += &paragraph(&format!("  {}: ", kind.letter()), &list.join(", "), width);
-        }
-    }
-    for (section, chosen) in record.sections.iter().zip(&row.sections) {
-        let figures = achieved_in_words(&chosen.achieved, &section.target);
-        text += &paragraph(&format!("  {}: ", section.name), &figures, width);
-    }
-    if let Some(offset) = row.gain_offset {
-        let line = format!("a flat gain offset of {} dB was taken out", short(-20.0 * offset.log10(), 3));
-        text += &paragraph("  ", &line, width);
+    let mut text = blocks.join("\n");
+    for row in record.shortlist.iter().filter(|row| !row.class_2.is_empty()) {
+        let slots: Vec<String> =
+            row.class_2.iter().map(|[section, slot]| unbroken(&format!("{section} {slot}"))).collect();
+        let rank = row.rank.map_or(String::new(), |rank| rank.to_string());
+        let line = format!(
+            "row {rank} has ceramics of class 2 in {}: their value moves with temperature, voltage and age; \
+             --bar-class-2 leaves them out",
+            slots.join(", ")
+        );
+        text += &paragraph("! ", &line, width);
     }
     text
 }
 
-/// Achieved figures with their distance from the target.
-fn achieved_in_words(achieved: &Achieved, target: &TargetRecord) -> String {
-    let figure = |name: &str, shown: String, value: f64, ideal: f64| {
-        unbroken(&format!("{name} {shown} ({})", percent(value / ideal - 1.0)))
-    };
-    let mut words = Vec::new();
-    if let Some(f0) = achieved.f0_hz {
-        words.push(figure("f0", level(f0, 6, "Hz"), f0, target.f0_hz));
-    }
-    if let (Some(q), Some(ideal)) = (achieved.q, target.q) {
-        words.push(figure("Q", short(q, 5), q, ideal));
-    }
-    if let Some(gain) = achieved.gain {
-        words.push(figure("gain", short(gain, 5), gain, target.gain));
-    }
-    if let (Some(fz), Some(ideal)) = (achieved.fz_hz, target.fz_hz) {
-        words.push(figure("fz", level(fz, 6, "Hz"), fz, ideal));
-    }
-    words.join(", ")
+/// The value as it is printed on parts; one that cannot be bought is rounded to four digits.
+pub(super) fn notation(part: &PartRecord) -> String {
+    part.notation.clone().unwrap_or_else(|| rounded_part(part.value, part.kind))
 }
 
 #[cfg(test)]

@@ -18,16 +18,20 @@ use super::model::Group;
 
 /// What all boards of a run have in common: the form, and the choices, with measured parts by their part number only.
 /// `None` where each board may be its own.
-type Design = Option<(usize, Vec<(Kind, Choice)>)>;
+type Design = Option<(usize, Vec<Standing>)>;
+
+/// What stands in a group on every board of a run: kind, choice, and whether the choice names a part number of which each
+/// board has another measured part.
+pub(crate) type Standing = (Kind, Choice, bool);
 
 /// The measured parts of a set, ascending.
 type Items = Vec<LotId>;
 
 /// The choices of a set with measured parts by their part number: what boards of one run have in common.
-pub(crate) fn design(supply: &Supply, groups: &[Group], choices: &[Choice]) -> Vec<(Kind, Choice)> {
+pub(crate) fn design(supply: &Supply, groups: &[Group], choices: &[Choice]) -> Vec<Standing> {
     let one = |(group, &choice): (&Group, &Choice)| match supply.lot_of(choice) {
-        Some(lot) if lot.measured.is_some() => supply.part_number(group.kind, choice),
-        _ => (group.kind, choice),
+        Some(lot) if lot.measured.is_some() => (group.kind, supply.part_number(group.kind, choice).1, true),
+        _ => (group.kind, choice, false),
     };
     groups.iter().zip(choices).map(one).collect()
 }

@@ -223,7 +223,7 @@ impl Prepared<'_> {
         let single = &self.forms[0];
         let found = ideal::solve(single, &self.problem.target, ignore_gain).and_then(|ideal| {
             let rounded = self.rounded(&ideal);
-            let mut found = canonical(single, 0, self.supply, goals, &rounded[..single.active])?;
+            let mut found = canonical(single, 0, self.supply, goals, &rounded[..single.active]).into_iter().next()?;
             let response = single.biquad(&found.choices[..single.active]);
             found.error = self.yardstick.deviation(&[response]).error;
             found.key = ErrorKey::new(found.error);
@@ -262,7 +262,7 @@ impl Prepared<'_> {
 }
 
 /// The needs of a section's output that its shelves cannot meet, with both sides.
-fn unmet(section: &SectionProblem) -> Vec<String> {
+pub(crate) fn unmet(section: &SectionProblem) -> Vec<String> {
     let circuit = &section.circuit;
     let output = section.output();
     let q = section.target.q.unwrap_or(0.5);
@@ -544,17 +544,27 @@ impl Board<'_> {
         let middle = preferred_impedance(&self.problem.goals);
         let form = &prepared.forms[found.form];
         let groups = form.active_groups();
-        let mut levels: Vec<SetAtLevel> = (found.levels.iter())
-            .filter_map(|&level| {
-                let shifted = shifted(groups, &found.choices[..groups.len()], level)?;
-                let (choices, _) = with_silent(form, prepared.supply, shifted)?;
-                Some(SetAtLevel { form: found.form, choices, levels: found.levels.clone(), level })
+        let cost_counts = self.problem.goals.rank == Rank::Cost;
+        let own = |tally: &Tally| tally.takes == found.takes && (!cost_counts || tally.cost == found.cost);
+        let at = |&level: &i32| {
+            let shifted = shifted(groups, &found.choices[..groups.len()], level);
+            let filled = shifted.map(|shifted| with_silent(form, prepared.supply, shifted, cost_counts));
+            filled.unwrap_or_default().into_iter().map(move |(choices, tally)| (level, choices, tally))
+        };
+        // Other ways to fill the silent slots may be needed where several sections draw on one stock.
+        let alone = self.prepared.len() == 1;
+        let mut levels: Vec<(bool, SetAtLevel)> = (found.levels.iter().flat_map(at))
+            .filter(|(_, _, tally)| !alone || own(tally))
+            .map(|(level, choices, tally)| {
+                (!own(&tally), SetAtLevel { form: found.form, choices, levels: found.levels.clone(), level })
             })
             .collect();
         let distance =
             |set: &SetAtLevel| impedance(groups, &in_ohms(&set.choices)).map_or(0.0, |z| (z / middle).ln().abs());
-        levels.sort_by(|a, b| distance(a).total_cmp(&distance(b)).then_with(|| a.cmp(b)));
-        levels
+        levels.sort_by(|(other, a), (than, b)| {
+            other.cmp(than).then(distance(a).total_cmp(&distance(b))).then_with(|| a.cmp(b))
+        });
+        levels.into_iter().map(|(_, set)| set).collect()
     }
 
     fn row(&self, combination: &Combination, alternative: bool) -> Row {
@@ -644,7 +654,7 @@ impl Board<'_> {
             all.flat_map(|(p, rounded)| super::canonical::parts(&p.forms[0].groups, rounded))
         };
         let mut endless = self.problem.supply.clone();
-        endless.buying = Buying::Allowed;
+        (endless.buying, endless.buying_only) = (Buying::Allowed, None);
         let tally = tally(&endless, parts());
         (
             Some(self.assembled(exact, None, false, false)),
@@ -733,7 +743,8 @@ impl Prepared<'_> {
         };
         let nearest = single.active_groups().iter().zip(&ideal.values).map(|(g, &v)| of_value(g, g.shelf.nearest(v)));
         let active: Vec<Choice> = nearest.collect();
-        let whole = with_silent(single, self.supply, active.clone()).map(|(choices, _)| choices);
+        let whole = with_silent(single, self.supply, active.clone(), false).into_iter().next();
+        let whole = whole.map(|(choices, _)| choices);
         whole.unwrap_or_else(|| {
             let level = impedance(single.active_groups(), &in_ohms(&active)).unwrap_or(1.0);
             let silent = single.silent_groups().iter().map(|g| of_value(g, g.shelf.nearest(level)));
@@ -754,38 +765,8 @@ impl Prepared<'_> {
     }
 
     /// A chosen section from the values of all its groups.
-    fn chosen(&self, form: usize, values: &[(f64, Option<Choice>)], mut levels: Vec<f64>) -> Chosen {
-        let form = &self.forms[form];
-        let active: Vec<f64> = values[..form.active].iter().map(|(v, _)| *v).collect();
-        let achieved = self.problem.target.figures_of(&form.biquad_of(&active));
-        let mut parts: Vec<Part> = Vec::new();
-        for (group, &(ideal, choice)) in form.groups.iter().zip(values) {
-            for &slot in &group.slots {
-                let other = parts.iter_mut().find(|part| part.slot == slot);
-                match (other, group.joint) {
-                    (Some(first), Some(joint)) => {
-                        first.ideal = Part::joined(group.kind, joint, first.ideal, ideal);
-                        first.value = None;
-                        first.pieces.extend(choice);
-                        first.pieces.sort_unstable_by(|a, b| b.cmp(a));
-                    }
-                    _ => parts.push(Part {
-                        slot,
-                        kind: group.kind,
-                        ideal,
-                        value: choice.map(|choice| choice.value),
-                        pieces: choice.into_iter().collect(),
-                        joint: group.joint,
-                    }),
-                }
-            }
-        }
-        parts.sort_by_key(|part| part.slot);
-        let impedance = impedance(form.active_groups(), &active);
-        if levels.is_empty() {
-            levels.extend(impedance);
-        }
-        Chosen { parts, achieved, impedance, levels }
+    fn chosen(&self, form: usize, values: &[(f64, Option<Choice>)], levels: Vec<f64>) -> Chosen {
+        chosen(self.problem, &self.forms[form], values, levels)
     }
 
     /// The transfer function of a chosen section.
@@ -799,4 +780,43 @@ impl Prepared<'_> {
         let values: Vec<f64> = single.active_groups().iter().map(value).collect();
         single.biquad_of(&values)
     }
+}
+
+/// A chosen section from the values of all its groups.
+pub(crate) fn chosen(
+    section: &SectionProblem,
+    form: &Model,
+    values: &[(f64, Option<Choice>)],
+    mut levels: Vec<f64>,
+) -> Chosen {
+    let active: Vec<f64> = values[..form.active].iter().map(|(v, _)| *v).collect();
+    let achieved = section.target.figures_of(&form.biquad_of(&active));
+    let mut parts: Vec<Part> = Vec::new();
+    for (group, &(ideal, choice)) in form.groups.iter().zip(values) {
+        for &slot in &group.slots {
+            let other = parts.iter_mut().find(|part| part.slot == slot);
+            match (other, group.joint) {
+                (Some(first), Some(joint)) => {
+                    first.ideal = Part::joined(group.kind, joint, first.ideal, ideal);
+                    first.value = None;
+                    first.pieces.extend(choice);
+                    first.pieces.sort_unstable_by(|a, b| b.cmp(a));
+                }
+                _ => parts.push(Part {
+                    slot,
+                    kind: group.kind,
+                    ideal,
+                    value: choice.map(|choice| choice.value),
+                    pieces: choice.into_iter().collect(),
+                    joint: group.joint,
+                }),
+            }
+        }
+    }
+    parts.sort_by_key(|part| part.slot);
+    let impedance = impedance(form.active_groups(), &active);
+    if levels.is_empty() {
+        levels.extend(impedance);
+    }
+    Chosen { parts, achieved, impedance, levels }
 }

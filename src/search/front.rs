@@ -197,6 +197,11 @@ impl Best {
         self.by_takes.is_empty()
     }
 
+    /// All sets kept, by what they take.
+    pub fn all(&self) -> Vec<Vec<Found>> {
+        self.by_takes.values().cloned().collect()
+    }
+
     /// For each takings on the front its sets, best first: the first of each improves on all that take no more.
     pub fn front(&self) -> Vec<Vec<Found>> {
         let improves = |takes: &Takes, first: &Found| {

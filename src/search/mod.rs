@@ -11,9 +11,11 @@ mod model;
 mod problem;
 mod section;
 mod shortage;
+mod swap;
 mod window;
 
 pub use board::{BuiltBoard, Chosen, Outcome, Part, Row, SectionSummary, shortlist};
 pub use front::{End, ErrorKey, Proof};
 pub use limits::{Monitor, Progress, StopReason, Unwatched};
 pub use problem::{Goals, Joint, Pairs, Problem, Rank, SectionProblem};
+pub use swap::{Change, Reference, Replacement, Replacements, SwapProblem, replacements};

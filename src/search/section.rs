@@ -57,25 +57,23 @@ pub(crate) fn search(
     goals: &Goals,
     monitor: &dyn Monitor,
 ) -> Option<SectionFront> {
-    let maker = WindowMaker::new(yardstick, forms.first()?.numerator())?;
-    let cost_counts = goals.rank == Rank::Cost;
-    let mut search = Search {
-        forms,
-        supply,
-        yardstick,
-        goals,
-        monitor,
-        maker,
-        windows: BTreeMap::new(),
-        best: Best::new(goals.alternatives + 1, cost_counts),
-        sets: 0,
-        nodes: 0,
-        left_out: None,
-        assignment_open: false,
-    };
-    Some(search.run())
+    Some(Search::new(forms, supply, yardstick, goals, monitor)?.run())
 }
 
+/// The sets of least error, whatever they take: for each takings as many as there are rows and alternatives wanted, so that
+/// the nearest of all are among them.
+pub(crate) fn nearest(
+    forms: &[Model],
+    supply: &Supply,
+    yardstick: &Yardstick,
+    goals: &Goals,
+    monitor: &dyn Monitor,
+) -> Option<SectionFront> {
+    let mut search = Search::new(forms, supply, yardstick, goals, monitor)?;
+    let proof = search.walk_counts(goals.error_resolution, goals.error_limit, f64::INFINITY);
+    let rows = search.best.all();
+    Some(SectionFront { rows, proof, sets: search.sets, nodes: search.nodes, limit: goals.error_limit })
+}
 struct Search<'a> {
     forms: &'a [Model],
     supply: &'a Supply,
@@ -94,7 +92,30 @@ struct Search<'a> {
     assignment_open: bool,
 }
 
-impl Search<'_> {
+impl<'a> Search<'a> {
+    fn new(
+        forms: &'a [Model],
+        supply: &'a Supply,
+        yardstick: &'a Yardstick,
+        goals: &'a Goals,
+        monitor: &'a dyn Monitor,
+    ) -> Option<Search<'a>> {
+        Some(Search {
+            forms,
+            supply,
+            yardstick,
+            goals,
+            monitor,
+            maker: WindowMaker::new(yardstick, forms.first()?.numerator())?,
+            windows: BTreeMap::new(),
+            best: Best::new(goals.alternatives + 1, goals.rank == Rank::Cost),
+            sets: 0,
+            nodes: 0,
+            left_out: None,
+            assignment_open: false,
+        })
+    }
+
     fn run(&mut self) -> SectionFront {
         let mut limit = self.goals.error_limit;
         let mut proof = self.walk_counts(self.goals.error_resolution, limit, f64::INFINITY);
@@ -380,10 +401,25 @@ impl Visitor for Collector<'_> {
         if !own && distinct(self.supply, groups, &choices) + self.model.least_extra < self.takes.part_numbers {
             return;
         }
-        let Some(mut found) = canonical(self.model, self.form, self.supply, self.goals, &choices) else { return };
-        if self.goals.max_part_numbers.is_some_and(|most| found.takes.part_numbers > most) {
-            return;
+        for found in canonical(self.model, self.form, self.supply, self.goals, &choices) {
+            if self.goals.max_part_numbers.is_none_or(|most| found.takes.part_numbers <= most) {
+                self.keep(found, limit, boards_differ);
+            }
         }
+    }
+
+    fn stopped(&mut self) -> bool {
+        if self.monitor.stop().is_some() {
+            self.stopped.store(true, Ordering::Relaxed);
+        }
+        self.stopped.load(Ordering::Relaxed)
+    }
+}
+
+impl Collector<'_> {
+    /// Keeps a set whose response lies within the limit.
+    fn keep(&mut self, mut found: Found, limit: f64, boards_differ: bool) {
+        let own = boards_differ && self.goals.each_board_its_own;
         let achieved = self.model.biquad(&found.choices[..self.model.active]);
         if let Some(deviation) = self.yardstick.within(&[achieved], limit + 1e-12) {
             (found.error, found.key) = (deviation.error, ErrorKey::new(deviation.error));
@@ -395,12 +431,5 @@ impl Visitor for Collector<'_> {
                 self.best.insert(found);
             }
         }
-    }
-
-    fn stopped(&mut self) -> bool {
-        if self.monitor.stop().is_some() {
-            self.stopped.store(true, Ordering::Relaxed);
-        }
-        self.stopped.load(Ordering::Relaxed)
     }
 }

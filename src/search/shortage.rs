@@ -2,7 +2,7 @@
 
 use std::collections::BTreeMap;
 
-use crate::parts::{Buying, Choice, Supply};
+use crate::parts::{Choice, Supply};
 use crate::units::{Kind, format_part};
 
 use super::model::{Group, Model};
@@ -14,7 +14,7 @@ use super::problem::Problem;
 /// by all of them together, over the whole filter; such a shortage is told at the first section concerned.
 pub(crate) fn shortages(problem: &Problem, section: usize) -> Vec<String> {
     let supply = &problem.supply;
-    if !supply.has_stock() || supply.buying != Buying::Forbidden {
+    if !supply.has_stock() {
         return Vec::new();
     }
     let models: Vec<Option<Model>> = problem.sections.iter().map(|s| Model::new(s, supply)).collect();
@@ -25,7 +25,9 @@ pub(crate) fn shortages(problem: &Problem, section: usize) -> Vec<String> {
             let joints = &problem.sections[index].pairs.joints;
             group.slots.iter().all(|&slot| joints.get(slot).is_some_and(|joints| !joints.is_empty()))
         };
-        for group in model.iter().flat_map(|model| &model.groups).filter(|group| !paired(group)) {
+        for group in
+            model.iter().flat_map(|model| &model.groups).filter(|group| !paired(group) && !supply.buys(group.kind))
+        {
             match group.shelf.choices() {
                 &[only] => pinned.entry((group.kind, only)).or_default().push((index, group)),
                 choices if index == section && !choices.iter().any(|&c| supply.suffices(c, group.bodies())) => {
