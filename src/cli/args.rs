@@ -43,7 +43,7 @@ pub enum Command {
     /// Show a series of preferred values, or the neighbours of values in it.
     #[command(allow_negative_numbers = true)]
     Values(ValuesArgs),
-    /// Read back a stock list: what was understood, what is wrong, what is odd.
+    /// Read back a stock list: what was understood, what is wrong, what is odd; or what a shortlist needs of it.
     #[command(after_help = STOCK_HELP, after_long_help = stock_long_help())]
     Stock(StockArgs),
 }
@@ -85,9 +85,10 @@ columns, in any order; only kind and value are required.
 Examples:
   roundwell stock drawer.csv
   roundwell stock - --format json --out stock.json
+  roundwell stock drawer.csv --need shortlist.json --row 2 --boards 10
 
 Exit codes: 0 every line can be used, 2 bad input or usage, or a line that cannot be used;
-the other lines are shown all the same.";
+the other lines are shown all the same. With --need: 0 the stock suffices, 3 it does not.";
 
 /// The long help of `stock`: with the columns of a stock list.
 fn stock_long_help() -> String {
@@ -394,6 +395,18 @@ pub struct ValuesArgs {
 pub struct StockArgs {
     /// The stock list (CSV), or - for standard input.
     pub file: PathBuf,
+    /// Tell what a row of this shortlist (JSON) takes from the stock, what is left and what is short.
+    #[arg(long, value_name = "SHORTLIST")]
+    pub need: Option<PathBuf>,
+    /// The row of the shortlist.
+    #[arg(long, value_name = "COUNT", default_value_t = 1, requires = "need", value_parser = clap::value_parser!(u32).range(1..))]
+    pub row: u32,
+    /// Boards to build [default: those of the shortlist, or 1].
+    #[arg(long, value_name = "COUNT", requires = "need", value_parser = clap::value_parser!(u64).range(1..=1_000_000))]
+    pub boards: Option<u64>,
+    /// How many of each part used shall be left over [default: as in the shortlist, or 0].
+    #[arg(long, value_name = "COUNT", requires = "need", value_parser = clap::value_parser!(u64).range(0..=1_000_000))]
+    pub spares: Option<u64>,
     /// How to write it.
     #[arg(long, value_enum, default_value_t)]
     pub format: ShowFormat,

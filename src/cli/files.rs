@@ -49,16 +49,20 @@ pub fn read_bytes(path: &Path) -> Result<Vec<u8>, Failure> {
 /// Reads a stock list that a job draws on; what is wrong with single lines is left in it.
 ///
 /// # Errors
-/// In a sentence: what cannot be read, or is no stock list.
-pub fn read_stock(path: &Path) -> Result<Stock, String> {
+/// What cannot be read, or is no stock list; without its place.
+pub fn read_stock(path: &Path) -> Result<Stock, Fault> {
     let bytes = read_bytes(path).map_err(|failure| match failure {
-        Failure::Input(texts) => {
-            let faults = texts.into_iter().flat_map(|text| text.faults);
-            faults.map(|fault| fault.message).collect::<Vec<_>>().join("; ")
+        Failure::Input(mut texts) => {
+            let fault = texts.pop().and_then(|mut text| text.faults.pop());
+            fault.unwrap_or_else(|| Fault::at("", format!("cannot read {}", path.display())))
         }
-        other => other.show(false).trim_end().to_string(),
+        other => Fault::at("", other.show(false).trim_end().to_string()),
     })?;
-    Stock::read(&bytes).map_err(|error| printable(&format!("{}: {error}", path.display())))
+    let name = if path == Path::new("-") { "standard input".to_string() } else { path.display().to_string() };
+    Stock::read(&bytes).map_err(|error| {
+        let help = "name a CSV file with a header such as kind,value,quantity; `roundwell stock FILE` reads one back";
+        Fault::at("", printable(&format!("{name}: {error}"))).help(help)
+    })
 }
 
 /// Whether a circuit is named by a file.

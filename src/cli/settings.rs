@@ -122,7 +122,7 @@ impl Source {
             Some(_) => PathBuf::from(value.text()),
             None => self.folder().join(value.text()),
         };
-        Some(read_stock(&path).map_err(|message| Fault::at(flag.unwrap_or("stock"), message)))
+        Some(read_stock(&path).map_err(|fault| Fault { path: flag.unwrap_or("stock").to_string(), ..fault }))
     }
 
     /// Faults of the job, and before them those of the circuit files that it names.

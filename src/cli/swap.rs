@@ -1,5 +1,6 @@
 //! `roundwell swap`: replacements for parts of a built section that are gone.
 
+use std::collections::BTreeMap;
 use std::time::Instant;
 
 use super::args::{DrawerArgs, GoalArgs, PartsArgs, ShortlistArgs, ShowFormat, SwapArgs};
@@ -8,9 +9,11 @@ use super::output::Output;
 use super::progress::Watch;
 use super::settings::Settings;
 use super::{FOUND, INTERRUPTED, NOTHING_WITHIN_LIMITS};
+use crate::parts::Choice;
 use crate::report::{SwapRecord, write_swap_json, write_swap_table};
 use crate::search::{Problem, Reference, SectionProblem, StopReason, SwapProblem, replacements};
 use crate::text::{Fault, suggestion};
+use crate::units::{Kind, Value};
 use crate::verify::verify_replacements;
 
 /// Runs the command and gives its exit code.
@@ -112,8 +115,11 @@ fn problem(args: &SwapArgs, built: &Problem, open: &Problem) -> Result<SwapProbl
     let mut section = SectionProblem { pairs: free.pairs.clone(), ..as_built.clone() };
     section.pairs.most = 0;
     if supply.has_stock() {
+        // Slots of one value hold one part number, tied or not.
+        let mut known: BTreeMap<(Kind, Value), Choice> = BTreeMap::new();
         for &slot in &filled {
-            let kept = supply.keep(section.shelves[slot].kind(), section.shelves[slot].choices()[0].value);
+            let (kind, value) = (section.shelves[slot].kind(), section.shelves[slot].choices()[0].value);
+            let kept = *known.entry((kind, value)).or_insert_with(|| supply.keep(kind, value));
             if let Some(shelf) = section.shelves[slot].replaced(kept) {
                 section.shelves[slot] = shelf;
             }

@@ -1,5 +1,7 @@
 //! The stock of a job: how many boards it shall do for, what may be bought beside it, and which of it may go where.
 
+use std::collections::BTreeSet;
+
 use super::desk::{At, Checked, Desk, Place};
 use super::file::{JobFile, PairsFile};
 use super::goals::whole;
@@ -28,8 +30,9 @@ impl Source {
             let place = root.of("stock", &job.stock);
             let skip = job.skip_bad_lines.as_ref().is_some_and(|given| given.value);
             if !stock.faults.is_empty() && !skip {
+                let file = job.stock.as_ref().map_or("", |given| given.value.text());
                 for fault in &stock.faults {
-                    desk.note(&place, fault.to_string(), "");
+                    desk.note(&place, format!("{file}: {fault}"), "");
                 }
                 let help = "correct them, or leave them out with skip_bad_lines: true or --skip-bad-lines";
                 return Err(desk.note(&place, "the stock list has lines that cannot be used", help));
@@ -39,6 +42,11 @@ impl Source {
             }
         } else {
             for (name, place) in [
+                ("boards", job.boards.is_some().then(|| root.of("boards", &job.boards))),
+                (
+                    "own_set_per_board",
+                    job.own_set_per_board.is_some().then(|| root.of("own_set_per_board", &job.own_set_per_board)),
+                ),
                 ("spares", job.spares.is_some().then(|| root.of("spares", &job.spares))),
                 ("buy", job.buy.is_some().then(|| root.of("buy", &job.buy))),
                 ("bar_class_2", job.bar_class_2.is_some().then(|| root.of("bar_class_2", &job.bar_class_2))),
@@ -136,15 +144,25 @@ pub(super) fn check_rank(desk: &mut Desk, job: &JobFile, source: &Source, shelve
         Rank::Error | Rank::PartNumbers => {}
         Rank::ToBuy if supply.has_stock() && supply.buying != Buying::Forbidden => {}
         Rank::ToBuy => {
-            desk.note(
-                &place,
-                "there is nothing to buy by which to rank",
-                "name a stock list, and allow buying with buy",
-            );
+            let help =
+                if supply.has_stock() { "allow buying with buy or --buy" } else { "name a stock list with stock" };
+            desk.note(&place, "there is nothing to buy by which to rank", help);
         }
         Rank::Cost if supply.currency().is_none() => {
-            let help = "give every line a price in one currency, or rank by something else";
-            desk.note(&place, "the cost is not known: the stock list has no prices, or several currencies", help);
+            let prices = || supply.lots().filter_map(|(_, lot)| lot.price.as_ref());
+            let currencies: BTreeSet<&str> =
+                prices().map(|price| price.currency.as_deref().unwrap_or("none written")).collect();
+            let (message, help) = match (supply.has_stock(), currencies.len()) {
+                (false, _) => ("the cost is not known without a stock list".to_string(), "name one with stock"),
+                (true, 0) => {
+                    ("the cost is not known: the stock list has no prices".to_string(), "give each line one")
+                }
+                (true, _) => {
+                    let names = currencies.into_iter().collect::<Vec<_>>().join(" and ");
+                    (format!("the cost is not known: the prices are in several currencies, {names}"), "use one")
+                }
+            };
+            desk.note(&place, message, help);
         }
         Rank::Cost => {
             let priceless = shelves.iter().find_map(|shelf| {

@@ -83,6 +83,8 @@ pub struct Supply {
     pub buying: Buying,
     /// The only kind that may be bought; `None` for both.
     pub buying_only: Option<Kind>,
+    /// Lines of the list that cannot be used.
+    pub lines_left_out: usize,
 }
 
 impl Default for Supply {
@@ -95,6 +97,7 @@ impl Default for Supply {
             spares: 0,
             buying: Buying::Allowed,
             buying_only: None,
+            lines_left_out: 0,
         }
     }
 }
@@ -130,7 +133,16 @@ impl Supply {
                 part_number,
             });
         }
-        Supply { lots, has_stock: true, boards: 1, spares: 0, buying: Buying::Forbidden, buying_only: None }
+        let faulty: std::collections::BTreeSet<usize> = stock.faults.iter().map(|fault| fault.line).collect();
+        Supply {
+            lots,
+            has_stock: true,
+            boards: 1,
+            spares: 0,
+            buying: Buying::Forbidden,
+            buying_only: None,
+            lines_left_out: faulty.len(),
+        }
     }
 
     /// Adds parts that are there already, as many as it takes, and gives the choice of them.

@@ -5,7 +5,7 @@ use std::io::{self, Write};
 use super::record::{ChosenRecord, PartRecord, Record, RowRecord};
 
 /// The columns, in order, with what each holds. Numbers are unrounded, in SI units; what is not known is empty.
-pub const CSV_COLUMNS: [(&str, &str); 26] = [
+pub const CSV_COLUMNS: [(&str, &str); 31] = [
     ("row", "`shortlist`, `ideal parts` or `nearest value to each`"),
     ("rank", "place in the shortlist, from 1"),
     ("marked", "whether the row has the fewest part numbers within the wanted error"),
@@ -32,6 +32,11 @@ pub const CSV_COLUMNS: [(&str, &str); 26] = [
     ("value", "value of the part, ohms or farads"),
     ("notation", "the value in IEC 60062 notation; empty where it cannot be bought"),
     ("ideal", "unrounded value that belongs in the slot, ohms or farads"),
+    ("joint", "how the two parts of a pair are joined, `series` or `parallel`; empty for a single part"),
+    ("id", "what the part or its drawer is called in the stock list; of a pair both, separated by blanks"),
+    ("board", "number of the board, from 1, where measured parts make boards differ; empty where all are alike"),
+    ("to_buy", "different parts of the row that must be bought; empty without a stock list"),
+    ("cost", "what the parts of one board of the row cost, in the currency of the stock list"),
 ];
 
 /// Writes the record as CSV (RFC 4180 quoting, line feed as line end), columns as in [`CSV_COLUMNS`].
@@ -42,9 +47,13 @@ pub fn write_csv(record: &Record, out: &mut dyn Write) -> io::Result<()> {
     let mut writer = ::csv::Writer::from_writer(out);
     writer.write_record(CSV_COLUMNS.map(|(name, _)| name)).map_err(io_error)?;
     for row in record.shortlist.iter().chain(&record.references) {
-        for section in &row.sections {
-            for part in &section.parts {
-                writer.write_record(fields(record, row, section, part)).map_err(io_error)?;
+        let alike = row.boards.is_empty().then_some((None, &row.sections));
+        let boards = row.boards.iter().map(|board| (Some(board.board), &board.sections));
+        for (board, sections) in alike.into_iter().chain(boards) {
+            for section in sections {
+                for part in &section.parts {
+                    writer.write_record(fields(record, row, board, section, part)).map_err(io_error)?;
+                }
             }
         }
     }
@@ -59,7 +68,13 @@ fn io_error(error: ::csv::Error) -> io::Error {
     }
 }
 
-fn fields(record: &Record, row: &RowRecord, section: &ChosenRecord, part: &PartRecord) -> [String; 26] {
+fn fields(
+    record: &Record,
+    row: &RowRecord,
+    board: Option<usize>,
+    section: &ChosenRecord,
+    part: &PartRecord,
+) -> [String; 31] {
     let number = |value: Option<f64>| value.map_or(String::new(), plain);
     let count = |value: Option<usize>| value.map_or(String::new(), |value| value.to_string());
     let levels: Vec<String> = section.levels_ohm.iter().map(|&level| plain(level)).collect();
@@ -91,6 +106,11 @@ fn fields(record: &Record, row: &RowRecord, section: &ChosenRecord, part: &PartR
         plain(part.value),
         part.notation.clone().unwrap_or_default(),
         number(part.ideal),
+        part.joint.unwrap_or_default().to_string(),
+        part.made_of.iter().filter_map(|piece| piece.id.as_deref()).collect::<Vec<_>>().join(" "),
+        count(board),
+        count(row.to_buy),
+        number(row.cost),
     ]
 }
 

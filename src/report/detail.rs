@@ -64,11 +64,9 @@ fn taken_in_words(record: &Record, taken: &super::TakenRecord) -> String {
     if record.stock.is_none() {
         return unbroken(&words);
     }
-    if let Some(grade) = &taken.grade {
-        words += &format!(" {grade}");
-    }
-    if let Some(id) = &taken.id {
-        words += &format!(" ({})", printable(id));
+    // A name tells parts of one value apart; where there is none, what the list says of them must.
+    if let Some(word) = taken.id.as_ref().or(taken.grade.as_ref()) {
+        words += &format!(" ({})", printable(word));
     }
     words += &match (taken.to_buy, taken.available) {
         (0, Some(there)) => format!(": {} of {there}", taken.need),

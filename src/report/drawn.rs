@@ -4,8 +4,9 @@ use std::collections::BTreeMap;
 
 use serde::Serialize;
 
+use super::need::measured_notation;
 use super::record::{ChosenRecord, PieceRecord, RowRecord};
-use crate::parts::{Buying, Choice, Origin, Price, Supply};
+use crate::parts::{Buying, Choice, Lot, Origin, Price, Supply};
 use crate::search::{BuiltBoard, Chosen, Part, Problem, Row, SectionProblem};
 use crate::units::{Kind, format_part};
 
@@ -18,6 +19,8 @@ pub struct SupplyRecord {
     pub spares: u64,
     /// How many different parts it holds, lines of the same choice counted once.
     pub lots: usize,
+    /// Lines of the list that cannot be used and were left out.
+    pub lines_left_out: usize,
     /// How many part numbers may be bought; `None` for as many as it takes.
     pub most_to_buy: Option<usize>,
     /// The only kind that may be bought, where it is one.
@@ -33,6 +36,7 @@ impl SupplyRecord {
             boards: supply.boards,
             spares: supply.spares,
             lots: supply.lots().count(),
+            lines_left_out: supply.lines_left_out,
             most_to_buy: Some(supply.buying).filter(|buying| *buying != Buying::Allowed).map(Buying::most),
             buying_only: supply.buying_only,
             currency: supply.currency().flatten().map(str::to_owned),
@@ -51,6 +55,8 @@ pub struct TakenRecord {
     pub notation: String,
     /// What tells it from others of its value: tolerance, temperature coefficient, dielectric, measured value.
     pub grade: Option<String>,
+    /// The measured value of a single part, in IEC 60062 notation.
+    pub measured: Option<String>,
     /// What the part or its drawer is called.
     pub id: Option<String>,
     /// The lines of the stock list; none for a part that is in no line.
@@ -99,24 +105,29 @@ fn used<'a>(sections: impl IntoIterator<Item = &'a Chosen>) -> BTreeMap<(Kind, C
 
 /// What a row takes for all boards, by kind and value.
 pub(super) fn taken(supply: &Supply, row: &Row) -> Vec<TakenRecord> {
-    let mut whole = used(&row.sections);
-    for board in &row.boards {
-        for (key, bodies) in used(&board.sections) {
-            let most = whole.entry(key).or_default();
-            *most = bodies.max(*most);
+    // For each part the most bodies on one board, and those on all boards together.
+    let mut whole: BTreeMap<(Kind, Choice), (u64, u64)> = BTreeMap::new();
+    let alike = row.boards.is_empty().then(|| (used(&row.sections), supply.boards));
+    let differing = row.boards.iter().map(|board| (used(&board.sections), 1));
+    for (parts, boards) in alike.into_iter().chain(differing) {
+        for (key, bodies) in parts {
+            let (most, all) = whole.entry(key).or_default();
+            (*most, *all) = (bodies.max(*most), *all + bodies * boards);
         }
     }
-    let record = |((kind, choice), per_board): ((Kind, Choice), u64)| {
+    let record = |((kind, choice), (per_board, all)): ((Kind, Choice), (u64, u64))| {
         let lot = supply.lot_of(choice);
         let label = lot.map_or(choice.value, |lot| lot.nominal);
-        let need = supply.need(choice, per_board);
+        let is_measured = lot.is_some_and(|lot| lot.measured.is_some());
+        let need = if is_measured { per_board } else { all + supply.spares };
         let available = lot.and_then(|lot| lot.available);
         let bought = supply.has_stock() && supply.obtain(choice, per_board) != Some(Origin::Stock);
         TakenRecord {
             kind,
             value: label.to_f64(),
             notation: format_part(label, kind),
-            grade: lot.and_then(|lot| grade(lot.lines.first()?, choice, kind)),
+            grade: lot.and_then(grade),
+            measured: lot.and_then(measured_notation),
             id: lot.and_then(|lot| lot.id()).map(str::to_owned),
             lines: lot.map_or(Vec::new(), |lot| lot.lines.iter().map(|line| line.line).collect()),
             per_board,
@@ -128,13 +139,14 @@ pub(super) fn taken(supply: &Supply, row: &Row) -> Vec<TakenRecord> {
     whole.into_iter().map(record).collect()
 }
 
-/// What a line says of its parts beside their value.
-fn grade(line: &crate::parts::StockLine, choice: Choice, kind: Kind) -> Option<String> {
+/// What a stock list says of its parts beside their value.
+pub(super) fn grade(lot: &Lot) -> Option<String> {
+    let line = lot.lines.first()?;
     let words = [
-        line.tolerance.map(|tolerance| tolerance.in_words(kind)),
+        line.tolerance.map(|tolerance| tolerance.in_words(lot.kind)),
         line.temperature_coefficient.map(|coefficient| coefficient.to_string()),
         line.dielectric.as_ref().map(ToString::to_string),
-        line.measured.map(|_| format!("measured {}", format_part(choice.value, kind))),
+        measured_notation(lot).map(|value| format!("measured {value}")),
     ];
     let words: Vec<String> = words.into_iter().flatten().collect();
     (!words.is_empty()).then(|| words.join(", "))
@@ -147,9 +159,7 @@ pub(super) fn class_2(problem: &Problem, silent: &[Vec<String>], row: &Row) -> V
     for sections in boards.chain([row.sections.as_slice()]) {
         for (index, (section, chosen)) in problem.sections.iter().zip(sections).enumerate() {
             let concerned = |part: &&Part| {
-                part.pieces
-                    .iter()
-                    .any(|&piece| problem.supply.lot_of(piece).is_some_and(crate::parts::Lot::is_class_2))
+                part.pieces.iter().any(|&piece| problem.supply.lot_of(piece).is_some_and(Lot::is_class_2))
             };
             for part in chosen.parts.iter().filter(concerned) {
                 let place = [section.target.name.clone(), section.circuit.slots[part.slot].name.clone()];

@@ -5,6 +5,7 @@ mod detail;
 mod drawn;
 mod json;
 mod layout;
+mod need;
 mod numbers;
 mod record;
 mod stock;
@@ -18,6 +19,7 @@ pub use csv::{CSV_COLUMNS, write_csv};
 pub use drawn::{BoardRecord, SupplyRecord, TakenRecord};
 pub use json::write_json;
 pub use layout::{Align, Column, grid, paragraph, printable, unbroken};
+pub use need::{NEED_FORMAT, NeedLine, NeedRecord, Quantity, write_need_json, write_need_table};
 pub use numbers::{error_in_words, percent};
 pub use record::{
     Achieved, ChosenRecord, FORMAT, FrontPoint, MeasureRecord, PartRecord, PieceRecord, Record, RowRecord,

@@ -409,6 +409,9 @@ fn statement(summary: &SectionSummary, problem: &Problem, unit: &str) -> String 
     let within = format!("within {}", error_in_words(unit, summary.error_limit));
     let none = format!("no set {within} on these shelves, in this circuit, beats the front");
     match &summary.proof {
+        Proof::Exhaustive(_) if summary.front.is_empty() => {
+            "searched to the end: no set on these shelves, in this circuit, comes near this response".to_string()
+        }
         Proof::Exhaustive(End::AllCounts) => format!("proved: {none}"),
         Proof::Exhaustive(End::Resolution) => {
             let resolution = error_in_words(unit, problem.goals.error_resolution);

@@ -231,6 +231,11 @@ pub fn write_swap_table(record: &SwapRecord, width: usize, out: &mut dyn Write) 
         text += &paragraph("", &line, width);
     } else {
         text += &grid(&columns(record), 1, width);
+        let changed: std::collections::BTreeSet<&str> =
+            record.replacements.iter().flat_map(|row| &row.changes).map(|change| change.slot.as_str()).collect();
+        if record.replacements.iter().any(|row| row.changes.len() < changed.len()) {
+            text += &paragraph("= ", "stays as it is", width);
+        }
     }
     if !record.impossible.is_empty() {
         text += "\n";
@@ -256,20 +261,23 @@ fn columns(record: &SwapRecord) -> Vec<Column> {
     let errors = |figure: &dyn Fn(&ReplacementRecord) -> f64| {
         decimal_column(&rows().map(|row| Some(scale * figure(row))).collect::<Vec<_>>())
     };
-    let change = |row: &ReplacementRecord| {
-        let words = row.changes.iter().map(|change| {
-            let id = change.id.as_ref().map_or(String::new(), |id| format!(" ({})", super::printable(id)));
-            unbroken(&format!("{} {}{id}", change.slot, change.to))
-        });
-        words.collect::<Vec<_>>().join(", ")
-    };
     let mut columns = vec![
         Column::right("row", rows().map(|row| row.rank.to_string()).collect()),
         Column::right("other\nchanges", rows().map(|row| row.others.to_string()).collect()),
-        Column::left("new parts", rows().map(change).collect()),
-        Column::right(format!("{unit} from\nbuilt"), errors(&|row| row.against_built)),
-        Column::right(format!("{unit} from\ntarget"), errors(&|row| row.against_target)),
     ];
+    for part in &record.built.parts {
+        let change = |row: &ReplacementRecord| row.changes.iter().find(|change| change.slot == part.slot).cloned();
+        if rows().any(|row| change(row).is_some()) {
+            let cell = |row: &ReplacementRecord| match change(row) {
+                None => "=".to_string(),
+                Some(ChangeRecord { to, id: Some(id), .. }) => format!("{to} {}", super::printable(&id)),
+                Some(ChangeRecord { to, .. }) => to,
+            };
+            columns.push(Column::left(part.slot.clone(), rows().map(cell).collect()));
+        }
+    }
+    columns.push(Column::right(format!("{unit} from\nbuilt"), errors(&|row| row.against_built)));
+    columns.push(Column::right(format!("{unit} from\ntarget"), errors(&|row| row.against_target)));
     let names = ["f0", "Q", "gain", "fz"];
     for (index, name) in names.into_iter().enumerate() {
         let moved = |row: &ReplacementRecord| row.moves[index];

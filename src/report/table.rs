@@ -86,7 +86,10 @@ fn searched(record: &Record, width: usize) -> String {
 }
 
 fn stock_in_words(stock: &SupplyRecord) -> String {
-    let plural = |count: u64, what: &str| if count == 1 { format!("1 {what}") } else { format!("{count} {what}s") };
+    let plural = |number: u64, what: &str| match number {
+        1 => format!("1 {what}"),
+        _ => format!("{} {what}s", count(number)),
+    };
     let mut words = format!("{} of parts for {}", plural(stock.lots as u64, "sort"), plural(stock.boards, "board"));
     if stock.spares > 0 {
         words += &format!(", {} of each part used left over", stock.spares);
@@ -97,6 +100,9 @@ fn stock_in_words(stock: &SupplyRecord) -> String {
         Some(most) => format!("; at most {} bought{only}", plural(most as u64, "part number")),
         None => format!("; what is missing is bought{only}"),
     };
+    if stock.lines_left_out > 0 {
+        words += &format!("; {} left out: roundwell stock shows why", plural(stock.lines_left_out as u64, "line"));
+    }
     words
 }
 
@@ -154,6 +160,9 @@ fn outcome(record: &Record, width: usize) -> String {
     } else if record.shortlist.is_empty() {
         let line = match record.search.reason {
             Some(_) => "Nothing was found before the search ended.",
+            None if record.stock.is_some() => {
+                "No set for which the stock suffices gives this response in this circuit."
+            }
             None => "No set exists on these shelves that gives this response in this circuit.",
         };
         text += &paragraph("", line, width);
@@ -174,7 +183,14 @@ fn outcome(record: &Record, width: usize) -> String {
         }
     }
     if (record.shortlist.is_empty() || !record.search.within_limit) && record.search.reason.is_none() {
-        let advice = "A wider or finer shelf, another circuit, or a larger error_limit may help.";
+        let advice = match &record.stock {
+            None => "A wider or finer shelf, another circuit, or a larger error_limit may help.",
+            Some(stock) if stock.most_to_buy == Some(0) => {
+                "Leave to buy (--buy), pairs (--pairs), fewer boards or spares, another circuit, or a larger error_limit \
+                 may help."
+            }
+            Some(_) => "Pairs (--pairs), fewer boards or spares, another circuit, or a larger error_limit may help.",
+        };
         text += &paragraph("", advice, width);
     }
     text
@@ -259,8 +275,10 @@ fn values(record: &Record, width: usize) -> String {
     }
     let mut blocks = Vec::new();
     for (index, section) in record.sections.iter().enumerate() {
+        let with_boards: Vec<(&RowRecord, &ChosenRecord)> =
+            rows(record).filter_map(|row| Some((row, row.sections.get(index)?))).collect();
         let chosen: Vec<(String, &ChosenRecord)> =
-            rows(record).filter_map(|row| Some((label(record, row), row.sections.get(index)?))).collect();
+            with_boards.iter().map(|(row, chosen)| (label(record, row), *chosen)).collect();
         let Some((_, first)) = chosen.first() else { continue };
         let short_label = |label: &String| match label.as_str() {
             "ideal parts" => "ideal".to_string(),
@@ -269,8 +287,11 @@ fn values(record: &Record, width: usize) -> String {
         };
         let mut columns = vec![Column::left("row", chosen.iter().map(|(label, _)| short_label(label)).collect())];
         for slot in first.parts.iter().map(|part| &part.slot) {
-            let cell = |chosen: &ChosenRecord| chosen.parts.iter().find(|part| part.slot == *slot).map(notation);
-            let cells = chosen.iter().map(|(_, chosen)| cell(chosen).unwrap_or_default()).collect();
+            let cell = |(row, chosen): &(&RowRecord, &ChosenRecord)| {
+                let part = chosen.parts.iter().find(|part| part.slot == *slot)?;
+                Some(if row.boards.is_empty() { notation(part) } else { label_of(part) })
+            };
+            let cells = with_boards.iter().map(|both| cell(both).unwrap_or_default()).collect();
             columns.push(Column::right(slot.clone(), cells));
         }
         let ohms = |value: f64| level(value, 2, "").replace(' ', "");
@@ -289,18 +310,38 @@ fn values(record: &Record, width: usize) -> String {
         blocks.push(paragraph("", &title, width) + &grid(&columns, 1, width));
     }
     let mut text = blocks.join("\n");
+    if record.shortlist.iter().any(|row| !row.boards.is_empty()) {
+        text += &paragraph("~ ", "measured parts, another on each board: the value is that on the label", width);
+    }
+    let mut concerned: Vec<(&[[String; 2]], Vec<String>)> = Vec::new();
     for row in record.shortlist.iter().filter(|row| !row.class_2.is_empty()) {
-        let slots: Vec<String> =
-            row.class_2.iter().map(|[section, slot]| unbroken(&format!("{section} {slot}"))).collect();
         let rank = row.rank.map_or(String::new(), |rank| rank.to_string());
+        match concerned.iter_mut().find(|(slots, _)| *slots == row.class_2.as_slice()) {
+            Some((_, ranks)) => ranks.push(rank),
+            None => concerned.push((&row.class_2, vec![rank])),
+        }
+    }
+    for (slots, ranks) in &concerned {
+        let slots: Vec<String> = slots.iter().map(|[section, slot]| unbroken(&format!("{section} {slot}"))).collect();
         let line = format!(
-            "row {rank} has ceramics of class 2 in {}: their value moves with temperature, voltage and age; \
+            "ceramics of class 2 in {} of row {}: their value moves with temperature, voltage and age; \
              --bar-class-2 leaves them out",
-            slots.join(", ")
+            slots.join(", "),
+            ranks.join(", ")
         );
         text += &paragraph("! ", &line, width);
     }
     text
+}
+
+/// The value as it is on the label, marked where boards have measured parts of their own.
+fn label_of(part: &PartRecord) -> String {
+    if part.made_of.iter().all(|piece| piece.measured.is_none()) {
+        return notation(part);
+    }
+    let between = if part.joint == Some("parallel") { "||" } else { "+" };
+    let labels: Vec<&str> = part.made_of.iter().map(|piece| piece.notation.as_str()).collect();
+    format!("~{}", labels.join(between))
 }
 
 /// The value as it is printed on parts; one that cannot be bought is rounded to four digits.

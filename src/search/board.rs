@@ -658,7 +658,8 @@ impl Board<'_> {
         let tally = tally(&endless, parts());
         (
             Some(self.assembled(exact, None, false, false)),
-            tally.map(|tally| self.assembled(nearest, Some(tally), false, false)),
+            // Quantities were not asked for, so neither what must be bought nor what it costs means anything.
+            tally.map(|tally| Row { to_buy: None, cost: None, ..self.assembled(nearest, Some(tally), false, false) }),
         )
     }
 }

@@ -175,19 +175,19 @@ impl<'a> Search<'a> {
         }
         let mut passed_over = false;
         for part_numbers in fewest..=most.min(allowed) {
-            let from = |range: &Range<usize>| if self.boards_differ() { 0 } else { range.start };
-            let ranges: Vec<Range<usize>> = by_placed.iter().map(|range| from(range)..range.end).collect();
-            let families: Vec<Vec<(usize, Family)>> =
-                ranges.into_iter().map(|range| self.families(range, part_numbers)).collect();
+            // Families are built when they are first needed: most classes are passed over.
+            let mut families: Vec<Option<Vec<(usize, Family)>>> = vec![None; by_placed.len()];
             let most_bought = if self.supply.has_stock() { self.supply.buying.most().min(part_numbers) } else { 0 };
             for bought in 0..=most_bought {
-                for (range, families) in by_placed.iter().zip(&families) {
+                for (range, families) in by_placed.iter().zip(&mut families) {
                     let placed_parts = self.forms[range.start].placed_parts;
                     let takes = Takes { part_numbers, bought, placed_parts };
                     if !self.cost_counts() && self.best.error_within(&takes).is_some_and(|key| key < resolution) {
                         passed_over = true;
                         continue;
                     }
+                    let from = if self.boards_differ() { 0 } else { range.start };
+                    let families = families.get_or_insert_with(|| self.families(from..range.end, part_numbers));
                     if let Some(stopped) = self.walk(families, takes, (first, limit), affordable) {
                         return stopped;
                     }

@@ -34,7 +34,7 @@ pub(crate) fn shortages(problem: &Problem, section: usize) -> Vec<String> {
                     let most = choices.iter().max_by_key(|&&c| supply.lot_of(c).and_then(|lot| lot.available));
                     let Some(&most) = most else { continue };
                     let names = names(problem, index, group);
-                    let what = format!("{names} alike");
+                    let what = if group.slots.len() > 1 { format!("{names} alike") } else { names };
                     found.push(inequality(supply, &what, most, group.kind, group.bodies()));
                 }
                 _ => {}
@@ -44,8 +44,7 @@ pub(crate) fn shortages(problem: &Problem, section: usize) -> Vec<String> {
     for ((kind, choice), places) in pinned {
         let bodies = places.iter().map(|(_, group)| group.bodies()).sum();
         if places[0].0 == section && !supply.suffices(choice, bodies) {
-            let several = problem.sections.len() > 1;
-            let place = |&(index, group): &(usize, &Group)| match several {
+            let place = |&(index, group): &(usize, &Group)| match index != section {
                 true => format!("{} {}", problem.sections[index].target.name, names(problem, index, group)),
                 false => names(problem, index, group),
             };
