@@ -8,7 +8,7 @@
 //!   values where there is no line;
 //! - a row is listed if no other set has an error, part numbers, part numbers to buy, placed parts and, where rows are
 //!   ranked by it, a cost that are all no larger; errors are compared as steps of 1e-7;
-//! - slots that do not reach the response are filled with as few new part numbers as possible, then as little to buy.
+//! - slots that do not reach the response are filled too, in every way.
 
 use std::collections::{BTreeMap, BTreeSet};
 
@@ -52,9 +52,10 @@ impl Drawer {
     }
 
     /// No list: everything of these values can be had.
-    pub fn of_values(resistors: Vec<Value>, capacitors: Vec<Value>) -> Drawer {
-        let of = |values: Vec<Value>| values.into_iter().map(Choice::from).collect();
-        Drawer { supply: Supply::default(), resistors: of(resistors), capacitors: of(capacitors) }
+    pub fn of(resistors: &str, capacitors: &str) -> Drawer {
+        let of = |kind, text| values(kind, text).into_iter().map(Choice::from).collect();
+        let (resistors, capacitors) = (of(Kind::Resistor, resistors), of(Kind::Capacitor, capacitors));
+        Drawer { supply: Supply::default(), resistors, capacitors }
     }
 
     /// Values that no line names may be bought too.
@@ -96,6 +97,35 @@ impl Drawer {
         let wanted = values(kind, text);
         let label = |choice: &Choice| choice.lot.map_or(choice.value, |id| self.supply.lot(id).nominal);
         self.shelf(kind).filtered(|choice| wanted.contains(&label(choice))).unwrap()
+    }
+}
+
+/// What a drawer is made of, to be made again with a line more or less.
+#[derive(Clone, Debug)]
+pub struct Recipe {
+    /// Kind, value, quantity, tolerance, price, measured value; none without a stock list.
+    pub lines: Vec<String>,
+    /// Values without a stock list, and what may be bought beside it.
+    pub beside: Vec<(Kind, Vec<Value>)>,
+    pub boards: u64,
+    pub spares: u64,
+    pub buying: Buying,
+}
+
+impl Recipe {
+    pub fn drawer(&self) -> Drawer {
+        let lines: Vec<&str> = self.lines.iter().map(String::as_str).collect();
+        let empty = Drawer { supply: Supply::default(), resistors: Vec::new(), capacitors: Vec::new() };
+        let mut drawer = if lines.is_empty() { empty } else { Drawer::lines(&lines) };
+        for (kind, values) in &self.beside {
+            let choices = if *kind == Kind::Resistor { &mut drawer.resistors } else { &mut drawer.capacitors };
+            choices.extend(values.iter().copied().map(Choice::from));
+        }
+        (drawer.supply.boards, drawer.supply.spares) = (self.boards, self.spares);
+        if !lines.is_empty() {
+            drawer.supply.buying = self.buying;
+        }
+        drawer
     }
 }
 
@@ -285,8 +315,7 @@ impl Front {
 
     /// Whether two fronts have the same points.
     pub fn is(&self, other: &Front) -> bool {
-        let same =
-            |(a, b): (&Point, &Point)| a.takes == b.takes && (a.error - b.error).abs() <= 1.5e-7;
+        let same = |(a, b): (&Point, &Point)| a.takes == b.takes && (a.error - b.error).abs() <= 1.5e-7;
         self.0.len() == other.0.len() && self.0.iter().zip(&other.0).all(same)
     }
 
@@ -327,7 +356,7 @@ enum Alike {
 
 /// Whether a slot may hold a measured part on one board and one of the same label that was not measured on another: all
 /// boards have the same labels in the same slots.
-const LABELS_MIX: bool = true;
+const LABELS_MIX: bool = false;
 
 type Structure = Vec<(Option<Joint>, Vec<Alike>)>;
 
@@ -460,22 +489,21 @@ impl<'a> Oracle<'a> {
         }
     }
 
-    /// Fills the silent slots in every way and keeps the way with the fewest part numbers, then the least to buy.
+    /// Fills the silent slots in every way.
     fn fill(&mut self, chosen: &mut Vec<usize>) {
         self.sets += 1;
-        let mut best = None;
-        self.fillings(chosen, &mut best);
-        if let Some((takes, measured, all)) = best {
+        let mut ways = Vec::new();
+        self.fillings(chosen, &mut ways);
+        for (takes, measured, all) in ways {
             self.judge_set(&all, takes, measured);
         }
     }
 
-    #[allow(clippy::type_complexity)]
-    fn fillings(&self, chosen: &mut Vec<usize>, best: &mut Option<(Takes, u64, Vec<usize>)>) {
+    fn fillings(&self, chosen: &mut Vec<usize>, ways: &mut Vec<(Takes, u64, Vec<usize>)>) {
         if let Some(group) = self.groups.get(chosen.len()) {
             for i in 0..group.held.len() {
                 chosen.push(i);
-                self.fillings(chosen, best);
+                self.fillings(chosen, ways);
                 chosen.pop();
             }
             return;
@@ -494,8 +522,9 @@ impl<'a> Oracle<'a> {
         } else {
             takes.cost = None;
         }
-        if best.as_ref().is_none_or(|(other, ..)| takes < *other) {
-            *best = Some((takes, measured, chosen.clone()));
+        // The response is that of all ways.
+        if !ways.iter().any(|(other, parts, _)| *parts == measured && other.no_more_than(&takes)) {
+            ways.push((takes, measured, chosen.clone()));
         }
     }
 
@@ -730,9 +759,8 @@ pub fn compare_drawer(label: &str, problem: &Problem) -> Outcome {
         (expected, found) = (expected.by_part_numbers(), found.by_part_numbers());
     }
     let shown = |point: &Point| {
-        let same = |(takes, error, _): &&(Takes, f64, String)| {
-            *takes == point.takes && (error - point.error).abs() < 1e-9
-        };
+        let same =
+            |(takes, error, _): &&(Takes, f64, String)| *takes == point.takes && (error - point.error).abs() < 1e-9;
         format!("\n   {point:?} {}", oracle.shown.iter().find(same).map_or("", |(_, _, words)| words))
     };
     let say = || {
@@ -748,7 +776,12 @@ pub fn compare_drawer(label: &str, problem: &Problem) -> Outcome {
     assert_eq!(outcome.stopped, None, "{}", say());
     for row in &outcome.rows {
         if let Err(what) = check_drawer_row(problem, row) {
-            panic!("a listed row is wrong: {what}\n   {:?} {}\n {}", point(problem, row), in_words(problem, &row.sections), say());
+            panic!(
+                "a listed row is wrong: {what}\n   {:?} {}\n {}",
+                point(problem, row),
+                in_words(problem, &row.sections),
+                say()
+            );
         }
     }
     if expected.0.is_empty() {
@@ -762,7 +795,11 @@ pub fn compare_drawer(label: &str, problem: &Problem) -> Outcome {
             }
             Some(row) => {
                 let best = outcome.rows.iter().map(|row| row.deviation.error).fold(f64::INFINITY, f64::min);
-                assert!((best - nearest).abs() <= 1.5e-7 * (1.0 + nearest), "{row:?}: the nearest has {nearest}: {}", say());
+                assert!(
+                    (best - nearest).abs() <= 1.5e-7 * (1.0 + nearest),
+                    "{row:?}: the nearest has {nearest}: {}",
+                    say()
+                );
             }
         }
     } else {
@@ -851,13 +888,19 @@ pub fn check_drawer_row(problem: &Problem, row: &Row) -> Result<(), String> {
         let error = judge.error(&cascade(problem, &values), f64::INFINITY).unwrap();
         demand(agree(error, board.error), format!("a board's error is {error}, {} is said", board.error))?;
     }
-    demand(several || problem.supply.boards == 1 || measured == 0, "boards cannot be alike: they have measured parts")?;
+    demand(
+        several || problem.supply.boards == 1 || measured == 0,
+        "boards cannot be alike: they have measured parts",
+    )?;
     demand(
         problem.goals.each_board_its_own || structures.len() == 1,
         "boards differ in more than which measured part stands where",
     )?;
     let worst = boards.iter().map(|board| board.error).fold(0.0, f64::max);
-    demand(agree(worst, row.deviation.error), format!("the worst board has {worst}, the row {}", row.deviation.error))?;
+    demand(
+        agree(worst, row.deviation.error),
+        format!("the worst board has {worst}, the row {}", row.deviation.error),
+    )?;
     demand(
         boards.iter().any(|board| agree(board.error, worst) && board.sections == row.sections),
         "the row does not show the worst board",
@@ -865,7 +908,10 @@ pub fn check_drawer_row(problem: &Problem, row: &Row) -> Result<(), String> {
     let Some(counted) = most else { return Err("no board".into()) };
     let has_stock = problem.supply.has_stock();
     demand(row.part_numbers == Some(counted.part_numbers), format!("{counted:?} counted"))?;
-    demand(row.to_buy == has_stock.then_some(counted.to_buy), format!("{counted:?} counted, to buy {:?}", row.to_buy))?;
+    demand(
+        row.to_buy == has_stock.then_some(counted.to_buy),
+        format!("{counted:?} counted, to buy {:?}", row.to_buy),
+    )?;
     demand(row.placed_parts == counted.placed, format!("{counted:?} counted"))?;
     demand(row.cost == counted.cost, format!("{counted:?} counted, cost {:?}", row.cost))?;
     let limit = problem.goals.max_part_numbers.unwrap_or(usize::MAX);
@@ -885,6 +931,35 @@ pub fn target_of(section: &SectionProblem, slots: &[f64]) -> Option<Section> {
     let sound = h.is_stable(order) && figures.q.is_none_or(|q| (0.2..10.0).contains(&q));
     let target = || Section::new("A", output.shape, figures.w0, figures.q, figures.gain, None).ok();
     sound.then(target).flatten()
+}
+
+/// Each row with what it is made of, whatever the order of the list: errors in steps.
+pub fn rows_by_label(problem: &Problem, outcome: &Outcome) -> Vec<String> {
+    let piece = |choice: &Choice| match problem.supply.lot_of(*choice) {
+        None => format!("{}", choice.value),
+        Some(lot) => format!("{} of {} {:?}", choice.value, lot.nominal, lot.lines[0].tolerance),
+    };
+    let of = |chosen: &Chosen| {
+        let parts = chosen.parts.iter();
+        let parts = parts.map(|p| (p.slot, p.joint, p.pieces.iter().map(piece).collect::<Vec<_>>()));
+        format!("{:?}", parts.collect::<Vec<_>>())
+    };
+    let row = |row: &Row| {
+        let boards = row.boards.iter().flat_map(|board| board.sections.iter().map(of)).collect::<Vec<_>>();
+        let sections: Vec<String> = row.sections.iter().map(of).collect();
+        format!("{} {:?} {sections:?} {boards:?}", steps(row.deviation.error), point(problem, row).takes)
+    };
+    outcome.rows.iter().map(row).collect()
+}
+
+/// The lots that a row takes from.
+pub fn lots_used(outcome: &Outcome) -> BTreeSet<LotId> {
+    let sections = outcome
+        .rows
+        .iter()
+        .flat_map(|row| row.sections.iter().chain(row.boards.iter().flat_map(|board| board.sections.iter())));
+    let pieces = sections.flat_map(|chosen| chosen.parts.iter().flat_map(|part| part.pieces.iter()));
+    pieces.filter_map(|piece| piece.lot).collect()
 }
 
 /// About how many sets there are.
