@@ -2,7 +2,11 @@
 
 #![allow(missing_docs, clippy::unwrap_used)]
 
+use std::fs;
+use std::path::Path;
 use std::process::Command;
+
+use tempfile::TempDir;
 
 const README: &str = include_str!("../README.md");
 
@@ -30,12 +34,28 @@ fn masked(text: &str) -> String {
     text.lines().map(mask).collect::<Vec<_>>().join("\n")
 }
 
+/// A copy of the examples in a folder of their own, so that commands may write files.
+fn examples() -> TempDir {
+    let folder = tempfile::tempdir().unwrap();
+    for name in ["examples", "circuits"] {
+        let to = folder.path().join("data").join(name);
+        fs::create_dir_all(&to).unwrap();
+        for entry in fs::read_dir(Path::new("data").join(name)).unwrap() {
+            let entry = entry.unwrap();
+            fs::copy(entry.path(), to.join(entry.file_name())).unwrap();
+        }
+    }
+    folder
+}
+
 #[test]
 fn console_blocks_are_what_the_program_prints() {
+    let folder = examples();
     let mut run = 0;
-    for block in blocks("console") {
-        let (first, rest) = block.split_once('\n').unwrap();
-        let command = first.strip_prefix("$ ").unwrap();
+    // Each command of a block stands on a line that begins with `$ `, its output below it.
+    let commands = blocks("console").into_iter().flat_map(|block| block.strip_prefix("$ ").unwrap().split("\n$ "));
+    for text in commands {
+        let (command, rest) = text.split_once('\n').unwrap_or((text, ""));
         if command.starts_with("cargo") {
             continue;
         }
@@ -45,26 +65,26 @@ fn console_blocks_are_what_the_program_prints() {
         };
         let output = Command::new(env!("CARGO_BIN_EXE_roundwell"))
             .args(&words(command)[1..])
-            .current_dir(env!("CARGO_MANIFEST_DIR"))
+            .current_dir(folder.path())
             .output()
             .unwrap();
         assert_eq!(output.status.code(), Some(code), "{command}");
         let printed = String::from_utf8(output.stdout).unwrap();
-        assert_eq!(masked(&printed), masked(expected), "{command}");
+        assert_eq!(masked(printed.trim_end()), masked(expected.trim_end()), "{command}");
         run += 1;
     }
-    assert!(run >= 6, "{run} blocks were run");
+    assert!(run >= 9, "{run} commands were run");
 }
 
 #[test]
-fn the_job_shown_is_the_example() {
-    let job = std::fs::read_to_string("data/examples/vibration-logger.ron").unwrap();
-    assert_eq!(blocks("ron"), [job]);
+fn the_jobs_shown_are_the_examples() {
+    let jobs = ["vibration-logger", "rain-gauge"].map(|name| fs::read_to_string(format!("data/examples/{name}.ron")));
+    assert_eq!(blocks("ron"), jobs.map(Result::unwrap));
 }
 
 #[test]
 fn the_stock_list_shown_is_the_example() {
-    let list = std::fs::read_to_string("data/examples/parts-tin.csv").unwrap();
+    let list = fs::read_to_string("data/examples/parts-tin.csv").unwrap();
     assert_eq!(blocks("csv"), [list]);
 }
 
@@ -72,7 +92,7 @@ fn the_stock_list_shown_is_the_example() {
 #[test]
 fn every_example_finds_something() {
     let mut run = 0;
-    for entry in std::fs::read_dir("data/examples").unwrap() {
+    for entry in fs::read_dir("data/examples").unwrap() {
         let path = entry.unwrap().path();
         if path.extension().is_some_and(|e| e == "ron") {
             let status =

@@ -94,6 +94,24 @@ pub(super) fn piece(supply: &Supply, kind: Kind, choice: Choice) -> PieceRecord 
     }
 }
 
+/// How far what stands in a slot may be from its value: the value of the whole with all its parts at their lowest, and at
+/// their highest, for both joints rise with either part.
+pub(super) fn tolerance(supply: &Supply, part: &Part) -> Option<[f64; 2]> {
+    let limits = |&choice: &Choice| {
+        let lot = supply.lot_of(choice).filter(|lot| lot.measured.is_none())?;
+        Some(lot.lines.first()?.tolerance?.limits(lot.nominal))
+    };
+    let limits: Vec<(f64, f64)> = part.pieces.iter().map(limits).collect::<Option<_>>()?;
+    let whole = |values: Vec<f64>| match (values.as_slice(), part.joint) {
+        (&[only], None) => Some(only),
+        (&[a, b], Some(joint)) => Some(joint.value(part.kind, a, b)),
+        _ => None,
+    };
+    let low = whole(limits.iter().map(|(low, _)| *low).collect())?;
+    let high = whole(limits.iter().map(|(_, high)| *high).collect())?;
+    Some([low / part.ideal - 1.0, high / part.ideal - 1.0])
+}
+
 /// The parts of a board, with how many bodies of each.
 fn used<'a>(sections: impl IntoIterator<Item = &'a Chosen>) -> BTreeMap<(Kind, Choice), u64> {
     let mut used = BTreeMap::new();

@@ -216,7 +216,6 @@ pub fn write_need_table(record: &NeedRecord, width: usize, out: &mut dyn Write) 
     let mut columns = vec![
         Column::left("", rows().map(|part| part.kind.letter().to_string()).collect()),
         Column::right("value", rows().map(|part| part.value.clone()).collect()),
-        Column::left("grade", rows().map(|part| word(&part.grade)).collect()),
         Column::left("id", rows().map(|part| word(&part.id)).collect()),
         Column::right("line", rows().map(lines).collect()),
         Column::right("a board", rows().map(|part| part.per_board.to_string()).collect()),
@@ -224,6 +223,10 @@ pub fn write_need_table(record: &NeedRecord, width: usize, out: &mut dyn Write) 
         Column::right("there", rows().map(|part| dash(part.there)).collect()),
         Column::right("left", rows().map(|part| dash(part.left)).collect()),
     ];
+    // A name tells parts of one value apart; where there is none, what the list says of them must.
+    if rows().any(|part| part.id.is_none() && !part.lines.is_empty()) {
+        columns.insert(2, Column::left("grade", rows().map(|part| word(&part.grade)).collect()));
+    }
     if record.short > 0 {
         columns.push(Column::right("short", rows().map(|part| part.short.to_string()).collect()));
     }

@@ -4,7 +4,7 @@ use std::f64::consts::TAU;
 
 use serde::Serialize;
 
-use super::drawn::{BoardRecord, SupplyRecord, TakenRecord, boards, class_2, piece, taken};
+use super::drawn::{BoardRecord, SupplyRecord, TakenRecord, boards, class_2, piece, taken, tolerance};
 use super::numbers::error_in_words;
 use crate::parts::{Shelf, Supply};
 use crate::search::{Chosen, End, Joint, Outcome, Part, Problem, Proof, Row, SectionProblem, SectionSummary};
@@ -281,6 +281,9 @@ pub struct PartRecord {
     /// The value in IEC 60062 notation, of a pair both with `+` between (in series) or `||` (in parallel); `None` for a
     /// value that cannot be bought.
     pub notation: Option<String>,
+    /// How far it may be from that value by the tolerances of the stock list, as ratios less one: lowest and highest. Those
+    /// of a pair follow from its parts. `None` where a tolerance is not known, and for a measured part.
+    pub tolerance: Option<[f64; 2]>,
     /// How the two parts of a pair are joined: `series` or `parallel`.
     pub joint: Option<&'static str>,
     /// The unrounded value that belongs here, Ω or F.
@@ -546,6 +549,7 @@ impl ChosenRecord {
             kind: part.kind,
             value: part.value.map_or(part.ideal, |value| value.to_f64()),
             notation: notation(part),
+            tolerance: tolerance(supply, part),
             joint: part.joint.map(|joint| match joint {
                 Joint::Series => "series",
                 Joint::Parallel => "parallel",

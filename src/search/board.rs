@@ -35,14 +35,6 @@ pub struct Part {
     pub joint: Option<Joint>,
 }
 
-impl Part {
-    /// The value of two parts together, in ohms or farads.
-    fn joined(kind: Kind, joint: Joint, a: f64, b: f64) -> f64 {
-        let adds = (kind == Kind::Resistor) == (joint == Joint::Series);
-        if adds { a + b } else { a * b / (a + b) }
-    }
-}
-
 /// One board among several that differ in their measured parts.
 #[derive(Clone, Debug, PartialEq)]
 pub struct BuiltBoard {
@@ -798,7 +790,7 @@ pub(crate) fn chosen(
             let other = parts.iter_mut().find(|part| part.slot == slot);
             match (other, group.joint) {
                 (Some(first), Some(joint)) => {
-                    first.ideal = Part::joined(group.kind, joint, first.ideal, ideal);
+                    first.ideal = joint.value(group.kind, first.ideal, ideal);
                     first.value = None;
                     first.pieces.extend(choice);
                     first.pieces.sort_unstable_by(|a, b| b.cmp(a));

@@ -33,6 +33,15 @@ pub enum Joint {
     Parallel,
 }
 
+impl Joint {
+    /// The value of two parts together, in ohms or farads: resistors add in series, capacitors in parallel, otherwise their
+    /// reciprocals do.
+    pub fn value(self, kind: Kind, a: f64, b: f64) -> f64 {
+        let adds = (kind == Kind::Resistor) == (self == Joint::Series);
+        if adds { a + b } else { a * b / (a + b) }
+    }
+}
+
 /// Where two parts may take the place of one.
 #[derive(Clone, Debug, Default, PartialEq, Eq)]
 pub struct Pairs {

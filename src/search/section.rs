@@ -163,7 +163,9 @@ impl<'a> Search<'a> {
     fn walk_counts(&mut self, first: f64, limit: f64, affordable: f64) -> Proof {
         let spans: Vec<(usize, usize)> = self.forms.iter().map(Model::part_numbers).collect();
         let fewest = spans.iter().map(|span| span.0).min().unwrap_or(0);
-        let most = spans.iter().map(|span| span.1).max().unwrap_or(0);
+        // Where each board may be its own, what silent slots take decides which sets can stand on one board of a run.
+        let silent = if self.boards_differ() { self.forms[0].silent_groups().len() } else { 0 };
+        let most = spans.iter().map(|span| span.1).max().unwrap_or(0) + silent;
         let allowed = self.goals.max_part_numbers.unwrap_or(most);
         let resolution = ErrorKey::new(self.goals.error_resolution);
         let mut by_placed: Vec<Range<usize>> = Vec::new();

@@ -4,6 +4,7 @@ use rayon::prelude::*;
 
 use crate::parts::{Choice, Shelf, Supply};
 use crate::target::{Criterion, Figures, Section, Yardstick};
+use crate::units::{Kind, Value};
 
 use super::board::{Chosen, chosen, unmet};
 use super::front::{ErrorKey, Found, Proof};
@@ -141,7 +142,7 @@ pub fn replacements(problem: &SwapProblem, monitor: &dyn Monitor) -> Option<Repl
         candidates.dedup();
         candidates.retain(|candidate| best.is_none_or(|best| candidate.key < best));
         candidates.truncate(problem.rows);
-        best = best.min(candidates.first().map(|c| c.key)).or(candidates.first().map(|c| c.key));
+        best = candidates.first().map(|candidate| candidate.key).or(best);
         for candidate in &candidates {
             let changes: Vec<Change> = changes(&model, &kept, &candidate.choices);
             let response = model.biquad(&candidate.choices[..model.active]);
@@ -201,6 +202,17 @@ fn subsets(groups: &[usize], slots: usize, size: &dyn Fn(usize) -> usize) -> Vec
     }
 }
 
+/// The value on the label.
+fn label(problem: &SwapProblem, choice: Choice) -> Value {
+    problem.supply.lot_of(choice).map_or(choice.value, |lot| lot.nominal)
+}
+
+/// The values that are gone: they are placed nowhere anew.
+fn gone(problem: &SwapProblem) -> Vec<(Kind, Value)> {
+    let shelf = |&slot: &usize| &problem.built.shelves[slot];
+    problem.gone.iter().map(shelf).map(|shelf| (shelf.kind(), label(problem, shelf.choices()[0]))).collect()
+}
+
 /// The nearest sets in which the gone groups and those in `free` may change.
 fn search(
     problem: &SwapProblem,
@@ -211,8 +223,7 @@ fn search(
     monitor: &dyn Monitor,
 ) -> (Vec<Candidate>, u64, u64, Option<StopReason>) {
     let nothing = (Vec::new(), 0, 0, None);
-    let label = |choice: &Choice| problem.supply.lot_of(*choice).map_or(choice.value, |lot| lot.nominal);
-    let gone: Vec<_> = problem.gone.iter().map(|&slot| label(&problem.built.shelves[slot].choices()[0])).collect();
+    let gone = gone(problem);
     let mut section = problem.built.clone();
     for (index, group) in model.groups.iter().enumerate() {
         let is_gone = group.slots.iter().any(|slot| problem.gone.contains(slot));
@@ -220,9 +231,9 @@ fn search(
             continue;
         }
         for &slot in &group.slots {
-            let gone_kind = |choice: &Choice| gone.contains(&label(choice));
             let stays = (!is_gone).then_some(kept[index]);
-            let others = problem.open[slot].choices().iter().copied().filter(|choice| !gone_kind(choice));
+            let is_there = |choice: &Choice| !gone.contains(&(group.kind, label(problem, *choice)));
+            let others = problem.open[slot].choices().iter().copied().filter(is_there);
             let Ok(shelf) = Shelf::of_choices(group.kind, others.chain(stays)) else { return nothing };
             section.shelves[slot] = shelf;
         }
@@ -260,6 +271,9 @@ fn impossible(problem: &SwapProblem) -> Vec<(usize, Choice, String)> {
     let mut found = Vec::new();
     for &slot in &problem.gone {
         for &choice in problem.open[slot].choices() {
+            if gone(problem).contains(&(slots[slot].kind, label(problem, choice))) {
+                continue;
+            }
             let Ok(only) = Shelf::of_choices(slots[slot].kind, [choice]) else { continue };
             let mut section = problem.built.clone();
             for (index, shelf) in section.shelves.iter_mut().enumerate() {
