@@ -4,6 +4,7 @@
 
 #![allow(missing_docs)]
 
+use std::f64::consts::FRAC_1_SQRT_2;
 use std::fmt::Write;
 use std::sync::Arc;
 
@@ -43,9 +44,9 @@ impl std::fmt::Display for Case {
 const CASES: &[Case] = &[
     Case { name: "drawer, 1 board", problem: || drawer(1) },
     Case { name: "drawer, 10 boards", problem: || drawer(10) },
-    Case { name: "pairs, tow-thomas, at most 1", problem: || pairs("tow-thomas", 0.7071, 1) },
-    Case { name: "pairs, tow-thomas, at most 2", problem: || pairs("tow-thomas", 0.7071, 2) },
-    Case { name: "pairs, tow-thomas, at most 4", problem: || pairs("tow-thomas", 0.7071, 4) },
+    Case { name: "pairs, tow-thomas, at most 1", problem: || pairs("tow-thomas", FRAC_1_SQRT_2, 1) },
+    Case { name: "pairs, tow-thomas, at most 2", problem: || pairs("tow-thomas", FRAC_1_SQRT_2, 2) },
+    Case { name: "pairs, tow-thomas, at most 4", problem: || pairs("tow-thomas", FRAC_1_SQRT_2, 4) },
     Case { name: "pairs, sallen-key, at most 1", problem: || pairs("sallen-key-low-pass", 1.3, 1) },
     Case { name: "pairs, sallen-key, at most 2", problem: || pairs("sallen-key-low-pass", 1.3, 2) },
     Case { name: "measured, one set for all boards", problem: || measured(false) },
@@ -143,7 +144,7 @@ fn measured(own: bool) -> Problem {
     (supply.boards, supply.buying) = (6, Buying::Allowed);
     let resistors = Shelf::new(Kind::Resistor, values(Series::E96, Kind::Resistor, "1k", "1M")).expect("a shelf");
     let capacitors = of_stock(&supply, Kind::Capacitor, Vec::new());
-    let section = section("A", "sallen-key-low-pass", 1.5e3, 0.7071, &resistors, &capacitors);
+    let section = section("A", "sallen-key-low-pass", 1.5e3, FRAC_1_SQRT_2, &resistors, &capacitors);
     let mut problem = problem(vec![section], supply);
     problem.goals.each_board_its_own = own;
     problem

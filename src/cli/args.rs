@@ -36,7 +36,7 @@ pub enum Command {
     #[command(after_help = SHORTLIST_HELP, after_long_help = shortlist_long_help(), allow_negative_numbers = true)]
     Shortlist(Box<ShortlistArgs>),
     /// Replace parts of a built section that are gone, with as few other changes as possible.
-    #[command(after_help = SWAP_HELP)]
+    #[command(after_help = SWAP_HELP, allow_negative_numbers = true)]
     Swap(Box<SwapArgs>),
     /// List the circuits, or show one: nodes, slots, outputs, what each slot sets.
     Circuits(CircuitsArgs),
@@ -44,7 +44,7 @@ pub enum Command {
     #[command(allow_negative_numbers = true)]
     Values(ValuesArgs),
     /// Read back a stock list: what was understood, what is wrong, what is odd; or what a shortlist needs of it.
-    #[command(after_help = STOCK_HELP, after_long_help = stock_long_help())]
+    #[command(after_help = STOCK_HELP, after_long_help = stock_long_help(), allow_negative_numbers = true)]
     Stock(StockArgs),
 }
 

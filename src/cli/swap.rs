@@ -104,7 +104,9 @@ fn problem(args: &SwapArgs, built: &Problem, open: &Problem) -> Result<SwapProbl
         .map(|&slot| as_built.circuit.slots[slot].name.as_str())
         .collect();
     if !unpinned.is_empty() && faults.is_empty() {
-        let message = format!("{} of section {} not pinned", are(&unpinned), as_built.target.name);
+        let (what, is) = if unpinned.len() == 1 { ("slot", "is") } else { ("slots", "are") };
+        let (names, section) = (unpinned.join(", "), &as_built.target.name);
+        let message = format!("{what} {names} of section {section} {is} not pinned");
         let example = format!("write slots: {{\"{}\": (pin: \"10k\"), ...}} with what is built in", unpinned[0]);
         faults.push(Fault::at("", message).help(example));
     }
@@ -136,13 +138,6 @@ fn problem(args: &SwapArgs, built: &Problem, open: &Problem) -> Result<SwapProbl
         error_limit: open.goals.error_limit,
         supply,
     })
-}
-
-fn are(names: &[&str]) -> String {
-    match names {
-        [one] => format!("slot {one} is"),
-        several => format!("slots {} are", several.join(", ")),
-    }
 }
 
 /// The section and the slot that a word names.

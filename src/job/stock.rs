@@ -56,7 +56,11 @@ impl Source {
                 ),
             ] {
                 if let Some(place) = place {
-                    desk.note(&place, format!("{name} says nothing without a stock list"), "name one with stock");
+                    desk.note(
+                        &place,
+                        format!("{name} says nothing without a stock list"),
+                        "name one with stock or --stock",
+                    );
                 }
             }
         }
@@ -144,8 +148,11 @@ pub(super) fn check_rank(desk: &mut Desk, job: &JobFile, source: &Source, shelve
         Rank::Error | Rank::PartNumbers => {}
         Rank::ToBuy if supply.has_stock() && supply.buying != Buying::Forbidden => {}
         Rank::ToBuy => {
-            let help =
-                if supply.has_stock() { "allow buying with buy or --buy" } else { "name a stock list with stock" };
+            let help = if supply.has_stock() {
+                "allow buying with buy or --buy"
+            } else {
+                "name a stock list with stock or --stock"
+            };
             desk.note(&place, "there is nothing to buy by which to rank", help);
         }
         Rank::Cost if supply.currency().is_none() => {
@@ -153,7 +160,9 @@ pub(super) fn check_rank(desk: &mut Desk, job: &JobFile, source: &Source, shelve
             let currencies: BTreeSet<&str> =
                 prices().map(|price| price.currency.as_deref().unwrap_or("none written")).collect();
             let (message, help) = match (supply.has_stock(), currencies.len()) {
-                (false, _) => ("the cost is not known without a stock list".to_string(), "name one with stock"),
+                (false, _) => {
+                    ("the cost is not known without a stock list".to_string(), "name one with stock or --stock")
+                }
                 (true, 0) => {
                     ("the cost is not known: the stock list has no prices".to_string(), "give each line one")
                 }

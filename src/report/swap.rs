@@ -10,7 +10,7 @@ use super::layout::{Column, grid, paragraph, unbroken};
 use super::numbers::{count, decimal_column, error_in_words, percent, span_of_time};
 use super::record::{ChosenRecord, TargetRecord};
 use crate::parts::Supply;
-use crate::search::{Chosen, Reference, Replacement, Replacements, SwapProblem};
+use crate::search::{Change, Chosen, Reference, Replacement, Replacements, SwapProblem};
 use crate::units::{Kind, format_part};
 
 /// The name and version of the JSON format of replacements: keys may be added to it, none is renamed or removed.
@@ -83,6 +83,12 @@ pub struct ChangeRecord {
     pub from: String,
     /// The value it is to hold.
     pub to: String,
+    /// How many of the new part all boards need; `None` without a stock list.
+    pub need: Option<u64>,
+    /// How many there are; `None` where the list does not say, or does not have it.
+    pub available: Option<u64>,
+    /// How many must be bought.
+    pub to_buy: u64,
     /// What the new part or its drawer is called.
     pub id: Option<String>,
     /// The lines of the stock list it is taken from.
@@ -115,7 +121,12 @@ impl SwapRecord {
             ReplacementRecord {
                 rank,
                 others: row.others,
-                changes: row.changes.iter().map(|change| change_record(&problem.supply, slots, change)).collect(),
+                changes: (row.changes.iter())
+                    .map(|change| {
+                        let bodies = row.changes.iter().filter(|other| other.to == change.to).count() as u64;
+                        change_record(&problem.supply, slots, change, bodies)
+                    })
+                    .collect(),
                 against_built: row.against_built,
                 against_target: row.against_target,
                 moves: [
@@ -164,13 +175,19 @@ impl SwapRecord {
     }
 }
 
-fn change_record(supply: &Supply, slots: &[crate::circuit::Slot], change: &crate::search::Change) -> ChangeRecord {
+fn change_record(supply: &Supply, slots: &[crate::circuit::Slot], change: &Change, bodies: u64) -> ChangeRecord {
     let kind: Kind = slots[change.slot].kind;
     let lot = supply.lot_of(change.to);
+    let need = supply.need(change.to, bodies);
+    let available = lot.and_then(|lot| lot.available);
+    let bought = supply.has_stock() && !supply.suffices(change.to, bodies);
     ChangeRecord {
         slot: slots[change.slot].name.clone(),
         from: format_part(change.from.value, kind),
         to: format_part(change.to.value, kind),
+        need: supply.has_stock().then_some(need),
+        available,
+        to_buy: if bought { need - available.unwrap_or(0).min(need) } else { 0 },
         id: lot.and_then(|lot| lot.id()).map(str::to_owned),
         lines: lot.map_or(Vec::new(), |lot| lot.lines.iter().map(|line| line.line).collect()),
     }
@@ -214,6 +231,9 @@ pub fn write_swap_table(record: &SwapRecord, width: usize, out: &mut dyn Write) 
     let limit = unbroken(&error_in_words(record.unit, record.error_limit));
     let by = if record.ranked_by == "built" { "the section as built" } else { "the target" };
     let statement = match &record.reason {
+        None if record.replacements.is_empty() => {
+            format!("proved: no replacement within {limit} of {by} exists with so few changes")
+        }
         None => format!("proved: within {limit} of {by} no better replacement exists with as few changes"),
         Some(reason) => format!("stopped, {reason}: better replacements may exist"),
     };
@@ -227,7 +247,10 @@ pub fn write_swap_table(record: &SwapRecord, width: usize, out: &mut dyn Write) 
     text += &paragraph("Search: ", &total, width);
     text += "\n";
     if record.replacements.is_empty() {
-        let line = format!("Nothing within {limit} of {by} replaces what is gone: let more slots change (--others).");
+        let line = format!(
+            "Nothing within {limit} of {by} replaces what is gone. More slots that may change (--others), wider shelves or \
+             parts to buy, or a larger --error-limit may help."
+        );
         text += &paragraph("", &line, width);
     } else {
         text += &grid(&columns(record), 1, width);
@@ -235,6 +258,9 @@ pub fn write_swap_table(record: &SwapRecord, width: usize, out: &mut dyn Write) 
             record.replacements.iter().flat_map(|row| &row.changes).map(|change| change.slot.as_str()).collect();
         if record.replacements.iter().any(|row| row.changes.len() < changed.len()) {
             text += &paragraph("= ", "stays as it is", width);
+        }
+        if record.replacements.iter().flat_map(|row| &row.changes).any(|change| change.to_buy > 0) {
+            text += &paragraph("! ", "must be bought, or there are not enough", width);
         }
     }
     if !record.impossible.is_empty() {
@@ -270,6 +296,7 @@ fn columns(record: &SwapRecord) -> Vec<Column> {
         if rows().any(|row| change(row).is_some()) {
             let cell = |row: &ReplacementRecord| match change(row) {
                 None => "=".to_string(),
+                Some(ChangeRecord { to, to_buy: 1.., .. }) => format!("{to} !"),
                 Some(ChangeRecord { to, id: Some(id), .. }) => format!("{to} {}", super::printable(&id)),
                 Some(ChangeRecord { to, .. }) => to,
             };

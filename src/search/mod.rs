@@ -3,19 +3,23 @@
 mod assign;
 mod board;
 mod canonical;
+mod combine;
 mod family;
 mod front;
 mod ideal;
 mod limits;
 mod model;
+mod outcome;
+mod prepared;
 mod problem;
 mod section;
 mod shortage;
 mod swap;
 mod window;
 
-pub use board::{BuiltBoard, Chosen, Outcome, Part, Row, SectionSummary, shortlist};
+pub use board::shortlist;
 pub use front::{End, ErrorKey, Proof};
 pub use limits::{Monitor, Progress, StopReason, Unwatched};
+pub use outcome::{BuiltBoard, Chosen, Outcome, Part, Row, SectionSummary};
 pub use problem::{Goals, Joint, Pairs, Problem, Rank, SectionProblem};
 pub use swap::{Change, Reference, Replacement, Replacements, SwapProblem, replacements};

@@ -6,10 +6,11 @@ use crate::parts::{Choice, Shelf, Supply};
 use crate::target::{Criterion, Figures, Section, Yardstick};
 use crate::units::{Kind, Value};
 
-use super::board::{Chosen, chosen, unmet};
 use super::front::{ErrorKey, Found, Proof};
 use super::limits::{Monitor, StopReason};
 use super::model::{Group, Model};
+use super::outcome::Chosen;
+use super::prepared::{chosen, unmet};
 use super::problem::{Goals, SectionProblem};
 use super::section;
 
