@@ -301,16 +301,31 @@ fn pairs_of_tied_and_of_silent_slots() {
 }
 
 #[test]
+fn an_impedance_range_with_pairs() {
+    // What counts is the resistance in the slot.
+    let joints = [Joint::Series, Joint::Parallel];
+    for impedance in [(3e3, 1e4), (1.5e4, 5e4)] {
+        for drawer in [Drawer::of("6k8 12k 27k", "4n7 47n"), Drawer::lines(&["R,6k8,3,,,", "R,12k,2,,,", "C,47n,9,,,"])] {
+            let section = paired(sallen_key(&drawer), R, &joints, 2);
+            let goals = Goals { impedance: Some(impedance), ..wide(40.0) };
+            compare_drawer("impedance", &drawer.problem(section, goals));
+        }
+    }
+}
+
+#[test]
 fn two_of_one_value_need_no_new_part_number() {
-    // 10k || 10k = 5k and 10n || 10n = 20n meet f0 with one value each; no single parts do.
-    let drawer = Drawer::lines(&["R,10k,2,,,", "R,47k,9,,,", "C,10n,2,,,", "C,1n,9,,,"]);
-    let section =
-        drawer.section(first(Shape::FirstOrderLowPass, 1.0 / (TAU * 5.01e3 * 20e-9), 1.0), "rc-low-pass", "low-pass");
-    let section = paired(paired(section, R, &[Joint::Parallel], 2), C, &[Joint::Parallel], 2);
-    let outcome = compare_drawer("equal pairs", &drawer.problem(section, wide(40.0)));
-    let best = &outcome.rows[0];
-    assert_eq!((best.part_numbers, best.placed_parts), (Some(2), 4));
-    assert!(best.sections[0].parts.iter().all(|part| part.pieces[0] == part.pieces[1]));
+    // R/2, 2R or 2C meets f0 with one resistor and one capacitor value; no single parts do.
+    for (kind, joint, rc) in [(R, Joint::Parallel, 5e3 * 10e-9), (R, Joint::Series, 2e-4), (C, Joint::Parallel, 2e-4)] {
+        let drawer = Drawer::lines(&["R,10k,2,,,", "R,27k,9,,,", "C,10n,2,,,", "C,1n,9,,,"]);
+        let target = first(Shape::FirstOrderLowPass, 1.0 / (TAU * rc * 1.001), 1.0);
+        let section = paired(drawer.section(target, "rc-low-pass", "low-pass"), kind, &[joint], 1);
+        let outcome = compare_drawer("equal pairs", &drawer.problem(section, wide(40.0)));
+        let best = &outcome.rows[0];
+        assert_eq!((best.part_numbers, best.placed_parts), (Some(2), 3));
+        let pair = best.sections[0].parts.iter().find(|part| part.joint == Some(joint)).unwrap();
+        assert!(pair.kind == kind && pair.pieces[0] == pair.pieces[1]);
+    }
 }
 
 // ---- measured parts -----------------------------------------------------------------------------------------------
@@ -410,8 +425,8 @@ fn lines(numbers: &mut Numbers, kind: Kind, count: usize, boards: u64, with: Wit
     };
     let prices = 1 + numbers.below(4);
     let price = |numbers: &mut Numbers| match with.cost {
-        true => format!("0.{}", 1 + numbers.below(prices)),
-        false => String::new(),
+        false if numbers.below(3) == 0 => String::new(),
+        _ => format!("0.{}", 1 + numbers.below(prices)),
     };
     for value in drawn_values(numbers, kind, count) {
         let text = format_part(value, kind);
@@ -433,7 +448,7 @@ fn lines(numbers: &mut Numbers, kind: Kind, count: usize, boards: u64, with: Wit
         for _ in 0..measured {
             let off = 970 + numbers.below(61);
             let true_value = Value::new(value.mantissa() * off as u64, value.exponent() - 3).unwrap();
-            let there = ["", "1", "1", "0"][numbers.below(4)];
+            let there = ["", "1", "2", "0"][numbers.below(4)];
             // With several boards at one price: what a board costs does not depend on which of them it has.
             let price = if boards > 1 { price_here.clone() } else { price(numbers) };
             lines.push(format!("{letter},{text},{there},1%,{price},{}", format_part(true_value, kind)));
@@ -562,9 +577,15 @@ fn drawn(numbers: &mut Numbers, with: With) -> Option<(Recipe, Problem)> {
         _ => Rank::Error,
     };
     goals.each_board_its_own = with.measured && numbers.below(2) == 0;
+    goals.alternatives = [0, 0, 0, 2][numbers.below(4)];
+    let silent = section.equal.iter().any(|equal| section.circuit.ties.contains(equal));
+    if with.demands && !silent && numbers.below(4) == 0 {
+        goals.impedance = Some([(8e3, 2e4), (3e3, 1e4), (1.5e4, 5e4)][numbers.below(3)]);
+    }
     let mut problem = drawer.problem(section, goals);
     let w0 = problem.sections[0].target.w0;
     problem.criterion.band = [None, Some((w0 / 3.0, w0 * 2.0)), Some((w0 / 2.0, w0 * 4.0))][numbers.below(3)];
+    problem.criterion.ignore_gain = !all_pass && numbers.below(6) == 0;
     Some((recipe, problem))
 }
 
