@@ -48,6 +48,34 @@
 //! # }
 //! ```
 //!
+//! # From a specification to sections
+//!
+//! A [`target::Specification`] says what is asked of a whole filter, its [`design`](target::Specification::design) gives
+//! poles and zeros, and [`search::cascade`] puts them together into sections, with headroom in mind.
+//!
+//! ```
+//! use roundwell::target::{Approximation, Band, EdgeAt, Parts, Reference, Specification, StopBand};
+//!
+//! # fn main() -> Result<(), Box<dyn std::error::Error>> {
+//! // -3.01 dB at 1 rad/s, 24 dB from 2 rad/s on.
+//! let design = Specification {
+//!     approximation: Approximation::Butterworth,
+//!     band: Band::LowPass(1.0),
+//!     edge_at: EdgeAt::HalfPower,
+//!     ripple: None,
+//!     attenuation: None,
+//!     reference: Reference::Peak,
+//!     order: None,
+//!     stop_band: Some(StopBand { edges: (2.0, 2.0), attenuation: 24.0 }),
+//! }
+//! .design()?;
+//! let q: Vec<String> =
+//!     Parts::new(&design.roots).poles.iter().filter_map(|poles| Some(format!("{:.4}", poles.q?))).collect();
+//! assert_eq!((design.order, q), (4, vec!["0.5412".to_string(), "1.3066".to_string()]));
+//! # Ok(())
+//! # }
+//! ```
+//!
 //! # The layers
 //!
 //! Imports run one way: [`cli`] → [`report`], [`job`] → [`verify`] → [`search`] → [`circuit`] → [`target`], [`parts`] →

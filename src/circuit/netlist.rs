@@ -283,6 +283,18 @@ impl Circuit {
         self.slots.iter().position(|s| s.name == name)
     }
 
+    /// The transfer function from the source to any node, in the slot admittances, with the slots filled as for an
+    /// output; `None` where the network does not determine it.
+    pub fn transfer_to(&self, node: usize, output: &Output) -> Option<Transfer> {
+        let ends: Vec<[usize; 2]> = self.slots.iter().map(|s| s.nodes).collect();
+        let capacitors: Vec<bool> = self.slots.iter().map(|s| s.kind == Kind::Capacitor).collect();
+        let op_amps: Vec<[usize; 3]> = self.op_amps.iter().map(|o| [o.plus, o.minus, o.out]).collect();
+        let network = Network { nodes: self.nodes.len(), slots: &ends, capacitors: &capacitors, op_amps: &op_amps };
+        let keep: Vec<Option<usize>> =
+            (0..self.slots.len()).map(|slot| (!output.without.contains(&slot)).then_some(slot)).collect();
+        Some(network.transfer(node)?.substituted(&keep, self.slots.len()))
+    }
+
     /// How many slots of a kind an output fills.
     pub fn count(&self, output: &Output, kind: Kind) -> usize {
         output.filled(self).filter(|&s| self.slots[s].kind == kind).count()

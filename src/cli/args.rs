@@ -9,6 +9,8 @@ use crate::parts::STOCK_COLUMNS;
 use crate::report::CSV_COLUMNS;
 use crate::target::Shape;
 
+pub use super::sections_args::SectionsArgs;
+
 /// From ideal filter sections to resistors and capacitors that can be bought, with a proof.
 #[derive(Debug, Parser)]
 #[command(name = "roundwell", version, max_term_width = 100, after_help = AFTER_HELP)]
@@ -19,8 +21,9 @@ pub struct Arguments {
 }
 
 const AFTER_HELP: &str = "\
-Example:
+Examples:
   roundwell shortlist --shape low-pass --f0 1k --q 0.7071 --circuit tow-thomas
+  roundwell sections --approximation butterworth --response low-pass --edge 1k --order 5
 
 Exit codes:
   0    found
@@ -38,6 +41,9 @@ pub enum Command {
     /// Replace parts of a built section that are gone, with as few other changes as possible.
     #[command(after_help = SWAP_HELP, allow_negative_numbers = true)]
     Swap(Box<SwapArgs>),
+    /// Turn the specification of a filter into sections, ready for a shortlist.
+    #[command(after_help = super::sections_args::HELP, allow_negative_numbers = true)]
+    Sections(Box<SectionsArgs>),
     /// List the circuits, or show one: nodes, slots, outputs, what each slot sets.
     Circuits(CircuitsArgs),
     /// Show a series of preferred values, or the neighbours of values in it.
@@ -449,6 +455,20 @@ mod tests {
     }
 
     #[test]
+    fn every_key_of_a_filter_has_a_flag() {
+        let command = Arguments::command();
+        let sections = command.find_subcommand("sections");
+        let flags: Vec<&str> = sections
+            .map(|command| command.get_arguments().filter_map(|arg| arg.get_long()).collect())
+            .unwrap_or_default();
+        let all = keys("(filter: (zzzzzzzzz: 1))");
+        assert!(all.len() > 15, "{all:?}");
+        for key in &all {
+            assert!(flags.contains(&key.replace('_', "-").as_str()), "--{key}");
+        }
+    }
+
+    #[test]
     fn every_key_of_a_job_file_has_a_flag() {
         let command = Arguments::command();
         let shortlist = command.find_subcommand("shortlist");
@@ -458,7 +478,7 @@ mod tests {
         let mut all = keys("(zzzzzzzzz: 1)");
         all.extend(keys("(sections: [(zzzzzzzzz: 1)])"));
         assert!(all.len() > 30, "{all:?}");
-        for key in all.iter().filter(|key| *key != "sections") {
+        for key in all.iter().filter(|key| !["sections", "filter"].contains(&key.as_str())) {
             let flag = if key == "slots" { "slot".to_string() } else { key.replace('_', "-") };
             assert!(flags.contains(&flag), "--{flag}");
         }

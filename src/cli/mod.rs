@@ -6,6 +6,8 @@ mod failure;
 mod files;
 mod output;
 mod progress;
+mod sections;
+mod sections_args;
 mod settings;
 mod shortlist;
 mod stock;
@@ -46,6 +48,7 @@ pub fn run(words: impl IntoIterator<Item = OsString>) -> ExitCode {
     let command = || match &arguments.command {
         Command::Shortlist(args) => shortlist::run(args),
         Command::Swap(args) => swap::run(args),
+        Command::Sections(args) => sections::run(args),
         Command::Circuits(args) => circuits::run(args),
         Command::Values(args) => values::run(args),
         Command::Stock(args) => stock::run(args),

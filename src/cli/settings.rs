@@ -91,19 +91,19 @@ impl Settings {
 
 /// The job file as read; empty where there is none.
 #[derive(Debug, Default)]
-struct Source {
-    path: Option<PathBuf>,
+pub(super) struct Source {
+    pub path: Option<PathBuf>,
     name: String,
     text: String,
 }
 
 impl Source {
-    fn read(path: &Path) -> Result<Source, Failure> {
+    pub fn read(path: &Path) -> Result<Source, Failure> {
         let name = if path == Path::new("-") { "standard input".to_string() } else { path.display().to_string() };
         Ok(Source { path: Some(path.to_path_buf()), name, text: read_text(path)? })
     }
 
-    fn job(&self) -> Result<JobFile, Failure> {
+    pub fn job(&self) -> Result<JobFile, Failure> {
         match self.path {
             Some(_) => JobFile::parse(&self.text).map_err(|faults| self.failure(faults, Vec::new(), true)),
             None => Ok(JobFile::default()),
@@ -111,7 +111,7 @@ impl Source {
     }
 
     /// The folder from which the job names circuit files: its own.
-    fn folder(&self) -> PathBuf {
+    pub fn folder(&self) -> PathBuf {
         self.path.as_deref().and_then(Path::parent).map(Path::to_path_buf).unwrap_or_default()
     }
 
@@ -126,7 +126,7 @@ impl Source {
     }
 
     /// Faults of the job, and before them those of the circuit files that it names.
-    fn failure(&self, faults: Vec<Fault>, mut others: Vec<Faulty>, is_first_round: bool) -> Failure {
+    pub fn failure(&self, faults: Vec<Fault>, mut others: Vec<Faulty>, is_first_round: bool) -> Failure {
         let faults = match self.path {
             Some(_) => located(&self.text, faults),
             None => faults.into_iter().map(without_file).collect(),
@@ -138,7 +138,8 @@ impl Source {
 
 /// A fault of a job that no file describes: what stands for a key is its flag.
 fn without_file(mut fault: Fault) -> Fault {
-    if let Some(rest) = fault.path.strip_prefix("sections[0]") {
+    let within = ["sections[0]", "filter"].iter().find_map(|key| fault.path.strip_prefix(key));
+    if let Some(rest) = within {
         let key = rest.trim_start_matches('.').split(['.', '[']).next().unwrap_or_default();
         fault.path = if key.is_empty() { String::new() } else { format!("--{}", key.replace('_', "-")) };
     }
@@ -146,16 +147,16 @@ fn without_file(mut fault: Fault) -> Fault {
 }
 
 /// A flag's value, where it is given.
-fn given<T: From<U>, U>(flag: &'static str, value: Option<U>) -> Option<Given<T>> {
+pub(super) fn given<T: From<U>, U>(flag: &'static str, value: Option<U>) -> Option<Given<T>> {
     value.map(|value| Given::flag(flag, value))
 }
 
-fn scalar(flag: &'static str, text: &Option<String>) -> Option<Given<Scalar>> {
+pub(super) fn scalar(flag: &'static str, text: &Option<String>) -> Option<Given<Scalar>> {
     given(flag, text.as_deref())
 }
 
 /// Keeps a value, or notes its fault.
-fn noted<T>(faults: &mut Vec<Fault>, read: Option<Result<T, Fault>>) -> Option<T> {
+pub(super) fn noted<T>(faults: &mut Vec<Fault>, read: Option<Result<T, Fault>>) -> Option<T> {
     match read? {
         Ok(value) => Some(value),
         Err(fault) => {
@@ -200,6 +201,7 @@ fn lay_over(job: &mut JobFile, args: &ShortlistArgs) -> Vec<Fault> {
     let over = JobFile {
         title: scalar("--title", &args.output.title),
         sections: None,
+        filter: None,
         circuit: circuit.as_deref().map(|name| Given::flag("--circuit", named_circuit(name, args).as_str())),
         output: scalar("--output", output),
         sign: sign
@@ -236,6 +238,9 @@ fn lay_over(job: &mut JobFile, args: &ShortlistArgs) -> Vec<Fault> {
         clear(&mut section.resistors, &over.resistors);
         clear(&mut section.capacitors, &over.capacitors);
         clear(&mut section.pairs, &over.pairs);
+    }
+    if let Some(filter) = &mut job.filter {
+        clear(&mut filter.value.circuits, &over.circuit);
     }
     job.overlay(over);
     exclude(
@@ -281,7 +286,7 @@ fn rank_of(name: &str) -> Rank {
 }
 
 /// Takes away what a section says where a flag says something else.
-fn clear<T>(own: &mut Option<Given<T>>, over: &Option<Given<T>>) {
+fn clear<T, U>(own: &mut Option<Given<T>>, over: &Option<Given<U>>) {
     if over.is_some() {
         *own = None;
     }

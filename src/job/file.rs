@@ -10,7 +10,7 @@ use serde::de::{Deserializer, Error, MapAccess, SeqAccess, Visitor};
 use super::given::{Given, Scalar, Scalars};
 use super::shelf::Shelves;
 use crate::search::{Joint, Rank};
-use crate::target::Shape;
+use crate::target::{Approximation, Reference, Shape};
 use crate::text::{self, Fault};
 
 /// Defines a structure of the job file: every key is optional and none is unknown.
@@ -37,8 +37,10 @@ written! {
     JobFile as "Job" {
         /// The title.
         title: Scalar,
-        /// The sections in signal order; the only key that a job cannot do without.
+        /// The sections in signal order; a job has these or a filter.
         sections: Vec<SectionFile>,
+        /// A filter from whose specification the sections follow.
+        filter: FilterFile,
         /// Identifier of the circuit of each section that names none; otherwise shape and sign of the gain decide.
         circuit: Scalar,
         /// Name of the output to take; otherwise the first of the wanted shape and sign.
@@ -134,6 +136,47 @@ impl<'de> Deserialize<'de> for Joints {
 }
 
 written! {
+    /// A filter: what is asked of it, and how its sections are put together.
+    FilterFile as "Filter" {
+        /// The approximation.
+        approximation: Approximation,
+        /// Low-pass, high-pass, band-pass or band-stop.
+        response: Response,
+        /// Pass-band edge of a low-pass or high-pass, Hz.
+        edge: Scalar,
+        /// Pass-band edges of a band-pass or band-stop, Hz.
+        edges: (Scalar, Scalar),
+        /// What holds at the edges: `half-power`, `ripple`, `attenuation`, or dB under the reference; the ripple where one
+        /// is given, otherwise half power, for Linkwitz-Riley half amplitude.
+        edge_at: Scalar,
+        /// Delay at DC of a Bessel low-pass, in place of its edge.
+        delay: Scalar,
+        /// Order of the low-pass prototype; otherwise the least that meets the stop band.
+        order: Scalar,
+        /// Ripple of the pass band, dB.
+        ripple: Scalar,
+        /// Attenuation of the stop band, dB under the reference.
+        attenuation: Scalar,
+        /// Edge of the stop band of a low-pass or high-pass, Hz.
+        stop_edge: Scalar,
+        /// Edges of the stop bands of a band-pass, or of the stop band of a band-stop, Hz.
+        stop_edges: (Scalar, Scalar),
+        /// Gain at the reference, plain ratio without sign; 1.
+        gain: Scalar,
+        /// The gain from which levels count; the peak of the pass band.
+        reference: Reference,
+        /// Which zeros go with which poles: `headroom`, `nearest`, or the numbers of the zeros by poles.
+        pairing: Scalars,
+        /// The order of the sections: `headroom`, `rising-q`, `falling-q`, or the numbers of the poles.
+        sequence: Scalars,
+        /// The gains of the sections: `headroom`, `equal`, or a list in signal order.
+        gains: Scalars,
+        /// Circuits, of which each section takes the first that gives its shape; otherwise the usual one.
+        circuits: Scalars,
+    }
+}
+
+written! {
     /// A section of a job file.
     SectionFile as "Section" {
         /// The name; otherwise the number of the section, from 1.
@@ -194,6 +237,34 @@ impl JobFile {
     /// The faults of the text, with their spans: see [`text::parse`].
     pub fn parse(text: &str) -> Result<JobFile, Vec<Fault>> {
         text::parse(text)
+    }
+}
+
+/// The response of a filter.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Deserialize)]
+pub enum Response {
+    /// Low-pass.
+    LowPass,
+    /// High-pass.
+    HighPass,
+    /// Band-pass.
+    BandPass,
+    /// Band-stop.
+    BandStop,
+}
+
+impl Response {
+    /// Every response.
+    pub const ALL: [Response; 4] = [Response::LowPass, Response::HighPass, Response::BandPass, Response::BandStop];
+
+    /// The name in running text.
+    pub fn name(self) -> &'static str {
+        match self {
+            Response::LowPass => "low-pass",
+            Response::HighPass => "high-pass",
+            Response::BandPass => "band-pass",
+            Response::BandStop => "band-stop",
+        }
     }
 }
 

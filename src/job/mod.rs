@@ -6,6 +6,7 @@
 
 mod desk;
 mod file;
+mod filter;
 mod given;
 mod goals;
 mod resolve;
@@ -17,7 +18,10 @@ mod stock;
 #[cfg(test)]
 mod tests;
 
-pub use file::{JobFile, Joints, MeasureFile, PairsFile, SectionFile, Sign, SlotFile, Slots, Untie};
+pub use file::{
+    FilterFile, JobFile, Joints, MeasureFile, PairsFile, Response, SectionFile, Sign, SlotFile, Slots, Untie,
+};
+pub use filter::resolve_filter;
 pub use given::{Given, Scalar, Scalars};
 pub use resolve::{Job, resolve};
 pub use shelf::{ShelfFile, Shelves};

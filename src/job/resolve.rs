@@ -5,6 +5,7 @@ use std::time::Duration;
 
 use super::desk::{At, Checked, Desk, Noted, Place};
 use super::file::{JobFile, SectionFile};
+use super::filter;
 use super::goals::{Delicate, check_impedance, criterion, goals};
 use super::section::{Circuits, Written, has_inexact_null};
 use super::shelf::shelf;
@@ -47,12 +48,6 @@ pub fn resolve(
 
 fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits, stock: Option<&Stock>) -> Checked<Job> {
     let root = Place::job();
-    let files: &[SectionFile] = job.sections.as_ref().map_or(&[], |given| &given.value);
-    let place = root.key("sections");
-    if files.is_empty() {
-        let help = "write sections: [(shape: LowPass, f0: \"1 kHz\", q: 0.7071)], for example";
-        desk.note(&place, "the job has no sections", help);
-    }
     if let Some(At { value: title, place }) = root.find("title", &job.title)
         && let Some(message) = control_character(title.text())
     {
@@ -60,13 +55,12 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits, stock: Option<&S
     }
     // A stock that cannot be used leaves nothing to say of the shelves; all else is still checked, as if there were none.
     let source = Source::new(desk, job, stock);
-    let source = &match source {
+    let source = match &source {
         Ok(source) => source,
-        Err(Noted) => Source::new(desk, &JobFile::default(), None)?,
+        Err(Noted) => &Source::default(),
     };
-    let resistors = shelf(desk, root.find("resistors", &job.resistors), Kind::Resistor, source);
-    let capacitors = shelf(desk, root.find("capacitors", &job.capacitors), Kind::Capacitor, source);
-    let of_kind = ByKind { resistors, capacitors };
+    let of_kind = of_job(desk, job, source);
+    let (files, place) = files(desk, job, circuits);
 
     let mut names: Vec<String> = Vec::new();
     let mut sections = Vec::new();
@@ -122,6 +116,40 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits, stock: Option<&S
         },
         time_limit: time_limit?,
     })
+}
+
+/// The shelves of the job.
+pub(super) fn of_job(desk: &mut Desk, job: &JobFile, source: &Source) -> ByKind {
+    let root = Place::job();
+    ByKind {
+        resistors: shelf(desk, root.find("resistors", &job.resistors), Kind::Resistor, source),
+        capacitors: shelf(desk, root.find("capacitors", &job.capacitors), Kind::Capacitor, source),
+    }
+}
+
+/// The shelves of the job as if all could be bought: levels within a filter do not ask what is in stock.
+pub(super) fn of_series(desk: &mut Desk, job: &JobFile) -> ByKind {
+    of_job(desk, job, &Source::default())
+}
+
+/// The sections as they are written, or as the filter gives them, and where they stand.
+fn files(desk: &mut Desk, job: &JobFile, circuits: Circuits) -> (Vec<SectionFile>, Place) {
+    let root = Place::job();
+    let files = job.sections.as_ref().map_or(Vec::new(), |given| given.value.clone());
+    if let Some(at) = root.find("filter", &job.filter) {
+        if !files.is_empty() {
+            let help = "leave out either the filter or the sections";
+            desk.note(&at.place, "the job has a filter and sections", help);
+        }
+        let of_kind = of_series(desk, job);
+        return (filter::sections(desk, job, &at, &of_kind, circuits).unwrap_or_default(), at.place);
+    }
+    let place = root.key("sections");
+    if files.is_empty() {
+        let help = "write sections: [(shape: LowPass, f0: \"1 kHz\", q: 0.7071)], for example";
+        desk.note(&place, "the job has no sections", help);
+    }
+    (files, place)
 }
 
 fn section(

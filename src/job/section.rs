@@ -265,7 +265,7 @@ pub(super) fn has_inexact_null(section: &SectionProblem) -> bool {
 
 /// The gain of an output as its shape defines it, where it is the same for all part values once the slots of each
 /// group are equal.
-fn fixed_gain(output: &Output, slots: usize, equal: &[Vec<usize>], target: &Section) -> Option<f64> {
+pub(super) fn fixed_gain(output: &Output, slots: usize, equal: &[Vec<usize>], target: &Section) -> Option<f64> {
     let transfer = merged(output, slots, equal);
     let power = match target.shape {
         Shape::HighPass => 2,
@@ -286,13 +286,13 @@ fn sign_of(target: &Section) -> i8 {
 }
 
 /// Whether an output can have a gain of that sign.
-fn has_sign(output: &Output, wanted: i8) -> bool {
+pub(super) fn has_sign(output: &Output, wanted: i8) -> bool {
     output.gain_sign().is_none_or(|sign| sign == wanted)
 }
 
 /// The circuit that is taken where a job names none: the first usual one with a gain of the wanted sign, or otherwise
 /// the first.
-fn usual_circuit(target: &Section, either: bool) -> &'static str {
+pub(super) fn usual_circuit(target: &Section, either: bool) -> &'static str {
     let usual = usual_circuits(target);
     let wanted = sign_of(target);
     let fits = |id: &&&str| {

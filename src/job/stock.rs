@@ -10,7 +10,8 @@ use crate::parts::{Buying, Choice, Lot, LotId, Shelf, Stock, Supply};
 use crate::search::{Joint, Pairs, Rank};
 use crate::units::{Kind, Value, format_part};
 
-/// What may be taken from stock or bought.
+/// What may be taken from stock or bought; by default everything on a shelf.
+#[derive(Default)]
 pub(super) struct Source {
     pub supply: Supply,
     /// Whether ceramics of class 2 are left in the drawer.

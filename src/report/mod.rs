@@ -3,6 +3,7 @@
 mod csv;
 mod detail;
 mod drawn;
+mod filter;
 mod json;
 mod layout;
 mod need;
@@ -17,6 +18,10 @@ mod sample;
 
 pub use csv::{CSV_COLUMNS, write_csv};
 pub use drawn::{BoardRecord, SupplyRecord, TakenRecord};
+pub use filter::{
+    ChoiceRecord, FilterRecord, LevelRecord, NotchRecord, OpAmpRecord, PoleRecord, SECTIONS_FORMAT, SectionOfFilter,
+    SectionsRecord, StopBandRecord, SwingRecord, write_sections_job, write_sections_json, write_sections_table,
+};
 pub use json::write_json;
 pub use layout::{Align, Column, grid, paragraph, printable, unbroken};
 pub use need::{NEED_FORMAT, NeedLine, NeedRecord, Quantity, write_need_json, write_need_table};

@@ -3,6 +3,7 @@
 mod assign;
 mod board;
 mod canonical;
+mod cascade;
 mod combine;
 mod family;
 mod front;
@@ -18,6 +19,10 @@ mod swap;
 mod window;
 
 pub use board::shortlist;
+pub use cascade::{
+    Cascade, CascadeError, CascadeRequest, CascadeSection, Filter, Gains, Level, OpAmpLevel, Pairing, Pairings,
+    Sequence, Stage, Swing, cascade, ideal_parts,
+};
 pub use front::{End, ErrorKey, Proof};
 pub use limits::{Monitor, Progress, StopReason, Unwatched};
 pub use outcome::{BuiltBoard, Chosen, Outcome, Part, Row, SectionSummary};

@@ -305,6 +305,19 @@ pub fn format_si(value: f64, digits: usize, unit: &str) -> String {
     join(&format!("{sign}{number}"), &format!("{prefix}{unit}"))
 }
 
+/// A number rounded to `digits` significant digits, as short as it can be written; it reads back as the same number.
+///
+/// ```
+/// use roundwell::units::rounded;
+///
+/// assert_eq!(rounded(2.0 / 3.0, 4), "0.6667");
+/// assert_eq!(rounded(1500.0, 10), "1500");
+/// ```
+pub fn rounded(number: f64, digits: usize) -> String {
+    let text = format!("{number:.*e}", digits.max(1) - 1);
+    text.parse::<f64>().map_or(text, |number| number.to_string())
+}
+
 fn join(number: &str, unit: &str) -> String {
     let blank = if unit.is_empty() { "" } else { " " };
     format!("{number}{blank}{unit}")

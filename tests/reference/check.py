@@ -10,12 +10,14 @@ For every output of every circuit a section is searched, and the first row's par
 - their error, recomputed from the nodal solve and scipy's ideal response on the frequencies that README.md states;
 - their counts.
 
-All rows of the example jobs are recomputed the same way, and the best row of three part numbers is compared with all
+Poles, zeros and least orders of `roundwell sections` are compared with scipy.signal, and where scipy has no such filter
+with the definition of its magnitude. All rows of the example jobs are recomputed the same way, and the best row of three part numbers is compared with all
 sets of so many. The last line counts the checks; the exit code is 1 if one failed.
 """
 
 import itertools
 import json
+import math
 import subprocess
 import sys
 import tempfile
@@ -333,6 +335,121 @@ def check_all_sets(program, checks):
     checks.close("three part numbers, all sets", listed.get(3, np.nan), best, 1e-9)
 
 
+# The filters that scipy has: its call for an order and edges, and the flags for the same. Levels in dB.
+FILTERS = {
+    "butterworth": (lambda n, w, kind: signal.butter(n, w, kind, analog=True, output="zpk"), ""),
+    "chebyshev": (lambda n, w, kind: signal.cheby1(n, 0.5, w, kind, analog=True, output="zpk"), "--ripple 0.5"),
+    "inverse-chebyshev": (
+        lambda n, w, kind: signal.cheby2(n, 60, w, kind, analog=True, output="zpk"),
+        "--attenuation 60 --edge-at attenuation",
+    ),
+    "elliptic": (
+        lambda n, w, kind: signal.ellip(n, 0.5, 60, w, kind, analog=True, output="zpk"),
+        "--ripple 0.5 --attenuation 60",
+    ),
+    "bessel": (lambda n, w, kind: signal.bessel(n, w, kind, analog=True, output="zpk", norm="mag"), ""),
+}
+RESPONSES = {"low-pass": "low", "high-pass": "high", "band-pass": "bandpass", "band-stop": "bandstop"}
+# No time is spent on the choice of pairing and order where only poles and zeros are wanted.
+PLAIN = "--pairing nearest --sequence rising-q --gains equal --format json"
+
+
+def sections(program, flags):
+    return run(program, "sections", *flags.split(), *PLAIN.split())
+
+
+def roots(record):
+    """All poles, and the zeros that lie neither at the origin nor at infinity, rad/s."""
+    poles = []
+    for pole in record["poles"]:
+        poles += [re + 1j * im for re in pole["real"] for im in {pole["imaginary"], -pole["imaginary"]}]
+    zeros = [sign * 1j * TAU * zero["fz_hz"] for zero in record["zeros"] for sign in (1, -1)]
+    return np.array(poles), np.array(zeros)
+
+
+def miss(found, expected):
+    """The largest relative distance between two sets of roots; infinite where they differ in number."""
+    found, expected = list(found), list(expected)
+    if len(found) != len(expected):
+        return np.inf
+    worst = 0.0
+    for root in expected:
+        nearest = min(range(len(found)), key=lambda k: abs(found[k] - root))
+        worst = max(worst, abs(found.pop(nearest) - root) / abs(root))
+    return worst
+
+
+def check_poles(program, checks):
+    """Poles and zeros to 1e-10 up to order 12, in every response."""
+    for name, (expected, extra) in FILTERS.items():
+        for response, kind in RESPONSES.items():
+            for order in range(1, 13) if response == "low-pass" else (2, 3, 6):
+                two = response.startswith("band")
+                edges = np.array([900.0, 1200.0]) if two else 1000.0
+                flags = "--edges 900..1200" if two else "--edge 1000"
+                flags += f" --approximation {name} --response {response} --order {order} {extra}"
+                zeros, poles, _ = expected(order, TAU * edges, kind)
+                found = roots(sections(program, flags))
+                off = max(miss(found[0], poles), miss(found[1], [z for z in zeros if abs(z) > 1]))
+                checks.holds(f"{name} {response} {order}", off < 1e-10, f"off by {off:.2e}")
+    for order in range(1, 13):
+        record = sections(program, f"--approximation bessel --response low-pass --delay 1ms --order {order}")
+        off = miss(roots(record)[0], signal.bessel(order, 1000, analog=True, output="zpk", norm="delay")[1])
+        checks.holds(f"bessel by delay {order}", off < 1e-10, f"off by {off:.2e}")
+
+
+def check_magnitudes(program, checks):
+    """Filters that scipy does not have: their magnitude from its definition, up to order 12."""
+    legendre, polynomial = np.polynomial.legendre, np.polynomial.polynomial
+    frequencies = np.array([0.2, 0.5, 0.9, 1.0, 1.1, 1.5, 3.0])
+    for order in range(1, 13):
+        # A. Papoulis, 1958 and 1959: the integral of the square of a sum of Legendre polynomials, to 2 w^2 - 1.
+        k = (order - 1) // 2
+        terms = [(2 * i + 1) * (order % 2 == 1 or i % 2 == k % 2) for i in range(k + 1)]
+        square = polynomial.polymul(legendre.leg2poly(terms), legendre.leg2poly(terms))
+        integral = polynomial.polyint(square if order % 2 else polynomial.polymul(square, [1, 1]), lbnd=-1)
+        power = polynomial.polyval(2 * frequencies**2 - 1, integral) / polynomial.polyval(1.0, integral)
+        taylor = lambda w: sum(w ** (2 * k) / math.factorial(k) for k in range(order + 1))
+        half = optimize.brentq(lambda w: taylor(w) - 2, 0.1, 2, xtol=1e-15)
+        expected = {"legendre": 1 + power, "gaussian": taylor(half * frequencies)}
+        if order % 2 == 0:
+            expected["linkwitz-riley"] = (1 + frequencies**order) ** 2
+        for name, wanted in expected.items():
+            record = sections(program, f"--approximation {name} --response low-pass --edge 1000 --order {order}")
+            poles = roots(record)[0] / (TAU * 1000)
+            gain = np.prod(np.abs(poles))
+            found = np.prod(np.abs(1j * frequencies[:, None] - poles), axis=1) ** 2 / gain**2
+            checks.close(f"{name} {order}, magnitude", found, wanted, 1e-9 * wanted)
+
+
+def check_orders(program, checks):
+    """Least orders against scipy's, for low-pass, high-pass and band-pass."""
+    orders = {
+        "butterworth": signal.buttord,
+        "chebyshev": signal.cheb1ord,
+        "inverse-chebyshev": signal.cheb2ord,
+        "elliptic": signal.ellipord,
+    }
+    asked = [
+        ("low-pass", "--edge 1000 --stop-edge 2000", 1000, 2000),
+        ("low-pass", "--edge 1000 --stop-edge 1500", 1000, 1500),
+        ("high-pass", "--edge 1000 --stop-edge 400", 1000, 400),
+        ("band-pass", "--edges 900..1200 --stop-edges 600..1700", [900, 1200], [600, 1700]),
+        ("band-pass", "--edges 900..1200 --stop-edges 700..2500", [900, 1200], [700, 2500]),
+    ]
+    for name, expected in orders.items():
+        for response, flags, edges, stops in asked:
+            for ripple, attenuation in ((0.1, 25), (1, 40), (3, 60)):
+                order, _ = expected(np.multiply(edges, TAU), np.multiply(stops, TAU), ripple, attenuation, analog=True)
+                if order > (12 if response == "band-pass" else 24):
+                    continue
+                levels = f"--ripple {ripple} --attenuation {attenuation}"
+                record = sections(program, f"--approximation {name} --response {response} {flags} {levels}")
+                found = record["filter"]["order"]
+                label = f"{name} {response} {flags} {levels}, order"
+                checks.holds(label, found == order, f"{found} is said, {order} is there")
+
+
 def main():
     if len(sys.argv) != 2:
         sys.exit(__doc__)
@@ -347,6 +464,9 @@ def main():
                 check_output(program, checks, circuit, output, zero)
     check_examples(program, checks, circuits)
     check_all_sets(program, checks)
+    check_poles(program, checks)
+    check_magnitudes(program, checks)
+    check_orders(program, checks)
     print(f"{checks.passed} passed, {checks.failed} failed")
     sys.exit(checks.failed > 0)
 
