@@ -463,7 +463,8 @@ fn the_least_order_meets_what_is_asked_and_no_smaller_one_does() {
 }
 
 /// Linkwitz-Riley: low-pass plus high-pass of one edge have magnitude 1 everywhere (the high-pass inverted for orders
-/// 2, 6, ...). S. H. Linkwitz, Active Crossover Networks for Noncoincident Drivers, Journal of the AES 24, 1976.
+/// 2, 6, ...). S. H. Linkwitz, Active Crossover Networks for Noncoincident Drivers, Journal of the AES 24, 1976 (from
+/// memory).
 #[test]
 fn linkwitz_riley_filters_add_up_to_an_all_pass() {
     for order in [2, 4, 6, 8, 12] {
