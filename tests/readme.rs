@@ -57,9 +57,10 @@ fn console_blocks_are_what_the_program_prints() {
 }
 
 #[test]
-fn the_job_shown_is_the_example() {
+fn the_job_and_the_mask_shown_are_the_examples() {
     let job = std::fs::read_to_string("data/examples/vibration-logger.ron").unwrap();
-    assert_eq!(blocks("ron"), [job]);
+    let mask = std::fs::read_to_string("data/masks/vibration-logger.ron").unwrap();
+    assert_eq!(blocks("ron"), [job, mask]);
 }
 
 #[test]

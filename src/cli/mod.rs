@@ -10,6 +10,7 @@ mod settings;
 mod shortlist;
 mod stock;
 mod values;
+mod vet;
 
 use std::ffi::OsString;
 use std::io::{IsTerminal, Write};
@@ -47,6 +48,7 @@ pub fn run(words: impl IntoIterator<Item = OsString>) -> ExitCode {
         Command::Circuits(args) => circuits::run(args),
         Command::Values(args) => values::run(args),
         Command::Stock(args) => stock::run(args),
+        Command::Vet(args) => vet::run(args),
     };
     // The panic's own message has been told by then.
     ExitCode::from(match catch_unwind(AssertUnwindSafe(command)) {

@@ -8,6 +8,8 @@ mod desk;
 mod file;
 mod given;
 mod goals;
+mod listed;
+mod mask;
 mod resolve;
 mod section;
 mod shelf;
@@ -18,5 +20,7 @@ mod tests;
 
 pub use file::{JobFile, MeasureFile, SectionFile, Sign, SlotFile, Slots, Untie};
 pub use given::{Given, Scalar, Scalars};
+pub use listed::{Listed, ListedPart, ListedRow, ListedSection};
+pub use mask::read_mask;
 pub use resolve::{Job, resolve};
 pub use shelf::{ShelfFile, Shelves};

@@ -7,6 +7,8 @@ mod numbers;
 mod record;
 mod stock;
 mod table;
+mod vet;
+mod vet_table;
 
 #[cfg(test)]
 mod sample;
@@ -24,3 +26,8 @@ pub use stock::{
     TemperatureCoefficientRecord, ToleranceRecord, write_stock_json, write_stock_table,
 };
 pub use table::write_table;
+pub use vet::{
+    LimitRecord, MaskOutcome, OffPart, SpreadRecord, VET_FORMAT, VetRecord, VetSection, WorstRecord, YieldRecord,
+    write_vet_json,
+};
+pub use vet_table::write_vet_table;

@@ -1,0 +1,21 @@
+//! What becomes of a board once it is built: limits it has to keep, what tolerances do to it, its worst case.
+//!
+//! Nothing here prints, opens files or reads the clock, and every result is the same for any number of threads.
+
+mod built;
+mod corners;
+mod interval;
+mod mask;
+mod spread;
+mod tolerance;
+mod vetted;
+mod yields;
+
+pub use built::{Built, BuiltPart, BuiltSection, FigureSensitivity, Formula, Joint, Sensitivities};
+pub use corners::{Judge, WorstCase, worst_case};
+pub use interval::clopper_pearson;
+pub use mask::{Figure, FigureLimit, Gauge, Limit, Mask, Reference, Scratch, Standing, figure_of, has_reference};
+pub use spread::{Deviations, Quantiles, SectionSpread, Spread, deviations, spread};
+pub use tolerance::{Boards, Distribution, Draw, Tolerances};
+pub use vetted::{Conditions, MaskResult, Vetted, vet};
+pub use yields::{Sampling, Yield, estimate};
