@@ -223,6 +223,28 @@ fn a_row_is_shown_on_a_page() {
 }
 
 #[test]
+fn drift_is_shown_where_it_is_asked_for() {
+    let folder = prepared();
+    let page = |flags: &str| {
+        let output = run(folder.path(), &format!("vet list.json --row 2 {flags}"));
+        assert_eq!(output.status.code(), Some(0), "{}", err(&output));
+        let text = out(&output);
+        assert!(text.lines().all(|line| line.chars().count() <= 80), "{text}");
+        text[text.find("Drift").unwrap_or(text.len())..].to_string()
+    };
+    assert_eq!(page(""), "");
+    let full = "--temperature -20..60 --resistor-coefficient 50 --resistor-tracking 10 --capacitor-coefficient -200±100 \
+                --resistor-ageing 0.5% --capacitor-ageing 1%";
+    let shown = [page(full), page("--temperature 0..50"), page("--capacitor-ageing 2%")];
+    insta::assert_snapshot!(shown.join("\n--------\n"));
+    let output = run(folder.path(), &format!("vet list.json --row 2 --format json {full}"));
+    let value: Json = serde_json::from_slice(&output.stdout).unwrap();
+    assert_eq!(value["drift"]["kelvin"], json!([-45.0, 35.0]));
+    assert_eq!(value["drift"]["capacitors"]["coefficient_ppm"], json!([-300.0, -100.0]));
+    assert_eq!(value["drift"]["resistors"]["tracking_ppm"], 10.0);
+}
+
+#[test]
 fn json_for_scripts_is_the_same_for_any_number_of_threads() {
     let folder = prepared();
     let line = "vet list.json --row 2 --mask mask.ron --format json --reel-share 50% --distribution normal \
@@ -300,6 +322,9 @@ fn bad_input_is_told_with_its_range() {
     for line in [
         format!("vet list.json {flags}"),
         "vet list.json --row 99".to_string(),
+        "vet list.json --temperature 60..0 --resistor-coefficient x --capacitor-tracking -5 --capacitor-ageing 1"
+            .to_string(),
+        "vet list.json --resistor-coefficient 50".to_string(),
         "vet job.ron".to_string(),
         "vet none.json".to_string(),
         "vet list.json --mask none.ron".to_string(),

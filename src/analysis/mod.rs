@@ -1,9 +1,11 @@
-//! What becomes of a board once it is built: limits it has to keep, what tolerances do to it, its worst case.
+//! What becomes of a board once it is built: limits it has to keep, what tolerances, temperature and age do to it, its
+//! worst case.
 //!
 //! Nothing here prints, opens files or reads the clock, and every result is the same for any number of threads.
 
 mod built;
 mod corners;
+mod drift;
 mod interval;
 mod mask;
 mod spread;
@@ -13,6 +15,7 @@ mod yields;
 
 pub use built::{Built, BuiltPart, BuiltSection, FigureSensitivity, Formula, Joint, Sensitivities};
 pub use corners::{Judge, WorstCase, worst_case};
+pub use drift::{Climate, Drift, Extremes, FigureDrift, KindDrift, SectionDrift, drift};
 pub use interval::clopper_pearson;
 pub use mask::{Figure, FigureLimit, Gauge, Limit, Mask, Reference, Scratch, Standing, figure_of, has_reference};
 pub use spread::{Deviations, Quantiles, SectionSpread, Spread, deviations, spread};

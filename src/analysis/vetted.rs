@@ -2,6 +2,7 @@
 
 use super::built::Built;
 use super::corners::{WorstCase, worst_case};
+use super::drift::{Climate, Drift, drift};
 use super::mask::{Gauge, Mask, Standing};
 use super::spread::{Deviations, Spread, deviations, spread};
 use super::tolerance::Tolerances;
@@ -15,6 +16,8 @@ pub struct Conditions {
     pub tolerances: Tolerances,
     /// What it has to keep, where that is given.
     pub mask: Option<Mask>,
+    /// Temperature and age, where they are to be looked at.
+    pub climate: Option<Climate>,
     /// How boards are drawn.
     pub sampling: Sampling,
 }
@@ -51,6 +54,8 @@ pub struct Vetted {
     pub deviations: Deviations,
     /// The worst error that the tolerances allow.
     pub worst: WorstCase,
+    /// What temperature and age do, where that was asked.
+    pub drift: Option<Drift>,
 }
 
 impl Vetted {
@@ -89,6 +94,7 @@ pub fn vet(built: &Built, conditions: &Conditions) -> Vetted {
         spread: spread(built, tolerances, &yardstick, conditions.sampling.seed, SPREAD_BOARDS),
         deviations: deviations(built, tolerances, &yardstick),
         worst: worst_case(built, tolerances, &frequencies, &error),
+        drift: conditions.climate.as_ref().map(|climate| drift(built, climate, &yardstick)),
     }
 }
 

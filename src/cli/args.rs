@@ -340,6 +340,27 @@ pub struct VetArgs {
     /// The share of the tolerance by which all parts of one part number are off together, as from one reel.
     #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "0%")]
     pub reel_share: String,
+    /// Temperatures between which the board has to work, °C; the nominal values hold at 25 °C.
+    #[arg(long, value_name = "FROM..TO", allow_hyphen_values = true)]
+    pub temperature: Option<String>,
+    /// Temperature coefficient of the resistors, such as 100 (to either side), -200 or -200±100 [default: 100].
+    #[arg(long, value_name = "PPM/K", allow_hyphen_values = true)]
+    pub resistor_coefficient: Option<String>,
+    /// Temperature coefficient of the capacitors [default: 30, as for C0G].
+    #[arg(long, value_name = "PPM/K", allow_hyphen_values = true)]
+    pub capacitor_coefficient: Option<String>,
+    /// How far the coefficients of two resistors of different part numbers are apart at most [default: all of the range].
+    #[arg(long, value_name = "PPM/K", allow_hyphen_values = true)]
+    pub resistor_tracking: Option<String>,
+    /// The same for capacitors.
+    #[arg(long, value_name = "PPM/K", allow_hyphen_values = true)]
+    pub capacitor_tracking: Option<String>,
+    /// By how much a resistor can be off at the end of its life, to either side.
+    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "0%")]
+    pub resistor_ageing: String,
+    /// By how much a capacitor can be off at the end of its life, to either side.
+    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "0%")]
+    pub capacitor_ageing: String,
     /// Boards to draw at most for the yield.
     #[arg(long, value_name = "COUNT", allow_hyphen_values = true, default_value = "100000")]
     pub boards: String,

@@ -11,6 +11,7 @@ mod shortlist;
 mod stock;
 mod values;
 mod vet;
+mod vet_settings;
 
 use std::ffi::OsString;
 use std::io::{IsTerminal, Write};

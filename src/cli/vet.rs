@@ -8,82 +8,31 @@ use super::args::{ShowFormat, VetArgs};
 use super::failure::{Failure, Faulty};
 use super::files::{read_circuit, read_text};
 use super::output::Output;
+use super::vet_settings::VetSettings;
 use super::{FOUND, NOTHING_WITHIN_LIMITS};
-use crate::analysis::{Built, Conditions, Distribution, Mask, Sampling, Tolerances, vet};
+use crate::analysis::{Built, Conditions, Mask, vet};
 use crate::circuit::{Circuit, find};
 use crate::job::{Listed, read_mask};
 use crate::report::{VetRecord, write_vet_json, write_vet_table};
 use crate::text::{Fault, located};
-use crate::units::parse_number;
 
 /// Runs the command and gives its exit code.
 ///
 /// # Errors
 /// Bad input, an output that cannot be written.
 pub fn run(args: &VetArgs) -> Result<u8, Failure> {
-    let (tolerances, sampling) = settings(args)?;
+    let VetSettings { tolerances, sampling, climate } = VetSettings::new(args)?;
     let built = board(args)?;
     let mask = args.mask.as_deref().map(|path| mask(path, &built)).transpose()?;
     let output = Output::open(args.out.as_deref())?;
     let pool = rayon::ThreadPoolBuilder::new().num_threads(args.threads.map_or(0, usize::from)).build();
     let pool = pool.map_err(|error| Failure::Threads(error.to_string()))?;
-    let conditions = Conditions { tolerances, mask, sampling };
+    let conditions = Conditions { tolerances, mask, climate, sampling };
     let found = pool.install(|| vet(&built, &conditions));
     let record = VetRecord::new(&built, args.row, &conditions, &found);
     output.write(&written(&record, args.format, usize::from(args.width))?)?;
     let missed = record.mask.as_ref().is_some_and(|mask| matches!(mask.fails, Some("target" | "nominal")));
     Ok(if missed { NOTHING_WITHIN_LIMITS } else { FOUND })
-}
-
-/// Tolerances and sampling as the flags say, with all their faults.
-fn settings(args: &VetArgs) -> Result<(Tolerances, Sampling), Failure> {
-    let mut faults = Vec::new();
-    let mut ratio = |flag: &str, text: &str, name: &str, low: f64, high: f64, example: &str| -> f64 {
-        let read = parse_number(text).map_err(|error| error.to_string());
-        let is_in = |number: &f64| (low..=high).contains(number) && (flag != "--interval" || *number < 0.5);
-        match read {
-            Ok(_) if !text.contains('%') && text.trim() != "0" => {
-                let message = format!("\"{text}\" has no unit");
-                faults.push(Fault::at(flag, message).help(format!("write it in percent, such as {example}")));
-            }
-            Ok(number) if is_in(&number) => return number,
-            Ok(_) => {
-                let range = format!("{} % to {} %", 100.0 * low, 100.0 * high);
-                let message = format!("{name} lies between {range}, found {text}");
-                faults.push(Fault::at(flag, message).help(format!("write one such as {example}")));
-            }
-            Err(message) => faults.push(Fault::at(flag, message)),
-        }
-        f64::NAN
-    };
-    // Parts that are off by nearly all of their value are no parts of a filter; at 100 % a value could vanish.
-    let resistors = ratio("--resistor-tolerance", &args.resistor_tolerance, "a tolerance", 0.0, 0.9, "1%");
-    let capacitors = ratio("--capacitor-tolerance", &args.capacitor_tolerance, "a tolerance", 0.0, 0.9, "5%");
-    let reel_share = ratio("--reel-share", &args.reel_share, "the share", 0.0, 1.0, "70%");
-    let half_width = ratio("--interval", &args.interval, "the half-width", 0.0, 0.49, "0.5%");
-    let whole = |flag: &str, text: &str, low: u64, high: u64, example: &str| -> Result<u64, Fault> {
-        text.parse().ok().filter(|number| (low..=high).contains(number)).ok_or_else(|| {
-            let message = format!("expected a whole number from {low} to {high}, found {text}");
-            Fault::at(flag, message).help(format!("write one such as {example}"))
-        })
-    };
-    let mut number = |read: Result<u64, Fault>| read.map_err(|fault| faults.push(fault)).unwrap_or_default();
-    let boards = number(whole("--boards", &args.boards, 1, 100_000_000, "100000"));
-    let seed = number(whole("--seed", &args.seed, 0, u64::MAX, "1"));
-    if !faults.is_empty() {
-        return Err(Failure::Input(vec![Faulty {
-            file: String::new(),
-            text: String::new(),
-            faults,
-            is_first_round: true,
-        }]));
-    }
-    let distribution = match args.distribution.as_str() {
-        "normal" => Distribution::TruncatedNormal,
-        _ => Distribution::Uniform,
-    };
-    let sampling = Sampling { seed, boards, half_width, ..Sampling::default() };
-    Ok((Tolerances { resistors, capacitors, distribution, reel_share }, sampling))
 }
 
 /// The faults of a file.

@@ -8,6 +8,7 @@ mod record;
 mod stock;
 mod table;
 mod vet;
+mod vet_drift;
 mod vet_table;
 
 #[cfg(test)]
@@ -30,4 +31,5 @@ pub use vet::{
     LimitRecord, MaskOutcome, OffPart, SpreadRecord, VET_FORMAT, VetRecord, VetSection, WorstRecord, YieldRecord,
     write_vet_json,
 };
+pub use vet_drift::{DriftRecord, FigureDriftRecord, KindDriftRecord};
 pub use vet_table::write_vet_table;

@@ -6,6 +6,7 @@ use std::io::{self, Write};
 use serde::Serialize;
 
 use super::record::{Achieved, MeasureRecord, TargetRecord};
+use super::vet_drift::DriftRecord;
 use crate::analysis::{
     Built, Conditions, Distribution, Figure, FigureLimit, Limit, Mask, MaskResult, Quantiles, Reference, Standing,
     Vetted, WorstCase, Yield,
@@ -42,6 +43,8 @@ pub struct VetRecord {
     pub spread: SpreadRecord,
     /// The worst error that the tolerances allow.
     pub worst_case: WorstRecord,
+    /// What temperature and age do, where that was asked.
+    pub drift: Option<DriftRecord>,
 }
 
 /// One section.
@@ -278,6 +281,7 @@ impl VetRecord {
                 .map(|(mask, result)| MaskOutcome::new(built, mask, result, conditions)),
             spread: SpreadRecord::new(built, found),
             worst_case: WorstRecord::new(built, &found.worst),
+            drift: conditions.climate.as_ref().zip(found.drift.as_ref()).map(|(c, d)| DriftRecord::new(built, c, d)),
         }
     }
 }

@@ -6,6 +6,7 @@ use super::layout::{Column, grid, paragraph, unbroken};
 use super::numbers::{count, error_in_words, level, short};
 use super::table::{measure_in_words, target_in_words};
 use super::vet::{FigureRecord, LimitRecord, MaskOutcome, SpreadRecord, VetRecord, WorstRecord};
+use super::vet_drift::drift_table;
 
 /// Writes the record as text of at most `width` characters to the line (40 at least; a name that is longer is not
 /// broken).
@@ -19,15 +20,20 @@ pub fn write_vet_table(record: &VetRecord, width: usize, out: &mut dyn Write) ->
         record.mask.as_ref().map_or(String::new(), |mask| against(mask, width)),
         spread(&record.spread, record, width),
         worst(record, unit, width),
-        paragraph(
-            "",
-            "Computed for ideal op-amps and these tolerances alone: temperature, ageing, op-amp bandwidth and the layout \
-             come on top. Measure the build. Safety-relevant equipment needs the applicable codes and a qualified person.",
-            width,
-        ),
+        record.drift.as_ref().map_or(String::new(), |drift| drift_table(drift, unit, width)),
+        paragraph("", &caution(record), width),
     ];
     let filled: Vec<String> = blocks.into_iter().filter(|block| !block.is_empty()).collect();
     out.write_all(filled.join("\n").as_bytes())
+}
+
+/// What the figures do not hold for.
+fn caution(record: &VetRecord) -> String {
+    let without = if record.drift.is_some() { "" } else { "temperature, ageing, " };
+    format!(
+        "Computed for ideal op-amps and what is stated above alone: {without}op-amp bandwidth and the layout come on top. \
+         Measure the build. Safety-relevant equipment needs the applicable codes and a qualified person."
+    )
 }
 
 /// What is looked at, and under what conditions.
@@ -62,7 +68,7 @@ fn board(record: &VetRecord, width: usize) -> String {
 }
 
 /// A ratio in percent, without a sign.
-fn of_hundred(ratio: f64) -> String {
+pub(super) fn of_hundred(ratio: f64) -> String {
     format!("{} %", short(100.0 * ratio, 4))
 }
 
@@ -247,7 +253,7 @@ fn spread(spread: &SpreadRecord, record: &VetRecord, width: usize) -> String {
     text
 }
 
-fn rounded(unit: &str, error: f64) -> String {
+pub(super) fn rounded(unit: &str, error: f64) -> String {
     let digits = format!("{error:.2e}").parse().unwrap_or(error);
     error_in_words(unit, digits)
 }
