@@ -67,8 +67,13 @@ fn a_million_boards(bencher: Bencher, how: &str) {
 /// Everything about that filter.
 #[divan::bench(sample_count = 3, sample_size = 1)]
 fn one_board_in_full(bencher: Bencher) {
-    let conditions =
-        Conditions { tolerances: TOLERANCES, mask: Some(mask()), climate: None, sampling: Sampling::default() };
+    let conditions = Conditions {
+        tolerances: TOLERANCES,
+        mask: Some(mask()),
+        climate: None,
+        real: None,
+        sampling: Sampling::default(),
+    };
     let built = filter();
     bencher.bench(|| vet(&built, &conditions));
 }

@@ -111,8 +111,13 @@ fn the_interval_covers_the_truth_as_often_as_it_says() {
 fn the_result_is_the_same_for_any_number_of_threads() {
     let built = anti_alias();
     let mask = Some(anti_alias_mask());
-    let conditions =
-        Conditions { tolerances: tolerances(0.01, 0.05), mask, climate: None, sampling: sampling(5, 20_000) };
+    let conditions = Conditions {
+        tolerances: tolerances(0.01, 0.05),
+        mask,
+        climate: None,
+        real: None,
+        sampling: sampling(5, 20_000),
+    };
     let with = |threads| {
         let pool = rayon::ThreadPoolBuilder::new().num_threads(threads).build().unwrap();
         pool.install(|| vet(&built, &conditions))
@@ -395,6 +400,7 @@ fn unstable_boards_are_told() {
         tolerances: tolerances(0.05, 0.05),
         mask: Some(mask),
         climate: None,
+        real: None,
         sampling: sampling(1, 2000),
     };
     let found = vet(&built, &conditions);
@@ -413,7 +419,7 @@ fn the_nominal_error_matters_or_not() {
     let built = anti_alias();
     let with = |tolerance: f64| {
         let tolerances = tolerances(tolerance, tolerance);
-        vet(&built, &Conditions { tolerances, mask: None, climate: None, sampling: sampling(1, 100) })
+        vet(&built, &Conditions { tolerances, mask: None, climate: None, real: None, sampling: sampling(1, 100) })
     };
     let (loose, tight) = (with(0.1), with(0.0001));
     assert!(loose.nominal_is_lost_in_spread() && !tight.nominal_is_lost_in_spread());

@@ -245,6 +245,27 @@ fn drift_is_shown_where_it_is_asked_for() {
 }
 
 #[test]
+fn real_op_amps_are_shown_where_they_are_asked_for() {
+    let folder = prepared();
+    let page = |flags: &str| {
+        let output = run(folder.path(), &format!("vet list.json --row 2 {flags}"));
+        assert_eq!(output.status.code(), Some(0), "{}", err(&output));
+        let text = out(&output);
+        assert!(text.lines().all(|line| line.chars().count() <= 80), "{text}");
+        text[text.find("Real network").unwrap_or(text.len())..].to_string()
+    };
+    assert_eq!(page(""), "");
+    let full = "--gbw 1MHz --output-resistance 75 --source-resistance 50 --load-resistance 2k --stray 3p --shift 0.5% \
+                --output-level 5";
+    let shown = [page(full), page("--stray 10p"), page("--gbw 2kHz")];
+    insta::assert_snapshot!(shown.join("\n--------\n"));
+    let output = run(folder.path(), &format!("vet list.json --row 2 --format json {full}"));
+    let value: Json = serde_json::from_slice(&output.stdout).unwrap();
+    assert_eq!(value["real"]["sections"][0]["state"], "stable");
+    assert_eq!(value["real"]["slew"]["op_amp"], "A1");
+}
+
+#[test]
 fn json_for_scripts_is_the_same_for_any_number_of_threads() {
     let folder = prepared();
     let line = "vet list.json --row 2 --mask mask.ron --format json --reel-share 50% --distribution normal \
@@ -325,6 +346,8 @@ fn bad_input_is_told_with_its_range() {
         "vet list.json --temperature 60..0 --resistor-coefficient x --capacitor-tracking -5 --capacitor-ageing 1"
             .to_string(),
         "vet list.json --resistor-coefficient 50".to_string(),
+        "vet list.json --gbw -1MHz --load-resistance 0 --stray 10k --shift 0% --output-level 0".to_string(),
+        "vet list.json --shift 1%".to_string(),
         "vet job.ron".to_string(),
         "vet none.json".to_string(),
         "vet list.json --mask none.ron".to_string(),

@@ -4,6 +4,7 @@ use super::built::Built;
 use super::corners::{WorstCase, worst_case};
 use super::drift::{Climate, Drift, drift};
 use super::mask::{Gauge, Mask, Standing};
+use super::real::{Real, RealConditions, real};
 use super::spread::{Deviations, Spread, deviations, spread};
 use super::tolerance::Tolerances;
 use super::yields::{Sampling, Yield, estimate};
@@ -18,6 +19,8 @@ pub struct Conditions {
     pub mask: Option<Mask>,
     /// Temperature and age, where they are to be looked at.
     pub climate: Option<Climate>,
+    /// Op-amps and surroundings, where they are to be looked at.
+    pub real: Option<RealConditions>,
     /// How boards are drawn.
     pub sampling: Sampling,
 }
@@ -56,6 +59,8 @@ pub struct Vetted {
     pub worst: WorstCase,
     /// What temperature and age do, where that was asked.
     pub drift: Option<Drift>,
+    /// What real op-amps and their surroundings do, where that was asked.
+    pub real: Option<Real>,
 }
 
 impl Vetted {
@@ -95,6 +100,7 @@ pub fn vet(built: &Built, conditions: &Conditions) -> Vetted {
         deviations: deviations(built, tolerances, &yardstick),
         worst: worst_case(built, tolerances, &frequencies, &error),
         drift: conditions.climate.as_ref().map(|climate| drift(built, climate, &yardstick)),
+        real: conditions.real.as_ref().map(|conditions| real(built, conditions, &yardstick)),
     }
 }
 

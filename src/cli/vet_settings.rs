@@ -2,10 +2,10 @@
 
 use super::args::VetArgs;
 use super::failure::{Failure, Faulty};
-use crate::analysis::{Climate, Distribution, KindDrift, Sampling, Tolerances};
+use crate::analysis::{Climate, Distribution, KindDrift, RealConditions, Sampling, Surroundings, Tolerances};
 use crate::parts::TemperatureCoefficient;
 use crate::text::Fault;
-use crate::units::parse_number;
+use crate::units::{Kind, parse_frequency, parse_number, parse_part};
 
 /// The flags of `vet` as values.
 #[derive(Debug)]
@@ -16,6 +16,8 @@ pub struct VetSettings {
     pub sampling: Sampling,
     /// Temperature and age, where a flag for them is given.
     pub climate: Option<Climate>,
+    /// Op-amps and surroundings, where a flag for them is given.
+    pub real: Option<RealConditions>,
 }
 
 /// At which temperature the nominal values hold, °C; common practice.
@@ -58,7 +60,8 @@ fn read(args: &VetArgs, faults: &mut Vec<Fault>) -> VetSettings {
         seed: whole("--seed", &args.seed, 0, u64::MAX, faults),
         ..Sampling::default()
     };
-    VetSettings { tolerances, sampling, climate: climate(args, faults) }
+    let (climate, real) = (climate(args, faults), real(args, faults));
+    VetSettings { tolerances, sampling, climate, real }
 }
 
 /// A percentage from zero to `most`.
@@ -169,4 +172,61 @@ fn temperatures(text: &str, faults: &mut Vec<Fault>) -> (f64, f64) {
             (0.0, 0.0)
         }
     }
+}
+
+fn real(args: &VetArgs, faults: &mut Vec<Fault>) -> Option<RealConditions> {
+    let given = [
+        &args.gbw,
+        &args.output_resistance,
+        &args.source_resistance,
+        &args.load_resistance,
+        &args.stray,
+        &args.shift,
+        &args.output_level,
+    ];
+    if given.into_iter().all(Option::is_none) {
+        return None;
+    }
+    let bandwidth = args.gbw.as_deref().and_then(|text| noted(parse_frequency(text), "--gbw", faults));
+    if args.gbw.is_none() && args.shift.is_some() {
+        let fault = Fault::at("--shift", "says nothing about ideal op-amps");
+        faults.push(fault.help("add the gain-bandwidth product, such as --gbw 3MHz"));
+    }
+    let mut part = |flag: &str, text: &Option<String>, kind: Kind| -> Option<f64> {
+        let text = text.as_deref().filter(|text| text.trim() != "0")?;
+        noted(parse_part(text, kind), flag, faults).map(|value| value.to_f64())
+    };
+    let output_resistance = part("--output-resistance", &args.output_resistance, Kind::Resistor).unwrap_or(0.0);
+    let source_resistance = part("--source-resistance", &args.source_resistance, Kind::Resistor).unwrap_or(0.0);
+    let stray = part("--stray", &args.stray, Kind::Capacitor).unwrap_or(0.0);
+    // A load of zero would be a short circuit: it is read as any other value, and refused.
+    let load_resistance = args
+        .load_resistance
+        .as_deref()
+        .and_then(|text| noted(parse_part(text, Kind::Resistor), "--load-resistance", faults));
+    let load_resistance = load_resistance.map(|value| value.to_f64());
+    let shift = args.shift.as_deref().map_or(0.01, |text| {
+        let shift = Percent { name: "the shift", most: 50.0, example: "1%" }.read("--shift", text, faults);
+        if shift <= 0.0 {
+            let message = format!("the shift must be larger than 0 %, found {text}");
+            faults.push(Fault::at("--shift", message).help("no op-amp leaves nothing: write one such as 1%"));
+        }
+        shift
+    });
+    let level = args.output_level.as_deref().and_then(|text| {
+        let volts = text.trim().trim_end_matches('V').trim().parse::<f64>().ok();
+        let level = volts.filter(|volts| *volts > 0.0 && *volts <= 1000.0);
+        if level.is_none() {
+            let message = format!("\"{text}\" is no amplitude above 0 V and up to 1000 V");
+            faults.push(Fault::at("--output-level", message).help("write one in volts, such as 10"));
+        }
+        level
+    });
+    let around = Surroundings { bandwidth, output_resistance, source_resistance, load_resistance, stray };
+    Some(RealConditions { around, shift, level })
+}
+
+/// A value, or the fault of its flag.
+fn noted<T, E: std::fmt::Display>(read: Result<T, E>, flag: &str, faults: &mut Vec<Fault>) -> Option<T> {
+    read.map_err(|error| faults.push(Fault::at(flag, error.to_string()))).ok()
 }

@@ -9,6 +9,7 @@ mod stock;
 mod table;
 mod vet;
 mod vet_drift;
+mod vet_real;
 mod vet_table;
 
 #[cfg(test)]
@@ -32,4 +33,5 @@ pub use vet::{
     write_vet_json,
 };
 pub use vet_drift::{DriftRecord, FigureDriftRecord, KindDriftRecord};
+pub use vet_real::{RealRecord, RealSectionRecord, SlewRecord};
 pub use vet_table::write_vet_table;

@@ -7,6 +7,7 @@ use serde::Serialize;
 
 use super::record::{Achieved, MeasureRecord, TargetRecord};
 use super::vet_drift::DriftRecord;
+use super::vet_real::RealRecord;
 use crate::analysis::{
     Built, Conditions, Distribution, Figure, FigureLimit, Limit, Mask, MaskResult, Quantiles, Reference, Standing,
     Vetted, WorstCase, Yield,
@@ -45,6 +46,8 @@ pub struct VetRecord {
     pub worst_case: WorstRecord,
     /// What temperature and age do, where that was asked.
     pub drift: Option<DriftRecord>,
+    /// What real op-amps and their surroundings do, where that was asked.
+    pub real: Option<RealRecord>,
 }
 
 /// One section.
@@ -282,6 +285,11 @@ impl VetRecord {
             spread: SpreadRecord::new(built, found),
             worst_case: WorstRecord::new(built, &found.worst),
             drift: conditions.climate.as_ref().zip(found.drift.as_ref()).map(|(c, d)| DriftRecord::new(built, c, d)),
+            real: conditions
+                .real
+                .as_ref()
+                .zip(found.real.as_ref())
+                .map(|(c, r)| RealRecord::new(built, c, r, &found.figures)),
         }
     }
 }

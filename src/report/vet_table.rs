@@ -7,6 +7,7 @@ use super::numbers::{count, error_in_words, level, short};
 use super::table::{measure_in_words, target_in_words};
 use super::vet::{FigureRecord, LimitRecord, MaskOutcome, SpreadRecord, VetRecord, WorstRecord};
 use super::vet_drift::drift_table;
+use super::vet_real::real_table;
 
 /// Writes the record as text of at most `width` characters to the line (40 at least; a name that is longer is not
 /// broken).
@@ -21,6 +22,7 @@ pub fn write_vet_table(record: &VetRecord, width: usize, out: &mut dyn Write) ->
         spread(&record.spread, record, width),
         worst(record, unit, width),
         record.drift.as_ref().map_or(String::new(), |drift| drift_table(drift, unit, width)),
+        record.real.as_ref().map_or(String::new(), |real| real_table(real, unit, width)),
         paragraph("", &caution(record), width),
     ];
     let filled: Vec<String> = blocks.into_iter().filter(|block| !block.is_empty()).collect();
@@ -29,10 +31,19 @@ pub fn write_vet_table(record: &VetRecord, width: usize, out: &mut dyn Write) ->
 
 /// What the figures do not hold for.
 fn caution(record: &VetRecord) -> String {
-    let without = if record.drift.is_some() { "" } else { "temperature, ageing, " };
+    let mut left = Vec::new();
+    if record.drift.is_none() {
+        left.extend(["temperature", "ageing"]);
+    }
+    if record.real.as_ref().is_none_or(|real| real.bandwidth_hz.is_none()) {
+        left.push("op-amp bandwidth");
+    }
+    let left = if left.is_empty() { String::new() } else { format!("{} and ", left.join(", ")) };
+    let come = if left.is_empty() { "comes" } else { "come" };
+    let but = if record.real.is_some() { ", but for real op-amps where they are named," } else { "" };
     format!(
-        "Computed for ideal op-amps and what is stated above alone: {without}op-amp bandwidth and the layout come on top. \
-         Measure the build. Safety-relevant equipment needs the applicable codes and a qualified person."
+        "Computed for ideal op-amps{but} and what is stated above alone: {left}the layout {come} on top. Measure the build. \
+         Safety-relevant equipment needs the applicable codes and a qualified person."
     )
 }
 

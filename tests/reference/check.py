@@ -22,7 +22,7 @@ import tempfile
 from pathlib import Path
 
 import numpy as np
-from scipy import optimize, signal, stats
+from scipy import linalg, optimize, signal, stats
 
 TAU = 2 * np.pi
 ROOT = Path(__file__).parents[2]
@@ -292,6 +292,7 @@ def check_output(program, checks, circuit, output, zero=None):
         checks.close(f"{label}, ngspice and the achieved poles", quadratic, product, 1e-6 * np.abs(product))
     else:
         checks.close(f"{label}, ngspice and the achieved figures", found, achieved, 1e-6 * np.abs(achieved))
+    check_real(program, checks, label, circuit, output, record)
 
 
 def check_examples(program, checks, circuits):
@@ -373,6 +374,112 @@ def keeps(mask, values):
             good &= (decibels >= (-np.inf if limit["lower"] is None else limit["lower"]))
             good &= (decibels <= (np.inf if limit["upper"] is None else limit["upper"]))
     return good
+
+
+def real_network(circuit, node, values, around):
+    """A and B of (A + s B) x = e for a section with one-pole op-amps and its surroundings, and where its output stands."""
+    nodes = [n for n in circuit["nodes"] if n != "0"]
+    size = len(nodes) + len(circuit["op_amps"])
+    a, b = np.zeros((size, size)), np.zeros((size, size))
+
+    def join(matrix, here, there, admittance):
+        for one, other in ((here, there), (there, here)):
+            if one != "0":
+                matrix[nodes.index(one), nodes.index(one)] += admittance
+                if other != "0":
+                    matrix[nodes.index(one), nodes.index(other)] -= admittance
+
+    for element in circuit["elements"]:
+        if element["name"] in values:
+            value = values[element["name"]]
+            join(*((b, *element["nodes"], value) if element["kind"] == "C" else (a, *element["nodes"], 1 / value)))
+    join(a, "in", "0", 1 / around["source"])
+    join(a, node, "0", 1 / around["load"])
+    for inner in nodes:
+        if inner != "in":
+            join(b, inner, "0", around["stray"])
+    for k, op_amp in enumerate(circuit["op_amps"]):
+        line, out = len(nodes) + k, nodes.index(op_amp["out"])
+        a[out, line] -= 1
+        b[line, out] += 1 / (TAU * around["gbw"])
+        b[line, line] += around["output"] / (TAU * around["gbw"])
+        for end, sign in ((op_amp["plus"], -1), (op_amp["minus"], 1)):
+            if end != "0":
+                a[line, nodes.index(end)] += sign
+    return a, b, nodes.index(node)
+
+
+def spice_real(circuit, node, values, around, frequency):
+    """The response at one frequency from ngspice: op-amps as a transconductance into a capacitor, with what surrounds them."""
+    name = lambda n: "0" if n == "0" else f"n_{n}"
+    lines = ["* one section", "Vsource src 0 dc 0 ac 1", f"Rsource src {name('in')} {around['source']:e}"]
+    lines.append(f"Rload {name(node)} 0 {around['load']:e}")
+    for element in circuit["elements"]:
+        if element["name"] in values:
+            lines.append(f"{element['name']} {' '.join(map(name, element['nodes']))} {values[element['name']]:.17e}")
+    for k, inner in enumerate(n for n in circuit["nodes"] if n not in ("0", "in")):
+        lines.append(f"Cstray{k} {name(inner)} 0 {around['stray']:e}")
+    for op_amp in circuit["op_amps"]:
+        x = op_amp["name"]
+        lines.append(f"G{x} 0 inside_{x} {name(op_amp['plus'])} {name(op_amp['minus'])} 1")
+        lines.append(f"C{x} inside_{x} 0 {1 / (TAU * around['gbw']):.17e}")
+        # For the operating point alone.
+        lines.append(f"R{x} inside_{x} 0 1e12")
+        lines.append(f"E{x} behind_{x} 0 inside_{x} 0 1")
+        lines.append(f"Rout{x} behind_{x} {name(op_amp['out'])} {around['output']:e}")
+    with tempfile.TemporaryDirectory() as folder:
+        out, deck = Path(folder) / "out.txt", Path(folder) / "deck.cir"
+        lines += [".control", "set numdgt=16", "set wr_singlescale", f"ac lin 1 {frequency:.17e} {frequency:.17e}"]
+        lines += [f"wrdata {out} v({name(node)})", "quit 0", ".endc", ".end"]
+        deck.write_text("\n".join(lines) + "\n")
+        done = subprocess.run(["ngspice", "-b", str(deck)], capture_output=True, text=True)
+        if done.returncode != 0 or "singular" in done.stderr.lower():
+            sys.exit(f"ngspice failed on {circuit['id']}:\n{done.stderr}\n{deck.read_text()}")
+        row = np.loadtxt(out, ndmin=2)[0]
+    return complex(row[1], row[2])
+
+
+def check_real(program, checks, label, circuit, output, record):
+    """f0 and Q with real op-amps against generalized eigenvalues (scipy), the response error against ngspice."""
+    around = dict(gbw=1e6, output=75.0, source=100.0, load=2000.0, stray=10e-12)
+    with tempfile.NamedTemporaryFile("w", suffix=".json") as listed:
+        json.dump(record, listed)
+        listed.flush()
+        flags = "--gbw 1MHz --output-resistance 75 --source-resistance 100 --load-resistance 2k --stray 10p --format json"
+        found = run(program, "vet", listed.name, *flags.split())["real"]
+    section, target = record["shortlist"][0]["sections"][0], record["sections"][0]["target"]
+    values = {part["slot"]: part["value"] for part in section["parts"]}
+    real = found["sections"][0]
+    a, b, _ = real_network(circuit, output["node"], values, around)
+    rows = np.abs(a).max(axis=1, keepdims=True)
+    # Frequencies in units of the section's own, so that both matrices are of one size.
+    w0 = TAU * target["f0_hz"]
+    poles = linalg.eig(a / rows, -b / rows * w0, right=False)
+    poles = w0 * poles[np.isfinite(poles) & (np.abs(poles) < 1e9)]
+    if np.any(poles.real >= 0):
+        return checks.holds(f"{label}, stability", real["state"] == "unstable", str(real))
+    if not checks_stable(checks, label, real):
+        return
+    w = TAU * real["f0_hz"]
+    expected = [-w] if real["q"] is None else np.roots([1, w / real["q"], w * w])
+    for pole in expected:
+        nearest = poles[np.argmin(np.abs(poles - pole))]
+        checks.close(f"{label}, real poles", pole, nearest, 1e-6 * abs(pole))
+    h = spice_real(circuit, output["node"], values, around, found["error_at_hz"])
+    ideal = lambda f: freqs(figures(target, target), f)
+    steps_there = steps(record["measure"])
+    floor = np.abs(ideal(steps_there)).max() * 10 ** (-record["measure"]["floor_db"] / 20)
+    wanted = ideal([found["error_at_hz"]])[0]
+    if record["measure"]["unit"] == "dB":
+        error = abs(20 * np.log10(max(abs(h), floor) / max(abs(wanted), floor)))
+    else:
+        error = abs(h - wanted) / max(abs(wanted), floor)
+    checks.close(f"{label}, real error", found["error"], error, 1e-5 * (1 + error))
+
+
+def checks_stable(checks, label, real):
+    checks.holds(f"{label}, stability", real["state"] == "stable", str(real))
+    return real["state"] == "stable"
 
 
 def check_vet(program, checks, circuits):
