@@ -72,6 +72,7 @@ fn one_board_in_full(bencher: Bencher) {
         mask: Some(mask()),
         climate: None,
         real: None,
+        levels: None,
         sampling: Sampling::default(),
     };
     let built = filter();

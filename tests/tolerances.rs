@@ -116,6 +116,7 @@ fn the_result_is_the_same_for_any_number_of_threads() {
         mask,
         climate: None,
         real: None,
+        levels: None,
         sampling: sampling(5, 20_000),
     };
     let with = |threads| {
@@ -401,6 +402,7 @@ fn unstable_boards_are_told() {
         mask: Some(mask),
         climate: None,
         real: None,
+        levels: None,
         sampling: sampling(1, 2000),
     };
     let found = vet(&built, &conditions);
@@ -419,7 +421,17 @@ fn the_nominal_error_matters_or_not() {
     let built = anti_alias();
     let with = |tolerance: f64| {
         let tolerances = tolerances(tolerance, tolerance);
-        vet(&built, &Conditions { tolerances, mask: None, climate: None, real: None, sampling: sampling(1, 100) })
+        vet(
+            &built,
+            &Conditions {
+                tolerances,
+                mask: None,
+                climate: None,
+                real: None,
+                levels: None,
+                sampling: sampling(1, 100),
+            },
+        )
     };
     let (loose, tight) = (with(0.1), with(0.0001));
     assert!(loose.nominal_is_lost_in_spread() && !tight.nominal_is_lost_in_spread());

@@ -266,6 +266,26 @@ fn real_op_amps_are_shown_where_they_are_asked_for() {
 }
 
 #[test]
+fn headroom_and_noise_are_shown_where_they_are_asked_for() {
+    let folder = prepared();
+    let page = |flags: &str| {
+        let output = run(folder.path(), &format!("vet list.json --row 2 {flags}"));
+        assert_eq!(output.status.code(), Some(0), "{}", err(&output));
+        let text = out(&output);
+        assert!(text.lines().all(|line| line.chars().count() <= 80), "{text}");
+        text[text.find("Headroom").unwrap_or(text.len())..].to_string()
+    };
+    assert_eq!(page(""), "");
+    let full = "--swing 10 --voltage-noise 5 --current-noise 0.5";
+    let shown = [page(full), page("--swing 10V --gbw 3MHz --source-resistance 50")];
+    insta::assert_snapshot!(shown.join("\n--------\n"));
+    let output = run(folder.path(), &format!("vet list.json --row 2 --format json {full}"));
+    let value: Json = serde_json::from_slice(&output.stdout).unwrap();
+    assert_eq!(value["levels"]["clips_first_op_amp"], "A1");
+    assert_eq!(value["levels"]["voltage_noise"], 5e-9);
+}
+
+#[test]
 fn json_for_scripts_is_the_same_for_any_number_of_threads() {
     let folder = prepared();
     let line = "vet list.json --row 2 --mask mask.ron --format json --reel-share 50% --distribution normal \
@@ -348,6 +368,8 @@ fn bad_input_is_told_with_its_range() {
         "vet list.json --resistor-coefficient 50".to_string(),
         "vet list.json --gbw -1MHz --load-resistance 0 --stray 10k --shift 0% --output-level 0".to_string(),
         "vet list.json --shift 1%".to_string(),
+        "vet list.json --swing 0 --voltage-noise -1 --current-noise x".to_string(),
+        "vet list.json --voltage-noise 5".to_string(),
         "vet job.ron".to_string(),
         "vet none.json".to_string(),
         "vet list.json --mask none.ron".to_string(),

@@ -7,6 +7,7 @@ mod built;
 mod corners;
 mod drift;
 mod interval;
+mod levels;
 mod mask;
 mod network;
 mod real;
@@ -19,8 +20,9 @@ pub use built::{Built, BuiltPart, BuiltSection, FigureSensitivity, Formula, Join
 pub use corners::{Judge, WorstCase, worst_case};
 pub use drift::{Climate, Drift, Extremes, FigureDrift, KindDrift, SectionDrift, drift};
 pub use interval::clopper_pearson;
+pub use levels::{LevelConditions, Levels, Noise, Peak, levels};
 pub use mask::{Figure, FigureLimit, Gauge, Limit, Mask, Reference, Scratch, Standing, figure_of, has_reference};
-pub use network::{Network, Surroundings};
+pub use network::{Network, Reach, Surroundings};
 pub use real::{Real, RealConditions, RealSection, Slew, real};
 pub use spread::{Deviations, Quantiles, SectionSpread, Spread, deviations, spread};
 pub use tolerance::{Boards, Distribution, Draw, Tolerances};

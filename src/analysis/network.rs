@@ -61,6 +61,30 @@ pub struct Network {
     output: usize,
     /// The unknown of the voltage at each op-amp's output, section after section.
     op_amps: Vec<usize>,
+    /// The equation of each op-amp.
+    lines: Vec<usize>,
+    /// The unknown of each section's input, and the first of its inner nodes.
+    places: Vec<(usize, usize)>,
+}
+
+/// How the output follows sources within a network at one frequency.
+#[derive(Clone, Debug)]
+pub struct Reach {
+    by_equation: Vec<Complex64>,
+    lines: Vec<usize>,
+}
+
+impl Reach {
+    /// |V(output)/I|² of a current into `a` and out of `b`, in Ω²; `None` is ground.
+    pub fn from_current(&self, a: Option<usize>, b: Option<usize>) -> f64 {
+        let at = |node: Option<usize>| node.map_or(ZERO, |node| self.by_equation[node]);
+        (at(a) - at(b)).norm_sqr()
+    }
+
+    /// |V(output)/V|² of a voltage in series with an input of the op-amp of that number, section after section.
+    pub fn from_input(&self, op_amp: usize) -> f64 {
+        self.by_equation[self.lines[op_amp]].norm_sqr()
+    }
 }
 
 impl Network {
@@ -77,6 +101,8 @@ impl Network {
             source: size - 1,
             output: 1,
             op_amps: Vec::new(),
+            lines: Vec::new(),
+            places: Vec::new(),
         };
         // The source: its terminal is node 0, the board's input node 1.
         network.constant[0][size - 1] = 1.0;
@@ -93,6 +119,7 @@ impl Network {
         let (mut first, mut amplifier) = (2, nodes);
         for section in sections {
             let input = network.output;
+            network.places.push((input, first));
             let place = |node: usize| match node {
                 0 => None,
                 1 => Some(input),
@@ -111,6 +138,7 @@ impl Network {
             }
             for op_amp in &section.circuit.op_amps {
                 let line = amplifier;
+                network.lines.push(line);
                 let inverse = around.bandwidth.map_or(0.0, |bandwidth| 1.0 / (TAU * bandwidth));
                 if let Some(out) = place(op_amp.out) {
                     // The current flows out of the op-amp into the node: it stands with a minus in the current law.
@@ -133,6 +161,31 @@ impl Network {
             network.join(false, Some(network.output), None, 1.0 / load);
         }
         network
+    }
+
+    /// The unknown of a node of a section, by its index in the circuit; `None` for ground.
+    pub fn place(&self, section: usize, node: usize) -> Option<usize> {
+        let (input, first) = self.places[section];
+        match node {
+            0 => None,
+            1 => Some(input),
+            other => Some(first + other - 2),
+        }
+    }
+
+    /// The unknown of the output of the whole.
+    pub fn output_place(&self) -> Option<usize> {
+        Some(self.output)
+    }
+
+    /// How the output follows sources anywhere in the network at `w` rad/s: one solve of the transposed equations.
+    pub fn reach(&self, w: f64) -> Option<Reach> {
+        let matrix = self.at(Complex64::new(0.0, w));
+        let size = matrix.len();
+        let transposed = (0..size).map(|row| (0..size).map(|column| matrix[column][row]).collect()).collect();
+        let mut right = vec![ZERO; size];
+        right[self.output] = Complex64::new(1.0, 0.0);
+        Some(Reach { by_equation: Factors::of(transposed)?.solve(right), lines: self.lines.clone() })
     }
 
     /// Joins two nodes by an admittance; `None` is ground.

@@ -3,6 +3,7 @@
 use super::built::Built;
 use super::corners::{WorstCase, worst_case};
 use super::drift::{Climate, Drift, drift};
+use super::levels::{LevelConditions, Levels, levels};
 use super::mask::{Gauge, Mask, Standing};
 use super::real::{Real, RealConditions, real};
 use super::spread::{Deviations, Spread, deviations, spread};
@@ -21,6 +22,8 @@ pub struct Conditions {
     pub climate: Option<Climate>,
     /// Op-amps and surroundings, where they are to be looked at.
     pub real: Option<RealConditions>,
+    /// What is assumed for headroom and noise, where they are to be looked at.
+    pub levels: Option<LevelConditions>,
     /// How boards are drawn.
     pub sampling: Sampling,
 }
@@ -61,6 +64,8 @@ pub struct Vetted {
     pub drift: Option<Drift>,
     /// What real op-amps and their surroundings do, where that was asked.
     pub real: Option<Real>,
+    /// Headroom and noise, where that was asked; `None` too where the network cannot be solved, or is not known to be stable.
+    pub levels: Option<Levels>,
 }
 
 impl Vetted {
@@ -91,6 +96,11 @@ pub fn vet(built: &Built, conditions: &Conditions) -> Vetted {
         let deviation = yardstick.deviation(board);
         (deviation.error, deviation.at)
     };
+    let real = conditions.real.as_ref().map(|conditions| real(built, conditions, &yardstick));
+    // An unstable network has no levels.
+    let works = real.as_ref().is_none_or(|real| real.error.is_some());
+    let levels =
+        conditions.levels.as_ref().filter(|_| works).and_then(|conditions| levels(built, conditions, &yardstick));
     Vetted {
         criterion,
         nominal: yardstick.deviation(&nominal),
@@ -100,7 +110,8 @@ pub fn vet(built: &Built, conditions: &Conditions) -> Vetted {
         deviations: deviations(built, tolerances, &yardstick),
         worst: worst_case(built, tolerances, &frequencies, &error),
         drift: conditions.climate.as_ref().map(|climate| drift(built, climate, &yardstick)),
-        real: conditions.real.as_ref().map(|conditions| real(built, conditions, &yardstick)),
+        real,
+        levels,
     }
 }
 

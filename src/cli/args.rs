@@ -382,6 +382,15 @@ pub struct VetArgs {
     /// The largest amplitude of a sine at the output, volts, for the slew rate.
     #[arg(long, value_name = "VOLTS", allow_hyphen_values = true)]
     pub output_level: Option<String>,
+    /// The largest amplitude at the output of an op-amp, volts; shows headroom and noise.
+    #[arg(long, value_name = "VOLTS", allow_hyphen_values = true)]
+    pub swing: Option<String>,
+    /// Voltage noise of the op-amps, nanovolts per root hertz [default: 0].
+    #[arg(long, value_name = "NANOVOLTS", allow_hyphen_values = true)]
+    pub voltage_noise: Option<String>,
+    /// Current noise at each input of the op-amps, picoamperes per root hertz [default: 0].
+    #[arg(long, value_name = "PICOAMPERES", allow_hyphen_values = true)]
+    pub current_noise: Option<String>,
     /// Boards to draw at most for the yield.
     #[arg(long, value_name = "COUNT", allow_hyphen_values = true, default_value = "100000")]
     pub boards: String,

@@ -21,13 +21,13 @@ use crate::text::{Fault, located};
 /// # Errors
 /// Bad input, an output that cannot be written.
 pub fn run(args: &VetArgs) -> Result<u8, Failure> {
-    let VetSettings { tolerances, sampling, climate, real } = VetSettings::new(args)?;
+    let VetSettings { tolerances, sampling, climate, real, levels } = VetSettings::new(args)?;
     let built = board(args)?;
     let mask = args.mask.as_deref().map(|path| mask(path, &built)).transpose()?;
     let output = Output::open(args.out.as_deref())?;
     let pool = rayon::ThreadPoolBuilder::new().num_threads(args.threads.map_or(0, usize::from)).build();
     let pool = pool.map_err(|error| Failure::Threads(error.to_string()))?;
-    let conditions = Conditions { tolerances, mask, climate, real, sampling };
+    let conditions = Conditions { tolerances, mask, climate, real, levels, sampling };
     let found = pool.install(|| vet(&built, &conditions));
     let record = VetRecord::new(&built, args.row, &conditions, &found);
     output.write(&written(&record, args.format, usize::from(args.width))?)?;

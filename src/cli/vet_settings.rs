@@ -2,7 +2,9 @@
 
 use super::args::VetArgs;
 use super::failure::{Failure, Faulty};
-use crate::analysis::{Climate, Distribution, KindDrift, RealConditions, Sampling, Surroundings, Tolerances};
+use crate::analysis::{
+    Climate, Distribution, KindDrift, LevelConditions, RealConditions, Sampling, Surroundings, Tolerances,
+};
 use crate::parts::TemperatureCoefficient;
 use crate::text::Fault;
 use crate::units::{Kind, parse_frequency, parse_number, parse_part};
@@ -18,6 +20,8 @@ pub struct VetSettings {
     pub climate: Option<Climate>,
     /// Op-amps and surroundings, where a flag for them is given.
     pub real: Option<RealConditions>,
+    /// Headroom and noise, where the swing is given.
+    pub levels: Option<LevelConditions>,
 }
 
 /// At which temperature the nominal values hold, °C; common practice.
@@ -61,7 +65,9 @@ fn read(args: &VetArgs, faults: &mut Vec<Fault>) -> VetSettings {
         ..Sampling::default()
     };
     let (climate, real) = (climate(args, faults), real(args, faults));
-    VetSettings { tolerances, sampling, climate, real }
+    let around = real.map_or(Surroundings::IDEAL, |real| real.around);
+    let levels = levels(args, around, faults);
+    VetSettings { tolerances, sampling, climate, real, levels }
 }
 
 /// A percentage from zero to `most`.
@@ -213,17 +219,40 @@ fn real(args: &VetArgs, faults: &mut Vec<Fault>) -> Option<RealConditions> {
         }
         shift
     });
-    let level = args.output_level.as_deref().and_then(|text| {
-        let volts = text.trim().trim_end_matches('V').trim().parse::<f64>().ok();
-        let level = volts.filter(|volts| *volts > 0.0 && *volts <= 1000.0);
-        if level.is_none() {
-            let message = format!("\"{text}\" is no amplitude above 0 V and up to 1000 V");
-            faults.push(Fault::at("--output-level", message).help("write one in volts, such as 10"));
-        }
-        level
-    });
+    let level = args.output_level.as_deref().and_then(|text| volts("--output-level", text, faults));
     let around = Surroundings { bandwidth, output_resistance, source_resistance, load_resistance, stray };
     Some(RealConditions { around, shift, level })
+}
+
+/// An amplitude.
+fn volts(flag: &str, text: &str, faults: &mut Vec<Fault>) -> Option<f64> {
+    let number = text.trim().trim_end_matches('V').trim().parse::<f64>().ok();
+    let level = number.filter(|volts| *volts > 0.0 && *volts <= 1000.0);
+    if level.is_none() {
+        let message = format!("\"{text}\" is no amplitude above 0 V and up to 1000 V");
+        faults.push(Fault::at(flag, message).help("write one in volts, such as 10"));
+    }
+    level
+}
+
+fn levels(args: &VetArgs, around: Surroundings, faults: &mut Vec<Fault>) -> Option<LevelConditions> {
+    let mut noise = |flag: &str, text: &Option<String>, unit: &str, scale: f64| -> f64 {
+        let Some(text) = text else { return 0.0 };
+        if args.swing.is_none() {
+            let fault = Fault::at(flag, "says nothing without a swing, by which headroom and noise are asked for");
+            faults.push(fault.help("add the largest amplitude at the op-amps, such as --swing 10"));
+        }
+        let number = text.trim().parse::<f64>().ok().filter(|number| (0.0..=1e6).contains(number));
+        if number.is_none() {
+            let message = format!("\"{text}\" is no noise from 0 to 1e6 {unit}");
+            faults.push(Fault::at(flag, message).help(format!("write the number of {unit}, such as 5")));
+        }
+        number.unwrap_or(0.0) * scale
+    };
+    let voltage_noise = noise("--voltage-noise", &args.voltage_noise, "nV/√Hz", 1e-9);
+    let current_noise = noise("--current-noise", &args.current_noise, "pA/√Hz", 1e-12);
+    let swing = volts("--swing", args.swing.as_deref()?, faults)?;
+    Some(LevelConditions { around, swing, voltage_noise, current_noise })
 }
 
 /// A value, or the fault of its flag.

@@ -9,6 +9,7 @@ mod stock;
 mod table;
 mod vet;
 mod vet_drift;
+mod vet_levels;
 mod vet_real;
 mod vet_table;
 
@@ -33,5 +34,6 @@ pub use vet::{
     write_vet_json,
 };
 pub use vet_drift::{DriftRecord, FigureDriftRecord, KindDriftRecord};
+pub use vet_levels::{LevelsRecord, PeakRecord};
 pub use vet_real::{RealRecord, RealSectionRecord, SlewRecord};
 pub use vet_table::write_vet_table;

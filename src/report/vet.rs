@@ -7,6 +7,7 @@ use serde::Serialize;
 
 use super::record::{Achieved, MeasureRecord, TargetRecord};
 use super::vet_drift::DriftRecord;
+use super::vet_levels::LevelsRecord;
 use super::vet_real::RealRecord;
 use crate::analysis::{
     Built, Conditions, Distribution, Figure, FigureLimit, Limit, Mask, MaskResult, Quantiles, Reference, Standing,
@@ -48,6 +49,8 @@ pub struct VetRecord {
     pub drift: Option<DriftRecord>,
     /// What real op-amps and their surroundings do, where that was asked.
     pub real: Option<RealRecord>,
+    /// Headroom and noise, where that was asked.
+    pub levels: Option<LevelsRecord>,
 }
 
 /// One section.
@@ -290,6 +293,11 @@ impl VetRecord {
                 .as_ref()
                 .zip(found.real.as_ref())
                 .map(|(c, r)| RealRecord::new(built, c, r, &found.figures)),
+            levels: conditions
+                .levels
+                .as_ref()
+                .zip(found.levels.as_ref())
+                .map(|(c, l)| LevelsRecord::new(built, c, l)),
         }
     }
 }

@@ -7,6 +7,7 @@ use super::numbers::{count, error_in_words, level, short};
 use super::table::{measure_in_words, target_in_words};
 use super::vet::{FigureRecord, LimitRecord, MaskOutcome, SpreadRecord, VetRecord, WorstRecord};
 use super::vet_drift::drift_table;
+use super::vet_levels::levels_table;
 use super::vet_real::real_table;
 
 /// Writes the record as text of at most `width` characters to the line (40 at least; a name that is longer is not
@@ -23,6 +24,7 @@ pub fn write_vet_table(record: &VetRecord, width: usize, out: &mut dyn Write) ->
         worst(record, unit, width),
         record.drift.as_ref().map_or(String::new(), |drift| drift_table(drift, unit, width)),
         record.real.as_ref().map_or(String::new(), |real| real_table(real, unit, width)),
+        record.levels.as_ref().map_or(String::new(), |levels| levels_table(levels, record.measure.band_hz, width)),
         paragraph("", &caution(record), width),
     ];
     let filled: Vec<String> = blocks.into_iter().filter(|block| !block.is_empty()).collect();
@@ -40,9 +42,12 @@ fn caution(record: &VetRecord) -> String {
     }
     let left = if left.is_empty() { String::new() } else { format!("{} and ", left.join(", ")) };
     let come = if left.is_empty() { "comes" } else { "come" };
-    let but = if record.real.is_some() { ", but for real op-amps where they are named," } else { "" };
+    let computed = match record.real {
+        Some(_) => "But for the real network, all is computed for ideal op-amps",
+        None => "Computed for ideal op-amps",
+    };
     format!(
-        "Computed for ideal op-amps{but} and what is stated above alone: {left}the layout {come} on top. Measure the build. \
+        "{computed} and for what is stated above alone: {left}the layout {come} on top. Measure the build. \
          Safety-relevant equipment needs the applicable codes and a qualified person."
     )
 }

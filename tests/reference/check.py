@@ -11,7 +11,8 @@ For every output of every circuit a section is searched, and the first row's par
 - their counts.
 
 All rows of the example jobs are recomputed the same way, and the best row of three part numbers is compared with all
-sets of so many. What `vet` says of a row is compared with boards drawn in numpy, and its worst case with ngspice. The last line counts the checks; the exit code is 1 if one failed.
+sets of so many. What `vet` says of a row is compared with boards drawn in numpy, its worst case, real response, headroom
+and noise with ngspice. The last line counts the checks; the exit code is 1 if one failed.
 """
 
 import itertools
@@ -293,6 +294,7 @@ def check_output(program, checks, circuit, output, zero=None):
     else:
         checks.close(f"{label}, ngspice and the achieved figures", found, achieved, 1e-6 * np.abs(achieved))
     check_real(program, checks, label, circuit, output, record)
+    check_levels(program, checks, label, circuit, output, record)
 
 
 def check_examples(program, checks, circuits):
@@ -475,6 +477,57 @@ def check_real(program, checks, label, circuit, output, record):
     else:
         error = abs(h - wanted) / max(abs(wanted), floor)
     checks.close(f"{label}, real error", found["error"], error, 1e-5 * (1 + error))
+
+
+def spice_noise(circuit, node, values, band, en, current):
+    """The noise at the output over a band from ngspice, V rms: at 25 degrees, op-amps of very large gain.
+
+    The op-amps' own noise is that of resistors, brought to their inputs by controlled sources.
+    """
+    name = lambda n: "0" if n == "0" else f"n_{n}"
+    lines = ["* one section", ".options temp=25", "Vsource n_in 0 dc 0 ac 1"]
+    for element in circuit["elements"]:
+        if element["name"] in values:
+            lines.append(f"{element['name']} {' '.join(map(name, element['nodes']))} {values[element['name']]:.17e}")
+    # A resistor of 1 kilohm has this noise, V per root hertz.
+    unit = np.sqrt(4 * 1.380649e-23 * 298.15 * 1e3)
+    for op_amp in circuit["op_amps"]:
+        x, plus, minus = op_amp["name"], name(op_amp["plus"]), name(op_amp["minus"])
+        lines += [f"Rv{x} nv{x} 0 1e3", f"Ev{x} in{x} {plus} nv{x} 0 {en / unit:e}"]
+        for side, terminal in (("p", plus), ("m", minus)):
+            lines += [f"Ri{side}{x} ni{side}{x} 0 1e3", f"Gi{side}{x} 0 {terminal} ni{side}{x} 0 {current / unit:e}"]
+        lines.append(f"E{x} {name(op_amp['out'])} 0 in{x} {minus} 1e7")
+    with tempfile.TemporaryDirectory() as folder:
+        deck = Path(folder) / "deck.cir"
+        lines += [".control", f"noise v({name(node)}) Vsource dec 400 {band[0]:.12e} {band[1]:.12e}"]
+        lines += ["setplot noise2", "set numdgt=12", "print onoise_total", "quit 0", ".endc", ".end"]
+        deck.write_text("\n".join(lines) + "\n")
+        done = subprocess.run(["ngspice", "-b", str(deck)], capture_output=True, text=True)
+        found = [line for line in done.stdout.splitlines() if line.startswith("onoise_total")]
+        if done.returncode != 0 or not found:
+            sys.exit(f"ngspice failed on {circuit['id']}:\n{done.stderr}\n{deck.read_text()}")
+    return float(found[0].split("=")[1])
+
+
+def check_levels(program, checks, label, circuit, output, record):
+    """Peak gains and noise against ngspice."""
+    with tempfile.NamedTemporaryFile("w", suffix=".json") as listed:
+        json.dump(record, listed)
+        listed.flush()
+        flags = "--swing 10 --voltage-noise 5 --current-noise 1 --format json"
+        found = run(program, "vet", listed.name, *flags.split())["levels"]
+    section = record["shortlist"][0]["sections"][0]
+    values = {part["slot"]: part["value"] for part in section["parts"]}
+    for op_amp, peak in zip(circuit["op_amps"], found["op_amps"]):
+        checks.holds(f"{label}, op-amps", op_amp["name"] == peak["op_amp"], str(peak))
+        low, high = record["measure"]["band_hz"]
+        at = np.clip(peak["at_hz"] * np.array([0.99, 1.0, 1.01]), low, high)
+        gains = np.abs(spice(circuit, op_amp["out"], values, at))
+        checks.close(f"{label}, peak at {peak['op_amp']}", peak["gain"], gains[1], 1e-5 * gains[1])
+        checks.holds(f"{label}, it is a peak", gains.max() <= peak["gain"] * (1 + 1e-4), str(gains))
+    for en, current, said in ((5e-9, 1e-12, found["noise"]), (1e-15, 1e-18, found["thermal"])):
+        expected = spice_noise(circuit, output["node"], values, record["measure"]["band_hz"], en, current)
+        checks.close(f"{label}, noise", said, expected, 2e-3 * expected)
 
 
 def checks_stable(checks, label, real):
