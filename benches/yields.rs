@@ -73,6 +73,7 @@ fn one_board_in_full(bencher: Bencher) {
         climate: None,
         real: None,
         levels: None,
+        trim: false,
         sampling: Sampling::default(),
     };
     let built = filter();

@@ -117,6 +117,7 @@ fn the_result_is_the_same_for_any_number_of_threads() {
         climate: None,
         real: None,
         levels: None,
+        trim: false,
         sampling: sampling(5, 20_000),
     };
     let with = |threads| {
@@ -403,6 +404,7 @@ fn unstable_boards_are_told() {
         climate: None,
         real: None,
         levels: None,
+        trim: false,
         sampling: sampling(1, 2000),
     };
     let found = vet(&built, &conditions);
@@ -429,6 +431,7 @@ fn the_nominal_error_matters_or_not() {
                 climate: None,
                 real: None,
                 levels: None,
+                trim: false,
                 sampling: sampling(1, 100),
             },
         )

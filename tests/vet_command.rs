@@ -286,6 +286,25 @@ fn headroom_and_noise_are_shown_where_they_are_asked_for() {
 }
 
 #[test]
+fn a_trim_is_planned_where_it_is_asked_for() {
+    let list = Path::new(env!("CARGO_MANIFEST_DIR")).join("data/examples/vibration-logger.json");
+    let page = |file: &str, flags: &str| {
+        let output = run(Path::new("."), &format!("vet {file} {flags}"));
+        assert_eq!(output.status.code(), Some(0), "{}", err(&output));
+        let text = out(&output);
+        assert!(text.lines().all(|line| line.chars().count() <= 80), "{text}");
+        text[text.find("\nTrim").unwrap_or(text.len())..].to_string()
+    };
+    let list = list.display().to_string();
+    assert_eq!(page(&list, "--row 4"), "");
+    insta::assert_snapshot!(page(&list, "--row 4 --trim"));
+    // Two resistors that both move f0 and Q leave no step that disturbs no other but the first.
+    let folder = prepared();
+    let shown = page(&folder.path().join("list.json").display().to_string(), "--trim");
+    assert!(shown.contains("f0 of A") && !shown.contains("Q of A"), "{shown}");
+}
+
+#[test]
 fn json_for_scripts_is_the_same_for_any_number_of_threads() {
     let folder = prepared();
     let line = "vet list.json --row 2 --mask mask.ron --format json --reel-share 50% --distribution normal \

@@ -13,6 +13,7 @@ mod network;
 mod real;
 mod spread;
 mod tolerance;
+mod trim;
 mod vetted;
 mod yields;
 
@@ -26,5 +27,6 @@ pub use network::{Network, Reach, Surroundings};
 pub use real::{Real, RealConditions, RealSection, Slew, real};
 pub use spread::{Deviations, Quantiles, SectionSpread, Spread, deviations, spread};
 pub use tolerance::{Boards, Distribution, Draw, Tolerances};
+pub use trim::{Trim, Watch, trims};
 pub use vetted::{Conditions, MaskResult, Vetted, vet};
 pub use yields::{Sampling, Yield, estimate};

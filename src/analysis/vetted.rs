@@ -8,6 +8,7 @@ use super::mask::{Gauge, Mask, Standing};
 use super::real::{Real, RealConditions, real};
 use super::spread::{Deviations, Spread, deviations, spread};
 use super::tolerance::Tolerances;
+use super::trim::{Trim, trims};
 use super::yields::{Sampling, Yield, estimate};
 use crate::target::{Biquad, Criterion, Deviation, Figures, Measure, Section};
 
@@ -24,6 +25,8 @@ pub struct Conditions {
     pub real: Option<RealConditions>,
     /// What is assumed for headroom and noise, where they are to be looked at.
     pub levels: Option<LevelConditions>,
+    /// Whether a trim is to be planned.
+    pub trim: bool,
     /// How boards are drawn.
     pub sampling: Sampling,
 }
@@ -66,6 +69,8 @@ pub struct Vetted {
     pub real: Option<Real>,
     /// Headroom and noise, where that was asked; `None` too where the network cannot be solved, or is not known to be stable.
     pub levels: Option<Levels>,
+    /// How it is trimmed, where that was asked.
+    pub trims: Option<Vec<Trim>>,
 }
 
 impl Vetted {
@@ -112,6 +117,7 @@ pub fn vet(built: &Built, conditions: &Conditions) -> Vetted {
         drift: conditions.climate.as_ref().map(|climate| drift(built, climate, &yardstick)),
         real,
         levels,
+        trims: conditions.trim.then(|| trims(built, tolerances)),
     }
 }
 

@@ -391,6 +391,9 @@ pub struct VetArgs {
     /// Current noise at each input of the op-amps, picoamperes per root hertz [default: 0].
     #[arg(long, value_name = "PICOAMPERES", allow_hyphen_values = true)]
     pub current_noise: Option<String>,
+    /// Plan a trim: which resistor sets what, how far it has to reach, and what to look at.
+    #[arg(long)]
+    pub trim: bool,
     /// Boards to draw at most for the yield.
     #[arg(long, value_name = "COUNT", allow_hyphen_values = true, default_value = "100000")]
     pub boards: String,

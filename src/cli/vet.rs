@@ -27,7 +27,7 @@ pub fn run(args: &VetArgs) -> Result<u8, Failure> {
     let output = Output::open(args.out.as_deref())?;
     let pool = rayon::ThreadPoolBuilder::new().num_threads(args.threads.map_or(0, usize::from)).build();
     let pool = pool.map_err(|error| Failure::Threads(error.to_string()))?;
-    let conditions = Conditions { tolerances, mask, climate, real, levels, sampling };
+    let conditions = Conditions { tolerances, mask, climate, real, levels, trim: args.trim, sampling };
     let found = pool.install(|| vet(&built, &conditions));
     let record = VetRecord::new(&built, args.row, &conditions, &found);
     output.write(&written(&record, args.format, usize::from(args.width))?)?;

@@ -12,6 +12,7 @@ mod vet_drift;
 mod vet_levels;
 mod vet_real;
 mod vet_table;
+mod vet_trim;
 
 #[cfg(test)]
 mod sample;
@@ -37,3 +38,4 @@ pub use vet_drift::{DriftRecord, FigureDriftRecord, KindDriftRecord};
 pub use vet_levels::{LevelsRecord, PeakRecord};
 pub use vet_real::{RealRecord, RealSectionRecord, SlewRecord};
 pub use vet_table::write_vet_table;
+pub use vet_trim::TrimRecord;

@@ -9,6 +9,7 @@ use super::record::{Achieved, MeasureRecord, TargetRecord};
 use super::vet_drift::DriftRecord;
 use super::vet_levels::LevelsRecord;
 use super::vet_real::RealRecord;
+use super::vet_trim::TrimRecord;
 use crate::analysis::{
     Built, Conditions, Distribution, Figure, FigureLimit, Limit, Mask, MaskResult, Quantiles, Reference, Standing,
     Vetted, WorstCase, Yield,
@@ -51,6 +52,8 @@ pub struct VetRecord {
     pub real: Option<RealRecord>,
     /// Headroom and noise, where that was asked.
     pub levels: Option<LevelsRecord>,
+    /// How it is trimmed, where that was asked.
+    pub trims: Option<Vec<TrimRecord>>,
 }
 
 /// One section.
@@ -298,6 +301,7 @@ impl VetRecord {
                 .as_ref()
                 .zip(found.levels.as_ref())
                 .map(|(c, l)| LevelsRecord::new(built, c, l)),
+            trims: found.trims.as_ref().map(|list| list.iter().map(|trim| TrimRecord::new(built, trim)).collect()),
         }
     }
 }

@@ -9,6 +9,7 @@ use super::vet::{FigureRecord, LimitRecord, MaskOutcome, SpreadRecord, VetRecord
 use super::vet_drift::drift_table;
 use super::vet_levels::levels_table;
 use super::vet_real::real_table;
+use super::vet_trim::trim_table;
 
 /// Writes the record as text of at most `width` characters to the line (40 at least; a name that is longer is not
 /// broken).
@@ -25,6 +26,7 @@ pub fn write_vet_table(record: &VetRecord, width: usize, out: &mut dyn Write) ->
         record.drift.as_ref().map_or(String::new(), |drift| drift_table(drift, unit, width)),
         record.real.as_ref().map_or(String::new(), |real| real_table(real, unit, width)),
         record.levels.as_ref().map_or(String::new(), |levels| levels_table(levels, record.measure.band_hz, width)),
+        record.trims.as_ref().map_or(String::new(), |trims| trim_table(trims, width)),
         paragraph("", &caution(record), width),
     ];
     let filled: Vec<String> = blocks.into_iter().filter(|block| !block.is_empty()).collect();
