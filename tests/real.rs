@@ -211,6 +211,28 @@ fn a_network_that_oscillates_is_told_as_such() {
     assert!(matches!(stable.sections[0], RealSection::Stable { .. }));
 }
 
+// Source: as above, Q moves by 4 Q + 1/2 of f0/GBW: for 1 % with Q of 4 the bandwidth is 1650 f0, to first order.
+#[test]
+fn the_least_bandwidth_follows_the_first_order_shift() {
+    let q = 4.0;
+    let f0 = 1.0 / (R * C * TAU);
+    let tow = [("RG", R), ("RQ", q * R), ("C1", C), ("RF", R), ("R2", R), ("C2", C), ("RA", R), ("RB", R)];
+    let built = board(target(Shape::LowPass, f0, q), "tow-thomas", "low-pass", &tow);
+    // Whatever the op-amp that is looked at.
+    for bandwidth in [100.0 * f0, 1e4 * f0] {
+        let found = looked_at(&built, with_bandwidth(bandwidth));
+        let RealSection::Stable { least_bandwidth: Some(least), .. } = found.sections[0] else { panic!("{found:?}") };
+        assert!((least / f0 / 1650.0 - 1.0).abs() < 0.02, "{}", least / f0);
+        // It is what it says: just enough.
+        for (factor, enough) in [(1.001, true), (0.999, false)] {
+            let (w0, quality) = figures(&built, with_bandwidth(least * factor));
+            let nominal = built.sections[0].target.figures_of(&built.nominal()[0]);
+            let shift = (w0 / nominal.w0 - 1.0).abs().max((quality.unwrap() / nominal.q.unwrap() - 1.0).abs());
+            assert_eq!(shift <= 0.01, enough, "{shift}");
+        }
+    }
+}
+
 /// A source adds to the first resistor, strays to the capacitors at their nodes; a load says nothing to an ideal output.
 #[test]
 fn surroundings_follow_closed_forms() {

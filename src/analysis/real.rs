@@ -18,7 +18,7 @@ pub enum RealSection {
         /// Pole quality factor; `None` for first order.
         q: Option<f64>,
         /// The least gain-bandwidth product, Hz, with which f0 and Q move by no more than what is wanted because of the
-        /// op-amps alone; `None` without op-amps of finite bandwidth, or where none up to 1e13 Hz will do.
+        /// op-amps alone; `None` without op-amps of finite bandwidth, or where none up to a million times f0 is known to do.
         least_bandwidth: Option<f64>,
     },
     /// A pole lies in the right half plane, or on its edge: it oscillates.
@@ -170,30 +170,34 @@ fn own_poles(section: &BuiltSection, around: &Surroundings) -> Option<Vec<Comple
     Some(poles)
 }
 
+/// How far above f0 a bandwidth is looked for, as a factor: beyond it an op-amp is as good as ideal.
+const HIGHEST: f64 = 1e6;
+
 /// The least bandwidth with which neither f0 nor Q moves by more than `shift` against ideal op-amps in the same surroundings.
 fn least_bandwidth(section: &BuiltSection, around: &Surroundings, shift: f64) -> Option<f64> {
     let with = |bandwidth| Surroundings { bandwidth, ..*around };
     let Poles::Stable(w0, q) = figures(section, &with(None)) else { return None };
+    // Poles that cannot be found say nothing: then there is no answer, rather than a wrong one.
     let good = |bandwidth: f64| match figures(section, &with(Some(bandwidth))) {
         Poles::Stable(found, quality) => {
             let of_q = quality.zip(q).map_or(0.0, |(found, ideal)| (found / ideal - 1.0).abs());
-            (found / w0 - 1.0).abs().max(of_q) <= shift
+            Some((found / w0 - 1.0).abs().max(of_q) <= shift)
         }
-        _ => false,
+        Poles::Unstable => Some(false),
+        Poles::Unknown => None,
     };
-    const HIGHEST: f64 = 1e13;
-    let mut high = HIGHEST;
-    if !good(high) {
+    let mut high = HIGHEST * w0 / TAU;
+    if !good(high)? {
         return None;
     }
     // Downwards to the first that is too little, so that what is found holds for everything above it.
     let mut low = high / 4.0;
-    while low > w0 / TAU && good(low) {
+    while low > w0 / TAU && good(low)? {
         (high, low) = (low, low / 4.0);
     }
-    for _ in 0..30 {
+    for _ in 0..20 {
         let middle = (low * high).sqrt();
-        if good(middle) { high = middle } else { low = middle }
+        if good(middle)? { high = middle } else { low = middle }
     }
     Some(high)
 }
