@@ -78,9 +78,10 @@
 //!
 //! # The layers
 //!
-//! Imports run one way: [`cli`] → [`report`], [`job`] → [`verify`] → [`search`] → [`circuit`] → [`target`], [`parts`] →
+//! Imports run one way: [`cli`] → [`report`], [`job`] → [`analysis`] → [`verify`] → [`search`] → [`circuit`] → [`target`], [`parts`] →
 //! [`units`]; [`text`] (faults and their places in a file) lies under all of them. Only [`cli`] opens files and prints.
 
+pub mod analysis;
 pub mod circuit;
 pub mod cli;
 pub mod job;

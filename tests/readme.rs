@@ -37,7 +37,7 @@ fn masked(text: &str) -> String {
 /// A copy of the examples in a folder of their own, so that commands may write files.
 fn examples() -> TempDir {
     let folder = tempfile::tempdir().unwrap();
-    for name in ["examples", "circuits"] {
+    for name in ["examples", "circuits", "masks"] {
         let to = folder.path().join("data").join(name);
         fs::create_dir_all(&to).unwrap();
         for entry in fs::read_dir(Path::new("data").join(name)).unwrap() {
@@ -77,9 +77,10 @@ fn console_blocks_are_what_the_program_prints() {
 }
 
 #[test]
-fn the_jobs_shown_are_the_examples() {
-    let jobs = ["vibration-logger", "rain-gauge"].map(|name| fs::read_to_string(format!("data/examples/{name}.ron")));
-    assert_eq!(blocks("ron"), jobs.map(Result::unwrap));
+fn the_files_shown_are_the_examples() {
+    let files = ["examples/vibration-logger", "examples/rain-gauge", "masks/vibration-logger"];
+    let texts = files.map(|name| fs::read_to_string(format!("data/{name}.ron")).unwrap());
+    assert_eq!(blocks("ron"), texts);
 }
 
 #[test]

@@ -52,6 +52,9 @@ pub enum Command {
     /// Read back a stock list: what was understood, what is wrong, what is odd; or what a shortlist needs of it.
     #[command(after_help = STOCK_HELP, after_long_help = stock_long_help(), allow_negative_numbers = true)]
     Stock(StockArgs),
+    /// Look at one row of a shortlist as it will be built: mask, tolerances and yield, worst case.
+    #[command(after_help = VET_HELP, allow_negative_numbers = true)]
+    Vet(Box<VetArgs>),
 }
 
 const SHORTLIST_HELP: &str = "\
@@ -101,6 +104,21 @@ fn stock_long_help() -> String {
     let columns = STOCK_COLUMNS.map(|(words, meaning)| format!("  {}\n      {meaning}", words.join(", ")));
     format!("{STOCK_HELP}\n\nColumns, each with the other words for it:\n{}", columns.join("\n"))
 }
+
+const VET_HELP: &str = "\
+A mask file (RON) holds limits of the magnitude in dB and, for single sections, of f0, q, fz and depth:
+  (
+      reference: Dc,
+      limits: [(from: \"10 Hz\", to: \"700 Hz\", lower: \"-1 dB\", upper: \"1 dB\")],
+      figures: [(section: \"A\", f0: (\"950 Hz\", \"1050 Hz\"), q: (0.5, 0.6))],
+  )
+The reference is Absolute (where none is written), Dc, Peak, or At(a frequency).
+
+Examples:
+  roundwell shortlist job.ron --format json --out shortlist.json
+  roundwell vet shortlist.json --row 4 --mask mask.ron --capacitor-tolerance 2%
+
+Exit codes: 0 done, 2 bad input or usage, 3 the target or the nominal parts miss the mask.";
 
 /// How a shortlist is written.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq, ValueEnum)]
@@ -422,6 +440,109 @@ pub struct StockArgs {
     /// Characters to the line of a table.
     #[arg(long, value_name = "COUNT", default_value_t = 80, value_parser = clap::value_parser!(u16).range(40..=1000))]
     pub width: u16,
+}
+
+/// `vet`.
+#[derive(Debug, Args)]
+pub struct VetArgs {
+    /// A shortlist written by `shortlist --format json`, or - for standard input.
+    pub list: PathBuf,
+    /// The row to look at.
+    #[arg(long, value_name = "NUMBER", default_value_t = 1)]
+    pub row: usize,
+    /// Circuit file (.ron), where the list uses a circuit of your own; repeatable.
+    #[arg(long, value_name = "FILE")]
+    pub circuit: Vec<PathBuf>,
+    /// Mask file (RON) with the limits that the response has to keep.
+    #[arg(long, value_name = "FILE")]
+    pub mask: Option<PathBuf>,
+    /// Tolerance of the resistors, to either side.
+    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "1%")]
+    pub resistor_tolerance: String,
+    /// Tolerance of the capacitors, to either side.
+    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "5%")]
+    pub capacitor_tolerance: String,
+    /// How errors are spread: evenly, or normally with a third of the tolerance as standard deviation and cut off at it.
+    #[arg(long, default_value = "uniform", value_parser = ["uniform", "normal"])]
+    pub distribution: String,
+    /// The share of the tolerance by which all parts of one part number are off together, as from one reel.
+    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "0%")]
+    pub reel_share: String,
+    /// Temperatures between which the board has to work, °C; the nominal values hold at 25 °C.
+    #[arg(long, value_name = "FROM..TO", allow_hyphen_values = true)]
+    pub temperature: Option<String>,
+    /// Temperature coefficient of the resistors, such as 100 (to either side), -200 or -200±100 [default: 100].
+    #[arg(long, value_name = "PPM/K", allow_hyphen_values = true)]
+    pub resistor_coefficient: Option<String>,
+    /// Temperature coefficient of the capacitors [default: 30, as for C0G].
+    #[arg(long, value_name = "PPM/K", allow_hyphen_values = true)]
+    pub capacitor_coefficient: Option<String>,
+    /// How far the coefficients of two resistors of different part numbers are apart at most [default: all of the range].
+    #[arg(long, value_name = "PPM/K", allow_hyphen_values = true)]
+    pub resistor_tracking: Option<String>,
+    /// The same for capacitors.
+    #[arg(long, value_name = "PPM/K", allow_hyphen_values = true)]
+    pub capacitor_tracking: Option<String>,
+    /// By how much a resistor can be off at the end of its life, to either side.
+    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "0%")]
+    pub resistor_ageing: String,
+    /// By how much a capacitor can be off at the end of its life, to either side.
+    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "0%")]
+    pub capacitor_ageing: String,
+    /// Gain-bandwidth product of the op-amps, Hz [default: ideal op-amps].
+    #[arg(long, value_name = "FREQUENCY", allow_hyphen_values = true)]
+    pub gbw: Option<String>,
+    /// Output resistance of the op-amps, ohms [default: 0].
+    #[arg(long, value_name = "OHMS", allow_hyphen_values = true)]
+    pub output_resistance: Option<String>,
+    /// Resistance of the source, ohms [default: 0].
+    #[arg(long, value_name = "OHMS", allow_hyphen_values = true)]
+    pub source_resistance: Option<String>,
+    /// Load from the output to ground, ohms [default: none].
+    #[arg(long, value_name = "OHMS", allow_hyphen_values = true)]
+    pub load_resistance: Option<String>,
+    /// Stray capacitance from every node to ground, farads [default: none].
+    #[arg(long, value_name = "FARADS", allow_hyphen_values = true)]
+    pub stray: Option<String>,
+    /// The largest shift of f0 and Q that is wanted from the op-amps, for the least gain-bandwidth product [default: 1%].
+    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true)]
+    pub shift: Option<String>,
+    /// The largest amplitude of a sine at the output, volts, for the slew rate.
+    #[arg(long, value_name = "VOLTS", allow_hyphen_values = true)]
+    pub output_level: Option<String>,
+    /// The largest amplitude at the output of an op-amp, volts; shows headroom and noise.
+    #[arg(long, value_name = "VOLTS", allow_hyphen_values = true)]
+    pub swing: Option<String>,
+    /// Voltage noise of the op-amps, nanovolts per root hertz [default: 0].
+    #[arg(long, value_name = "NANOVOLTS", allow_hyphen_values = true)]
+    pub voltage_noise: Option<String>,
+    /// Current noise at each input of the op-amps, picoamperes per root hertz [default: 0].
+    #[arg(long, value_name = "PICOAMPERES", allow_hyphen_values = true)]
+    pub current_noise: Option<String>,
+    /// Plan a trim: which resistor sets what, how far it has to reach, and what to look at.
+    #[arg(long)]
+    pub trim: bool,
+    /// Boards to draw at most for the yield.
+    #[arg(long, value_name = "COUNT", allow_hyphen_values = true, default_value = "100000")]
+    pub boards: String,
+    /// Draw no more once the interval of the yield is this narrow to either side; 0 draws all.
+    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "0.5%")]
+    pub interval: String,
+    /// Seed of the draw.
+    #[arg(long, value_name = "NUMBER", allow_hyphen_values = true, default_value = "1")]
+    pub seed: String,
+    /// How to write it.
+    #[arg(long, value_enum, default_value_t)]
+    pub format: ShowFormat,
+    /// Write to this file in place of standard output; it is replaced only when all is written.
+    #[arg(long, value_name = "FILE")]
+    pub out: Option<PathBuf>,
+    /// Characters to the line.
+    #[arg(long, value_name = "COUNT", default_value_t = 80, value_parser = clap::value_parser!(u16).range(40..=1000))]
+    pub width: u16,
+    /// Threads to work with [default: one for each processor core].
+    #[arg(long, value_name = "COUNT", value_parser = clap::value_parser!(u16).range(1..=1024))]
+    pub threads: Option<u16>,
 }
 
 /// A whole number within a range.

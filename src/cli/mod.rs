@@ -13,6 +13,8 @@ mod shortlist;
 mod stock;
 mod swap;
 mod values;
+mod vet;
+mod vet_settings;
 
 use std::ffi::OsString;
 use std::io::{IsTerminal, Write};
@@ -52,6 +54,7 @@ pub fn run(words: impl IntoIterator<Item = OsString>) -> ExitCode {
         Command::Circuits(args) => circuits::run(args),
         Command::Values(args) => values::run(args),
         Command::Stock(args) => stock::run(args),
+        Command::Vet(args) => vet::run(args),
     };
     // The panic's own message has been told by then.
     ExitCode::from(match catch_unwind(AssertUnwindSafe(command)) {

@@ -9,6 +9,8 @@ mod file;
 mod filter;
 mod given;
 mod goals;
+mod listed;
+mod mask;
 mod resolve;
 mod section;
 mod shelf;
@@ -23,5 +25,7 @@ pub use file::{
 };
 pub use filter::resolve_filter;
 pub use given::{Given, Scalar, Scalars};
+pub use listed::{Listed, ListedPart, ListedRow, ListedSection};
+pub use mask::read_mask;
 pub use resolve::{Job, resolve};
 pub use shelf::{ShelfFile, Shelves};

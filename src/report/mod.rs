@@ -12,6 +12,12 @@ mod record;
 mod stock;
 mod swap;
 mod table;
+mod vet;
+mod vet_drift;
+mod vet_levels;
+mod vet_real;
+mod vet_table;
+mod vet_trim;
 
 #[cfg(test)]
 mod sample;
@@ -38,3 +44,12 @@ pub use swap::{
     ChangeRecord, ImpossibleRecord, ReplacementRecord, SWAP_FORMAT, SwapRecord, write_swap_json, write_swap_table,
 };
 pub use table::write_table;
+pub use vet::{
+    LimitRecord, MaskOutcome, OffPart, SpreadRecord, VET_FORMAT, VetRecord, VetSection, WorstRecord, YieldRecord,
+    write_vet_json,
+};
+pub use vet_drift::{DriftRecord, FigureDriftRecord, KindDriftRecord};
+pub use vet_levels::{LevelsRecord, PeakRecord};
+pub use vet_real::{RealRecord, RealSectionRecord, SlewRecord};
+pub use vet_table::write_vet_table;
+pub use vet_trim::TrimRecord;

@@ -106,7 +106,7 @@ fn stock_in_words(stock: &SupplyRecord) -> String {
     words
 }
 
-fn target_in_words(target: &TargetRecord) -> String {
+pub(super) fn target_in_words(target: &TargetRecord) -> String {
     let mut words = format!("{}, {}", target.shape, unbroken(&format!("f0 {}", level(target.f0_hz, 6, "Hz"))));
     if let Some(q) = target.q {
         words += &format!(", {}", unbroken(&format!("Q {}", short(q, 6))));
@@ -135,7 +135,7 @@ fn search_in_words(search: &SectionSearch) -> Vec<String> {
     lines
 }
 
-fn measure_in_words(measure: &MeasureRecord) -> String {
+pub(super) fn measure_in_words(measure: &MeasureRecord) -> String {
     let [low, high] = measure.band_hz.map(|hertz| unbroken(&level(hertz, 4, "Hz")));
     let mut words = measure.definition.to_string();
     if let Some([f0, q, gain, fz]) = measure.weights {

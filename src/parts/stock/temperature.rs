@@ -30,7 +30,9 @@ impl TemperatureCoefficient {
     }
 
     /// Reads a number with at most three decimals, the unit `ppm/K`, `ppm/°C` or `ppm` allowed.
-    pub(super) fn read(text: &str) -> Option<TemperatureCoefficient> {
+    ///
+    /// `None` for anything else, and beyond [`TemperatureCoefficient::LARGEST`].
+    pub fn read(text: &str) -> Option<TemperatureCoefficient> {
         let text = text.replace('\u{2212}', "-").replace("+/-", "±").replace("+-", "±");
         let number = strip_unit(text.trim()).trim();
         let (mean, spread) = number.split_once('±').unwrap_or(match number {

@@ -1,0 +1,257 @@
+//! A board as it is built: the parts of every slot, and what small changes of them do.
+
+use std::sync::Arc;
+
+use num_complex::Complex64;
+
+use crate::circuit::{Circuit, Output, Polynomial};
+use crate::target::{Biquad, Criterion, Section, Shape, Yardstick};
+use crate::units::{Kind, Value};
+
+/// How the pieces of a slot make up its value.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Joint {
+    /// The values add: resistors in series, capacitors in parallel, or a single part.
+    Sum,
+    /// The reciprocals add: resistors in parallel, capacitors in series.
+    Reciprocal,
+}
+
+/// What one slot holds.
+#[derive(Clone, Debug, PartialEq)]
+pub struct BuiltPart {
+    /// The slot's index in the circuit.
+    pub slot: usize,
+    /// Resistor or capacitor.
+    pub kind: Kind,
+    /// The nominal value of the slot.
+    pub value: Value,
+    /// The parts that make it up, at least one.
+    pub pieces: Vec<Value>,
+    /// How they do.
+    pub joint: Joint,
+}
+
+impl BuiltPart {
+    /// The factor by which the slot's value changes when its pieces are off by the relative errors `errors`.
+    pub fn factor(&self, errors: &[f64]) -> f64 {
+        if let [error] = errors {
+            return 1.0 + error;
+        }
+        let total = self.value.to_f64();
+        let pieces = self.pieces.iter().map(|piece| piece.to_f64()).zip(errors);
+        match self.joint {
+            Joint::Sum => pieces.map(|(piece, error)| piece * (1.0 + error)).sum::<f64>() / total,
+            Joint::Reciprocal => 1.0 / (total * pieces.map(|(piece, e)| 1.0 / (piece * (1.0 + e))).sum::<f64>()),
+        }
+    }
+
+    /// The relative change of the slot's value per relative change of each piece, for small changes.
+    pub fn shares(&self) -> Vec<f64> {
+        let total = self.value.to_f64();
+        let share = |piece: &Value| match self.joint {
+            Joint::Sum => piece.to_f64() / total,
+            Joint::Reciprocal => total / piece.to_f64(),
+        };
+        self.pieces.iter().map(share).collect()
+    }
+}
+
+/// One section as it is built.
+#[derive(Clone, Debug, PartialEq)]
+pub struct BuiltSection {
+    /// The ideal figures.
+    pub target: Section,
+    /// The circuit.
+    pub circuit: Arc<Circuit>,
+    /// Index of the output that is taken.
+    pub output: usize,
+    /// The parts of the filled slots, in slot order.
+    pub parts: Vec<BuiltPart>,
+}
+
+impl BuiltSection {
+    /// The output that is taken.
+    pub fn output(&self) -> &Output {
+        &self.circuit.outputs[self.output]
+    }
+
+    /// The nominal values by slot, ohms and farads; NaN for slots that stay empty.
+    pub fn values(&self) -> Vec<f64> {
+        let mut values = vec![f64::NAN; self.circuit.slots.len()];
+        self.parts.iter().for_each(|part| values[part.slot] = part.value.to_f64());
+        values
+    }
+
+    /// Name of a slot.
+    pub fn slot_name(&self, slot: usize) -> &str {
+        &self.circuit.slots[slot].name
+    }
+}
+
+/// A board: a row of a shortlist with its circuits.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Built {
+    /// The title of the job.
+    pub title: String,
+    /// By what the response is judged.
+    pub criterion: Criterion,
+    /// The sections in signal order.
+    pub sections: Vec<BuiltSection>,
+}
+
+impl Built {
+    /// The ideal sections.
+    pub fn targets(&self) -> Vec<Section> {
+        self.sections.iter().map(|section| section.target.clone()).collect()
+    }
+
+    /// The measure, ready for use.
+    pub fn yardstick(&self) -> Yardstick {
+        Yardstick::new(&self.targets(), self.criterion)
+    }
+
+    /// The transfer functions of the nominal parts.
+    pub fn nominal(&self) -> Vec<Biquad> {
+        self.sections.iter().map(|section| Formula::of(section).biquad(&section.admittances())).collect()
+    }
+}
+
+impl BuiltSection {
+    /// The nominal admittances in the order of the parts: conductance of a resistor, capacitance of a capacitor.
+    pub fn admittances(&self) -> Vec<f64> {
+        let admittance = |part: &BuiltPart| match part.kind {
+            Kind::Resistor => 1.0 / part.value.to_f64(),
+            Kind::Capacitor => part.value.to_f64(),
+        };
+        self.parts.iter().map(admittance).collect()
+    }
+}
+
+/// A product of admittances with an integer factor.
+#[derive(Clone, Debug)]
+struct Term {
+    factor: f64,
+    /// The parts that occur, each as often as its power says.
+    parts: Vec<usize>,
+}
+
+/// The coefficients of a section as sums of products, prepared for fast repeated evaluation.
+#[derive(Clone, Debug)]
+pub struct Formula {
+    /// The terms of the numerator's coefficients, then of the denominator's, by ascending powers of s.
+    coefficients: [Vec<Term>; 6],
+}
+
+impl Formula {
+    /// The formula of a section's output, in the admittances of its parts.
+    pub fn of(section: &BuiltSection) -> Formula {
+        let transfer = &section.output().transfer;
+        let place = |slot: usize| section.parts.iter().position(|part| part.slot == slot);
+        let terms = |polynomial: Option<&Polynomial>| -> Vec<Term> {
+            let Some(polynomial) = polynomial else { return Vec::new() };
+            let term = |(exponents, factor): (&[u8], i64)| {
+                let powers = exponents.iter().enumerate();
+                let parts = powers.flat_map(|(slot, &power)| std::iter::repeat_n(place(slot), usize::from(power)));
+                // Slots that stay empty do not occur in the output's polynomials.
+                Term { factor: factor as f64, parts: parts.flatten().collect() }
+            };
+            polynomial.terms().map(term).collect()
+        };
+        let n = |power: usize| terms(transfer.numerator.get(power));
+        let d = |power: usize| terms(transfer.denominator.get(power));
+        Formula { coefficients: [n(0), n(1), n(2), d(0), d(1), d(2)] }
+    }
+
+    /// The transfer function for these admittances, in the order of the section's parts.
+    pub fn biquad(&self, admittances: &[f64]) -> Biquad {
+        let value = |terms: &Vec<Term>| {
+            let product =
+                |term: &Term| term.parts.iter().fold(term.factor, |product, &part| product * admittances[part]);
+            terms.iter().map(product).sum::<f64>()
+        };
+        let c = &self.coefficients;
+        Biquad { num: [value(&c[0]), value(&c[1]), value(&c[2])], den: [value(&c[3]), value(&c[4]), value(&c[5])] }
+    }
+
+    /// For each part the change of every coefficient per relative change of that part's *value*.
+    fn slopes(&self, section: &BuiltSection) -> Vec<Biquad> {
+        let admittances = section.admittances();
+        let mut slopes = vec![[0.0; 6]; admittances.len()];
+        for (place, terms) in self.coefficients.iter().enumerate() {
+            for term in terms {
+                let product = term.parts.iter().fold(term.factor, |product, &part| product * admittances[part]);
+                term.parts.iter().for_each(|&part| slopes[part][place] += product);
+            }
+        }
+        let by_part = slopes.into_iter().zip(&section.parts);
+        by_part
+            .map(|(slope, part)| {
+                let sign = if part.kind == Kind::Resistor { -1.0 } else { 1.0 };
+                let [n0, n1, n2, d0, d1, d2] = slope.map(|x| sign * x);
+                Biquad { num: [n0, n1, n2], den: [d0, d1, d2] }
+            })
+            .collect()
+    }
+}
+
+/// How the figures and the response of a section follow its parts: relative change per relative change of a part's value.
+///
+/// Exact derivatives at the nominal values: each coefficient is a sum of products, and a product changes by its exponent.
+#[derive(Clone, Debug)]
+pub struct Sensitivities {
+    nominal: Biquad,
+    slopes: Vec<Biquad>,
+    target: Section,
+}
+
+/// The sensitivities of the figures to one part: relative change per relative change of its value.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct FigureSensitivity {
+    /// Of f0.
+    pub f0: f64,
+    /// Of Q; zero for first order.
+    pub q: f64,
+    /// Of the gain.
+    pub gain: f64,
+    /// Of the zero of a notch; zero for other shapes.
+    pub fz: f64,
+}
+
+impl Sensitivities {
+    /// The sensitivities of a section at its nominal values.
+    pub fn of(section: &BuiltSection) -> Sensitivities {
+        let formula = Formula::of(section);
+        let nominal = formula.biquad(&section.admittances());
+        Sensitivities { nominal, slopes: formula.slopes(section), target: section.target.clone() }
+    }
+
+    /// Of the figures, to the part of that place.
+    pub fn figures(&self, part: usize) -> FigureSensitivity {
+        let (h, slope) = (&self.nominal, &self.slopes[part]);
+        let n = |k: usize| slope.num[k] / h.num[k];
+        let d = |k: usize| slope.den[k] / h.den[k];
+        let shape = self.target.shape;
+        let order = shape.order();
+        let power = match shape {
+            Shape::HighPass => 2,
+            Shape::BandPass | Shape::FirstOrderHighPass => 1,
+            Shape::Notch if self.target.wz.is_some_and(|wz| wz < self.target.w0) => 2,
+            _ => 0,
+        };
+        FigureSensitivity {
+            f0: if order == 2 { 0.5 * (d(0) - d(2)) } else { d(0) - d(1) },
+            q: if order == 2 { 0.5 * (d(0) + d(2)) - d(1) } else { 0.0 },
+            gain: n(power) - d(power),
+            fz: if shape == Shape::Notch { 0.5 * (n(0) - n(2)) } else { 0.0 },
+        }
+    }
+
+    /// Of H(jω), to each part: the real part is the relative change of the magnitude, the imaginary part that of the
+    /// phase in radians.
+    pub fn response(&self, w: f64) -> Vec<Complex64> {
+        let poly = |p: &[f64; 3]| Complex64::new(p[0] - p[2] * w * w, p[1] * w);
+        let (n, d) = (poly(&self.nominal.num), poly(&self.nominal.den));
+        self.slopes.iter().map(|slope| poly(&slope.num) / n - poly(&slope.den) / d).collect()
+    }
+}

@@ -1,0 +1,32 @@
+//! What becomes of a board once it is built: limits it has to keep, what tolerances, temperature and age do to it, its
+//! worst case.
+//!
+//! Nothing here prints, opens files or reads the clock, and every result is the same for any number of threads.
+
+mod built;
+mod corners;
+mod drift;
+mod interval;
+mod levels;
+mod mask;
+mod network;
+mod real;
+mod spread;
+mod tolerance;
+mod trim;
+mod vetted;
+mod yields;
+
+pub use built::{Built, BuiltPart, BuiltSection, FigureSensitivity, Formula, Joint, Sensitivities};
+pub use corners::{Judge, WorstCase, worst_case};
+pub use drift::{Climate, Drift, Extremes, FigureDrift, KindDrift, SectionDrift, drift};
+pub use interval::clopper_pearson;
+pub use levels::{LevelConditions, Levels, Noise, Peak, levels};
+pub use mask::{Figure, FigureLimit, Gauge, Limit, Mask, Reference, Scratch, Standing, figure_of, has_reference};
+pub use network::{Network, Reach, Surroundings};
+pub use real::{Real, RealConditions, RealSection, Slew, real};
+pub use spread::{Deviations, Quantiles, SectionSpread, Spread, deviations, spread};
+pub use tolerance::{Boards, Distribution, Draw, Tolerances};
+pub use trim::{Trim, Watch, trims};
+pub use vetted::{Conditions, MaskResult, Vetted, vet};
+pub use yields::{Sampling, Yield, estimate};

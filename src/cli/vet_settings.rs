@@ -1,0 +1,261 @@
+//! What the flags of `vet` say, checked, with all their faults.
+
+use super::args::VetArgs;
+use super::failure::{Failure, Faulty};
+use crate::analysis::{
+    Climate, Distribution, KindDrift, LevelConditions, RealConditions, Sampling, Surroundings, Tolerances,
+};
+use crate::parts::TemperatureCoefficient;
+use crate::text::Fault;
+use crate::units::{Kind, parse_frequency, parse_number, parse_part};
+
+/// The flags of `vet` as values.
+#[derive(Debug)]
+pub struct VetSettings {
+    /// The tolerances.
+    pub tolerances: Tolerances,
+    /// How boards are drawn.
+    pub sampling: Sampling,
+    /// Temperature and age, where a flag for them is given.
+    pub climate: Option<Climate>,
+    /// Op-amps and surroundings, where a flag for them is given.
+    pub real: Option<RealConditions>,
+    /// Headroom and noise, where the swing is given.
+    pub levels: Option<LevelConditions>,
+}
+
+/// At which temperature the nominal values hold, °C; common practice.
+const REFERENCE: f64 = 25.0;
+
+impl VetSettings {
+    /// Reads the flags.
+    ///
+    /// # Errors
+    /// All flags that are wrong, each with the allowed range.
+    pub fn new(args: &VetArgs) -> Result<VetSettings, Failure> {
+        let mut faults = Vec::new();
+        let settings = read(args, &mut faults);
+        if faults.is_empty() {
+            return Ok(settings);
+        }
+        Err(Failure::Input(vec![Faulty { file: String::new(), text: String::new(), faults, is_first_round: true }]))
+    }
+}
+
+fn read(args: &VetArgs, faults: &mut Vec<Fault>) -> VetSettings {
+    let tolerance = Percent { name: "a tolerance", most: 90.0, example: "1%" };
+    let tolerances = Tolerances {
+        resistors: tolerance.read("--resistor-tolerance", &args.resistor_tolerance, faults),
+        capacitors: tolerance.read("--capacitor-tolerance", &args.capacitor_tolerance, faults),
+        distribution: match args.distribution.as_str() {
+            "normal" => Distribution::TruncatedNormal,
+            _ => Distribution::Uniform,
+        },
+        reel_share: Percent { name: "the share", most: 100.0, example: "70%" }.read(
+            "--reel-share",
+            &args.reel_share,
+            faults,
+        ),
+    };
+    let half_width = Percent { name: "the half-width", most: 49.0, example: "0.5%" };
+    let sampling = Sampling {
+        half_width: half_width.read("--interval", &args.interval, faults),
+        boards: whole("--boards", &args.boards, 1, 100_000_000, faults),
+        seed: whole("--seed", &args.seed, 0, u64::MAX, faults),
+        ..Sampling::default()
+    };
+    let (climate, real) = (climate(args, faults), real(args, faults));
+    let around = real.map_or(Surroundings::IDEAL, |real| real.around);
+    let levels = levels(args, around, faults);
+    VetSettings { tolerances, sampling, climate, real, levels }
+}
+
+/// A percentage from zero to `most`.
+struct Percent {
+    name: &'static str,
+    most: f64,
+    example: &'static str,
+}
+
+impl Percent {
+    fn read(&self, flag: &str, text: &str, faults: &mut Vec<Fault>) -> f64 {
+        let Percent { name, most, example } = self;
+        let help = format!("write it in percent, such as {example}");
+        let fault = match parse_number(text) {
+            Err(error) => Fault::at(flag, error.to_string()),
+            Ok(_) if !text.contains('%') && text.trim() != "0" => {
+                Fault::at(flag, format!("\"{text}\" has no unit")).help(help)
+            }
+            Ok(ratio) if (0.0..=most / 100.0).contains(&ratio) => return ratio,
+            Ok(_) => Fault::at(flag, format!("{name} lies between 0 % and {most} %, found {text}")).help(help),
+        };
+        faults.push(fault);
+        f64::NAN
+    }
+}
+
+fn whole(flag: &str, text: &str, low: u64, high: u64, faults: &mut Vec<Fault>) -> u64 {
+    text.parse().ok().filter(|number| (low..=high).contains(number)).unwrap_or_else(|| {
+        let message = format!("expected a whole number from {low} to {high}, found {text}");
+        faults.push(Fault::at(flag, message).help("write it without separators"));
+        low
+    })
+}
+
+fn climate(args: &VetArgs, faults: &mut Vec<Fault>) -> Option<Climate> {
+    let ageing = Percent { name: "the ageing", most: 50.0, example: "0.5%" };
+    let mut kind = |coefficient: Flag, tracking: Flag, age: (&str, &str), usual: &str| {
+        let range = coefficient_of(coefficient.0, coefficient.1.unwrap_or(usual), faults);
+        let (low, high) = range.map_or((0.0, 0.0), |c| (c.mean() - c.spread(), c.mean() + c.spread()));
+        let tracking = match tracking.1.map(|text| coefficient_of(tracking.0, text, faults)) {
+            Some(Some(found)) if found.mean().abs() > 0.0 => {
+                let message = format!("{} is no distance", tracking.1.unwrap_or_default());
+                faults.push(Fault::at(tracking.0, message).help("write one without a sign, such as 25"));
+                0.0
+            }
+            Some(found) => found.map_or(0.0, TemperatureCoefficient::spread),
+            None => high - low,
+        };
+        let [low, high, tracking] = [low, high, tracking].map(|ppm| ppm * 1e-6);
+        KindDrift { low, high, tracking, ageing: ageing.read(age.0, age.1, faults) }
+    };
+    let resistors = kind(
+        ("--resistor-coefficient", args.resistor_coefficient.as_deref()),
+        ("--resistor-tracking", args.resistor_tracking.as_deref()),
+        ("--resistor-ageing", &args.resistor_ageing),
+        "100",
+    );
+    let capacitors = kind(
+        ("--capacitor-coefficient", args.capacitor_coefficient.as_deref()),
+        ("--capacitor-tracking", args.capacitor_tracking.as_deref()),
+        ("--capacitor-ageing", &args.capacitor_ageing),
+        "30",
+    );
+    let ages = resistors.ageing > 0.0 || capacitors.ageing > 0.0;
+    let (coldest, hottest) = match &args.temperature {
+        Some(text) => temperatures(text, faults),
+        None => {
+            let of_temperature = [
+                ("--resistor-coefficient", &args.resistor_coefficient),
+                ("--capacitor-coefficient", &args.capacitor_coefficient),
+                ("--resistor-tracking", &args.resistor_tracking),
+                ("--capacitor-tracking", &args.capacitor_tracking),
+            ];
+            for (flag, _) in of_temperature.into_iter().filter(|(_, given)| given.is_some()) {
+                let fault = Fault::at(flag, "says nothing without a range of temperatures");
+                faults.push(fault.help("add --temperature FROM..TO, such as --temperature 0..50"));
+            }
+            (0.0, 0.0)
+        }
+    };
+    (ages || args.temperature.is_some()).then_some(Climate { coldest, hottest, resistors, capacitors })
+}
+
+/// A flag and its value, where it is given.
+type Flag<'a> = (&'a str, Option<&'a str>);
+
+fn coefficient_of(flag: &str, text: &str, faults: &mut Vec<Fault>) -> Option<TemperatureCoefficient> {
+    let found = TemperatureCoefficient::read(text);
+    if found.is_none() {
+        let most = TemperatureCoefficient::LARGEST;
+        let message = format!("\"{text}\" is no temperature coefficient up to {most} ppm/K");
+        faults.push(Fault::at(flag, message).help("write one such as 100 (to either side), -200 or -200±100"));
+    }
+    found
+}
+
+/// The coldest and the hottest, from the reference.
+fn temperatures(text: &str, faults: &mut Vec<Fault>) -> (f64, f64) {
+    let number = |text: &str| text.trim().trim_end_matches("°C").trim().parse::<f64>().ok();
+    let range = text.split_once("..").and_then(|(from, to)| Some((number(from)?, number(to)?)));
+    // Beyond these no part of a board is specified.
+    let allowed = |(from, to): &(f64, f64)| *from >= -100.0 && from <= to && *to <= 250.0;
+    match range.filter(allowed) {
+        Some((from, to)) => (from - REFERENCE, to - REFERENCE),
+        None => {
+            let message = format!("\"{text}\" is no range of temperatures from -100 °C to 250 °C");
+            faults.push(Fault::at("--temperature", message).help("write FROM..TO in °C, such as -20..60"));
+            (0.0, 0.0)
+        }
+    }
+}
+
+fn real(args: &VetArgs, faults: &mut Vec<Fault>) -> Option<RealConditions> {
+    let given = [
+        &args.gbw,
+        &args.output_resistance,
+        &args.source_resistance,
+        &args.load_resistance,
+        &args.stray,
+        &args.shift,
+        &args.output_level,
+    ];
+    if given.into_iter().all(Option::is_none) {
+        return None;
+    }
+    let bandwidth = args.gbw.as_deref().and_then(|text| noted(parse_frequency(text), "--gbw", faults));
+    if args.gbw.is_none() && args.shift.is_some() {
+        let fault = Fault::at("--shift", "says nothing about ideal op-amps");
+        faults.push(fault.help("add the gain-bandwidth product, such as --gbw 3MHz"));
+    }
+    let mut part = |flag: &str, text: &Option<String>, kind: Kind| -> Option<f64> {
+        let text = text.as_deref().filter(|text| text.trim() != "0")?;
+        noted(parse_part(text, kind), flag, faults).map(|value| value.to_f64())
+    };
+    let output_resistance = part("--output-resistance", &args.output_resistance, Kind::Resistor).unwrap_or(0.0);
+    let source_resistance = part("--source-resistance", &args.source_resistance, Kind::Resistor).unwrap_or(0.0);
+    let stray = part("--stray", &args.stray, Kind::Capacitor).unwrap_or(0.0);
+    // A load of zero would be a short circuit: it is read as any other value, and refused.
+    let load_resistance = args
+        .load_resistance
+        .as_deref()
+        .and_then(|text| noted(parse_part(text, Kind::Resistor), "--load-resistance", faults));
+    let load_resistance = load_resistance.map(|value| value.to_f64());
+    let shift = args.shift.as_deref().map_or(0.01, |text| {
+        let shift = Percent { name: "the shift", most: 50.0, example: "1%" }.read("--shift", text, faults);
+        if shift <= 0.0 {
+            let message = format!("the shift must be larger than 0 %, found {text}");
+            faults.push(Fault::at("--shift", message).help("no op-amp leaves nothing: write one such as 1%"));
+        }
+        shift
+    });
+    let level = args.output_level.as_deref().and_then(|text| volts("--output-level", text, faults));
+    let around = Surroundings { bandwidth, output_resistance, source_resistance, load_resistance, stray };
+    Some(RealConditions { around, shift, level })
+}
+
+/// An amplitude.
+fn volts(flag: &str, text: &str, faults: &mut Vec<Fault>) -> Option<f64> {
+    let number = text.trim().trim_end_matches('V').trim().parse::<f64>().ok();
+    let level = number.filter(|volts| *volts > 0.0 && *volts <= 1000.0);
+    if level.is_none() {
+        let message = format!("\"{text}\" is no amplitude above 0 V and up to 1000 V");
+        faults.push(Fault::at(flag, message).help("write one in volts, such as 10"));
+    }
+    level
+}
+
+fn levels(args: &VetArgs, around: Surroundings, faults: &mut Vec<Fault>) -> Option<LevelConditions> {
+    let mut noise = |flag: &str, text: &Option<String>, unit: &str, scale: f64| -> f64 {
+        let Some(text) = text else { return 0.0 };
+        if args.swing.is_none() {
+            let fault = Fault::at(flag, "says nothing without a swing, by which headroom and noise are asked for");
+            faults.push(fault.help("add the largest amplitude at the op-amps, such as --swing 10"));
+        }
+        let number = text.trim().parse::<f64>().ok().filter(|number| (0.0..=1e6).contains(number));
+        if number.is_none() {
+            let message = format!("\"{text}\" is no noise from 0 to 1e6 {unit}");
+            faults.push(Fault::at(flag, message).help(format!("write the number of {unit}, such as 5")));
+        }
+        number.unwrap_or(0.0) * scale
+    };
+    let voltage_noise = noise("--voltage-noise", &args.voltage_noise, "nV/√Hz", 1e-9);
+    let current_noise = noise("--current-noise", &args.current_noise, "pA/√Hz", 1e-12);
+    let swing = volts("--swing", args.swing.as_deref()?, faults)?;
+    Some(LevelConditions { around, swing, voltage_noise, current_noise })
+}
+
+/// A value, or the fault of its flag.
+fn noted<T, E: std::fmt::Display>(read: Result<T, E>, flag: &str, faults: &mut Vec<Fault>) -> Option<T> {
+    read.map_err(|error| faults.push(Fault::at(flag, error.to_string()))).ok()
+}

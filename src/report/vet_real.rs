@@ -1,0 +1,191 @@
+//! What real op-amps and their surroundings do to a board: its part of the record, and the text.
+
+use std::f64::consts::TAU;
+
+use serde::Serialize;
+
+use super::layout::{Column, grid, paragraph, unbroken};
+use super::numbers::{level, percent, short};
+use super::vet_table::{of_hundred, rounded};
+use crate::analysis::{Built, Real, RealConditions, RealSection};
+use crate::target::Figures;
+
+/// What real op-amps and their surroundings do.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct RealRecord {
+    /// Gain-bandwidth product of the op-amps, Hz; `None` for ideal ones.
+    pub bandwidth_hz: Option<f64>,
+    /// Output resistance of the op-amps, Ω.
+    pub output_resistance_ohm: f64,
+    /// Resistance of the source, Ω.
+    pub source_resistance_ohm: f64,
+    /// Load, Ω.
+    pub load_resistance_ohm: Option<f64>,
+    /// Stray capacitance from every node to ground, F.
+    pub stray_farad: f64,
+    /// The relative shift for which the least gain-bandwidth products are given.
+    pub shift: f64,
+    /// The sections, each by itself.
+    pub sections: Vec<RealSectionRecord>,
+    /// The error of the whole board against the target, in the unit of the measure; `None` where it is unstable.
+    pub error: Option<f64>,
+    /// Where it is largest, Hz.
+    pub error_at_hz: Option<f64>,
+    /// The slew rate that is needed, where an output level is given.
+    pub slew: Option<SlewRecord>,
+}
+
+/// One section.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct RealSectionRecord {
+    /// Its name.
+    pub name: String,
+    /// `stable`, `unstable`, or `unknown` where the poles cannot be found.
+    pub state: &'static str,
+    /// Pole frequency, Hz, if it is stable.
+    pub f0_hz: Option<f64>,
+    /// Its relative change against ideal op-amps and surroundings.
+    pub f0_shift: Option<f64>,
+    /// Pole quality factor.
+    pub q: Option<f64>,
+    /// Its relative change.
+    pub q_shift: Option<f64>,
+    /// The least gain-bandwidth product, Hz, for the wanted shift.
+    pub least_bandwidth_hz: Option<f64>,
+}
+
+/// The slew rate that an output level asks for.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct SlewRecord {
+    /// The amplitude at the output, V.
+    pub level: f64,
+    /// The slew rate, V/s.
+    pub rate: f64,
+    /// The section whose op-amp needs it.
+    pub section: String,
+    /// The op-amp.
+    pub op_amp: String,
+    /// Where, Hz.
+    pub at_hz: f64,
+}
+
+impl RealRecord {
+    pub(super) fn new(built: &Built, conditions: &RealConditions, real: &Real, nominal: &[Figures]) -> RealRecord {
+        let around = &conditions.around;
+        let sections = built.sections.iter().zip(&real.sections).zip(nominal);
+        let section = |((section, real), nominal): ((&crate::analysis::BuiltSection, &RealSection), &Figures)| {
+            let record = RealSectionRecord {
+                name: section.target.name.clone(),
+                state: "unstable",
+                f0_hz: None,
+                f0_shift: None,
+                q: None,
+                q_shift: None,
+                least_bandwidth_hz: None,
+            };
+            match *real {
+                RealSection::Unstable => record,
+                RealSection::Unknown => RealSectionRecord { state: "unknown", ..record },
+                RealSection::Stable { w0, q, least_bandwidth } => RealSectionRecord {
+                    state: "stable",
+                    f0_hz: Some(w0 / TAU),
+                    f0_shift: Some(w0 / nominal.w0 - 1.0),
+                    q,
+                    q_shift: q.zip(nominal.q).map(|(q, ideal)| q / ideal - 1.0),
+                    least_bandwidth_hz: least_bandwidth,
+                    ..record
+                },
+            }
+        };
+        RealRecord {
+            bandwidth_hz: around.bandwidth,
+            output_resistance_ohm: around.output_resistance,
+            source_resistance_ohm: around.source_resistance,
+            load_resistance_ohm: around.load_resistance,
+            stray_farad: around.stray,
+            shift: conditions.shift,
+            sections: sections.map(section).collect(),
+            error: real.error.map(|(error, _)| error),
+            error_at_hz: real.error.map(|(_, w)| w / TAU),
+            slew: real.slew.zip(conditions.level).map(|(slew, level)| SlewRecord {
+                level,
+                rate: slew.rate,
+                section: built.sections[slew.section].target.name.clone(),
+                op_amp: built.sections[slew.section].circuit.op_amps[slew.op_amp].name.clone(),
+                at_hz: slew.at / TAU,
+            }),
+        }
+    }
+}
+
+/// The section of the page.
+pub(super) fn real_table(real: &RealRecord, unit: &str, width: usize) -> String {
+    let mut around = vec![match real.bandwidth_hz {
+        Some(bandwidth) => format!("op-amps of {}", unbroken(&level(bandwidth, 4, "Hz"))),
+        None => "ideal op-amps".to_string(),
+    }];
+    for (ohms, name) in [
+        (real.output_resistance_ohm, "output resistance"),
+        (real.source_resistance_ohm, "source"),
+        (real.load_resistance_ohm.unwrap_or(0.0), "load"),
+    ] {
+        if ohms > 0.0 {
+            around.push(format!("{name} {}", unbroken(&level(ohms, 4, "Ω"))));
+        }
+    }
+    if real.stray_farad > 0.0 {
+        around.push(format!("{} from every node to ground", unbroken(&level(real.stray_farad, 4, "F"))));
+    }
+    let mut text = paragraph("", &format!("Real network: {}", around.join(", ")), width);
+    for section in &real.sections {
+        let line = match section.state {
+            "unstable" => "unstable: it oscillates. Take faster op-amps, another circuit, or a lower Q.",
+            "unknown" => "its poles cannot be found, so nothing is said about it",
+            _ => continue,
+        };
+        text += &paragraph(&format!("   {}: ", section.name), line, width);
+    }
+    let stable: Vec<&RealSectionRecord> = real.sections.iter().filter(|section| section.state == "stable").collect();
+    let cells = |cell: &dyn Fn(&RealSectionRecord) -> String| stable.iter().map(|s| cell(s)).collect::<Vec<_>>();
+    if !stable.is_empty() {
+        let dash = || "-".to_string();
+        let mut columns = vec![
+            Column::left("section", cells(&|s| s.name.clone())),
+            Column::right("f0", cells(&|s| s.f0_hz.map_or_else(dash, |f| level(f, 6, "Hz")))),
+            Column::right("shift", cells(&|s| s.f0_shift.map_or_else(dash, percent))),
+            Column::right("Q", cells(&|s| s.q.map_or_else(dash, |q| short(q, 5)))),
+            Column::right("shift", cells(&|s| s.q_shift.map_or_else(dash, percent))),
+        ];
+        if real.bandwidth_hz.is_some() {
+            let header = format!("least bandwidth\nfor {}", of_hundred(real.shift));
+            let least = |s: &RealSectionRecord| s.least_bandwidth_hz.map_or_else(dash, |f| level(f, 3, "Hz"));
+            columns.push(Column::right(header, cells(&least)));
+        }
+        text.push('\n');
+        text += &grid(&columns, 1, width);
+    }
+    let mut whole = String::new();
+    if let (Some(error), Some(at)) = (real.error, real.error_at_hz) {
+        let line = format!(
+            "error of the whole board against the target {} at {}",
+            unbroken(&rounded(unit, error)),
+            unbroken(&level(at, 4, "Hz"))
+        );
+        whole += &paragraph("   ", &line, width);
+    }
+    if let Some(slew) = &real.slew {
+        let line = format!(
+            "an amplitude of {} at the output asks for {} of slew rate, at {} of section {} at {}",
+            unbroken(&format!("{} V", short(slew.level, 4))),
+            unbroken(&format!("{} V/µs", short(slew.rate * 1e-6, 3))),
+            slew.op_amp,
+            slew.section,
+            unbroken(&level(slew.at_hz, 4, "Hz"))
+        );
+        whole += &paragraph("   ", &line, width);
+    }
+    if !whole.is_empty() {
+        text.push('\n');
+    }
+    text + &whole
+}
