@@ -200,6 +200,9 @@ pub(crate) fn with_silent(model: &Model, supply: &Supply, active: Vec<Choice>, c
     filling.best.into_iter().map(|(_, choices, tally)| (choices, tally)).collect()
 }
 
+/// Whether the price is not known, the price, and the distance from the impedance level.
+type Rated = ((bool, Option<u64>), f64);
+
 /// The search for the best choices of the silent groups.
 struct Filling<'a> {
     model: &'a Model,
@@ -266,21 +269,19 @@ impl Filling<'_> {
         let bodies = alike.iter().map(|g| g.bodies()).sum::<u64>();
         let numbers: BTreeSet<(Kind, Choice)> =
             there.iter().map(|&choice| self.supply.part_number(open[0].kind, choice)).collect();
-        let mut nearest: BTreeMap<(Vec<bool>, u64, bool, bool), Choice> = BTreeMap::new();
+        let mut nearest: BTreeMap<(Vec<bool>, u64, bool, bool), (Rated, Choice)> = BTreeMap::new();
         for choice in open[0].shelf.choices().iter().filter(|choice| !there.contains(choice)) {
             let serves = alike.iter().map(|g| g.shelf.contains(*choice)).collect();
             let enough = (1..=bodies).take_while(|&b| self.supply.suffices(*choice, b)).count() as u64;
             let endless = self.supply.obtain(*choice, bodies).is_some();
             let known = numbers.contains(&self.supply.part_number(open[0].kind, *choice));
-            let kept = nearest.entry((serves, enough, endless, known)).or_insert(*choice);
-            let rank = |choice: &Choice| {
-                let price = self.supply.price(*choice);
-                ((price.is_none(), price), self.distance(&open[0], choice))
-            };
-            if rank(choice) < rank(kept) {
-                *kept = *choice;
+            let price = self.supply.price(*choice);
+            let rank = ((price.is_none(), price), self.distance(&open[0], choice));
+            let kept = nearest.entry((serves, enough, endless, known)).or_insert((rank, *choice));
+            if rank < kept.0 {
+                *kept = (rank, *choice);
             }
         }
-        nearest.into_values().collect()
+        nearest.into_values().map(|(_, choice)| choice).collect()
     }
 }

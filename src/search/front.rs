@@ -187,6 +187,12 @@ impl Best {
         self.within(most).filter(|found| found.key <= key).filter_map(|found| found.cost).min()
     }
 
+    /// Whether a set that takes at least this, costs at least that and has at least this error is beaten in everything, or
+    /// equalled.
+    pub fn beats(&self, takes: &Takes, cost: u64, key: ErrorKey) -> bool {
+        self.within(takes).any(|found| found.key <= key && found.cost.is_some_and(|known| known <= cost))
+    }
+
     /// The best error of all.
     pub fn error(&self) -> Option<ErrorKey> {
         self.by_takes.values().filter_map(|list| Some(list.first()?.key)).min()

@@ -11,7 +11,7 @@ use crate::target::{Biquad, Yardstick};
 use crate::units::{Kind, Value};
 
 use super::assign::{Candidates, items};
-use super::canonical::{canonical, distinct};
+use super::canonical::{canonical, distinct, parts};
 use super::family::{Budget, Family, Visitor};
 use super::front::{Best, End, ErrorKey, Found, Proof, Takes};
 use super::limits::{Monitor, Progress, StopReason};
@@ -319,6 +319,7 @@ impl<'a> Search<'a> {
                 start += size;
             }
         }
+        let known = self.best.clone();
         let best_error = self.best.error().map(ErrorKey::ceiling);
         let (finished, total) = (AtomicUsize::new(0), tasks.len().max(1));
         let stopped = AtomicBool::new(false);
@@ -336,6 +337,7 @@ impl<'a> Search<'a> {
                     takes,
                     limit: level,
                     best: Best::new(self.goals.alternatives + 1, self.cost_counts()),
+                    known: &known,
                     candidates: Candidates::default(),
                     sets: 0,
                 };
@@ -382,6 +384,8 @@ struct Collector<'a> {
     takes: Takes,
     limit: f64,
     best: Best,
+    /// What was known before this level.
+    known: &'a Best,
     /// Sets for several boards that differ.
     candidates: Candidates,
     sets: u64,
@@ -393,11 +397,27 @@ impl Visitor for Collector<'_> {
         // The set is judged in its canonical form below; this first look may differ from that by rounding.
         let limit = self.best.worst_kept(&self.takes).map_or(self.limit, |key| key.ceiling().min(self.limit));
         let order = self.yardstick.sections()[0].shape.order();
-        if !response.is_stable(order) || self.yardstick.within(&[*response], limit * (1.0 + 1e-9) + 1e-12).is_none() {
+        if !response.is_stable(order) {
             return;
         }
+        let Some(first) = self.yardstick.within(&[*response], limit * (1.0 + 1e-9) + 1e-12) else { return };
         let choices = choices();
         let groups = self.model.active_groups();
+        if self.goals.rank == Rank::Cost && self.goals.alternatives == 0 {
+            // What the silent slots add can only make it dearer; the key is that of the error less rounding.
+            let cost =
+                parts(groups, &choices).map(|(_, choice, bodies)| self.supply.price(choice).unwrap_or(0) * bodies);
+            let cost = cost.sum();
+            let takes = Takes {
+                part_numbers: distinct(self.supply, groups, &choices) + self.model.least_extra,
+                bought: 0,
+                placed_parts: self.model.placed_parts,
+            };
+            let key = ErrorKey::new(first.error * (1.0 - 1e-9) - 1e-12);
+            if self.best.beats(&takes, cost, key) || self.known.beats(&takes, cost, key) {
+                return;
+            }
+        }
         // Measured parts are there once: with several boards such a set serves one of them.
         let boards_differ = self.supply.boards > 1 && self.model.is_measured();
         let own = boards_differ && self.goals.each_board_its_own;
