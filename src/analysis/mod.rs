@@ -17,7 +17,7 @@ mod trim;
 mod vetted;
 mod yields;
 
-pub use built::{Built, BuiltPart, BuiltSection, FigureSensitivity, Formula, Joint, Sensitivities};
+pub use built::{Built, BuiltPart, BuiltPiece, BuiltSection, FigureSensitivity, Formula, Joint, Reel, Sensitivities};
 pub use corners::{Judge, WorstCase, worst_case};
 pub use drift::{Climate, Drift, Extremes, FigureDrift, KindDrift, SectionDrift, drift};
 pub use interval::clopper_pearson;

@@ -22,14 +22,14 @@ use crate::text::{Fault, located};
 /// Bad input, an output that cannot be written.
 pub fn run(args: &VetArgs) -> Result<u8, Failure> {
     let VetSettings { tolerances, sampling, climate, real, levels } = VetSettings::new(args)?;
-    let built = board(args)?;
+    let (built, boards) = board(args)?;
     let mask = args.mask.as_deref().map(|path| mask(path, &built)).transpose()?;
     let output = Output::open(args.out.as_deref())?;
     let pool = rayon::ThreadPoolBuilder::new().num_threads(args.threads.map_or(0, usize::from)).build();
     let pool = pool.map_err(|error| Failure::Threads(error.to_string()))?;
     let conditions = Conditions { tolerances, mask, climate, real, levels, trim: args.trim, sampling };
     let found = pool.install(|| vet(&built, &conditions));
-    let record = VetRecord::new(&built, args.row, &conditions, &found);
+    let record = VetRecord::new(&built, args.row, boards, &conditions, &found);
     output.write(&written(&record, args.format, usize::from(args.width))?)?;
     let missed = record.mask.as_ref().is_some_and(|mask| matches!(mask.fails, Some("target" | "nominal")));
     Ok(if missed { NOTHING_WITHIN_LIMITS } else { FOUND })
@@ -41,8 +41,8 @@ fn faulty(path: &Path, text: &str, faults: Vec<Fault>) -> Faulty {
     Faulty { file, text: text.to_string(), faults, is_first_round: false }
 }
 
-/// The board of the row that is asked for.
-fn board(args: &VetArgs) -> Result<Built, Failure> {
+/// The board of the row that is asked for, and of how many that differ it is the worst.
+fn board(args: &VetArgs) -> Result<(Built, usize), Failure> {
     let text = read_text(&args.list)?;
     let failed = |faults| Failure::Input(vec![faulty(&args.list, &text, faults)]);
     let listed = Listed::parse(&text).map_err(failed)?;
@@ -54,7 +54,8 @@ fn board(args: &VetArgs) -> Result<Built, Failure> {
         let found = own.get(id).cloned().or_else(|| find(id).cloned().map(Arc::new));
         found.ok_or_else(|| format!("there is no circuit `{id}`"))
     };
-    listed.built(row, &mut circuits).map_err(|faults| failed(located(&text, faults)))
+    let built = listed.built(row, &mut circuits).map_err(|faults| failed(located(&text, faults)))?;
+    Ok((built, row.boards))
 }
 
 /// The circuit files that are given, by their identifiers.

@@ -45,8 +45,8 @@ pub use swap::{
 };
 pub use table::write_table;
 pub use vet::{
-    LimitRecord, MaskOutcome, OffPart, SpreadRecord, VET_FORMAT, VetRecord, VetSection, WorstRecord, YieldRecord,
-    write_vet_json,
+    LimitRecord, MaskOutcome, OffPart, SpreadRecord, VET_FORMAT, VetPart, VetPiece, VetRecord, VetSection,
+    WorstRecord, YieldRecord, write_vet_json,
 };
 pub use vet_drift::{DriftRecord, FigureDriftRecord, KindDriftRecord};
 pub use vet_levels::{LevelsRecord, PeakRecord};
