@@ -2,13 +2,14 @@
 
 #![allow(clippy::unwrap_used)]
 
+mod command;
+
 use std::fs;
 use std::path::Path;
-use std::process::{Command, Output, Stdio};
+use std::process::{Command, Stdio};
 use std::time::Duration;
 
-use serde_json::Value;
-use tempfile::TempDir;
+use command::*;
 
 /// A section that is searched in no time.
 const SMALL: &str = "shortlist --shape low-pass --f0 1k --q 0.7071 --circuit sallen-key-low-pass --resistors E24:1k..100k \
@@ -24,63 +25,6 @@ const JOB: &str = r#"(
     capacitors: (series: E6, from: "1n", to: "100n"),
 )
 "#;
-
-fn command(folder: &Path, line: &str) -> Command {
-    let mut command = Command::new(assert_cmd::cargo::cargo_bin!("roundwell"));
-    command.current_dir(folder).args(line.split_whitespace()).stdin(Stdio::null());
-    command
-}
-
-fn run(folder: &Path, line: &str) -> Output {
-    command(folder, line).output().unwrap()
-}
-
-/// Runs where no file is needed.
-fn plain(line: &str) -> Output {
-    run(Path::new("."), line)
-}
-
-fn code(output: &Output) -> i32 {
-    output.status.code().unwrap()
-}
-
-fn out(output: &Output) -> String {
-    String::from_utf8(output.stdout.clone()).unwrap()
-}
-
-fn err(output: &Output) -> String {
-    String::from_utf8(output.stderr.clone()).unwrap()
-}
-
-fn json(output: &Output) -> Value {
-    serde_json::from_slice(&output.stdout).unwrap()
-}
-
-fn folder_with(files: &[(&str, &str)]) -> TempDir {
-    let folder = tempfile::tempdir().unwrap();
-    for (name, text) in files {
-        fs::write(folder.path().join(name), text).unwrap();
-    }
-    folder
-}
-
-/// What must hold of every refusal: exit code 2, nothing on standard output, a message without colour and panic.
-fn refused(output: &Output) -> String {
-    let told = err(output);
-    assert_eq!(code(output), 2, "{told}");
-    assert!(output.stdout.is_empty());
-    assert!(!told.is_empty() && !told.contains('\u{1b}') && !told.contains("panicked"), "{told}");
-    told
-}
-
-/// A table without the time that it took.
-fn without_time(text: &str) -> String {
-    let lines = text.lines().map(|line| match line.starts_with("Search:") {
-        true => line.rsplit_once(',').map_or(line, |(rest, _)| rest).to_string() + ", [time]",
-        false => line.to_string(),
-    });
-    lines.collect::<Vec<_>>().join("\n")
-}
 
 #[test]
 fn a_single_section_needs_no_file() {
@@ -330,9 +274,7 @@ fn a_full_disk_is_told() {
 #[test]
 fn a_reader_that_has_gone_is_no_failure() {
     for line in [SMALL, "circuits --format json", "values", "--help"] {
-        let (reader, writer) = std::io::pipe().unwrap();
-        drop(reader);
-        let output = command(Path::new("."), line).stdout(writer).output().unwrap();
+        let output = unread(Path::new("."), line);
         assert_eq!(code(&output), 0, "{line}: {}", err(&output));
         assert!(err(&output).is_empty(), "{}", err(&output));
     }
@@ -341,8 +283,7 @@ fn a_reader_that_has_gone_is_no_failure() {
 #[test]
 fn a_job_comes_from_standard_input() {
     let folder = folder_with(&[("job.ron", JOB)]);
-    let input = fs::File::open(folder.path().join("job.ron")).unwrap();
-    let output = command(folder.path(), "shortlist - --format csv").stdin(input).output().unwrap();
+    let output = piped(folder.path(), "shortlist - --format csv", "job.ron");
     assert_eq!(code(&output), 0, "{}", err(&output));
     assert_eq!(output.stdout, run(folder.path(), "shortlist job.ron --format csv").stdout);
 }

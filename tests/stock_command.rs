@@ -2,12 +2,12 @@
 
 #![allow(clippy::unwrap_used)]
 
+mod command;
+
 use std::fs;
 use std::path::Path;
-use std::process::{Command, Output, Stdio};
 
-use serde_json::Value;
-use tempfile::TempDir;
+use command::*;
 
 const DRAWER: &str = "data/examples/bench-drawer.csv";
 
@@ -20,49 +20,6 @@ C;10n;1;5 %;PP;0,18;C1;9,87n;old radio
 C;100n;;10 %;X7R;0,04;;;bag
 C;4k7;3;5 %;;;;;bag
 ";
-
-fn command(folder: &Path, line: &str) -> Command {
-    let mut command = Command::new(assert_cmd::cargo::cargo_bin!("roundwell"));
-    command.current_dir(folder).args(line.split_whitespace()).stdin(Stdio::null());
-    command
-}
-
-fn run(folder: &Path, line: &str) -> Output {
-    command(folder, line).output().unwrap()
-}
-
-fn code(output: &Output) -> i32 {
-    output.status.code().unwrap()
-}
-
-fn out(output: &Output) -> String {
-    String::from_utf8(output.stdout.clone()).unwrap()
-}
-
-fn err(output: &Output) -> String {
-    String::from_utf8(output.stderr.clone()).unwrap()
-}
-
-fn json(output: &Output) -> Value {
-    serde_json::from_slice(&output.stdout).unwrap()
-}
-
-fn folder_with(files: &[(&str, &[u8])]) -> TempDir {
-    let folder = tempfile::tempdir().unwrap();
-    for (name, bytes) in files {
-        fs::write(folder.path().join(name), bytes).unwrap();
-    }
-    folder
-}
-
-/// What must hold of every refusal: exit code 2, nothing on standard output, a message without colour and panic.
-fn refused(output: &Output) -> String {
-    let told = err(output);
-    assert_eq!(code(output), 2, "{told}");
-    assert!(output.stdout.is_empty());
-    assert!(!told.is_empty() && !told.contains('\u{1b}') && !told.contains("panicked"), "{told}");
-    told
-}
 
 #[test]
 fn the_example_drawer_is_read_without_faults() {
@@ -112,7 +69,7 @@ fn every_cell_of_the_example_comes_back() {
 
 #[test]
 fn sound_lines_are_shown_beside_faulty_ones() {
-    let folder = folder_with(&[("tin.csv", TIN.as_bytes())]);
+    let folder = folder_of(&[("tin.csv", TIN.as_bytes())]);
     let output = run(folder.path(), "stock tin.csv");
     assert_eq!(code(&output), 2);
     insta::assert_snapshot!(format!("{}\n--- standard error\n{}", out(&output), err(&output)));
@@ -126,7 +83,7 @@ fn sound_lines_are_shown_beside_faulty_ones() {
 
 #[test]
 fn lines_have_80_characters_at_most() {
-    let folder = folder_with(&[("tin.csv", TIN.as_bytes()), ("drawer.csv", &fs::read(DRAWER).unwrap())]);
+    let folder = folder_of(&[("tin.csv", TIN.as_bytes()), ("drawer.csv", &fs::read(DRAWER).unwrap())]);
     for (line, width) in
         [("tin.csv", 80), ("drawer.csv", 80), ("tin.csv --width 40", 40), ("drawer.csv --width 40", 40)]
     {
@@ -140,7 +97,7 @@ fn the_way_a_list_is_written_does_not_matter() {
     let text = fs::read_to_string(DRAWER).unwrap();
     let semicolons = text.replace(',', ";").replace('.', ",");
     let quoted: String = text.lines().map(|line| format!("\"{}\"\r\n", line.replace(',', "\"\t\""))).collect();
-    let folder = folder_with(&[
+    let folder = folder_of(&[
         ("drawer.csv", text.as_bytes()),
         ("semicolons.csv", semicolons.as_bytes()),
         ("quoted.csv", format!("\u{feff}{quoted}").as_bytes()),
@@ -156,9 +113,8 @@ fn the_way_a_list_is_written_does_not_matter() {
 
 #[test]
 fn a_list_comes_from_standard_input() {
-    let folder = folder_with(&[("tin.csv", TIN.as_bytes())]);
-    let input = fs::File::open(folder.path().join("tin.csv")).unwrap();
-    let output = command(folder.path(), "stock -").stdin(input).output().unwrap();
+    let folder = folder_of(&[("tin.csv", TIN.as_bytes())]);
+    let output = piped(folder.path(), "stock -", "tin.csv");
     assert_eq!(code(&output), 2);
     assert!(err(&output).contains("2 lines of standard input cannot be used"), "{}", err(&output));
     let from_file = out(&run(folder.path(), "stock tin.csv"));
@@ -168,7 +124,7 @@ fn a_list_comes_from_standard_input() {
 
 #[test]
 fn a_file_is_written_whole_or_left_alone() {
-    let folder = folder_with(&[("tin.csv", TIN.as_bytes()), ("no.csv", b"R,4k7\n"), ("list.json", b"old")]);
+    let folder = folder_of(&[("tin.csv", TIN.as_bytes()), ("no.csv", b"R,4k7\n"), ("list.json", b"old")]);
     let list = || fs::read(folder.path().join("list.json")).unwrap();
     refused(&run(folder.path(), "stock no.csv --format json --out list.json"));
     assert_eq!(list(), b"old");
@@ -184,7 +140,7 @@ fn a_file_is_written_whole_or_left_alone() {
 #[test]
 fn files_that_are_no_list_are_refused() {
     let utf16: Vec<u8> = "kind,value\n".encode_utf16().flat_map(u16::to_le_bytes).collect();
-    let folder = folder_with(&[
+    let folder = folder_of(&[
         ("empty.csv", b""),
         ("workbook.csv", b"PK\x03\x04rest"),
         ("utf16.csv", &utf16),
@@ -220,8 +176,6 @@ fn usage_is_refused_with_2_and_help_names_the_columns() {
 
 #[test]
 fn a_reader_that_has_gone_is_no_failure() {
-    let (reader, writer) = std::io::pipe().unwrap();
-    drop(reader);
-    let output = command(Path::new("."), &format!("stock {DRAWER}")).stdout(writer).output().unwrap();
+    let output = unread(Path::new("."), &format!("stock {DRAWER}"));
     assert_eq!((code(&output), err(&output)), (0, String::new()));
 }

@@ -98,6 +98,12 @@ impl Source {
         self.bar_class_2 && self.supply.lots().any(|(_, lot)| lot.kind == kind && lot.is_class_2())
     }
 
+    /// Whether parts of a value stay in the drawer for being of class 2.
+    fn bars(&self, kind: Kind, value: Value) -> bool {
+        let of_value = |lot: &Lot| lot.kind == kind && lot.nominal == value && lot.is_class_2();
+        self.bar_class_2 && self.supply.lots().any(|(_, lot)| of_value(lot))
+    }
+
     /// A shelf without the choices whose label is one of `excluded`.
     pub fn without(&self, shelf: &Shelf, excluded: &[Value]) -> Option<Shelf> {
         shelf.filtered(|&choice| !excluded.contains(&self.label(choice)))
@@ -110,6 +116,11 @@ impl Source {
     /// The shelf of a slot that is pinned to one value.
     pub fn pinned(&self, desk: &mut Desk, place: &Place, kind: Kind, value: Value) -> Checked<Shelf> {
         let choices = self.choices(kind, vec![value], |label| label == value);
+        if choices.is_empty() && kind.allows(value) && self.bars(kind, value) {
+            let message =
+                format!("{} is in stock in class 2 ceramics only, which are barred", format_part(value, kind));
+            return Err(desk.note(place, message, "lift the bar on class 2, pin to another value, or allow buying"));
+        }
         if choices.is_empty() && kind.allows(value) {
             let message = format!("{} is not in stock, and nothing may be bought", format_part(value, kind));
             return Err(desk.note(place, message, "pin to a value in stock, or allow buying with buy or --buy"));
@@ -186,9 +197,15 @@ pub(super) fn check_rank(desk: &mut Desk, job: &JobFile, source: &Source, shelve
             });
             if let Some((kind, choice)) = priceless {
                 let line = supply.lot_of(choice).and_then(|lot| lot.lines.first());
-                let from = line.map_or("which may be bought".to_string(), |line| format!("line {}", line.line));
+                let prices =
+                    supply.lot_of(choice).into_iter().flat_map(|lot| &lot.lines).filter(|line| line.price.is_some());
+                let from = match (line, prices.count()) {
+                    (None, _) => "which may be bought".to_string(),
+                    (Some(line), 0 | 1) => format!("line {}", line.line),
+                    (Some(line), several) => format!("line {} and others, with {several} prices", line.line),
+                };
                 let value = format_part(source.label(choice), kind);
-                let message = format!("the cost is not known: the {} {value} ({from}) has no price", kind.name());
+                let message = format!("the cost is not known: the {} {value} ({from}) has no one price", kind.name());
                 desk.note(&place, message, "give it a price, exclude it, or rank by something else");
             }
         }

@@ -3,7 +3,7 @@
 use std::collections::BTreeSet;
 
 use crate::circuit::{Polynomial, Transfer};
-use crate::parts::{Choice, Shelf, Supply};
+use crate::parts::{Choice, Lot, Shelf, Supply};
 use crate::target::Biquad;
 use crate::units::Kind;
 
@@ -152,7 +152,8 @@ impl Model {
         let least_extra = usize::from(groups[count..].iter().any(apart));
         let measured = [Kind::Resistor, Kind::Capacitor].map(|kind| {
             let choices = groups[..count].iter().filter(|g| g.kind == kind).flat_map(|g| g.shelf.choices());
-            choices.into_iter().any(|&choice| supply.lot_of(choice).is_some_and(|lot| lot.measured.is_some()))
+            let is_there = |lot: &Lot| lot.measured.is_some() && lot.available != Some(0);
+            choices.into_iter().any(|&choice| supply.lot_of(choice).is_some_and(is_there))
         });
         Some(Model { groups, active: count, transfer, symmetries, placed_parts: filled.len(), least_extra, measured })
     }

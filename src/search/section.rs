@@ -1,6 +1,6 @@
 //! The exact front of one section.
 
-use std::collections::{BTreeMap, BTreeSet};
+use std::collections::BTreeMap;
 use std::ops::Range;
 use std::sync::atomic::{AtomicBool, AtomicUsize, Ordering};
 
@@ -11,11 +11,11 @@ use crate::target::{Biquad, Yardstick};
 use crate::units::{Kind, Value};
 
 use super::assign::{Candidates, items};
-use super::canonical::{canonical, distinct, parts};
+use super::canonical::{canonical, distinct};
 use super::family::{Budget, Family, Visitor};
 use super::front::{Best, End, ErrorKey, Found, Proof, Takes};
 use super::limits::{Monitor, Progress, StopReason};
-use super::model::Model;
+use super::model::{Group, Model};
 use super::problem::{Goals, Rank};
 use super::window::{Window, WindowMaker};
 
@@ -425,14 +425,20 @@ impl Collector<'_> {
         if !self.supply.has_stock() || self.goals.rank == Rank::Cost {
             return false;
         }
-        let mut by_value: BTreeMap<(Kind, Value), (BTreeSet<Choice>, u64)> = BTreeMap::new();
-        for (kind, choice, bodies) in parts(&self.model.groups, &found.choices) {
-            let (lots, total) = by_value.entry((kind, choice.value)).or_default();
-            lots.insert(choice);
-            *total += bodies;
+        let mut by_value: BTreeMap<(Kind, Value), Vec<(&Group, Choice)>> = BTreeMap::new();
+        for (group, &choice) in self.model.groups.iter().zip(&found.choices) {
+            by_value.entry((group.kind, choice.value)).or_default().push((group, choice));
         }
-        let enough = |choice: &Choice, total: u64| self.supply.obtain(*choice, total) == Some(Origin::Stock);
-        by_value.values().any(|(lots, total)| lots.len() > 1 && lots.iter().any(|choice| enough(choice, *total)))
+        let splits = |places: &Vec<(&Group, Choice)>| {
+            let bodies = places.iter().map(|(group, _)| group.bodies()).sum();
+            let would_do = |choice: Choice| {
+                places.iter().all(|(group, _)| group.shelf.contains(choice))
+                    && self.supply.obtain(choice, bodies) == Some(Origin::Stock)
+            };
+            let several = places.iter().any(|(_, choice)| *choice != places[0].1);
+            several && places.iter().any(|(_, choice)| would_do(*choice))
+        };
+        by_value.values().any(splits)
     }
 
     /// Keeps a set whose response lies within the limit.

@@ -233,7 +233,12 @@ fn search(
         }
         for &slot in &group.slots {
             let stays = (!is_gone).then_some(kept[index]);
-            let is_there = |choice: &Choice| !gone.contains(&(group.kind, label(problem, *choice)));
+            // A replacement is one set for all boards, and a measured part does for one.
+            let too_few = |choice: &Choice| {
+                problem.supply.boards > 1 && problem.supply.lot_of(*choice).is_some_and(|lot| lot.measured.is_some())
+            };
+            let is_there =
+                |choice: &Choice| !gone.contains(&(group.kind, label(problem, *choice))) && !too_few(choice);
             let others = problem.open[slot].choices().iter().copied().filter(is_there);
             let Ok(shelf) = Shelf::of_choices(group.kind, others.chain(stays)) else { return nothing };
             section.shelves[slot] = shelf;

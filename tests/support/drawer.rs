@@ -242,10 +242,9 @@ impl Things {
                     }
                     measured |= 1 << index;
                 }
-                Some((_, thing)) => {
-                    if thing.there.is_some_and(|there| bodies * self.boards + self.spares > there) {
-                        bought.insert(number);
-                    }
+                Some((_, thing)) if thing.there.is_none_or(|there| bodies * self.boards + self.spares <= there) => {}
+                Some(_) => {
+                    bought.insert(number);
                 }
                 None if self.has_stock => {
                     bought.insert(number);

@@ -9,8 +9,8 @@
 #![allow(dead_code, reason = "each test program uses its own part of this module")]
 
 mod brute;
-mod closed_form;
-mod measure;
+pub mod closed_form;
+pub mod measure;
 
 use std::collections::BTreeSet;
 use std::sync::Arc;

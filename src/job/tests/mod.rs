@@ -3,6 +3,7 @@
 #![allow(clippy::unwrap_used)]
 
 mod faults;
+mod stock;
 
 use std::f64::consts::TAU;
 use std::sync::Arc;
