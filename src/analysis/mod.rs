@@ -12,6 +12,7 @@ mod mask;
 mod network;
 mod real;
 mod spread;
+mod tighten;
 mod tolerance;
 mod trim;
 mod vetted;
@@ -26,6 +27,7 @@ pub use mask::{Figure, FigureLimit, Gauge, Limit, Mask, Reference, Scratch, Stan
 pub use network::{Network, Reach, Surroundings};
 pub use real::{Real, RealConditions, RealSection, Slew, real};
 pub use spread::{Deviations, Quantiles, SectionSpread, Spread, deviations, spread};
+pub use tighten::{CAPACITOR_STEPS, RESISTOR_STEPS, Step, Steps, Wanted, coarsest, tighten};
 pub use tolerance::{Boards, Distribution, Draw, Tolerances};
 pub use trim::{Trim, Watch, trims};
 pub use vetted::{Conditions, MaskResult, Vetted, vet};

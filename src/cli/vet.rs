@@ -1,7 +1,7 @@
 //! `roundwell vet`: everything about one row of a shortlist.
 
 use std::collections::BTreeMap;
-use std::path::Path;
+use std::path::{Path, PathBuf};
 use std::sync::Arc;
 
 use super::args::{ShowFormat, VetArgs};
@@ -36,7 +36,7 @@ pub fn run(args: &VetArgs) -> Result<u8, Failure> {
 }
 
 /// The faults of a file.
-fn faulty(path: &Path, text: &str, faults: Vec<Fault>) -> Faulty {
+pub(super) fn faulty(path: &Path, text: &str, faults: Vec<Fault>) -> Faulty {
     let file = if path == Path::new("-") { "standard input".to_string() } else { path.display().to_string() };
     Faulty { file, text: text.to_string(), faults, is_first_round: false }
 }
@@ -46,28 +46,31 @@ fn board(args: &VetArgs) -> Result<(Built, usize), Failure> {
     let text = read_text(&args.list)?;
     let failed = |faults| Failure::Input(vec![faulty(&args.list, &text, faults)]);
     let listed = Listed::parse(&text).map_err(failed)?;
-    let own = own_circuits(args)?;
+    let mut circuits = circuits_with(&args.circuit)?;
     let row = listed
         .row(args.row)
         .map_err(|message| Failure::input(Fault::at("--row", message).help("choose a row of the list")))?;
-    let mut circuits = |id: &str| -> Result<Arc<Circuit>, String> {
-        let found = own.get(id).cloned().or_else(|| find(id).cloned().map(Arc::new));
-        found.ok_or_else(|| format!("there is no circuit `{id}`"))
-    };
     let built = listed.built(row, &mut circuits).map_err(|faults| failed(located(&text, faults)))?;
     Ok((built, row.boards))
 }
 
-/// The circuit files that are given, by their identifiers.
-fn own_circuits(args: &VetArgs) -> Result<BTreeMap<String, Arc<Circuit>>, Failure> {
-    let read = |path: &std::path::PathBuf| {
+/// Finds a circuit by its identifier: among the files that are given, then in the library.
+pub(super) fn circuits_with(
+    files: &[PathBuf],
+) -> Result<impl FnMut(&str) -> Result<Arc<Circuit>, String> + use<>, Failure> {
+    let read = |path: &PathBuf| {
         let circuit = read_circuit(path)?;
         Ok((circuit.id.clone(), Arc::new(circuit)))
     };
-    args.circuit.iter().map(read).collect()
+    let own: BTreeMap<String, Arc<Circuit>> = files.iter().map(read).collect::<Result<_, Failure>>()?;
+    Ok(move |id: &str| {
+        let found = own.get(id).cloned().or_else(|| find(id).cloned().map(Arc::new));
+        found.ok_or_else(|| format!("there is no circuit `{id}`"))
+    })
 }
 
-fn mask(path: &Path, built: &Built) -> Result<Mask, Failure> {
+/// Reads a mask file.
+pub(super) fn mask(path: &Path, built: &Built) -> Result<Mask, Failure> {
     let text = read_text(path)?;
     read_mask(&text, &built.targets()).map_err(|faults| Failure::Input(vec![faulty(path, &text, faults)]))
 }
