@@ -13,6 +13,7 @@ mod shortlist;
 mod stock;
 mod swap;
 mod tighten;
+mod tighten_args;
 mod values;
 mod vet;
 mod vet_settings;
