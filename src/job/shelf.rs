@@ -151,17 +151,29 @@ pub(super) fn shelf(desk: &mut Desk, found: Option<At<'_, Shelves>>, kind: Kind,
     let choices: Vec<Choice> = choices.into_iter().collect::<Checked<Vec<_>>>()?.into_iter().flatten().collect();
     if choices.is_empty() && source.supply.has_stock() {
         let single = files.iter().all(|file| file.series.is_none() && file.values.is_some());
-        let what = if single { "none of these values" } else { "no value in the range" };
-        let (message, help) = if source.has_barred(kind) {
-            let message = format!("{what} is in stock as a {} that is not of class 2", kind.name());
-            (message, "lift the bar on class 2, or allow buying with buy or --buy")
-        } else if single {
-            let message = format!("{what} is in stock as a {}, and nothing may be bought", kind.name());
-            (message, "name values that are in stock, or allow buying with buy or --buy")
-        } else {
-            let message = format!("{what} is in stock as a {}, and nothing may be bought", kind.name());
-            (message, "widen the range (by default it is 1k to 1M and 1n to 1u), or allow buying with buy or --buy")
+        let texts: Vec<&str> = files
+            .iter()
+            .filter_map(|file| file.values.as_ref())
+            .flat_map(|given| &given.value.0)
+            .map(Scalar::text)
+            .collect();
+        let missing = match texts.as_slice() {
+            [only] if single => format!("the {} {only} is not in stock", kind.name()),
+            [first, .., last] if single => format!("the {}s {first} to {last} are not in stock", kind.name()),
+            _ => format!("no {} in the range is in stock", kind.name()),
         };
+        let why = match source.has_barred(kind) {
+            true => "unless as ceramics of class 2, and these are barred",
+            false => "and nothing may be bought",
+        };
+        let help = match (source.has_barred(kind), single) {
+            (true, _) => "lift the bar on class 2, or allow buying with buy or --buy",
+            (_, true) => "name values that are, or allow buying with buy or --buy",
+            (_, false) => {
+                "widen the range (by default it is 1k to 1M and 1n to 1u), or allow buying with buy or --buy"
+            }
+        };
+        let message = format!("{missing}, {why}");
         return Err(desk.note(&place, message, help));
     }
     Shelf::of_choices(kind, choices).map_err(|error| desk.note(&place, error.to_string(), ""))

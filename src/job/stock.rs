@@ -200,12 +200,12 @@ pub(super) fn check_rank(desk: &mut Desk, job: &JobFile, source: &Source, shelve
                 let prices =
                     supply.lot_of(choice).into_iter().flat_map(|lot| &lot.lines).filter(|line| line.price.is_some());
                 let from = match (line, prices.count()) {
-                    (None, _) => "which may be bought".to_string(),
-                    (Some(line), 0 | 1) => format!("line {}", line.line),
-                    (Some(line), several) => format!("line {} and others, with {several} prices", line.line),
+                    (None, _) => "which may be bought) has no price".to_string(),
+                    (Some(line), 0 | 1) => format!("line {}) has no price", line.line),
+                    (Some(line), several) => format!("line {} and others) has {several} prices", line.line),
                 };
                 let value = format_part(source.label(choice), kind);
-                let message = format!("the cost is not known: the {} {value} ({from}) has no one price", kind.name());
+                let message = format!("the cost is not known: the {} {value} ({from}", kind.name());
                 desk.note(&place, message, "give it a price, exclude it, or rank by something else");
             }
         }

@@ -231,8 +231,10 @@ def check_row(checks, label, record, circuits, row):
             and all(part["kind"] == kinds[part["slot"]] for part in section["parts"]),
             f"{sorted(values)} are filled",
         )
-        bought |= {(part["kind"], part["value"]) for part in section["parts"]}
-        placed += len(section["parts"])
+        # A pair is two bodies; parts of a stock list are told apart by their lines too.
+        pieces = [(part["kind"], piece) for part in section["parts"] for piece in part["made_of"]]
+        bought |= {(kind, piece["notation"], *piece["lines"]) for kind, piece in pieces}
+        placed += len(pieces) or len(section["parts"])
         h *= nodal(circuit, output["node"], values, frequencies)
     said, there = (row["part_numbers"], row["placed_parts"]), (len(bought), placed)
     checks.holds(f"{label}, counts", said == there, f"{said} are said, {there} are there")
