@@ -32,7 +32,7 @@ fn filter() -> Built {
             let (mantissa, exponent) = value(&place.name);
             let value = Value::new(mantissa, exponent).expect("a part value");
             let kind: Kind = place.kind;
-            BuiltPart { slot, kind, value, pieces: vec![value], joint: Joint::Sum }
+            BuiltPart { slot, kind, value, pieces: vec![value.into()], joint: Joint::Sum }
         };
         let output = circuit.outputs.iter().position(|o| o.name == "low-pass").expect("an output of the circuit");
         let parts = circuit.slots.iter().enumerate().map(part).collect();

@@ -18,7 +18,7 @@ fn section(target: Section, id: &str, output: &str, values: &[(&str, &str)]) -> 
     let part = |(slot, place): (usize, &roundwell::circuit::Slot)| {
         let text = values.iter().find(|(name, _)| *name == place.name)?.1;
         let value = parse_part(text, place.kind).unwrap();
-        Some(BuiltPart { slot, kind: place.kind, value, pieces: vec![value], joint: Joint::Sum })
+        Some(BuiltPart { slot, kind: place.kind, value, pieces: vec![value.into()], joint: Joint::Sum })
     };
     let parts = circuit.slots.iter().enumerate().filter_map(part).collect();
     let output = circuit.outputs.iter().position(|o| o.name == output).unwrap();

@@ -19,7 +19,7 @@ fn section(target: Section, id: &str, output: &str, values: &[(&str, f64)]) -> B
             values.iter().find(|(name, _)| *name == place.name).unwrap_or_else(|| panic!("{}", place.name)).1;
         let kind = if number < 1.0 { Kind::Capacitor } else { Kind::Resistor };
         let value = parse_part(&format!("{number:.9e}"), kind).unwrap();
-        BuiltPart { slot, kind: place.kind, value, pieces: vec![value], joint: Joint::Sum }
+        BuiltPart { slot, kind: place.kind, value, pieces: vec![value.into()], joint: Joint::Sum }
     };
     let parts = circuit.outputs[output].filled(&circuit).map(part).collect();
     BuiltSection { target, circuit, output, parts }

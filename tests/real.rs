@@ -26,7 +26,7 @@ fn board(target: Section, id: &str, output: &str, values: &[(&str, f64)]) -> Bui
         let number =
             values.iter().find(|(name, _)| *name == place.name).unwrap_or_else(|| panic!("{}", place.name)).1;
         let value = value(number);
-        BuiltPart { slot: *slot, kind: place.kind, value, pieces: vec![value], joint: Joint::Sum }
+        BuiltPart { slot: *slot, kind: place.kind, value, pieces: vec![value.into()], joint: Joint::Sum }
     };
     let parts = filled.iter().map(part).collect();
     let section = BuiltSection { target, circuit, output, parts };

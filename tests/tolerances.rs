@@ -19,7 +19,7 @@ fn part(circuit: &roundwell::circuit::Circuit, name: &str, text: &str) -> BuiltP
     let slot = circuit.slot(name).unwrap();
     let kind = circuit.slots[slot].kind;
     let value = parse_part(text, kind).unwrap();
-    BuiltPart { slot, kind, value, pieces: vec![value], joint: Joint::Sum }
+    BuiltPart { slot, kind, value, pieces: vec![value.into()], joint: Joint::Sum }
 }
 
 /// A section from pairs of slot and value, in the order of the slots.
@@ -192,7 +192,7 @@ fn sensitivities_are_the_derivatives() {
                 // Other values in every slot, with products of about 1e-4 s.
                 let mantissa = 100 + 17 * slot as u64;
                 let value = Value::new(mantissa, if kind == Kind::Resistor { 2 } else { -10 }).unwrap();
-                BuiltPart { slot, kind, value, pieces: vec![value], joint: Joint::Sum }
+                BuiltPart { slot, kind, value, pieces: vec![value.into()], joint: Joint::Sum }
             });
             let section = BuiltSection {
                 target: target.clone(),
@@ -308,7 +308,7 @@ fn pairs_average_their_errors() {
     for (piece, joint) in [("5k", Joint::Sum), ("20k", Joint::Reciprocal)] {
         let mut pair = single.clone();
         let part = pair.sections[0].parts.iter_mut().find(|part| part.kind == Kind::Resistor).unwrap();
-        part.pieces = vec![parse_part(piece, Kind::Resistor).unwrap(); 2];
+        part.pieces = vec![parse_part(piece, Kind::Resistor).unwrap().into(); 2];
         part.joint = joint;
         assert!((deviation(&pair) / plain - 0.5f64.sqrt()).abs() < 1e-12, "{joint:?}");
         let drawn = spread(&pair, &tolerances(0.02, 0.0), &pair.yardstick(), 1, 20_000);

@@ -21,7 +21,7 @@ fn board(target: Section, id: &str, output: &str, values: &[(&str, f64)]) -> Bui
             values.iter().find(|(name, _)| *name == place.name).unwrap_or_else(|| panic!("{}", place.name)).1;
         let kind = if number < 1.0 { Kind::Capacitor } else { Kind::Resistor };
         let value = parse_part(&format!("{number:.9e}"), kind).unwrap();
-        BuiltPart { slot, kind: place.kind, value, pieces: vec![value], joint: Joint::Sum }
+        BuiltPart { slot, kind: place.kind, value, pieces: vec![value.into()], joint: Joint::Sum }
     };
     let parts = circuit.outputs[output].filled(&circuit).map(part).collect();
     let section = BuiltSection { target, circuit, output, parts };

@@ -8,6 +8,7 @@ use std::fs;
 use std::path::Path;
 use std::process::{Command, Output, Stdio};
 
+use roundwell::analysis::BuiltPiece;
 use roundwell::job::Listed;
 use roundwell::report::{Record, write_json};
 use roundwell::search::{Unwatched, shortlist};
@@ -63,10 +64,10 @@ fn a_list_is_read_back_as_it_was_written() {
         for (k, (row, listed)) in outcome.rows.iter().zip(&listed.rows).enumerate() {
             assert_eq!(listed.rank, k + 1);
             for ((chosen, parts), section) in row.sections.iter().zip(&listed.sections).zip(&problem.sections) {
-                let wanted: Vec<(&str, Kind, Value, Vec<Value>)> = (chosen.parts.iter())
+                let wanted: Vec<(&str, Kind, Value, Vec<BuiltPiece>)> = (chosen.parts.iter())
                     .map(|part| {
                         let value = part.value.unwrap();
-                        (section.circuit.slots[part.slot].name.as_str(), part.kind, value, vec![value])
+                        (section.circuit.slots[part.slot].name.as_str(), part.kind, value, vec![value.into()])
                     })
                     .collect();
                 let found: Vec<_> =

@@ -6,7 +6,7 @@ use num_complex::Complex64;
 
 use crate::circuit::{Circuit, Output, Polynomial};
 use crate::target::{Biquad, Criterion, Section, Shape, Yardstick};
-use crate::units::{Kind, Value};
+use crate::units::{Kind, Value, format_part};
 
 /// How the pieces of a slot make up its value.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -17,6 +17,40 @@ pub enum Joint {
     Reciprocal,
 }
 
+/// One part to buy, or one that is there.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct BuiltPiece {
+    /// Its value, ohms or farads: as measured, else as labelled.
+    pub value: Value,
+    /// The value on its label.
+    pub label: Value,
+    /// Whether it was measured: such a part is what it is, without a tolerance.
+    pub is_measured: bool,
+    /// Its lowest and its highest relative error by the stock list that it is taken from, such as −0.2 and 0.8; `None`
+    /// where no list says.
+    pub tolerance: Option<(f64, f64)>,
+    /// The first line of the stock list that it is taken from.
+    pub line: Option<usize>,
+}
+
+impl From<Value> for BuiltPiece {
+    /// A part that is in no stock list.
+    fn from(value: Value) -> BuiltPiece {
+        BuiltPiece { value, label: value, is_measured: false, tolerance: None, line: None }
+    }
+}
+
+/// What the parts of one part number have in common: kind, label, and where a drawer holds the label in several sorts its
+/// line. Measured parts of one label are one part number.
+pub type Reel = (Kind, Value, Option<usize>);
+
+impl BuiltPiece {
+    /// The reel that it comes from.
+    pub fn reel(&self, kind: Kind) -> Reel {
+        (kind, self.label, self.line.filter(|_| !self.is_measured))
+    }
+}
+
 /// What one slot holds.
 #[derive(Clone, Debug, PartialEq)]
 pub struct BuiltPart {
@@ -24,10 +58,10 @@ pub struct BuiltPart {
     pub slot: usize,
     /// Resistor or capacitor.
     pub kind: Kind,
-    /// The nominal value of the slot.
+    /// The nominal value of the slot; that of joined parts to twelve digits.
     pub value: Value,
     /// The parts that make it up, at least one.
-    pub pieces: Vec<Value>,
+    pub pieces: Vec<BuiltPiece>,
     /// How they do.
     pub joint: Joint,
 }
@@ -39,7 +73,7 @@ impl BuiltPart {
             return 1.0 + error;
         }
         let total = self.value.to_f64();
-        let pieces = self.pieces.iter().map(|piece| piece.to_f64()).zip(errors);
+        let pieces = self.pieces.iter().map(|piece| piece.value.to_f64()).zip(errors);
         match self.joint {
             Joint::Sum => pieces.map(|(piece, error)| piece * (1.0 + error)).sum::<f64>() / total,
             Joint::Reciprocal => 1.0 / (total * pieces.map(|(piece, e)| 1.0 / (piece * (1.0 + e))).sum::<f64>()),
@@ -49,11 +83,19 @@ impl BuiltPart {
     /// The relative change of the slot's value per relative change of each piece, for small changes.
     pub fn shares(&self) -> Vec<f64> {
         let total = self.value.to_f64();
-        let share = |piece: &Value| match self.joint {
-            Joint::Sum => piece.to_f64() / total,
-            Joint::Reciprocal => total / piece.to_f64(),
+        let share = |piece: &BuiltPiece| match self.joint {
+            Joint::Sum => piece.value.to_f64() / total,
+            Joint::Reciprocal => total / piece.value.to_f64(),
         };
         self.pieces.iter().map(share).collect()
+    }
+
+    /// The values of its pieces in the notation of IEC 60062, with `+` between those in series and `||` between those in
+    /// parallel.
+    pub fn notation(&self) -> String {
+        let is_series = (self.joint == Joint::Sum) == (self.kind == Kind::Resistor);
+        let pieces: Vec<String> = self.pieces.iter().map(|piece| format_part(piece.value, self.kind)).collect();
+        pieces.join(if is_series { "+" } else { "||" })
     }
 }
 

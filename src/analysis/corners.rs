@@ -47,8 +47,8 @@ pub type Judge<'a> = &'a (dyn Fn(&[Biquad]) -> (f64, Option<f64>) + Sync);
 /// is taken by itself.
 pub fn worst_case(built: &Built, tolerances: &Tolerances, frequencies: &[f64], judge: Judge) -> WorstCase {
     let boards = Boards::new(built, tolerances);
-    let limits: Vec<f64> =
-        built.sections.iter().flat_map(|s| &s.parts).map(|part| tolerances.of(part.kind)).collect();
+    let parts = built.sections.iter().flat_map(|s| &s.parts);
+    let limits: Vec<(f64, f64)> = parts.map(|part| tolerances.slot_limits(part)).collect();
     let judged = |errors: &[f64]| -> (f64, Option<f64>) {
         let board = boards.with_errors(errors);
         let orders = built.sections.iter().map(|section| section.target.shape.order());
@@ -60,10 +60,10 @@ pub fn worst_case(built: &Built, tolerances: &Tolerances, frequencies: &[f64], j
     let slopes: Vec<Vec<Complex64>> =
         frequencies.iter().map(|w| sensitivities.iter().flat_map(|s| s.response(*w)).collect()).collect();
     let reaches = |k: usize| slopes.iter().any(|line| line[k].norm() > 1e-9);
-    let matters: Vec<usize> = (0..limits.len()).filter(|&k| limits[k] > 0.0 && reaches(k)).collect();
+    let matters: Vec<usize> = (0..limits.len()).filter(|&k| limits[k].0 < limits[k].1 && reaches(k)).collect();
     let at_corner = |signs: &[bool]| -> Vec<f64> {
         let mut errors = vec![0.0; limits.len()];
-        matters.iter().zip(signs).for_each(|(&k, up)| errors[k] = if *up { limits[k] } else { -limits[k] });
+        matters.iter().zip(signs).for_each(|(&k, up)| errors[k] = if *up { limits[k].1 } else { limits[k].0 });
         errors
     };
     let every_corner = matters.len() <= MOST_SLOTS;
@@ -119,10 +119,15 @@ pub fn worst_case(built: &Built, tolerances: &Tolerances, frequencies: &[f64], j
 
 type Judged<'a> = &'a dyn Fn(&[f64]) -> (f64, Option<f64>);
 
-/// The search inside: errors of the slots that matter, in units of their tolerance.
+/// The middle of a slot's limits and how far they are from it.
+fn middle((low, high): (f64, f64)) -> (f64, f64) {
+    (0.5 * (low + high), 0.5 * (high - low))
+}
+
+/// The search inside: errors of the slots that matter, from the middle of their limits in units of their half-width.
 struct Inside<'a> {
     errors: &'a [f64],
-    limits: &'a [f64],
+    limits: &'a [(f64, f64)],
     matters: &'a [usize],
     judged: Judged<'a>,
 }
@@ -130,7 +135,10 @@ struct Inside<'a> {
 impl Inside<'_> {
     fn place(&self, units: &[f64]) -> Vec<f64> {
         let mut errors = self.errors.to_vec();
-        self.matters.iter().zip(units).for_each(|(&k, unit)| errors[k] = unit.clamp(-1.0, 1.0) * self.limits[k]);
+        for (&k, unit) in self.matters.iter().zip(units) {
+            let (middle, half_width) = middle(self.limits[k]);
+            errors[k] = middle + unit.clamp(-1.0, 1.0) * half_width;
+        }
         errors
     }
 }
@@ -145,9 +153,18 @@ impl CostFunction for Inside<'_> {
     }
 }
 
-fn search_inside(errors: &[f64], limits: &[f64], matters: &[usize], judged: Judged) -> Option<(f64, Vec<f64>)> {
+fn search_inside(
+    errors: &[f64],
+    limits: &[(f64, f64)],
+    matters: &[usize],
+    judged: Judged,
+) -> Option<(f64, Vec<f64>)> {
     let inside = Inside { errors, limits, matters, judged };
-    let start: Vec<f64> = matters.iter().map(|&k| errors[k] / limits[k]).collect();
+    let unit = |&k: &usize| {
+        let (middle, half_width) = middle(limits[k]);
+        (errors[k] - middle) / half_width
+    };
+    let start: Vec<f64> = matters.iter().map(unit).collect();
     let mut simplex = vec![start.clone()];
     for k in 0..matters.len() {
         let mut point = start.clone();

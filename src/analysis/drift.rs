@@ -4,10 +4,10 @@ use std::collections::BTreeMap;
 
 use num_complex::Complex64;
 
-use super::built::{Built, BuiltPart, FigureSensitivity, Sensitivities};
+use super::built::{Built, BuiltPart, FigureSensitivity, Reel, Sensitivities};
 use super::tolerance::{Boards, Distribution, Tolerances};
 use crate::target::{Biquad, Measure, Yardstick};
-use crate::units::{Kind, Value};
+use crate::units::Kind;
 
 /// How the parts of one kind change.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -90,7 +90,7 @@ pub struct Drift {
 /// One part to buy: its slot's place in the list of all parts, its reel, its share in the slot.
 struct Piece {
     part: usize,
-    reel: (Kind, Value),
+    reel: Reel,
     share: f64,
 }
 
@@ -114,7 +114,7 @@ pub fn drift(built: &Built, climate: &Climate, yardstick: &Yardstick) -> Drift {
     let pieces = (parts.iter().enumerate())
         .flat_map(|(k, part)| {
             let shares = part.shares().into_iter();
-            shares.zip(&part.pieces).map(move |(share, value)| Piece { part: k, reel: (part.kind, *value), share })
+            shares.zip(&part.pieces).map(move |(share, piece)| Piece { part: k, reel: piece.reel(part.kind), share })
         })
         .collect();
     let drifting = Drifting { climate, parts, pieces, boards: Boards::new(built, &none) };
@@ -157,7 +157,7 @@ impl Drifting<'_> {
     /// For either temperature, and for a window of coefficients at either end of the range of each kind: to first order a
     /// figure is linear in the place of the window, so that no place between serves better.
     fn candidates(&self, slopes: &[f64], goal: f64, with_age: bool) -> Vec<Vec<Biquad>> {
-        let mut sums: BTreeMap<(Kind, Value), f64> = BTreeMap::new();
+        let mut sums: BTreeMap<Reel, f64> = BTreeMap::new();
         for piece in &self.pieces {
             *sums.entry(piece.reel).or_default() += slopes[piece.part] * piece.share;
         }

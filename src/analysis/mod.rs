@@ -12,12 +12,13 @@ mod mask;
 mod network;
 mod real;
 mod spread;
+mod tighten;
 mod tolerance;
 mod trim;
 mod vetted;
 mod yields;
 
-pub use built::{Built, BuiltPart, BuiltSection, FigureSensitivity, Formula, Joint, Sensitivities};
+pub use built::{Built, BuiltPart, BuiltPiece, BuiltSection, FigureSensitivity, Formula, Joint, Reel, Sensitivities};
 pub use corners::{Judge, WorstCase, worst_case};
 pub use drift::{Climate, Drift, Extremes, FigureDrift, KindDrift, SectionDrift, drift};
 pub use interval::clopper_pearson;
@@ -26,6 +27,7 @@ pub use mask::{Figure, FigureLimit, Gauge, Limit, Mask, Reference, Scratch, Stan
 pub use network::{Network, Reach, Surroundings};
 pub use real::{Real, RealConditions, RealSection, Slew, real};
 pub use spread::{Deviations, Quantiles, SectionSpread, Spread, deviations, spread};
+pub use tighten::{CAPACITOR_STEPS, RESISTOR_STEPS, Step, Steps, Wanted, coarsest, tighten};
 pub use tolerance::{Boards, Distribution, Draw, Tolerances};
 pub use trim::{Trim, Watch, trims};
 pub use vetted::{Conditions, MaskResult, Vetted, vet};

@@ -2,10 +2,9 @@
 
 use rayon::prelude::*;
 
-use super::built::{Built, BuiltPart, FigureSensitivity, Sensitivities};
+use super::built::{Built, BuiltPart, FigureSensitivity, Reel, Sensitivities};
 use super::tolerance::{Boards, Draw, Tolerances};
 use crate::target::{Biquad, Figures, Measure, Yardstick};
-use crate::units::{Kind, Value};
 
 /// Where the values of drawn boards lie.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -126,10 +125,13 @@ pub struct Deviations {
     pub response: (f64, f64),
 }
 
-/// The reel, the kind and the slope of each piece of a part, for a slope of the slot's value.
-fn pieces(part: &BuiltPart, slope: f64) -> impl Iterator<Item = ((Kind, Value), Kind, f64)> + '_ {
+/// The reel of each piece of a part, and what its half-width does, for a slope of the slot's value.
+fn pieces<'a>(part: &'a BuiltPart, tolerances: &'a Tolerances, slope: f64) -> impl Iterator<Item = (Reel, f64)> + 'a {
     let shares = part.shares();
-    part.pieces.iter().zip(shares).map(move |(value, share)| ((part.kind, *value), part.kind, slope * share))
+    part.pieces
+        .iter()
+        .zip(shares)
+        .map(move |(piece, share)| (piece.reel(part.kind), slope * share * tolerances.half_width(part.kind, piece)))
 }
 
 /// The standard deviations that small errors cause: exact to first order, without a draw.
@@ -138,7 +140,8 @@ pub fn deviations(built: &Built, tolerances: &Tolerances, yardstick: &Yardstick)
     let figures = |(section, sensitivities): (&super::built::BuiltSection, &Sensitivities)| {
         let deviation = |figure: fn(&FigureSensitivity) -> f64| {
             let parts = section.parts.iter().enumerate();
-            let list: Vec<_> = parts.flat_map(|(k, part)| pieces(part, figure(&sensitivities.figures(k)))).collect();
+            let list: Vec<_> =
+                parts.flat_map(|(k, part)| pieces(part, tolerances, figure(&sensitivities.figures(k)))).collect();
             tolerances.deviation(&list)
         };
         FigureSensitivity {
@@ -177,7 +180,8 @@ fn largest_response(
     let unit = if vector { 1.0 } else { 20.0 / std::f64::consts::LN_10 };
     let deviation = |line: &Vec<[f64; 2]>| {
         let component = |axis: usize| {
-            let list: Vec<_> = parts.iter().zip(line).flat_map(|(part, slope)| pieces(part, slope[axis])).collect();
+            let list: Vec<_> =
+                parts.iter().zip(line).flat_map(|(part, slope)| pieces(part, tolerances, slope[axis])).collect();
             tolerances.deviation(&list)
         };
         unit * component(0).hypot(component(1))

@@ -3,9 +3,9 @@
 use rand_xoshiro::Xoshiro256PlusPlus;
 use rand_xoshiro::rand_core::{RngCore, SeedableRng};
 
-use super::built::{Built, BuiltPart, Formula};
+use super::built::{Built, BuiltPart, BuiltPiece, Formula, Reel};
 use crate::target::Biquad;
-use crate::units::{Kind, Value};
+use crate::units::Kind;
 
 /// How the errors of parts are spread over their tolerance.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -30,7 +30,7 @@ impl Distribution {
     }
 }
 
-/// The tolerances of a board.
+/// The tolerances of a board: those of parts whose stock list does not say.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Tolerances {
     /// Of resistors: the largest relative error, 0 to below 1.
@@ -53,13 +53,43 @@ impl Tolerances {
         }
     }
 
-    /// The standard deviation of a sum of `slope` × error over parts, each given with what identifies its reel.
-    pub fn deviation<R: PartialEq>(&self, parts: &[(R, Kind, f64)]) -> f64 {
+    /// The lowest and the highest relative error of a piece: none of one that was measured, else those of its stock list,
+    /// else those of its kind to either side.
+    pub fn limits(&self, kind: Kind, piece: &BuiltPiece) -> (f64, f64) {
+        match piece.tolerance {
+            _ if piece.is_measured => (0.0, 0.0),
+            Some(limits) => limits,
+            None => (-self.of(kind), self.of(kind)),
+        }
+    }
+
+    /// Half of what lies between the lowest and the highest error of a piece: errors are spread about their middle.
+    pub fn half_width(&self, kind: Kind, piece: &BuiltPiece) -> f64 {
+        let (low, high) = self.limits(kind, piece);
+        0.5 * (high - low)
+    }
+
+    /// The lowest and the highest relative error of a slot's value: with all its pieces at their lowest and highest, for
+    /// the value rises with each.
+    pub fn slot_limits(&self, part: &BuiltPart) -> (f64, f64) {
+        let limits: Vec<(f64, f64)> = part.pieces.iter().map(|piece| self.limits(part.kind, piece)).collect();
+        match limits.as_slice() {
+            // Pieces that are off alike are off by that together.
+            [first, others @ ..] if others.iter().all(|other| other == first) => *first,
+            _ => {
+                let off = |errors: Vec<f64>| part.factor(&errors) - 1.0;
+                (off(limits.iter().map(|l| l.0).collect()), off(limits.iter().map(|l| l.1).collect()))
+            }
+        }
+    }
+
+    /// The standard deviation of a sum of errors over pieces, each given with its reel and with its half-width (see
+    /// [`Tolerances::half_width`]) times what it does to the sum.
+    pub fn deviation<R: PartialEq>(&self, parts: &[(R, f64)]) -> f64 {
         let (common, own) = (self.reel_share, 1.0 - self.reel_share);
         let mut reels: Vec<(&R, f64)> = Vec::new();
         let mut variance = 0.0;
-        for (reel, kind, slope) in parts {
-            let full = slope * self.of(*kind);
+        for (reel, full) in parts {
             variance += (own * full).powi(2);
             match reels.iter_mut().find(|(known, _)| *known == reel) {
                 Some((_, sum)) => *sum += common * full,
@@ -131,7 +161,8 @@ impl Draw {
 #[derive(Clone, Copy, Debug)]
 struct Piece {
     reel: usize,
-    tolerance: f64,
+    middle: f64,
+    half_width: f64,
 }
 
 /// One section, where a board is drawn.
@@ -154,18 +185,20 @@ pub struct Boards {
 }
 
 impl Boards {
-    /// A board with its tolerances. Pieces of the same kind and value come from one reel.
+    /// A board with its tolerances. Pieces of one part number come from one reel.
     pub fn new(built: &Built, tolerances: &Tolerances) -> Boards {
-        let mut reels: Vec<(Kind, Value)> = Vec::new();
+        let mut reels: Vec<Reel> = Vec::new();
         let mut pieces = Vec::new();
         for part in built.sections.iter().flat_map(|section| &section.parts) {
-            for value in &part.pieces {
-                let known = reels.iter().position(|reel| *reel == (part.kind, *value));
-                let reel = known.unwrap_or_else(|| {
-                    reels.push((part.kind, *value));
+            for piece in &part.pieces {
+                let from = piece.reel(part.kind);
+                let reel = reels.iter().position(|reel| *reel == from).unwrap_or_else(|| {
+                    reels.push(from);
                     reels.len() - 1
                 });
-                pieces.push(Piece { reel, tolerance: tolerances.of(part.kind) });
+                let (low, high) = tolerances.limits(part.kind, piece);
+                let half_width = tolerances.half_width(part.kind, piece);
+                pieces.push(Piece { reel, middle: 0.5 * (low + high), half_width });
             }
         }
         let place = |section: &super::built::BuiltSection| Place {
@@ -195,7 +228,7 @@ impl Boards {
         let mut error = || {
             let Some(piece) = pieces.next() else { return 0.0 };
             let reel = reel_errors.get(piece.reel).copied().unwrap_or(0.0);
-            piece.tolerance * (common * reel + own * numbers.error())
+            piece.middle + piece.half_width * (common * reel + own * numbers.error())
         };
         board.clear();
         for section in sections {

@@ -1,7 +1,7 @@
 //! How a board is trimmed: which resistor sets what, in an order in which no later one disturbs an earlier one, and how far
 //! each has to reach.
 
-use super::built::{Built, FigureSensitivity, Sensitivities};
+use super::built::{Built, BuiltPart, FigureSensitivity, Sensitivities};
 use super::tolerance::Tolerances;
 use crate::parts::Series;
 use crate::target::{Section, Shape};
@@ -87,7 +87,11 @@ fn section_trims(built: &Built, index: usize, tolerances: &Tolerances) -> Vec<Tr
         let Some(part) = place(*slot) else { continue };
         let own = lines[k][part];
         let others = section.parts.iter().enumerate().filter(|(other, _)| *other != part);
-        let reach: f64 = others.map(|(other, p)| (lines[k][other] / own).abs() * tolerances.of(p.kind)).sum();
+        let farthest = |p: &BuiltPart| {
+            let (low, high) = tolerances.slot_limits(p);
+            low.abs().max(high.abs())
+        };
+        let reach: f64 = others.map(|(other, p)| (lines[k][other] / own).abs() * farthest(p)).sum();
         // The resistor takes up what the others do to this figure: in all later figures it is a sum of the others.
         let set = lines[k].clone();
         for later in lines.iter_mut().skip(k + 1) {

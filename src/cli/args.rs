@@ -10,6 +10,7 @@ use crate::report::CSV_COLUMNS;
 use crate::target::Shape;
 
 pub use super::sections_args::SectionsArgs;
+pub use super::tighten_args::TightenArgs;
 
 /// From ideal filter sections to resistors and capacitors that can be bought, with a proof.
 #[derive(Debug, Parser)]
@@ -55,6 +56,9 @@ pub enum Command {
     /// Look at one row of a shortlist as it will be built: mask, tolerances and yield, worst case.
     #[command(after_help = VET_HELP, allow_negative_numbers = true)]
     Vet(Box<VetArgs>),
+    /// What tighter parts would buy: the yield of the best row for each step of tolerances.
+    #[command(after_help = super::tighten_args::HELP)]
+    Tighten(TightenArgs),
 }
 
 const SHORTLIST_HELP: &str = "\
@@ -456,10 +460,10 @@ pub struct VetArgs {
     /// Mask file (RON) with the limits that the response has to keep.
     #[arg(long, value_name = "FILE")]
     pub mask: Option<PathBuf>,
-    /// Tolerance of the resistors, to either side.
+    /// Tolerance of the resistors for which the stock list gives none, to either side.
     #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "1%")]
     pub resistor_tolerance: String,
-    /// Tolerance of the capacitors, to either side.
+    /// Tolerance of the capacitors for which the stock list gives none, to either side.
     #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "5%")]
     pub capacitor_tolerance: String,
     /// How errors are spread: evenly, or normally with a third of the tolerance as standard deviation and cut off at it.

@@ -12,6 +12,8 @@ mod settings;
 mod shortlist;
 mod stock;
 mod swap;
+mod tighten;
+mod tighten_args;
 mod values;
 mod vet;
 mod vet_settings;
@@ -55,6 +57,7 @@ pub fn run(words: impl IntoIterator<Item = OsString>) -> ExitCode {
         Command::Values(args) => values::run(args),
         Command::Stock(args) => stock::run(args),
         Command::Vet(args) => vet::run(args),
+        Command::Tighten(args) => tighten::run(args),
     };
     // The panic's own message has been told by then.
     ExitCode::from(match catch_unwind(AssertUnwindSafe(command)) {

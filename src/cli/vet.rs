@@ -1,7 +1,7 @@
 //! `roundwell vet`: everything about one row of a shortlist.
 
 use std::collections::BTreeMap;
-use std::path::Path;
+use std::path::{Path, PathBuf};
 use std::sync::Arc;
 
 use super::args::{ShowFormat, VetArgs};
@@ -22,51 +22,55 @@ use crate::text::{Fault, located};
 /// Bad input, an output that cannot be written.
 pub fn run(args: &VetArgs) -> Result<u8, Failure> {
     let VetSettings { tolerances, sampling, climate, real, levels } = VetSettings::new(args)?;
-    let built = board(args)?;
+    let (built, boards) = board(args)?;
     let mask = args.mask.as_deref().map(|path| mask(path, &built)).transpose()?;
     let output = Output::open(args.out.as_deref())?;
     let pool = rayon::ThreadPoolBuilder::new().num_threads(args.threads.map_or(0, usize::from)).build();
     let pool = pool.map_err(|error| Failure::Threads(error.to_string()))?;
     let conditions = Conditions { tolerances, mask, climate, real, levels, trim: args.trim, sampling };
     let found = pool.install(|| vet(&built, &conditions));
-    let record = VetRecord::new(&built, args.row, &conditions, &found);
+    let record = VetRecord::new(&built, args.row, boards, &conditions, &found);
     output.write(&written(&record, args.format, usize::from(args.width))?)?;
     let missed = record.mask.as_ref().is_some_and(|mask| matches!(mask.fails, Some("target" | "nominal")));
     Ok(if missed { NOTHING_WITHIN_LIMITS } else { FOUND })
 }
 
 /// The faults of a file.
-fn faulty(path: &Path, text: &str, faults: Vec<Fault>) -> Faulty {
+pub(super) fn faulty(path: &Path, text: &str, faults: Vec<Fault>) -> Faulty {
     let file = if path == Path::new("-") { "standard input".to_string() } else { path.display().to_string() };
     Faulty { file, text: text.to_string(), faults, is_first_round: false }
 }
 
-/// The board of the row that is asked for.
-fn board(args: &VetArgs) -> Result<Built, Failure> {
+/// The board of the row that is asked for, and of how many that differ it is the worst.
+fn board(args: &VetArgs) -> Result<(Built, usize), Failure> {
     let text = read_text(&args.list)?;
     let failed = |faults| Failure::Input(vec![faulty(&args.list, &text, faults)]);
     let listed = Listed::parse(&text).map_err(failed)?;
-    let own = own_circuits(args)?;
+    let mut circuits = circuits_with(&args.circuit)?;
     let row = listed
         .row(args.row)
         .map_err(|message| Failure::input(Fault::at("--row", message).help("choose a row of the list")))?;
-    let mut circuits = |id: &str| -> Result<Arc<Circuit>, String> {
-        let found = own.get(id).cloned().or_else(|| find(id).cloned().map(Arc::new));
-        found.ok_or_else(|| format!("there is no circuit `{id}`"))
-    };
-    listed.built(row, &mut circuits).map_err(|faults| failed(located(&text, faults)))
+    let built = listed.built(row, &mut circuits).map_err(|faults| failed(located(&text, faults)))?;
+    Ok((built, row.boards))
 }
 
-/// The circuit files that are given, by their identifiers.
-fn own_circuits(args: &VetArgs) -> Result<BTreeMap<String, Arc<Circuit>>, Failure> {
-    let read = |path: &std::path::PathBuf| {
+/// Finds a circuit by its identifier: among the files that are given, then in the library.
+pub(super) fn circuits_with(
+    files: &[PathBuf],
+) -> Result<impl FnMut(&str) -> Result<Arc<Circuit>, String> + use<>, Failure> {
+    let read = |path: &PathBuf| {
         let circuit = read_circuit(path)?;
         Ok((circuit.id.clone(), Arc::new(circuit)))
     };
-    args.circuit.iter().map(read).collect()
+    let own: BTreeMap<String, Arc<Circuit>> = files.iter().map(read).collect::<Result<_, Failure>>()?;
+    Ok(move |id: &str| {
+        let found = own.get(id).cloned().or_else(|| find(id).cloned().map(Arc::new));
+        found.ok_or_else(|| format!("there is no circuit `{id}`"))
+    })
 }
 
-fn mask(path: &Path, built: &Built) -> Result<Mask, Failure> {
+/// Reads a mask file.
+pub(super) fn mask(path: &Path, built: &Built) -> Result<Mask, Failure> {
     let text = read_text(path)?;
     read_mask(&text, &built.targets()).map_err(|faults| Failure::Input(vec![faulty(path, &text, faults)]))
 }

@@ -71,14 +71,14 @@ fn read(args: &VetArgs, faults: &mut Vec<Fault>) -> VetSettings {
 }
 
 /// A percentage from zero to `most`.
-struct Percent {
-    name: &'static str,
-    most: f64,
-    example: &'static str,
+pub(super) struct Percent {
+    pub(super) name: &'static str,
+    pub(super) most: f64,
+    pub(super) example: &'static str,
 }
 
 impl Percent {
-    fn read(&self, flag: &str, text: &str, faults: &mut Vec<Fault>) -> f64 {
+    pub(super) fn read(&self, flag: &str, text: &str, faults: &mut Vec<Fault>) -> f64 {
         let Percent { name, most, example } = self;
         let help = format!("write it in percent, such as {example}");
         let fault = match parse_number(text) {
@@ -94,7 +94,7 @@ impl Percent {
     }
 }
 
-fn whole(flag: &str, text: &str, low: u64, high: u64, faults: &mut Vec<Fault>) -> u64 {
+pub(super) fn whole(flag: &str, text: &str, low: u64, high: u64, faults: &mut Vec<Fault>) -> u64 {
     text.parse().ok().filter(|number| (low..=high).contains(number)).unwrap_or_else(|| {
         let message = format!("expected a whole number from {low} to {high}, found {text}");
         faults.push(Fault::at(flag, message).help("write it without separators"));

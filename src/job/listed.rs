@@ -6,7 +6,7 @@ use std::sync::Arc;
 
 use serde::Deserialize;
 
-use crate::analysis::{Built, BuiltPart, BuiltSection, Joint};
+use crate::analysis::{Built, BuiltPart, BuiltPiece, BuiltSection, Joint};
 use crate::circuit::Circuit;
 use crate::target::{Criterion, Measure, Section, Shape, Weights};
 use crate::text::{Fault, located, suggestion};
@@ -49,8 +49,10 @@ pub struct ListedSection {
 pub struct ListedRow {
     /// The number by which the list shows it, from 1.
     pub rank: usize,
-    /// The parts of each section, in the order of the file.
+    /// The parts of each section, in the order of the file; where boards differ, those of the worst board.
     pub sections: Vec<Vec<ListedPart>>,
+    /// How many boards there are that differ in their measured parts; 0 where all boards are alike.
+    pub boards: usize,
 }
 
 /// What one slot holds.
@@ -60,10 +62,12 @@ pub struct ListedPart {
     pub slot: String,
     /// Resistor or capacitor.
     pub kind: Kind,
-    /// Its value.
+    /// Its value; that of joined parts to twelve digits.
     pub value: Value,
-    /// The parts to buy for it, at least one; a single part is its own only piece.
-    pub made_of: Vec<Value>,
+    /// The parts that it is made of, at least one; a single part is its own only piece.
+    pub made_of: Vec<BuiltPiece>,
+    /// How they make up the value, where the list says.
+    pub joint: Option<Joint>,
 }
 
 // ---- the file as it is written ------------------------------------------------------------------------------------
@@ -106,6 +110,8 @@ struct RawTarget {
 struct RawRow {
     rank: usize,
     sections: Vec<RawChosen>,
+    #[serde(default)]
+    boards: Vec<serde::de::IgnoredAny>,
 }
 
 #[derive(Deserialize)]
@@ -118,13 +124,20 @@ struct RawChosen {
 struct RawPart {
     slot: String,
     kind: String,
+    value: f64,
     notation: String,
+    joint: Option<String>,
     made_of: Vec<RawPiece>,
 }
 
 #[derive(Deserialize)]
 struct RawPiece {
     value: f64,
+    notation: Option<String>,
+    measured: Option<f64>,
+    tolerance: Option<[f64; 2]>,
+    #[serde(default)]
+    lines: Vec<usize>,
 }
 
 /// The bytes on which a fault of the reader lies: it counts lines and bytes within them from one.
@@ -313,7 +326,7 @@ fn read_row(index: usize, raw: &RawRow, sections: &[RawSection], faults: &mut Ve
         let parts = chosen.parts.iter().enumerate();
         parts.filter_map(|(i, part)| read_part(&format!("{path}[{k}].parts[{i}]"), part, faults)).collect()
     });
-    ListedRow { rank: raw.rank, sections: sections.collect() }
+    ListedRow { rank: raw.rank, sections: sections.collect(), boards: raw.boards.len() }
 }
 
 fn read_part(path: &str, raw: &RawPart, faults: &mut Vec<Fault>) -> Option<ListedPart> {
@@ -326,41 +339,81 @@ fn read_part(path: &str, raw: &RawPart, faults: &mut Vec<Fault>) -> Option<Liste
             return None;
         }
     };
-    let mut read = |key: String, text: &str| match parse_part(text, kind) {
-        Ok(value) => Some(value),
-        Err(error) => {
-            faults.push(Fault::at(format!("{path}.{key}"), error.to_string()));
-            None
+    let joint = match raw.joint.as_deref() {
+        None => None,
+        Some("series") => Some(if kind == Kind::Resistor { Joint::Sum } else { Joint::Reciprocal }),
+        Some("parallel") => Some(if kind == Kind::Resistor { Joint::Reciprocal } else { Joint::Sum }),
+        Some(other) => {
+            let message = format!("parts are joined in series or parallel, found `{other}`");
+            faults.push(Fault::at(format!("{path}.joint"), message).help("write series or parallel"));
+            return None;
         }
     };
-    let value = read("notation".to_string(), &raw.notation);
-    // The shortest decimal that gives the float is the value that was written.
+    let value = match joint {
+        None => value_of(format!("{path}.notation"), &raw.notation, kind, faults),
+        // The value of joined parts is no decimal in general: as many digits as a value has.
+        Some(_) => value_of(format!("{path}.value"), &format!("{:.11e}", raw.value), kind, faults),
+    };
     let pieces = raw.made_of.iter().enumerate();
-    let made_of: Vec<Option<Value>> =
-        pieces.map(|(k, piece)| read(format!("made_of[{k}].value"), &format!("{:e}", piece.value))).collect();
+    let made_of: Vec<Option<BuiltPiece>> =
+        pieces.map(|(k, piece)| read_piece(&format!("{path}.made_of[{k}]"), piece, kind, faults)).collect();
     if made_of.is_empty() {
         let message = format!("slot {} is made of nothing", raw.slot);
         faults.push(Fault::at(format!("{path}.made_of"), message).help("give the value of each part to buy"));
         return None;
     }
-    Some(ListedPart {
-        slot: raw.slot.clone(),
-        kind,
-        value: value?,
-        made_of: made_of.into_iter().collect::<Option<_>>()?,
-    })
+    let made_of = made_of.into_iter().collect::<Option<_>>()?;
+    Some(ListedPart { slot: raw.slot.clone(), kind, value: value?, made_of, joint })
+}
+
+fn value_of(path: String, text: &str, kind: Kind, faults: &mut Vec<Fault>) -> Option<Value> {
+    parse_part(text, kind).map_err(|error| faults.push(Fault::at(path, error.to_string()))).ok()
+}
+
+fn read_piece(path: &str, raw: &RawPiece, kind: Kind, faults: &mut Vec<Fault>) -> Option<BuiltPiece> {
+    // The shortest decimal that gives the float is the value that was written.
+    let value = value_of(format!("{path}.value"), &format!("{:e}", raw.value), kind, faults)?;
+    let label = match &raw.notation {
+        None => value,
+        Some(text) => value_of(format!("{path}.notation"), text, kind, faults)?,
+    };
+    if let Some(measured) = raw.measured {
+        let measured = value_of(format!("{path}.measured"), &format!("{measured:e}"), kind, faults)?;
+        if measured != value {
+            let message = "the value of a measured part is what was measured";
+            faults.push(Fault::at(format!("{path}.value"), message).help("give both the same number"));
+            return None;
+        }
+    } else if label != value {
+        let message = "the value on the label is another than the value, and the part was not measured";
+        faults
+            .push(Fault::at(format!("{path}.notation"), message).help("give the measured value, or mend the label"));
+        return None;
+    }
+    let tolerance = raw.tolerance.map(|[low, high]| (low, high));
+    if let Some((low, high)) = tolerance.filter(|(low, high)| !(*low > -1.0 && low <= high && *high <= 1.0)) {
+        let message = format!("{low} to {high} is no tolerance: it runs upwards, from above -1 to 1 at most");
+        faults.push(Fault::at(format!("{path}.tolerance"), message).help("write ratios: 5 % is -0.05 and 0.05"));
+    }
+    let is_measured = raw.measured.is_some();
+    Some(BuiltPiece { value, label, is_measured, tolerance, line: raw.lines.first().copied() })
 }
 
 /// How pieces make up the value of a slot, if they do: one piece is the value itself.
 fn joint(part: &ListedPart) -> Option<Joint> {
-    let pieces: Vec<f64> = part.made_of.iter().map(|piece| piece.to_f64()).collect();
+    let pieces: Vec<f64> = part.made_of.iter().map(|piece| piece.value.to_f64()).collect();
     let value = part.value.to_f64();
-    // Values of joined parts are written with up to twelve digits.
-    let is = |found: f64| (found / value - 1.0).abs() < 1e-9;
-    if is(pieces.iter().sum()) {
-        return Some(Joint::Sum);
-    }
-    is(1.0 / pieces.iter().map(|piece| 1.0 / piece).sum::<f64>()).then_some(Joint::Reciprocal)
+    let is = |joint: &Joint| {
+        let found = match joint {
+            Joint::Sum => pieces.iter().sum::<f64>(),
+            Joint::Reciprocal => 1.0 / pieces.iter().map(|piece| 1.0 / piece).sum::<f64>(),
+        };
+        // Values of joined parts are written with up to twelve digits.
+        (found / value - 1.0).abs() < 1e-9
+    };
+    // Where the list does not say how they are joined, their values do.
+    let possible = part.joint.map_or(vec![Joint::Sum, Joint::Reciprocal], |joint| vec![joint]);
+    possible.into_iter().find(is)
 }
 
 fn built_section(
@@ -410,7 +463,8 @@ fn built_section(
             continue;
         }
         let Some(joint) = joint(part) else {
-            let message = format!("the pieces of slot {} make up another value, in series as in parallel", part.slot);
+            let how = if part.joint.is_none() { ", in series as in parallel" } else { "" };
+            let message = format!("the pieces of slot {} make up another value{how}", part.slot);
             fault("made_of", message, "give the pieces whose sum, or sum of reciprocals, is the value".to_string());
             continue;
         };

@@ -89,9 +89,18 @@ pub(super) fn piece(supply: &Supply, kind: Kind, choice: Choice) -> PieceRecord 
         value: choice.value.to_f64(),
         notation: format_part(lot.map_or(choice.value, |lot| lot.nominal), kind),
         measured: lot.and_then(|lot| lot.measured).map(|value| value.to_f64()),
+        tolerance: lot.and_then(ratios),
         id: lot.and_then(|lot| lot.id()).map(str::to_owned),
         lines: lot.map_or(Vec::new(), |lot| lot.lines.iter().map(|line| line.line).collect()),
     }
+}
+
+/// The tolerance of a lot by its list as ratios; `None` for a measured part.
+fn ratios(lot: &Lot) -> Option<[f64; 2]> {
+    let (low, high) = lot.lines.first().filter(|_| lot.measured.is_none())?.tolerance?.limits(lot.nominal);
+    // What the way over ohms and farads leaves behind the twelfth place is taken out.
+    let ratio = |limit: f64| ((limit / lot.nominal.to_f64() - 1.0) * 1e12).round() / 1e12;
+    Some([ratio(low), ratio(high)])
 }
 
 /// How far what stands in a slot may be from its value: the value of the whole with all its parts at their lowest, and at

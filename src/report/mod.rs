@@ -12,6 +12,7 @@ mod record;
 mod stock;
 mod swap;
 mod table;
+mod tighten;
 mod vet;
 mod vet_drift;
 mod vet_levels;
@@ -44,9 +45,12 @@ pub use swap::{
     ChangeRecord, ImpossibleRecord, ReplacementRecord, SWAP_FORMAT, SwapRecord, write_swap_json, write_swap_table,
 };
 pub use table::write_table;
+pub use tighten::{
+    StepRecord, TIGHTEN_FORMAT, TightenQuestion, TightenRecord, write_tighten_json, write_tighten_table,
+};
 pub use vet::{
-    LimitRecord, MaskOutcome, OffPart, SpreadRecord, VET_FORMAT, VetRecord, VetSection, WorstRecord, YieldRecord,
-    write_vet_json,
+    LimitRecord, MaskOutcome, OffPart, SpreadRecord, VET_FORMAT, VetPart, VetPiece, VetRecord, VetSection,
+    WorstRecord, YieldRecord, write_vet_json,
 };
 pub use vet_drift::{DriftRecord, FigureDriftRecord, KindDriftRecord};
 pub use vet_levels::{LevelsRecord, PeakRecord};

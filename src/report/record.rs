@@ -301,6 +301,9 @@ pub struct PieceRecord {
     pub notation: String,
     /// The measured value of this one part, Ω or F.
     pub measured: Option<f64>,
+    /// How far it may be off its label by the tolerance of the stock list, as ratios: lowest and highest, such as −0.05 and
+    /// 0.05. `None` where the list does not say, and for a measured part.
+    pub tolerance: Option<[f64; 2]>,
     /// What the part or its drawer is called.
     pub id: Option<String>,
     /// The lines of the stock list that it is taken from.

@@ -11,8 +11,8 @@ use super::vet_levels::LevelsRecord;
 use super::vet_real::RealRecord;
 use super::vet_trim::TrimRecord;
 use crate::analysis::{
-    Built, Conditions, Distribution, Figure, FigureLimit, Limit, Mask, MaskResult, Quantiles, Reference, Standing,
-    Vetted, WorstCase, Yield,
+    Built, BuiltPiece, Conditions, Distribution, Figure, FigureLimit, Limit, Mask, MaskResult, Quantiles, Reference,
+    Standing, Tolerances, Vetted, WorstCase, Yield,
 };
 use crate::target::Figures;
 use crate::units::{Kind, format_part};
@@ -30,6 +30,9 @@ pub struct VetRecord {
     pub title: String,
     /// The row of the shortlist.
     pub row: usize,
+    /// How many boards of the row differ in their measured parts: what is looked at is the worst of them. 0 where all
+    /// boards are alike.
+    pub boards: usize,
     /// The sections in signal order.
     pub sections: Vec<VetSection>,
     /// What the error is.
@@ -69,7 +72,7 @@ pub struct VetSection {
     pub target: TargetRecord,
     /// What the nominal parts give.
     pub nominal: Achieved,
-    /// The parts in slot order: slot, kind, value in ohms or farads, and in the notation of IEC 60062.
+    /// The parts in slot order.
     pub parts: Vec<VetPart>,
 }
 
@@ -82,16 +85,31 @@ pub struct VetPart {
     pub kind: Kind,
     /// Its value, Ω or F.
     pub value: f64,
-    /// The value in IEC 60062 notation.
+    /// The value in IEC 60062 notation, of a pair both with `+` between (in series) or `||` (in parallel).
     pub notation: String,
+    /// The parts that it is made of, each with the tolerance that it is drawn with.
+    pub made_of: Vec<VetPiece>,
+}
+
+/// One part to buy, or one that is there.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct VetPiece {
+    /// Its value, Ω or F: as measured, else as labelled.
+    pub value: f64,
+    /// The value on its label, in IEC 60062 notation.
+    pub notation: String,
+    /// How far it may be off, as ratios: lowest and highest.
+    pub tolerance: [f64; 2],
+    /// From where that is: `flag`, `list` for the stock list, or `measured` for a measured part, which is off by nothing.
+    pub tolerance_from: &'static str,
 }
 
 /// The tolerances, as ratios.
 #[derive(Clone, Debug, PartialEq, Serialize)]
 pub struct TolerancesRecord {
-    /// Of resistors.
+    /// Of resistors for which the stock list gives none.
     pub resistors: f64,
-    /// Of capacitors.
+    /// Of capacitors likewise.
     pub capacitors: f64,
     /// `uniform` or `normal`.
     pub distribution: &'static str,
@@ -253,8 +271,8 @@ fn known(number: f64) -> Option<f64> {
 }
 
 impl VetRecord {
-    /// The record of a row that was looked at.
-    pub fn new(built: &Built, row: usize, conditions: &Conditions, found: &Vetted) -> VetRecord {
+    /// The record of a row that was looked at; `boards` of it differ (see [`VetRecord::boards`]).
+    pub fn new(built: &Built, row: usize, boards: usize, conditions: &Conditions, found: &Vetted) -> VetRecord {
         let criterion = found.criterion;
         let (low, high) = criterion.band_for(&built.targets());
         let tolerances = &conditions.tolerances;
@@ -262,7 +280,13 @@ impl VetRecord {
             format: VET_FORMAT,
             title: built.title.clone(),
             row,
-            sections: built.sections.iter().zip(&found.figures).map(|(s, f)| VetSection::new(s, f)).collect(),
+            boards,
+            sections: built
+                .sections
+                .iter()
+                .zip(&found.figures)
+                .map(|(s, f)| VetSection::new(s, f, tolerances))
+                .collect(),
             measure: MeasureRecord {
                 name: if criterion.measure.unit().is_empty() { "vector" } else { "decibel" },
                 definition: criterion.measure.describe(),
@@ -315,14 +339,29 @@ fn achieved(figures: &Figures) -> Achieved {
     }
 }
 
+fn piece(kind: Kind, piece: &BuiltPiece, tolerances: &Tolerances) -> VetPiece {
+    let (low, high) = tolerances.limits(kind, piece);
+    VetPiece {
+        value: piece.value.to_f64(),
+        notation: format_part(piece.label, kind),
+        tolerance: [low, high],
+        tolerance_from: match piece.tolerance {
+            _ if piece.is_measured => "measured",
+            Some(_) => "list",
+            None => "flag",
+        },
+    }
+}
+
 impl VetSection {
-    fn new(section: &crate::analysis::BuiltSection, figures: &Figures) -> VetSection {
+    fn new(section: &crate::analysis::BuiltSection, figures: &Figures, tolerances: &Tolerances) -> VetSection {
         let target = &section.target;
         let part = |part: &crate::analysis::BuiltPart| VetPart {
             slot: section.slot_name(part.slot).to_string(),
             kind: part.kind,
             value: part.value.to_f64(),
-            notation: format_part(part.value, part.kind),
+            notation: part.notation(),
+            made_of: part.pieces.iter().map(|of| piece(part.kind, of, tolerances)).collect(),
         };
         VetSection {
             name: target.name.clone(),

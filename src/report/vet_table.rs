@@ -10,6 +10,7 @@ use super::vet_drift::drift_table;
 use super::vet_levels::levels_table;
 use super::vet_real::real_table;
 use super::vet_trim::trim_table;
+use crate::units::Kind;
 
 /// Writes the record as text of at most `width` characters to the line (40 at least; a name that is longer is not
 /// broken).
@@ -57,7 +58,11 @@ fn caution(record: &VetRecord) -> String {
 /// What is looked at, and under what conditions.
 fn board(record: &VetRecord, width: usize) -> String {
     let title = if record.title.is_empty() { String::new() } else { format!("{}, ", record.title) };
-    let mut text = paragraph("", &format!("{title}row {}", record.row), width);
+    let boards = match record.boards {
+        0 => String::new(),
+        boards => format!(": the worst of its {boards} boards, which differ in their measured parts"),
+    };
+    let mut text = paragraph("", &format!("{title}row {}{boards}", record.row), width);
     text.push('\n');
     for section in &record.sections {
         let target = target_in_words(&section.target);
@@ -76,13 +81,61 @@ fn board(record: &VetRecord, width: usize) -> String {
         share if share > 0.0 => format!("{} of it common to the parts of one part number", of_hundred(share)),
         _ => "each part by itself".to_string(),
     };
-    let line = format!(
-        "resistors {}, capacitors {}, {spread}; {reels}",
-        unbroken(&of_hundred(tolerances.resistors)),
-        unbroken(&of_hundred(tolerances.capacitors))
-    );
+    let said = said_tolerances(record);
+    let parts = record.sections.iter().flat_map(|section| &section.parts);
+    let uses_flag = |kind: Kind| {
+        let mut pieces = parts.clone().filter(|part| part.kind == kind).flat_map(|part| &part.made_of);
+        pieces.any(|piece| piece.tolerance_from == "flag")
+    };
+    let other = if said.is_empty() { "" } else { "other " };
+    let kinds = [
+        (Kind::Resistor, format!("{other}resistors {}", unbroken(&of_hundred(tolerances.resistors)))),
+        (Kind::Capacitor, format!("{other}capacitors {}", unbroken(&of_hundred(tolerances.capacitors)))),
+    ];
+    let kinds = kinds.into_iter().filter(|(kind, _)| said.is_empty() || uses_flag(*kind)).map(|(_, words)| words);
+    let words: Vec<String> = kinds.chain([spread.to_string()]).collect();
+    let line = format!("{}; {reels}", words.join(", "));
     text += &paragraph("Tolerances: ", &line, width);
+    for line in said {
+        text += &paragraph("            ", &line, width);
+    }
     text + &paragraph("Error:      ", &measure_in_words(&record.measure), width)
+}
+
+/// The tolerances that the flags do not give: those of the stock list, the largest first, and measured parts.
+fn said_tolerances(record: &VetRecord) -> Vec<String> {
+    let in_words = |[low, high]: [f64; 2]| match (low + high).abs() < 1e-9 {
+        true => format!("±{}", of_hundred(high)),
+        false => format!("{} to {}", signed(low), signed(high)),
+    };
+    // How far up, in words, and for which parts.
+    let mut listed: Vec<(f64, String, Vec<String>)> = Vec::new();
+    let mut measured: Vec<String> = Vec::new();
+    for (section, part) in record.sections.iter().flat_map(|s| s.parts.iter().map(move |part| (s, part))) {
+        for piece in &part.made_of {
+            let of_pair = if part.made_of.len() > 1 { format!(" {}", piece.notation) } else { String::new() };
+            let name = unbroken(&format!("{} {}{of_pair}", section.name, part.slot));
+            match piece.tolerance_from {
+                "measured" => measured.push(name),
+                "list" => {
+                    let words = unbroken(&in_words(piece.tolerance));
+                    match listed.iter_mut().find(|(_, known, _)| *known == words) {
+                        Some((_, _, names)) => names.push(name),
+                        None => listed.push((piece.tolerance[1], words, vec![name])),
+                    }
+                }
+                _ => {}
+            }
+        }
+    }
+    listed.sort_by(|(a, ..), (b, ..)| b.total_cmp(a));
+    let shown = listed.into_iter();
+    let mut lines: Vec<String> =
+        shown.map(|(_, words, names)| format!("{words} by the stock list: {}", names.join(", "))).collect();
+    if !measured.is_empty() {
+        lines.push(format!("measured, and taken without a tolerance: {}", measured.join(", ")));
+    }
+    lines
 }
 
 /// A ratio in percent, without a sign.

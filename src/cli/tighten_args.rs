@@ -1,0 +1,67 @@
+//! The flags of `tighten` as typed.
+
+use std::path::PathBuf;
+
+use clap::Args;
+
+use super::args::ShowFormat;
+
+/// The help that follows the flags.
+pub const HELP: &str = "\
+Each step gives all resistors one tolerance, all capacitors another; the tolerances of a stock list do
+not count here. Measured parts stay as they are.
+
+Example:
+  roundwell tighten shortlist.json --mask mask.ron --wanted-yield 95%
+
+Exit codes: 0 done, 2 bad input or usage, 3 the target misses what is wanted, or no step reaches the
+wanted yield.";
+
+/// `tighten`.
+#[derive(Debug, Args)]
+pub struct TightenArgs {
+    /// A shortlist written by `shortlist --format json`, or - for standard input.
+    pub list: PathBuf,
+    /// The rows to compare, such as 1,3..5 [default: all].
+    #[arg(long, value_name = "NUMBERS", allow_hyphen_values = true)]
+    pub rows: Option<String>,
+    /// Circuit file (.ron), where the list uses a circuit of your own; repeatable.
+    #[arg(long, value_name = "FILE")]
+    pub circuit: Vec<PathBuf>,
+    /// Mask file (RON) with the limits that a board has to keep.
+    #[arg(long, value_name = "FILE", required_unless_present = "within", conflicts_with = "within")]
+    pub mask: Option<PathBuf>,
+    /// In place of a mask: the error against the target that a board may have, such as 1dB.
+    #[arg(long, value_name = "ERROR", allow_hyphen_values = true)]
+    pub within: Option<String>,
+    /// Mark the coarsest steps that reach this yield.
+    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true)]
+    pub wanted_yield: Option<String>,
+    /// How errors are spread: evenly, or normally with a third of the tolerance as standard deviation and cut off at it.
+    #[arg(long, default_value = "uniform", value_parser = ["uniform", "normal"])]
+    pub distribution: String,
+    /// The share of the tolerance by which all parts of one part number are off together, as from one reel.
+    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "0%")]
+    pub reel_share: String,
+    /// Boards to draw at most for each row and step.
+    #[arg(long, value_name = "COUNT", allow_hyphen_values = true, default_value = "100000")]
+    pub boards: String,
+    /// Draw no more once the interval of the best row is this narrow to either side; 0 draws all.
+    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "1%")]
+    pub interval: String,
+    /// Seed of the draw.
+    #[arg(long, value_name = "NUMBER", allow_hyphen_values = true, default_value = "1")]
+    pub seed: String,
+    /// How to write it.
+    #[arg(long, value_enum, default_value_t)]
+    pub format: ShowFormat,
+    /// Write to this file in place of standard output; it is replaced only when all is written.
+    #[arg(long, value_name = "FILE")]
+    pub out: Option<PathBuf>,
+    /// Characters to the line.
+    #[arg(long, value_name = "COUNT", default_value_t = 80, value_parser = clap::value_parser!(u16).range(40..=1000))]
+    pub width: u16,
+    /// Threads to work with [default: one for each processor core].
+    #[arg(long, value_name = "COUNT", value_parser = clap::value_parser!(u16).range(1..=1024))]
+    pub threads: Option<u16>,
+}
