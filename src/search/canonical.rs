@@ -200,6 +200,10 @@ pub(crate) fn with_silent(model: &Model, supply: &Supply, active: Vec<Choice>, c
     filling.best.into_iter().map(|(_, choices, tally)| (choices, tally)).collect()
 }
 
+/// What makes two new choices alike: which open groups they serve, for how many bodies the stock suffices, whether more can
+/// be had, and whether the part number is there.
+type Alike = (Vec<bool>, u64, bool, bool);
+
 /// Whether the price is not known, the price, and the distance from the impedance level.
 type Rated = ((bool, Option<u64>), f64);
 
@@ -269,7 +273,7 @@ impl Filling<'_> {
         let bodies = alike.iter().map(|g| g.bodies()).sum::<u64>();
         let numbers: BTreeSet<(Kind, Choice)> =
             there.iter().map(|&choice| self.supply.part_number(open[0].kind, choice)).collect();
-        let mut nearest: BTreeMap<(Vec<bool>, u64, bool, bool), (Rated, Choice)> = BTreeMap::new();
+        let mut nearest: BTreeMap<Alike, (Rated, Choice)> = BTreeMap::new();
         for choice in open[0].shelf.choices().iter().filter(|choice| !there.contains(choice)) {
             let serves = alike.iter().map(|g| g.shelf.contains(*choice)).collect();
             let enough = (1..=bodies).take_while(|&b| self.supply.suffices(*choice, b)).count() as u64;
