@@ -102,9 +102,7 @@ fn together(boards: &[&Found]) -> Option<Found> {
     let worst = boards.iter().max_by_key(|found| found.key)?;
     let mut whole = (*worst).clone();
     for found in boards {
-        whole.takes.part_numbers = whole.takes.part_numbers.max(found.takes.part_numbers);
-        whole.takes.bought = whole.takes.bought.max(found.takes.bought);
-        whole.takes.placed_parts = whole.takes.placed_parts.max(found.takes.placed_parts);
+        whole.takes = whole.takes.largest(&found.takes);
         whole.cost = whole.cost.zip(found.cost).map(|(a, b)| a.max(b));
     }
     whole.boards = boards

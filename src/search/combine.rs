@@ -9,7 +9,7 @@ use crate::target::{Biquad, Yardstick};
 use crate::units::{Kind, Value};
 
 use super::canonical::{Tally, impedance, in_ohms, preferred_impedance, shifted, tally, with_silent};
-use super::front::{ErrorKey, Found, Takes};
+use super::front::{ErrorKey, Found};
 use super::limits::Monitor;
 use super::model::Model;
 use super::prepared::Prepared;
@@ -101,7 +101,8 @@ impl Board<'_> {
             further.search(&order, &self.problem.supply, &mut vec![None; order.len()]);
             let backwards: Vec<usize> = order.into_iter().rev().collect();
             further.search(&backwards, &self.problem.supply, &mut vec![None; backwards.len()]);
-            thinned |= further.searches >= MOST_SEARCHES;
+            // A search that was cut short may have left sets out too.
+            thinned |= further.searches >= MOST_SEARCHES || self.monitor.stop().is_some();
             let again =
                 further.found.par_iter().filter_map(|found| self.combination(&found.iter().collect::<Vec<_>>()));
             combinations.extend(again.collect::<Vec<_>>());
@@ -177,14 +178,9 @@ impl Board<'_> {
             let next = tally(&self.problem.supply, self.parts(sets))?;
             whole = Some(match whole {
                 None => next,
-                Some(Tally { takes, cost }) => Tally {
-                    takes: Takes {
-                        part_numbers: takes.part_numbers.max(next.takes.part_numbers),
-                        bought: takes.bought.max(next.takes.bought),
-                        placed_parts: takes.placed_parts.max(next.takes.placed_parts),
-                    },
-                    cost: cost.zip(next.cost).map(|(a, b)| a.max(b)),
-                },
+                Some(Tally { takes, cost }) => {
+                    Tally { takes: takes.largest(&next.takes), cost: cost.zip(next.cost).map(|(a, b)| a.max(b)) }
+                }
             });
             let chosen = sets.iter().flat_map(|set| &set.choices);
             let measured =

@@ -45,6 +45,15 @@ pub(crate) struct Takes {
 }
 
 impl Takes {
+    /// The larger of both in everything: what the most demanding of two boards takes.
+    pub fn largest(&self, other: &Takes) -> Takes {
+        Takes {
+            part_numbers: self.part_numbers.max(other.part_numbers),
+            bought: self.bought.max(other.bought),
+            placed_parts: self.placed_parts.max(other.placed_parts),
+        }
+    }
+
     /// Whether this is no more than `other` in anything.
     pub fn is_within(&self, other: &Takes) -> bool {
         self.part_numbers <= other.part_numbers

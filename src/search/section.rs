@@ -75,6 +75,7 @@ pub(crate) fn nearest(
     let rows = search.best.all();
     Some(SectionFront { rows, proof, sets: search.sets, nodes: search.nodes, limit: goals.error_limit })
 }
+
 struct Search<'a> {
     forms: &'a [Model],
     supply: &'a Supply,
