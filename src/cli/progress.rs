@@ -69,7 +69,9 @@ impl Monitor for Watch {
 /// Where the search stands, in words.
 fn message(progress: &Progress<'_>, unit: &str) -> String {
     let best = progress.best.map_or("nothing yet".to_string(), |error| error_in_words(unit, error));
-    format!("section {}, {} part numbers, best {best}", progress.section, progress.part_numbers)
+    let what = progress.section.map_or("all sections".to_string(), |name| format!("section {name}"));
+    let bound = progress.bound.map_or(String::new(), |error| format!(", none below {}", error_in_words(unit, error)));
+    format!("{what}, {} part numbers, best {best}{bound}", progress.part_numbers)
 }
 
 #[cfg(test)]
@@ -87,10 +89,14 @@ mod tests {
 
     #[test]
     fn progress_says_what_is_done_and_what_is_best() {
-        let mut progress = Progress { section: "A", part_numbers: 4, error_limit: 1.0, best: None, done: 0.5 };
+        let mut progress =
+            Progress { section: Some("A"), part_numbers: 4, error_limit: 1.0, best: None, bound: None, done: 0.5 };
         assert_eq!(message(&progress, "dB"), "section A, 4 part numbers, best nothing yet");
         progress.best = Some(0.001_234);
         assert_eq!(message(&progress, "dB"), "section A, 4 part numbers, best 0.001234 dB");
         assert_eq!(message(&progress, ""), "section A, 4 part numbers, best 0.1234 %");
+        (progress.section, progress.bound) = (None, Some(0.001));
+        let expected = "all sections, 4 part numbers, best 0.001234 dB, none below 0.001 dB";
+        assert_eq!(message(&progress, "dB"), expected);
     }
 }

@@ -135,6 +135,7 @@ pub(super) fn goals(desk: &mut Desk, job: &JobFile, measure: Checked<Measure>) -
         max_part_numbers: most?,
         wanted_error,
         error_limit,
+        own_error: None,
         error_resolution,
         rows: rows?.unwrap_or(usual.rows),
         alternatives: alternatives?.unwrap_or(usual.alternatives),

@@ -184,5 +184,5 @@ fn section(
     let mut shelves = shelves?;
     board.narrow(desk, &mut shelves, &equal)?;
     gain?;
-    Ok(SectionProblem { target, circuit, output, shelves, equal, pairs: pairs? })
+    Ok(SectionProblem { target, circuit, output, shelves, equal, pairs: pairs?, own_error: None })
 }

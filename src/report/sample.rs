@@ -158,6 +158,7 @@ fn outcome(problem: &Problem) -> Outcome {
     Outcome {
         nearest: Some(row(Some(1))),
         ideal: Some(row(None)),
+        together: None,
         marked: (0..rows.len())
             .filter(|&index| rows[index].deviation.error <= problem.goals.wanted_error)
             .min_by_key(|&index| rows[index].part_numbers),

@@ -7,20 +7,21 @@ use crate::target::{Biquad, Measure, Section, Yardstick};
 
 use super::canonical::{Tally, tally};
 use super::combine::{Board, Combination, SetAtLevel};
-use super::front::{ErrorKey, Proof};
+use super::front::{ErrorKey, Proof, Takes};
 use super::ideal::{self, Ideal};
 use super::limits::Monitor;
 use super::model::Model;
-use super::outcome::{BuiltBoard, Chosen, Outcome, Row};
+use super::outcome::{BuiltBoard, Chosen, Outcome, Row, TogetherSummary};
 use super::prepared::Prepared;
-use super::problem::{Problem, Rank};
+use super::problem::{Problem, Rank, SectionProblem};
 use super::section;
 use super::shortage::shortages;
+use super::together::{self, Together};
 
 /// Searches a job. The outcome is the same for any number of threads.
 ///
-/// A single section's front is exact. Several sections are searched one at a time, and the sets of their fronts
-/// combined: then no more is claimed than that.
+/// A single section's front is exact. Several sections are searched one at a time and the sets of their fronts combined;
+/// then all are chosen together, which is exact for the boards that it allows for (see [`TogetherSummary`]).
 pub fn shortlist(problem: &Problem, monitor: &dyn Monitor) -> Outcome {
     let targets: Vec<Section> = problem.sections.iter().map(|s| s.target.clone()).collect();
     let whole = Yardstick::new(&targets, problem.criterion);
@@ -40,12 +41,16 @@ pub fn shortlist(problem: &Problem, monitor: &dyn Monitor) -> Outcome {
         })
         .collect();
     let board = Board { problem, whole: &whole, prepared: &prepared, monitor };
-    let listed = if prepared.len() == problem.sections.len() { board.rows() } else { Listed::default() };
+    let together = together::together(&board);
+    let complete = prepared.len() == problem.sections.len();
+    let listed = if complete { board.rows(together.as_ref()) } else { Listed::default() };
     let (ideal, nearest) = board.references();
-    let stopped = prepared.iter().find_map(|p| match p.front.proof {
-        Proof::Stopped { reason, .. } => Some(reason),
+    let proofs = prepared.iter().map(|p| &p.front.proof).chain(together.iter().map(|t| &t.proof));
+    let stopped = proofs.into_iter().find_map(|proof| match proof {
+        Proof::Stopped { reason, .. } => Some(*reason),
         Proof::Exhaustive(_) => None,
     });
+    let own = |section: &SectionProblem| section.own_error.unwrap_or(problem.goals.own_error());
     Outcome {
         rows: listed.rows,
         more_rows: listed.more,
@@ -57,8 +62,16 @@ pub fn shortlist(problem: &Problem, monitor: &dyn Monitor) -> Outcome {
         marked: listed.marked,
         within_limit: listed.within_limit,
         stopped,
-        sets: prepared.iter().map(|p| p.front.sets).sum(),
-        nodes: prepared.iter().map(|p| p.front.nodes).sum(),
+        sets: prepared.iter().map(|p| p.front.sets).chain(together.iter().map(|t| t.sets)).sum(),
+        nodes: prepared.iter().map(|p| p.front.nodes).chain(together.iter().map(|t| t.nodes)).sum(),
+        together: together.map(|together| TogetherSummary {
+            proof: together.proof,
+            own_errors: problem.sections.iter().map(own).collect(),
+            bounds: together.bounds,
+            sets: together.sets,
+            nodes: together.nodes,
+            one_at_a_time: listed.one_at_a_time,
+        }),
     }
 }
 
@@ -71,14 +84,22 @@ struct Listed {
     thinned: bool,
     marked: Option<usize>,
     within_limit: bool,
+    /// Part numbers and error of the best within the wanted error of the sections chosen one at a time.
+    one_at_a_time: Option<(usize, f64)>,
 }
 
 impl Board<'_> {
     /// The rows of the shortlist.
-    fn rows(&self) -> Listed {
+    fn rows(&self, together: Option<&Together>) -> Listed {
         let goals = &self.problem.goals;
         let cost_counts = goals.rank == Rank::Cost;
         let (mut combinations, thinned) = self.combinations();
+        let wanted = ErrorKey::new(goals.wanted_error);
+        let good = combinations.iter().filter(|c| c.key <= wanted);
+        let one_at_a_time = good.map(|c| (c.tally.takes.part_numbers, c.key)).min();
+        combinations.extend(together.iter().flat_map(|t| t.boards.iter().cloned()));
+        combinations.sort_by(|a, b| (&a.sets, &a.boards).cmp(&(&b.sets, &b.boards)));
+        combinations.dedup_by(|a, b| a.sets == b.sets && a.boards == b.boards);
         let fewest = combinations.iter().map(|c| c.tally.takes.part_numbers).min();
         combinations.retain(|c| goals.max_part_numbers.is_none_or(|most| c.tally.takes.part_numbers <= most));
         let cost = |c: &Combination| (c.tally.cost.is_none(), c.tally.cost);
@@ -89,6 +110,13 @@ impl Board<'_> {
         let limit = ErrorKey::new(goals.error_limit);
         let within_limit = combinations.first().is_some_and(|best| best.key <= limit);
         combinations.retain(|c| !within_limit || c.key <= limit);
+        if together.is_some_and(|t| matches!(t.proof, Proof::Exhaustive(_))) {
+            // Beyond the end of the front nothing was searched together.
+            let resolution = ErrorKey::new(goals.error_resolution);
+            let ends: Vec<Takes> =
+                combinations.iter().filter(|c| c.key < resolution).map(|c| c.tally.takes).collect();
+            combinations.retain(|c| !ends.iter().any(|end| *end != c.tally.takes && end.is_within(&c.tally.takes)));
+        }
         // By ascending error, a combination is on the front if it takes less of something than each before it.
         let mut front: Vec<&Combination> = Vec::new();
         let mut alternatives: BTreeMap<usize, usize> = BTreeMap::new();
@@ -116,7 +144,6 @@ impl Board<'_> {
             Rank::ToBuy => picked.sort_by_key(|(c, _)| c.tally.takes.bought),
             Rank::Cost => picked.sort_by_key(|(c, _)| cost(c)),
         }
-        let wanted = ErrorKey::new(goals.wanted_error);
         let marked =
             (0..picked.len()).filter(|&i| picked[i].0.key <= wanted).min_by_key(|&i| (picked[i].0.tally.takes, i));
         // Where there are too many, alternatives go first, then rows from the end, but never the marked one.
@@ -125,25 +152,30 @@ impl Board<'_> {
         kept.truncate(goals.rows);
         kept.sort_unstable();
         Listed {
-            rows: kept.iter().map(|&i| self.row(picked[i].0, picked[i].1)).collect(),
+            rows: kept.iter().map(|&i| self.row(picked[i].0, picked[i].1, together)).collect(),
             more: picked.len() - kept.len(),
             fewest_found: fewest.filter(|_| combinations.is_empty()),
             thinned,
             marked: marked.and_then(|m| kept.iter().position(|&i| i == m)),
             within_limit,
+            one_at_a_time: one_at_a_time.map(|(part_numbers, key)| (part_numbers, key.value())),
         }
     }
 
-    fn row(&self, combination: &Combination, alternative: bool) -> Row {
-        let single = self.prepared.len() == 1;
-        let proved = self.prepared.iter().all(|p| match p.front.proof {
+    fn row(&self, combination: &Combination, alternative: bool, together: Option<&Together>) -> Row {
+        let is_proved = |p: &Prepared<'_>| match p.front.proof {
             // Where a silent slot may cost a part number, further sets of a count can stem from fewer values than were
             // searched so far: then only the first of each count is proved.
             Proof::Exhaustive(_) => {
                 !alternative || (p.forms[0].silent_groups_are_free() && !self.problem.supply.has_stock())
             }
             Proof::Stopped { complete_below, .. } => combination.tally.takes.part_numbers < complete_below,
-        });
+        };
+        let proved = match (together, self.prepared) {
+            (_, [only]) => is_proved(only),
+            (Some(together), _) => !alternative && together.proves(combination),
+            (None, _) => false,
+        };
         let chosen = |sets: &[SetAtLevel]| -> Vec<Chosen> {
             self.prepared.iter().zip(sets).map(|(p, set)| p.chosen_at(set)).collect()
         };
@@ -153,7 +185,7 @@ impl Board<'_> {
         });
         let boards = boards.collect();
         let tally = Some(combination.tally);
-        let row = self.assembled(chosen(&combination.sets), tally, alternative, single && proved);
+        let row = self.assembled(chosen(&combination.sets), tally, alternative, proved);
         Row { boards, ..row }
     }
 

@@ -1,6 +1,7 @@
 //! One representative for all sets that differ only by a decade of impedance or by interchangeable slots.
 
 use std::collections::{BTreeMap, BTreeSet};
+use std::ops::Range;
 
 use crate::parts::{Choice, Origin, Supply};
 use crate::units::Kind;
@@ -94,7 +95,8 @@ pub(crate) fn canonical(
     let at_level = |level: i32| -> Vec<Filled> {
         let Some(shifted) = shifted(groups, choices, level) else { return Vec::new() };
         let wanted = goals.impedance.is_none_or(|(from, to)| {
-            impedance(groups, &in_ohms(&shifted)).is_none_or(|level| (from..=to).contains(&level))
+            let level = |block: Range<usize>| impedance(&groups[block.clone()], &in_ohms(&shifted[block]));
+            model.sections().filter_map(level).all(|level| (from..=to).contains(&level))
         });
         if wanted { with_silent(model, supply, shifted, goals.rank == Rank::Cost) } else { Vec::new() }
     };

@@ -17,6 +17,7 @@ use super::problem::{Goals, Problem, Rank};
 use super::section;
 
 /// A combination of one set for each section.
+#[derive(Clone)]
 pub(crate) struct Combination {
     pub key: ErrorKey,
     pub tally: Tally,

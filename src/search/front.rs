@@ -27,6 +27,11 @@ impl ErrorKey {
         (self.0 as f64 + 0.5) * STEP * (1.0 + 1e-12)
     }
 
+    /// The error in the middle of those that have this key.
+    pub fn value(self) -> f64 {
+        self.0 as f64 * STEP
+    }
+
     /// The key just below, if there is one.
     pub fn below(self) -> Option<ErrorKey> {
         self.0.checked_sub(1).map(ErrorKey)

@@ -10,7 +10,7 @@ pub enum StopReason {
     TimeLimit,
     /// The user interrupted it.
     Interrupted,
-    /// Nothing lay within the job's error limit, and beyond it families that would take too long were left out.
+    /// What would take too long was left out: beyond the job's error limit, or of all sections together.
     TooLarge,
     /// There were too many ways to give measured parts to the boards.
     Assignment,
@@ -33,14 +33,16 @@ impl StopReason {
 /// Where a search stands.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Progress<'a> {
-    /// Name of the section being searched.
-    pub section: &'a str,
+    /// Name of the section being searched; `None` while the sections are put together.
+    pub section: Option<&'a str>,
     /// Families with this many different values are being searched.
     pub part_numbers: usize,
     /// Sets up to this error are being sought, in the unit of the measure.
     pub error_limit: f64,
-    /// Best error found so far for this section.
+    /// Best error found so far, of this section or of whole boards.
     pub best: Option<f64>,
+    /// For whole boards: the error below which there is none of at most so many part numbers.
+    pub bound: Option<f64>,
     /// How much of the current level is done, 0 to 1.
     pub done: f64,
 }

@@ -16,6 +16,7 @@ mod problem;
 mod section;
 mod shortage;
 mod swap;
+mod together;
 mod window;
 
 pub use board::shortlist;
@@ -25,6 +26,6 @@ pub use cascade::{
 };
 pub use front::{End, ErrorKey, Proof};
 pub use limits::{Monitor, Progress, StopReason, Unwatched};
-pub use outcome::{BuiltBoard, Chosen, Outcome, Part, Row, SectionSummary};
+pub use outcome::{Bound, BuiltBoard, Chosen, Outcome, Part, Row, SectionSummary, TogetherSummary};
 pub use problem::{Goals, Joint, Pairs, Problem, Rank, SectionProblem};
 pub use swap::{Change, Reference, Replacement, Replacements, SwapProblem, replacements};

@@ -1,6 +1,7 @@
 //! One section made ready for the search: groups of slots that carry one value, and which of them matter.
 
 use std::collections::BTreeSet;
+use std::ops::Range;
 
 use crate::circuit::{Polynomial, Transfer};
 use crate::parts::{Choice, Lot, Shelf, Supply};
@@ -37,6 +38,8 @@ pub(crate) struct Model {
     pub groups: Vec<Group>,
     /// How many of them reach the response.
     pub active: usize,
+    /// How many of them belong to each section, in order: all to one, but for whole boards.
+    pub blocks: Vec<usize>,
     /// The transfer function in the admittances of the active groups.
     pub transfer: Transfer,
     /// Permutations of the active groups, the identity left out, that leave response and shelves as they are.
@@ -97,6 +100,7 @@ impl Model {
             form.placed_parts += form.groups[index].slots.len();
         }
         form.active = form.groups.len();
+        form.blocks = vec![form.active];
         form.symmetries = symmetries(&form.transfer, &form.groups);
         form.groups.extend(silent);
         form
@@ -155,12 +159,30 @@ impl Model {
             let is_there = |lot: &Lot| lot.measured.is_some() && lot.available != Some(0);
             choices.into_iter().any(|&choice| supply.lot_of(choice).is_some_and(is_there))
         });
-        Some(Model { groups, active: count, transfer, symmetries, placed_parts: filled.len(), least_extra, measured })
+        Some(Model {
+            groups,
+            active: count,
+            blocks: vec![count],
+            transfer,
+            symmetries,
+            placed_parts: filled.len(),
+            least_extra,
+            measured,
+        })
     }
 
     /// The active groups.
     pub fn active_groups(&self) -> &[Group] {
         &self.groups[..self.active]
+    }
+
+    /// The active groups of each section.
+    pub fn sections(&self) -> impl Iterator<Item = Range<usize>> + '_ {
+        let mut next = 0;
+        self.blocks.iter().map(move |&size| {
+            next += size;
+            next - size..next
+        })
     }
 
     /// The groups that do not reach the response.

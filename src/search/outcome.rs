@@ -63,7 +63,8 @@ pub struct Row {
     /// Whether the row is not on the front, and listed because alternatives were asked for.
     pub alternative: bool,
     /// Whether it is proved that no set on these shelves in this circuit, but those of the rows before it, has a smaller
-    /// error with as few part numbers. Never so for several sections, which are chosen one at a time.
+    /// error with as few part numbers. For several sections: no board of which each section misses its own target by no
+    /// more than [`TogetherSummary::own_errors`] or the error of the row.
     pub proved: bool,
     /// Part numbers that must be bought; `None` without a stock list.
     pub to_buy: Option<usize>,
@@ -101,6 +102,33 @@ pub struct SectionSummary {
     pub unmet: Vec<String>,
 }
 
+/// What is known of all boards with a certain number of part numbers.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Bound {
+    /// At most so many part numbers.
+    pub part_numbers: usize,
+    /// No such board that the search allows for has an error below this, in the unit of the measure.
+    pub none_below: f64,
+}
+
+/// How all sections were searched together.
+#[derive(Clone, Debug, PartialEq)]
+pub struct TogetherSummary {
+    /// What is proved of the front of whole boards.
+    pub proof: Proof,
+    /// How far each section may miss its own target, where the board may not miss the whole by more; in the unit of the
+    /// measure.
+    pub own_errors: Vec<f64>,
+    /// By ascending number of part numbers.
+    pub bounds: Vec<Bound>,
+    /// Sets of sections and boards whose response was evaluated.
+    pub sets: u64,
+    /// Partial and whole sets and boards visited.
+    pub nodes: u64,
+    /// Part numbers and error of the best board within the wanted error that choosing the sections one at a time gives.
+    pub one_at_a_time: Option<(usize, f64)>,
+}
+
 /// The result of a job.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Outcome {
@@ -116,8 +144,10 @@ pub struct Outcome {
     pub ideal: Option<Row>,
     /// The ideal parts, each rounded to the nearest value of its shelf.
     pub nearest: Option<Row>,
-    /// The sections.
+    /// The sections, each by itself.
     pub sections: Vec<SectionSummary>,
+    /// All sections together; `None` for a single section, and where several were only searched one at a time.
+    pub together: Option<TogetherSummary>,
     /// Index of the row with the fewest part numbers within the wanted error.
     pub marked: Option<usize>,
     /// Whether the rows lie within the error limit; if not, they are the nearest that were found.

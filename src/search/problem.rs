@@ -66,9 +66,21 @@ pub struct SectionProblem {
     pub equal: Vec<Vec<usize>>,
     /// Where two parts may take the place of one.
     pub pairs: Pairs,
+    /// How far this section may miss its own target where all are chosen together; `None` for what the goals say.
+    pub own_error: Option<f64>,
 }
 
 impl SectionProblem {
+    /// Whether both are the same but for their name.
+    pub(crate) fn is_like(&self, other: &SectionProblem) -> bool {
+        let target = Section { name: self.target.name.clone(), ..other.target.clone() };
+        let same_circuit = Arc::ptr_eq(&self.circuit, &other.circuit) || self.circuit.id == other.circuit.id;
+        same_circuit
+            && self.target == target
+            && (self.output, &self.shelves, &self.equal) == (other.output, &other.shelves, &other.equal)
+            && (&self.pairs, self.own_error) == (&other.pairs, other.own_error)
+    }
+
     /// A section with one shelf a kind and the circuit's own ties in force, taken at the output of that name.
     ///
     /// `None` if the circuit has no such output.
@@ -89,7 +101,7 @@ impl SectionProblem {
             tie.iter().copied().filter(|slot| !circuit.outputs[output].without.contains(slot)).collect()
         };
         let equal = circuit.ties.iter().map(filled).filter(|tie| tie.len() > 1).collect();
-        Some(SectionProblem { target, circuit, output, shelves, equal, pairs: Pairs::default() })
+        Some(SectionProblem { target, circuit, output, shelves, equal, pairs: Pairs::default(), own_error: None })
     }
 
     /// The output that is taken.
@@ -107,6 +119,9 @@ pub struct Goals {
     pub wanted_error: f64,
     /// Nothing worse is listed unless nothing better exists.
     pub error_limit: f64,
+    /// Where several sections are chosen together: by how much each of them may miss its own target, if that is more than
+    /// the board may miss the whole. `None` for the wanted error.
+    pub own_error: Option<f64>,
     /// The front ends where the best error falls below this.
     pub error_resolution: f64,
     /// How many rows to list at most.
@@ -119,6 +134,13 @@ pub struct Goals {
     pub rank: Rank,
     /// Where measured parts go to several boards: whether each board may have other parts beside them too.
     pub each_board_its_own: bool,
+}
+
+impl Goals {
+    /// By how much each of several sections may miss its own target, if the board may not miss the whole by more.
+    pub fn own_error(&self) -> f64 {
+        self.own_error.unwrap_or(self.wanted_error)
+    }
 }
 
 /// What rows are ranked by first; the others follow in the order given here.
@@ -142,6 +164,7 @@ impl Default for Goals {
             max_part_numbers: None,
             wanted_error: 0.1,
             error_limit: 1.0,
+            own_error: None,
             error_resolution: 0.001,
             rows: 10,
             alternatives: 0,

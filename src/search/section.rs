@@ -12,7 +12,7 @@ use crate::units::{Kind, Value};
 
 use super::assign::{Candidates, items};
 use super::canonical::{canonical, distinct, parts};
-use super::family::{Budget, Family, Visitor};
+use super::family::{Budget, Family, Plan, Visitor};
 use super::front::{Best, End, ErrorKey, Found, Proof, Takes};
 use super::limits::{Monitor, Progress, StopReason};
 use super::model::{Group, Model};
@@ -35,10 +35,10 @@ pub(crate) struct SectionFront {
 }
 
 /// By how much the error limit grows from level to level while nothing is found.
-const LEVEL_FACTOR: f64 = 3.0;
+pub(crate) const LEVEL_FACTOR: f64 = 3.0;
 
 /// The least error limit that a level begins with: about the step in which errors are compared.
-const LEAST_LEVEL: f64 = 1e-7;
+pub(crate) const LEAST_LEVEL: f64 = 1e-7;
 
 /// A level is passed over where the next is not dearer than this, in expected partial sets.
 const DEARER: f64 = 1.5;
@@ -49,6 +49,22 @@ const FARTHEST: f64 = 300.0;
 
 /// Expected partial sets beyond which a level is left out, once nothing was found within the job's error limit.
 const AFFORDABLE: f64 = 3e7;
+
+/// Walks of about equal size: large plans are divided by the values of their first variable, small ones are done in one go.
+pub(crate) fn tasks<'a, 'b>(plans: &'b [(usize, Plan<'a>)]) -> Vec<(usize, &'b Plan<'a>, Range<usize>)> {
+    const LARGE: f64 = 20_000.0;
+    let mut tasks = Vec::new();
+    for (form, plan) in plans {
+        let roots = plan.roots();
+        let size = if plan.nodes > LARGE { ((roots as f64 * LARGE / plan.nodes) as usize).max(1) } else { roots };
+        let mut start = 0;
+        while start < roots {
+            tasks.push((*form, plan, start..(start + size).min(roots)));
+            start += size;
+        }
+    }
+    tasks
+}
 
 /// Searches one section in all its forms.
 pub(crate) fn search(
@@ -308,18 +324,7 @@ impl<'a> Search<'a> {
         let mut plans: Vec<_> =
             families.par_iter().filter_map(|(form, family)| Some((*form, family.plan(&windows)?))).collect();
         plans.retain(|(_, plan)| plan.least_cost() <= budget.cost);
-        // Large families are divided by the values of their first variable, small ones are done in one go.
-        const LARGE: f64 = 20_000.0;
-        let mut tasks = Vec::new();
-        for (form, plan) in &plans {
-            let roots = plan.roots();
-            let size = if plan.nodes > LARGE { ((roots as f64 * LARGE / plan.nodes) as usize).max(1) } else { roots };
-            let mut start = 0;
-            while start < roots {
-                tasks.push((*form, plan, start..(start + size).min(roots)));
-                start += size;
-            }
-        }
+        let tasks = tasks(&plans);
         let known = self.best.clone();
         let best_error = self.best.error().map(ErrorKey::ceiling);
         let (finished, total) = (AtomicUsize::new(0), tasks.len().max(1));
@@ -348,10 +353,11 @@ impl<'a> Search<'a> {
                 let nodes = plan.walk(roots, budget, &mut collector);
                 let done = finished.fetch_add(1, Ordering::Relaxed) + 1;
                 self.monitor.progress(&Progress {
-                    section: &self.yardstick.sections()[0].name,
+                    section: Some(&self.yardstick.sections()[0].name),
                     part_numbers: takes.part_numbers,
                     error_limit: level,
                     best: best_error,
+                    bound: None,
                     done: done as f64 / total as f64,
                 });
                 (collector, nodes)

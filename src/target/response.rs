@@ -1,5 +1,7 @@
 //! The measure by which a realised cascade is compared with its target.
 
+use std::cmp::Ordering;
+
 use num_complex::Complex64;
 
 use super::section::{Biquad, Section};
@@ -216,28 +218,22 @@ impl Yardstick {
 
     fn decibel(&self, achieved: &[Biquad], limit: f64) -> Option<Deviation> {
         let bound = limit * NEPER_PER_DB;
+        if !self.criterion.ignore_gain {
+            return self.decibel_of_all(achieved, bound);
+        }
         let mut powers = vec![0.0; self.grid.len()];
         let (mut lowest, mut highest) = (f64::INFINITY, f64::NEG_INFINITY);
         for &i in &self.order {
             let sample = &self.grid[i];
             powers[i] = power(achieved, sample.x);
             // With a free offset only points well above the floor can be compared before the offset is known.
-            let ratio = if self.criterion.ignore_gain {
-                if sample.power <= self.floor * (2.0 * bound).exp() {
-                    continue;
-                }
-                (powers[i] / sample.power).ln()
-            } else {
-                self.log_ratio(powers[i], sample.power, 1.0)
-            };
+            if sample.power <= self.floor * (2.0 * bound).exp() {
+                continue;
+            }
+            let ratio = (powers[i] / sample.power).ln();
             lowest = lowest.min(ratio);
             highest = highest.max(ratio);
-            let exceeds = if self.criterion.ignore_gain {
-                highest - lowest > 2.0 * bound
-            } else {
-                highest > bound || lowest < -bound
-            };
-            if exceeds || ratio.is_nan() {
+            if highest - lowest > 2.0 * bound || ratio.is_nan() {
                 return None;
             }
         }
@@ -247,11 +243,37 @@ impl Yardstick {
             .iter()
             .map(|&(x, p, t)| (self.log_ratio(p, t, offset).abs(), x))
             .fold((0.0, self.grid[0].x), |best, here| if here.0 > best.0 { here } else { best });
-        Some(Deviation {
-            error: error / NEPER_PER_DB,
-            at: Some(x.sqrt()),
-            offset: self.criterion.ignore_gain.then(|| offset.sqrt()),
-        })
+        Some(Deviation { error: error / NEPER_PER_DB, at: Some(x.sqrt()), offset: Some(offset.sqrt()) })
+    }
+
+    /// The same where the gain counts: the largest and the smallest ratio are enough, and need one logarithm each.
+    fn decibel_of_all(&self, achieved: &[Biquad], bound: f64) -> Option<Deviation> {
+        // The last digit is left to the comparison of the error itself.
+        let most = bound.exp() * (1.0 + 1e-12);
+        let (mut lowest, mut highest) = ((1.0, self.grid[0].x), (1.0, self.grid[0].x));
+        for &i in &self.order {
+            let sample = &self.grid[i];
+            let ratio = power(achieved, sample.x).max(self.floor) / sample.power.max(self.floor);
+            if ratio > most || ratio * most < 1.0 || ratio.is_nan() {
+                return None;
+            }
+            // Of equal ones the lowest frequency.
+            let better =
+                |best: (f64, f64), more: bool| more || (ratio.total_cmp(&best.0).is_eq() && sample.x < best.1);
+            if better(highest, ratio > highest.0) {
+                highest = (ratio, sample.x);
+            }
+            if better(lowest, ratio < lowest.0) {
+                lowest = (ratio, sample.x);
+            }
+        }
+        let (above, below) = (highest.0.ln(), -lowest.0.ln());
+        let (error, x) = match above.total_cmp(&below) {
+            Ordering::Greater => (above, highest.1),
+            Ordering::Less => (below, lowest.1),
+            Ordering::Equal => (above, highest.1.min(lowest.1)),
+        };
+        Some(Deviation { error: error / NEPER_PER_DB, at: Some(x.sqrt()), offset: None })
     }
 
     /// The factor of power that makes the largest excess and the largest shortfall equal; 1 unless gain is ignored.
