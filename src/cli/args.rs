@@ -299,6 +299,10 @@ pub struct GoalArgs {
     /// Nothing worse is listed unless nothing better exists [default: 1 dB or 12 %].
     #[arg(long, value_name = "ERROR")]
     pub error_limit: Option<String>,
+    /// By how much each of several sections may miss its own target, where the board does not miss the whole by more: the
+    /// others make good what one is off [default: the wanted error].
+    #[arg(long, value_name = "ERROR")]
+    pub own_error: Option<String>,
     /// The front ends where the best error falls below this [default: 0.001 dB or 0.01 %].
     #[arg(long, value_name = "ERROR")]
     pub error_resolution: Option<String>,

@@ -65,6 +65,9 @@ written! {
         wanted_error: Scalar,
         /// The error above which nothing is listed, likewise; 1 dB or 12 %.
         error_limit: Scalar,
+        /// By how much each of several sections may miss its own target, where the board does not miss the whole by more,
+        /// likewise; the wanted error.
+        own_error: Scalar,
         /// The error below which nothing better is looked for, likewise; 0.001 dB or 0.01 %.
         error_resolution: Scalar,
         /// How many rows to list at most; 10.
@@ -215,6 +218,8 @@ written! {
         untie: Untie,
         /// Where two parts may take the place of one.
         pairs: PairsFile,
+        /// By how much this section may miss its own target at most, whatever the others make good.
+        own_error: Scalar,
     }
 }
 

@@ -129,13 +129,15 @@ pub(super) fn goals(desk: &mut Desk, job: &JobFile, measure: Checked<Measure>) -
     let alternatives = desk.optional(root.find("alternatives", &job.alternatives), whole("alternatives", 0, 10_000));
     let ohms = |text: &str| parse_part(text, Kind::Resistor);
     let impedance = desk.range(root.find("impedance", &job.impedance), ohms);
-    let [wanted_error, error_limit, error_resolution] = errors(desk, job, &measure?)?;
+    let measure = measure?;
+    let [wanted_error, error_limit, error_resolution] = errors(desk, job, &measure)?;
+    let own_error = own_error(desk, root.find("own_error", &job.own_error), &measure);
     let usual = Goals::default();
     Ok(Goals {
         max_part_numbers: most?,
         wanted_error,
         error_limit,
-        own_error: None,
+        own_error: own_error?,
         error_resolution,
         rows: rows?.unwrap_or(usual.rows),
         alternatives: alternatives?.unwrap_or(usual.alternatives),
@@ -145,19 +147,26 @@ pub(super) fn goals(desk: &mut Desk, job: &JobFile, measure: Checked<Measure>) -
     })
 }
 
+/// An error in the unit of the measure.
+fn read_error(desk: &mut Desk, key: &str, found: Option<At<'_, Scalar>>, measure: &Measure) -> Checked<Option<f64>> {
+    match measure {
+        Measure::Decibel => desk.optional(found, positive(key, 100.0, parse_decibels)),
+        Measure::Vector | Measure::Weighted(_) => desk.optional(found, positive(key, 10.0, parse_number)),
+    }
+}
+
+/// By how much sections may miss their own targets.
+pub(super) fn own_error(desk: &mut Desk, found: Option<At<'_, Scalar>>, measure: &Measure) -> Checked<Option<f64>> {
+    read_error(desk, "own_error", found, measure)
+}
+
 /// The wanted error, the limit and the resolution. What is not written gives way to what is.
 fn errors(desk: &mut Desk, job: &JobFile, measure: &Measure) -> Checked<[f64; 3]> {
-    let (usual, highest): ([f64; 3], f64) = match measure {
-        Measure::Decibel => ([0.1, 1.0, 0.001], 100.0),
-        Measure::Vector | Measure::Weighted(_) => ([0.01, 0.12, 0.0001], 10.0),
+    let usual: [f64; 3] = match measure {
+        Measure::Decibel => [0.1, 1.0, 0.001],
+        Measure::Vector | Measure::Weighted(_) => [0.01, 0.12, 0.0001],
     };
-    let mut error = |key: &str, given| {
-        let found = Place::job().find(key, given);
-        match measure {
-            Measure::Decibel => desk.optional(found, positive(key, highest, parse_decibels)),
-            Measure::Vector | Measure::Weighted(_) => desk.optional(found, positive(key, highest, parse_number)),
-        }
-    };
+    let mut error = |key: &str, given| read_error(desk, key, Place::job().find(key, given), measure);
     let wanted = error("wanted_error", &job.wanted_error);
     let limit = error("error_limit", &job.error_limit);
     let resolution = error("error_resolution", &job.error_resolution);

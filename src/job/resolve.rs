@@ -6,7 +6,7 @@ use std::time::Duration;
 use super::desk::{At, Checked, Desk, Noted, Place};
 use super::file::{JobFile, SectionFile};
 use super::filter;
-use super::goals::{Delicate, check_impedance, criterion, goals};
+use super::goals::{Delicate, check_impedance, criterion, goals, own_error};
 use super::section::{Circuits, Written, has_inexact_null};
 use super::shelf::shelf;
 use super::slots::{Board, ByKind};
@@ -93,6 +93,14 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits, stock: Option<&S
     };
     let criterion = criterion(desk, job, delicate);
     let measure = criterion.as_ref().map(|criterion| criterion.measure).map_err(|noted| *noted);
+    if let Ok(measure) = &measure {
+        for (index, (section, file)) in sections.iter_mut().zip(&files).enumerate() {
+            let own = own_error(desk, place.item(index).find("own_error", &file.own_error), measure);
+            if let (Ok(section), Ok(own)) = (section, own) {
+                section.own_error = own;
+            }
+        }
+    }
     let goals = goals(desk, job, measure);
     if let Ok(goals) = &goals {
         sections.iter().flatten().for_each(|section| check_impedance(desk, job, goals, section));

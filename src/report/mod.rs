@@ -13,6 +13,7 @@ mod stock;
 mod swap;
 mod table;
 mod tighten;
+mod together;
 mod vet;
 mod vet_drift;
 mod vet_levels;
@@ -48,6 +49,7 @@ pub use table::write_table;
 pub use tighten::{
     StepRecord, TIGHTEN_FORMAT, TightenQuestion, TightenRecord, write_tighten_json, write_tighten_table,
 };
+pub use together::{BestRecord, BoundRecord, TogetherSearch};
 pub use vet::{
     LimitRecord, MaskOutcome, OffPart, SpreadRecord, VET_FORMAT, VetPart, VetPiece, VetRecord, VetSection,
     WorstRecord, YieldRecord, write_vet_json,

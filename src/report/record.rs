@@ -6,6 +6,7 @@ use serde::Serialize;
 
 use super::drawn::{BoardRecord, SupplyRecord, TakenRecord, boards, class_2, piece, taken, tolerance};
 use super::numbers::error_in_words;
+use super::together::TogetherSearch;
 use crate::parts::{Shelf, Supply};
 use crate::search::{Chosen, End, Joint, Outcome, Part, Problem, Proof, Row, SectionProblem, SectionSummary};
 use crate::target::{Criterion, Figures, Measure, Shape, Weights};
@@ -47,7 +48,8 @@ pub struct SearchRecord {
     pub proof: &'static str,
     /// Why it stopped, in words.
     pub reason: Option<String>,
-    /// What the proof is about: `whole job` for one section, otherwise `each section by itself`.
+    /// What the proof is about: `whole job` for one section, `whole board` for several that were searched together,
+    /// otherwise `each section by itself`.
     pub scope: &'static str,
     /// Sets evaluated.
     pub sets: u64,
@@ -65,6 +67,8 @@ pub struct SearchRecord {
     pub thinned: bool,
     /// Each section's own search.
     pub sections: Vec<SectionSearch>,
+    /// How all sections were searched together; `None` for one section, and where that is not offered.
+    pub together: Option<TogetherSearch>,
 }
 
 /// How far one section was searched.
@@ -318,7 +322,7 @@ fn hertz(w: f64) -> f64 {
 }
 
 /// A number that is one.
-fn known(number: f64) -> Option<f64> {
+pub(super) fn known(number: f64) -> Option<f64> {
     number.is_finite().then_some(number)
 }
 
@@ -367,7 +371,11 @@ impl SearchRecord {
         SearchRecord {
             proof: if reason.is_some() { "stopped" } else { "exhaustive" },
             reason: reason.map(|reason| reason.describe().to_string()),
-            scope: if problem.sections.len() > 1 { "each section by itself" } else { "whole job" },
+            scope: match (problem.sections.len(), &outcome.together) {
+                (1, _) => "whole job",
+                (_, Some(_)) => "whole board",
+                (_, None) => "each section by itself",
+            },
             sets: outcome.sets,
             nodes: outcome.nodes,
             seconds,
@@ -376,6 +384,7 @@ impl SearchRecord {
             fewest_found: outcome.fewest_found,
             thinned: outcome.thinned,
             sections: outcome.sections.iter().map(|section| SectionSearch::new(section, problem, unit)).collect(),
+            together: TogetherSearch::new(problem, outcome),
         }
     }
 }

@@ -70,14 +70,19 @@ fn searched(record: &Record, width: usize) -> String {
         span_of_time(search.seconds)
     );
     text += &paragraph("Search: ", &total, width);
-    if record.sections.len() > 1 {
+    if let Some(together) = &search.together {
+        text += &paragraph("Board:  ", &format!("all sections together, {}.", together.statement), width);
+        if let Some(fewest) = &together.fewest {
+            text += &paragraph("        ", &format!("{fewest}."), width);
+        }
+    } else if record.sections.len() > 1 {
         let caution = "The sections were chosen one at a time and only then combined, part numbers counted over the whole \
                        board: a better board may exist.";
         text += &paragraph("        ", caution, width);
-        if search.thinned {
-            let caution = "There were too many combinations: some sets of the sections were left out.";
-            text += &paragraph("        ", caution, width);
-        }
+    }
+    if search.thinned && search.together.as_ref().is_none_or(|together| together.stop.is_some()) {
+        let caution = "There were too many combinations of single sections: some of their sets were left out.";
+        text += &paragraph("        ", caution, width);
     }
     if let Some(reason) = &search.reason {
         text += &paragraph("        ", &format!("Stopped: {reason}. What is not proved is marked ?."), width);
@@ -209,10 +214,11 @@ fn label(record: &Record, row: &RowRecord) -> String {
     format!("{rank:>2} {marks}").trim_end().to_string()
 }
 
-/// Whether a row may be beaten because a search was stopped. What the choice of one section at a time leaves open holds
-/// for all rows alike, and is said once.
+/// Whether a row may be beaten because a search was stopped. Where sections were only searched one at a time, that holds for
+/// all rows alike, and is said once.
 fn is_open(record: &Record, row: &RowRecord) -> bool {
-    record.search.reason.is_some() && !row.proved
+    let ended = record.search.together.as_ref().is_some_and(|together| together.stop.is_some());
+    (record.search.reason.is_some() || ended) && !row.proved
 }
 
 /// The table of figures by row, and what its marks mean.

@@ -9,7 +9,7 @@ use super::canonical::{Tally, tally};
 use super::combine::{Board, Combination, SetAtLevel};
 use super::front::{ErrorKey, Proof, Takes};
 use super::ideal::{self, Ideal};
-use super::limits::Monitor;
+use super::limits::{Monitor, StopReason};
 use super::model::Model;
 use super::outcome::{BuiltBoard, Chosen, Outcome, Row, TogetherSummary};
 use super::prepared::Prepared;
@@ -47,8 +47,9 @@ pub fn shortlist(problem: &Problem, monitor: &dyn Monitor) -> Outcome {
     let (ideal, nearest) = board.references();
     let proofs = prepared.iter().map(|p| &p.front.proof).chain(together.iter().map(|t| &t.proof));
     let stopped = proofs.into_iter().find_map(|proof| match proof {
+        // That all boards would take too long is no end that anybody asked for: it is said beside the boards.
+        Proof::Exhaustive(_) | Proof::Stopped { reason: StopReason::Effort, .. } => None,
         Proof::Stopped { reason, .. } => Some(*reason),
-        Proof::Exhaustive(_) => None,
     });
     let own = |section: &SectionProblem| section.own_error.unwrap_or(problem.goals.own_error());
     Outcome {
@@ -95,6 +96,7 @@ impl Board<'_> {
         let cost_counts = goals.rank == Rank::Cost;
         let (mut combinations, thinned) = self.combinations();
         let wanted = ErrorKey::new(goals.wanted_error);
+        combinations.retain(|c| self.keeps_own_limits(c));
         let good = combinations.iter().filter(|c| c.key <= wanted);
         let one_at_a_time = good.map(|c| (c.tally.takes.part_numbers, c.key)).min();
         combinations.extend(together.iter().flat_map(|t| t.boards.iter().cloned()));
@@ -160,6 +162,16 @@ impl Board<'_> {
             within_limit,
             one_at_a_time: one_at_a_time.map(|(part_numbers, key)| (part_numbers, key.value())),
         }
+    }
+
+    /// Whether each section that is pinned to a limit of its own keeps it.
+    fn keeps_own_limits(&self, combination: &Combination) -> bool {
+        let all = std::iter::once(&combination.sets).chain(&combination.boards);
+        all.into_iter().all(|sets| {
+            let responses = self.responses(sets);
+            let mut own = self.prepared.iter().zip(&responses);
+            own.all(|(p, h)| p.problem.own_error.is_none_or(|own| p.yardstick.within(&[*h], own + 1e-12).is_some()))
+        })
     }
 
     fn row(&self, combination: &Combination, alternative: bool, together: Option<&Together>) -> Row {

@@ -10,8 +10,10 @@ pub enum StopReason {
     TimeLimit,
     /// The user interrupted it.
     Interrupted,
-    /// What would take too long was left out: beyond the job's error limit, or of all sections together.
+    /// Nothing lay within the job's error limit, and beyond it families that would take too long were left out.
     TooLarge,
+    /// To go through all boards, all sections together, would take too long.
+    Effort,
     /// There were too many ways to give measured parts to the boards.
     Assignment,
 }
@@ -25,6 +27,7 @@ impl StopReason {
             StopReason::TooLarge => {
                 "nothing lies within the error limit, and very large families beyond it were left out"
             }
+            StopReason::Effort => "to go through all boards would take too long",
             StopReason::Assignment => "there are too many ways to give the measured parts to the boards",
         }
     }

@@ -115,7 +115,7 @@ pub(super) struct Gathering<'a> {
 
 impl Gathering<'_> {
     /// All sets with exactly so many different choices whose own error is at most `own`, each once;
-    /// [`StopReason::TooLarge`] where more partial sets are expected than are affordable.
+    /// [`StopReason::Effort`] where more partial sets are expected than are affordable.
     pub fn gather(&self, choices: usize, own: f64, affordable: f64) -> Result<Gathered, StopReason> {
         let forms = &self.prepared.forms;
         let maker = forms.first().and_then(|form| WindowMaker::new(&self.prepared.yardstick, form.numerator()));
@@ -145,7 +145,7 @@ impl Gathering<'_> {
             return Err(reason);
         }
         if plans.iter().map(|(_, plan)| plan.nodes).sum::<f64>() > affordable {
-            return Err(StopReason::TooLarge);
+            return Err(StopReason::Effort);
         }
         let budget = Budget { bought: supply.buying.most(), cost: u64::MAX };
         let kept = AtomicUsize::new(0);
@@ -171,7 +171,7 @@ impl Gathering<'_> {
             return Err(reason);
         }
         if results.iter().any(|(_, stopped)| *stopped) || kept.into_inner() > MOST_CANDIDATES {
-            return Err(StopReason::TooLarge);
+            return Err(StopReason::Effort);
         }
         let mut whole = Gathered::default();
         for (gathered, _) in results {

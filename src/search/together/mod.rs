@@ -209,7 +209,7 @@ impl Search<'_> {
     /// What is proved of a search that was not stopped from outside.
     fn proof(&self, end: End) -> Proof {
         match self.open_from {
-            Some(complete_below) => Proof::Stopped { reason: StopReason::TooLarge, complete_below },
+            Some(complete_below) => Proof::Stopped { reason: StopReason::Effort, complete_below },
             None => Proof::Exhaustive(end),
         }
     }
@@ -275,12 +275,12 @@ impl Search<'_> {
                 });
                 let gathered = match gathering.gather(choices, own, affordable) {
                     Ok(gathered) => gathered,
-                    Err(StopReason::TooLarge) if level > board.problem.goals.own_error() => {
+                    Err(StopReason::Effort) if level > board.problem.goals.own_error() => {
                         // What has been gathered is too wide for what follows, and is gathered again.
                         self.pools[index] = Pool::default();
                         return Err(Halt::Level);
                     }
-                    Err(StopReason::TooLarge) => {
+                    Err(StopReason::Effort) => {
                         self.pools[index].is_cut = true;
                         break;
                     }
@@ -355,7 +355,7 @@ impl Search<'_> {
             .collect();
         if overrun.into_inner() {
             // What was found until then would depend on the threads.
-            return Err(Halt::Stopped(StopReason::TooLarge));
+            return Err(Halt::Stopped(StopReason::Effort));
         }
         for (best, sets, steps) in results {
             self.best.merge(best);
