@@ -303,7 +303,8 @@ pub struct GoalArgs {
     /// others make good what one is off [default: the wanted error].
     #[arg(long, value_name = "ERROR")]
     pub own_error: Option<String>,
-    /// The front ends where the best error falls below this [default: 0.001 dB or 0.01 %].
+    /// The front ends where the best error falls below this [default: 0.001 dB or 0.01 %, for
+    /// several sections ten times that].
     #[arg(long, value_name = "ERROR")]
     pub error_resolution: Option<String>,
     /// Rows to list at most [default: 10].

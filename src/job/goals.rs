@@ -120,8 +120,8 @@ pub(super) fn check_impedance(desk: &mut Desk, job: &JobFile, goals: &Goals, sec
     desk.note(&place, message, "choose a range among them, or other resistors");
 }
 
-/// The goals; errors are in the unit of the measure.
-pub(super) fn goals(desk: &mut Desk, job: &JobFile, measure: Checked<Measure>) -> Checked<Goals> {
+/// The goals, for so many sections; errors are in the unit of the measure.
+pub(super) fn goals(desk: &mut Desk, job: &JobFile, measure: Checked<Measure>, sections: usize) -> Checked<Goals> {
     let root = Place::job();
     let most =
         desk.optional(root.find("max_part_numbers", &job.max_part_numbers), whole("max_part_numbers", 1, 1000));
@@ -130,7 +130,7 @@ pub(super) fn goals(desk: &mut Desk, job: &JobFile, measure: Checked<Measure>) -
     let ohms = |text: &str| parse_part(text, Kind::Resistor);
     let impedance = desk.range(root.find("impedance", &job.impedance), ohms);
     let measure = measure?;
-    let [wanted_error, error_limit, error_resolution] = errors(desk, job, &measure)?;
+    let [wanted_error, error_limit, error_resolution] = errors(desk, job, &measure, sections)?;
     let own_error = own_error(desk, root.find("own_error", &job.own_error), &measure);
     let usual = Goals::default();
     Ok(Goals {
@@ -161,11 +161,15 @@ pub(super) fn own_error(desk: &mut Desk, found: Option<At<'_, Scalar>>, measure:
 }
 
 /// The wanted error, the limit and the resolution. What is not written gives way to what is.
-fn errors(desk: &mut Desk, job: &JobFile, measure: &Measure) -> Checked<[f64; 3]> {
-    let usual: [f64; 3] = match measure {
+fn errors(desk: &mut Desk, job: &JobFile, measure: &Measure, sections: usize) -> Checked<[f64; 3]> {
+    let mut usual: [f64; 3] = match measure {
         Measure::Decibel => [0.1, 1.0, 0.001],
         Measure::Vector | Measure::Weighted(_) => [0.01, 0.12, 0.0001],
     };
+    if sections > 1 {
+        // Each digit more takes whole boards long, and what it gives is far below any tolerance.
+        usual[2] *= 10.0;
+    }
     let mut error = |key: &str, given| read_error(desk, key, Place::job().find(key, given), measure);
     let wanted = error("wanted_error", &job.wanted_error);
     let limit = error("error_limit", &job.error_limit);

@@ -101,7 +101,7 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits, stock: Option<&S
             }
         }
     }
-    let goals = goals(desk, job, measure);
+    let goals = goals(desk, job, measure, files.len());
     if let Ok(goals) = &goals {
         sections.iter().flatten().for_each(|section| check_impedance(desk, job, goals, section));
     }

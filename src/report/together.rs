@@ -23,6 +23,8 @@ pub struct TogetherSearch {
     pub own_errors: Vec<f64>,
     /// What is known of all boards with so many part numbers.
     pub bounds: Vec<BoundRecord>,
+    /// Of boards with so many part numbers or more, only some were looked at beyond what the bounds say.
+    pub ended_at: Option<usize>,
     /// What the sections give when they are chosen one at a time, within the wanted error.
     pub one_at_a_time: Option<BestRecord>,
     /// The proof, in words.
@@ -42,6 +44,8 @@ pub struct BoundRecord {
     pub part_numbers: usize,
     /// None has a smaller error than this, in the unit of the measure.
     pub none_below: Option<f64>,
+    /// All with an error up to this have been gone through.
+    pub searched_to: Option<f64>,
 }
 
 /// Part numbers and the error they give.
@@ -70,8 +74,13 @@ impl TogetherSearch {
             complete_below,
             own_errors: summary.own_errors.clone(),
             bounds: bounds
-                .map(|b| BoundRecord { part_numbers: b.part_numbers, none_below: known(b.none_below) })
+                .map(|b| BoundRecord {
+                    part_numbers: b.part_numbers,
+                    none_below: known(b.none_below),
+                    searched_to: known(b.searched_to),
+                })
                 .collect(),
+            ended_at: summary.ended_at,
             one_at_a_time: summary
                 .one_at_a_time
                 .map(|(part_numbers, error)| BestRecord { part_numbers, error: known(error) }),
@@ -95,7 +104,9 @@ fn statement(problem: &Problem, summary: &TogetherSummary) -> String {
     let allowed = match problem.criterion.measure {
         Measure::Weighted(_) => String::new(),
         _ => {
-            format!(" of which each section by itself misses its target by {own} at most, or by what the board does")
+            format!(
+                ", of all whose sections by themselves miss their targets by {own} at most, or by no more than the board does"
+            )
         }
     };
     match summary.proof {
@@ -104,21 +115,41 @@ fn statement(problem: &Problem, summary: &TogetherSummary) -> String {
                 .goals
                 .max_part_numbers
                 .map_or(String::new(), |most| format!(" with up to {most} part numbers"));
-            format!("proved: no board{most}{allowed} beats a row")
+            format!("proved: no board{most} beats a row{allowed}")
         }
-        Proof::Exhaustive(End::AllCounts) => format!("proved: no board{allowed} beats a row"),
+        Proof::Exhaustive(End::AllCounts) => format!("proved: no board beats a row{allowed}"),
         Proof::Exhaustive(End::Resolution) => {
             let resolution = error_in_words(unit, problem.goals.error_resolution);
-            format!("proved: no board{allowed} beats a row; the search ends once the error is below {resolution}")
+            format!("proved: no board beats a row{allowed}; the search ends once the error is below {resolution}")
         }
         Proof::Stopped { reason, .. } => {
-            let why = match reason {
-                StopReason::Effort => "to go through all that are left would take too long".to_string(),
-                other => other.describe().to_string(),
+            let why = match (reason, gaps(problem, summary)) {
+                (StopReason::Effort, gaps) => format!("too many to go through: {gaps}"),
+                (other, gaps) => format!("{}, and left: {gaps}", other.describe()),
             };
-            format!("proved, but for rows marked ?: no board{allowed} beats a row; {why}")
+            format!("proved, but for rows marked ?: no board beats a row{allowed}; {why}")
         }
     }
+}
+
+/// The boards that were not gone through, in words.
+fn gaps(problem: &Problem, summary: &TogetherSummary) -> String {
+    let unit = problem.criterion.measure.unit();
+    let mut cap = problem.goals.error_limit;
+    let mut gaps = Vec::new();
+    for bound in &summary.bounds {
+        let found = bound.none_below < bound.searched_to;
+        let ended = summary.ended_at.is_some_and(|end| end <= bound.part_numbers);
+        if !found && bound.searched_to < cap && !ended {
+            let beyond = error_in_words(unit, bound.searched_to);
+            gaps.push(format!("boards of {} part numbers beyond {beyond}", bound.part_numbers));
+        }
+        if found {
+            cap = cap.min(bound.none_below);
+        }
+    }
+    gaps.extend(summary.ended_at.map(|end| format!("boards of {end} part numbers or more")));
+    gaps.join(", ")
 }
 
 /// How few part numbers the wanted error takes, and what it takes with the sections one at a time.

@@ -69,6 +69,7 @@ pub fn shortlist(problem: &Problem, monitor: &dyn Monitor) -> Outcome {
             proof: together.proof,
             own_errors: problem.sections.iter().map(own).collect(),
             bounds: together.bounds,
+            ended_at: together.ended_at,
             sets: together.sets,
             nodes: together.nodes,
             one_at_a_time: listed.one_at_a_time,
@@ -112,7 +113,7 @@ impl Board<'_> {
         let limit = ErrorKey::new(goals.error_limit);
         let within_limit = combinations.first().is_some_and(|best| best.key <= limit);
         combinations.retain(|c| !within_limit || c.key <= limit);
-        if together.is_some_and(|t| matches!(t.proof, Proof::Exhaustive(_))) {
+        if together.is_some() {
             // Beyond the end of the front nothing was searched together.
             let resolution = ErrorKey::new(goals.error_resolution);
             let ends: Vec<Takes> =

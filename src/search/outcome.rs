@@ -109,6 +109,8 @@ pub struct Bound {
     pub part_numbers: usize,
     /// No such board that the search allows for has an error below this, in the unit of the measure.
     pub none_below: f64,
+    /// All such boards with an error up to this have been gone through.
+    pub searched_to: f64,
 }
 
 /// How all sections were searched together.
@@ -121,6 +123,9 @@ pub struct TogetherSummary {
     pub own_errors: Vec<f64>,
     /// By ascending number of part numbers.
     pub bounds: Vec<Bound>,
+    /// The number of part numbers at which the search ended before it was complete: of boards with so many or more only
+    /// some were looked at, beyond what `bounds` says.
+    pub ended_at: Option<usize>,
     /// Sets of sections and boards whose response was evaluated.
     pub sets: u64,
     /// Partial and whole sets and boards visited.

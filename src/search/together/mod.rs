@@ -42,6 +42,8 @@ pub(crate) struct Together {
     pub proof: Proof,
     /// What is known of each number of part numbers.
     pub bounds: Vec<Bound>,
+    /// The number of part numbers at which the search ended too early.
+    pub ended_at: Option<usize>,
     /// Sets of sections and boards whose response was evaluated.
     pub sets: u64,
     /// Partial and whole sets and boards visited.
@@ -53,11 +55,12 @@ impl Together {
     pub fn proves(&self, row: &Combination) -> bool {
         let part_numbers = row.tally.takes.part_numbers;
         let searched = match self.proof {
-            Proof::Exhaustive(_) => true,
-            Proof::Stopped { complete_below, .. } => part_numbers < complete_below,
+            // A board that buys less may have a larger error than was gone through.
+            Proof::Exhaustive(_) => row.tally.takes.bought == 0,
+            Proof::Stopped { complete_below, .. } => part_numbers < complete_below && row.tally.takes.bought == 0,
         };
         let bound = self.bounds.iter().filter(|bound| bound.part_numbers == part_numbers);
-        let excluded = bound.into_iter().any(|bound| row.key <= ErrorKey::new(bound.none_below));
+        let excluded = bound.into_iter().any(|bound| row.key <= ErrorKey::new(bound.searched_to));
         (searched || excluded) && row.boards.is_empty()
     }
 }
@@ -69,18 +72,22 @@ const MOST_NODES: f64 = 4e7;
 const FEW_NODES: f64 = 4e5;
 
 /// How much one level may take, in candidates and palettes looked at.
-const MOST_STEPS: u64 = 250_000_000;
+const MOST_STEPS: u64 = 120_000_000;
+
+/// Boards of more sections are not searched as a whole.
+const MOST_SECTIONS: usize = 16;
 
 /// In how many parts the candidates of the first section are gone through.
 const PARTS: usize = 512;
 
-/// Chooses all sections of a board together; `None` where that is not offered: for one section, for measured parts on
+/// Chooses all sections of a board together; `None` where that is not offered: for one section or very many, for measured parts on
 /// several boards, and where the cost counts.
 pub(crate) fn together(board: &Board<'_>) -> Option<Together> {
     let problem = board.problem;
     let measured = board.prepared.iter().any(|p| p.forms.iter().any(Model::is_measured));
-    let alone = board.prepared.len() < 2 || board.prepared.len() < problem.sections.len();
-    if alone || problem.goals.rank == Rank::Cost || (measured && problem.supply.boards > 1) {
+    let offered =
+        (2..=MOST_SECTIONS).contains(&problem.sections.len()) && board.prepared.len() == problem.sections.len();
+    if !offered || problem.goals.rank == Rank::Cost || (measured && problem.supply.boards > 1) {
         return None;
     }
     let forms = || board.prepared.iter().flat_map(|p| &p.forms);
@@ -92,12 +99,14 @@ pub(crate) fn together(board: &Board<'_>) -> Option<Together> {
         pools: board.prepared.iter().map(|_| Pool::default()).collect(),
         bounds: Vec::new(),
         open_from: None,
+        ended_at: None,
         sets: 0,
         nodes: 0,
     };
     let proof = search.run();
     let boards = search.best.front().iter().flatten().filter_map(|found| board.placed(found)).collect();
-    Some(Together { boards, proof, bounds: search.bounds, sets: search.sets, nodes: search.nodes })
+    let Search { bounds, ended_at, sets, nodes, .. } = search;
+    Some(Together { boards, proof, bounds, ended_at, sets, nodes })
 }
 
 /// The sets gathered for one section.
@@ -145,6 +154,8 @@ struct Search<'a> {
     bounds: Vec<Bound>,
     /// The smallest number of part numbers for which something was left out.
     open_from: Option<usize>,
+    /// The number of part numbers from which on only some boards were looked at.
+    ended_at: Option<usize>,
     sets: u64,
     nodes: u64,
 }
@@ -164,7 +175,10 @@ impl Search<'_> {
         let allowed = goals.max_part_numbers.unwrap_or(most);
         let resolution = ErrorKey::new(goals.error_resolution);
         for part_numbers in fewest..=most.min(allowed) {
-            let least = Takes { part_numbers, bought: 0, placed_parts };
+            // Unless that is what counts, boards that buy less with more part numbers are not waited for.
+            let counts = goals.rank == Rank::ToBuy || !self.board.problem.supply.has_stock();
+            let bought = if counts { 0 } else { usize::MAX };
+            let least = Takes { part_numbers, bought, placed_parts };
             let known = self.best.error_within(&least);
             if known.is_some_and(|key| key < resolution) {
                 return self.proof(End::Resolution);
@@ -179,6 +193,7 @@ impl Search<'_> {
                 match self.level(part_numbers, (level, cap)) {
                     Ok(()) => {}
                     Err(Halt::Stopped(reason)) => {
+                        self.ended_at.get_or_insert(part_numbers);
                         return Proof::Stopped { reason, complete_below: self.complete_below(part_numbers) };
                     }
                     Err(Halt::Level) => {
@@ -194,9 +209,11 @@ impl Search<'_> {
                     let all = Takes { bought: usize::MAX, placed_parts: usize::MAX, ..least };
                     let best = self.best.error_within(&all).filter(|key| *key <= ErrorKey::new(level));
                     self.bounds.retain(|bound| bound.part_numbers != part_numbers);
-                    self.bounds.push(Bound { part_numbers, none_below: best.map_or(level, ErrorKey::value) });
+                    let none_below = best.map_or(level, ErrorKey::value);
+                    self.bounds.push(Bound { part_numbers, none_below, searched_to: level });
                 } else {
                     self.open_from(part_numbers);
+                    self.ended_at.get_or_insert(part_numbers);
                 }
                 if found.is_some_and(|key| key <= ErrorKey::new(level)) {
                     break;

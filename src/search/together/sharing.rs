@@ -14,10 +14,8 @@ pub(super) struct List<'a> {
     offs: Vec<Off>,
     /// Distinct palettes, each with its candidates.
     palettes: Vec<(&'a [u16], Range<usize>)>,
-    /// Each palette under its mark.
-    exact: Marked,
-    /// Each palette under its mark less one of its part numbers; made when first needed.
-    one_more: OnceLock<Marked>,
+    /// Each palette under the marks of all that is left of it without so many of its part numbers; made when first needed.
+    without: [OnceLock<Marked>; MOST_NEW + 1],
     /// The palettes in which each part number occurs.
     with: Vec<Vec<u32>>,
     /// The least and the largest size of a palette.
@@ -92,6 +90,12 @@ impl Grid {
     }
 }
 
+/// Up to so many new part numbers, palettes are found by what they share with those before.
+const MOST_NEW: usize = 3;
+
+/// Lists of marks longer than this are not made.
+const MOST_MARKS: usize = 30_000_000;
+
 /// A number for a part number; those of a palette add up to its mark, which others may share.
 fn mark(id: u16) -> u64 {
     // The finaliser of splitmix64 (Steele, Lea, Flood, 2014).
@@ -99,6 +103,12 @@ fn mark(id: u16) -> u64 {
     z = (z ^ (z >> 30)).wrapping_mul(0xbf58_476d_1ce4_e5b9);
     z = (z ^ (z >> 27)).wrapping_mul(0x94d0_49bb_1331_11eb);
     z ^ (z >> 31)
+}
+
+/// The mark of those part numbers whose bits are set.
+fn mark_of(ids: &[u16], bits: u32) -> u64 {
+    let members = ids.iter().enumerate().filter(|(i, _)| bits >> i & 1 == 1);
+    members.fold(0, |sum, (_, &id)| sum.wrapping_add(mark(id)))
 }
 
 /// Palettes by mark.
@@ -202,8 +212,6 @@ impl<'a> List<'a> {
         for (number, (palette, _)) in (0..).zip(&palettes) {
             palette.iter().for_each(|&id| with[usize::from(id)].push(number));
         }
-        let whole = |palette: &[u16]| palette.iter().fold(0, |sum: u64, &id| sum.wrapping_add(mark(id)));
-        let exact = Marked::new(palettes.iter().map(|(palette, _)| whole(palette)).zip(0..).collect());
         let sizes = || palettes.iter().map(|(palette, _)| palette.len());
         let sizes = (sizes().min().unwrap_or(0), sizes().max().unwrap_or(0));
         let span = span(candidates.iter().copied());
@@ -211,8 +219,7 @@ impl<'a> List<'a> {
             offs: candidates.iter().map(|c| c.off).collect(),
             candidates,
             palettes,
-            exact,
-            one_more: OnceLock::new(),
+            without: Default::default(),
             with,
             sizes,
             span,
@@ -220,13 +227,24 @@ impl<'a> List<'a> {
         }
     }
 
-    fn one_more(&self) -> &Marked {
-        self.one_more.get_or_init(|| {
-            let less = |&(whole, number): &(u64, u32)| {
-                let palette = self.palettes[number as usize].0;
-                palette.iter().map(move |&id| (whole.wrapping_sub(mark(id)), number))
-            };
-            Marked::new(self.exact.list.iter().flat_map(less).collect())
+    /// Whether palettes with that many new part numbers can be found by what they share.
+    fn has_marks(&self, new: usize) -> bool {
+        // At most so many subsets to a palette.
+        let subsets = (0..new.min(self.sizes.1)).fold(1, |count, i| count * (self.sizes.1 - i) / (i + 1));
+        new <= MOST_NEW && self.sizes.1 < 16 && subsets.saturating_mul(self.palettes.len()) <= MOST_MARKS
+    }
+
+    fn without(&self, new: usize) -> &Marked {
+        self.without[new].get_or_init(|| {
+            let mut list = Vec::new();
+            for ((palette, _), number) in self.palettes.iter().zip(0..) {
+                for kept in
+                    (0u32..1 << palette.len()).filter(|kept| kept.count_ones() as usize + new == palette.len())
+                {
+                    list.push((mark_of(palette, kept), number));
+                }
+            }
+            Marked::new(list)
         })
     }
 
@@ -235,10 +253,16 @@ impl<'a> List<'a> {
         self.grid = Grid::new(&self.candidates, reach);
     }
 
-    /// Whether so many new part numbers leave so many palettes that candidates are better found by what they are off.
-    fn is_open(&self, fresh: usize) -> bool {
+    /// Whether palettes with so many new part numbers at most are found by what they share with the union.
+    fn is_marked(&self, union: &[u16], fresh: usize) -> bool {
+        const MOST_SHARED: usize = 12;
+        union.len() <= MOST_SHARED && self.has_marks(fresh)
+    }
+
+    /// Whether candidates are better found by what they are off.
+    fn is_open(&self, union: &[u16], fresh: usize) -> bool {
         const FEW: usize = 64;
-        fresh >= 2 && self.palettes.len() > FEW
+        self.palettes.len() > FEW && !self.is_marked(union, fresh)
     }
 
     /// How many candidates there are.
@@ -257,31 +281,28 @@ impl<'a> List<'a> {
         found.clear();
         let palette = |number: u32| self.palettes[number as usize].0;
         let news = |number: u32| palette(number).iter().filter(|id| union.binary_search(id).is_err()).count();
-        let subsets = if union.len() < 16 { 1usize << union.len() } else { usize::MAX };
         let (smallest, largest) = self.sizes;
+        let subsets = if union.len() < 16 { 1usize << union.len() } else { usize::MAX };
         if fresh >= largest || self.palettes.len() <= subsets.min(64) {
             found.extend((0..self.palettes.len() as u32).filter(|&number| news(number) <= fresh));
             self.palettes.len()
-        } else if fresh <= 1 && subsets < self.palettes.len() {
-            for subset in 0..subsets {
-                let size = subset.count_ones() as usize;
-                if size + fresh < smallest || size > largest {
-                    continue;
-                }
-                let members = union.iter().enumerate().filter(|(i, _)| subset >> i & 1 == 1);
-                let mark = members.fold(0, |sum: u64, (_, &id)| sum.wrapping_add(mark(id)));
-                // Others may have the same mark: those of another size, or with something else in them, are no subsets.
-                found.extend(self.exact.get(mark).filter(|&n| palette(n).len() == size && news(n) == 0));
-                if fresh == 1 {
-                    // With another of the union it would be a subset of its own.
-                    let more = self.one_more().get(mark);
-                    found.extend(more.filter(|&n| palette(n).len() == size + 1 && news(n) == 1));
+        } else if self.is_marked(union, fresh) {
+            let mut looked_at = 0;
+            for shared in 0..subsets as u32 {
+                let (size, mark) = (shared.count_ones() as usize, mark_of(union, shared));
+                for new in 0..=fresh {
+                    if (smallest..=largest).contains(&(size + new)) {
+                        // Others may have the same mark, and those with another of the union share more.
+                        let is_right = |&n: &u32| palette(n).len() == size + new && news(n) == new;
+                        looked_at += 1;
+                        found.extend(self.without(new).get(mark).inspect(|_| looked_at += 1).filter(is_right));
+                    }
                 }
             }
             // Palettes that share their mark are found once for each.
             found.sort_unstable();
             found.dedup();
-            subsets
+            looked_at
         } else {
             let mut looked_at = 0;
             for (place, &id) in union.iter().enumerate() {
@@ -364,7 +385,7 @@ impl<'a, 'b> Descent<'a, 'b> {
             return !meet.halted(self.steps);
         };
         let fresh = self.most - union.len();
-        if let Some(grid) = list.grid.as_ref().filter(|_| list.is_open(fresh)) {
+        if let Some(grid) = list.grid.as_ref().filter(|_| list.is_open(union, fresh)) {
             let mut opposite = Vec::new();
             grid.opposite(off, &self.reach, &mut opposite);
             self.steps += 1 + opposite.len() as u64;
