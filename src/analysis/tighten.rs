@@ -5,9 +5,10 @@ use rayon::prelude::*;
 use super::built::Built;
 use super::interval::clopper_pearson;
 use super::mask::{Gauge, Mask, Scratch};
+use super::spread::response_yardstick;
 use super::tolerance::{Boards, Distribution, Draw, Tolerances};
-use super::yields::Sampling;
-use crate::target::{Biquad, Measure, Section, Yardstick};
+use super::yields::{Sampling, Yield, counted, estimate};
+use crate::target::{Biquad, Criterion, Section, Yardstick};
 
 /// Tolerances in which resistors are sold, the coarsest first, as ratios; letters J to B of IEC 60062.
 pub const RESISTOR_STEPS: [f64; 5] = [0.05, 0.02, 0.01, 0.005, 0.001];
@@ -32,11 +33,12 @@ impl Wanted {
 
     /// An error of at most `limit` by the measure of a board; under the weighted measure the response error, dB.
     pub fn within(limit: f64, built: &Built) -> Wanted {
-        let mut criterion = built.criterion;
-        if matches!(criterion.measure, Measure::Weighted(_)) {
-            criterion.measure = Measure::Decibel;
-        }
-        Wanted::Within(Yardstick::new(&built.targets(), criterion), limit)
+        Wanted::within_of(limit, &built.targets(), built.criterion)
+    }
+
+    /// The same for any board of these sections.
+    pub fn within_of(limit: f64, targets: &[Section], criterion: Criterion) -> Wanted {
+        Wanted::Within(response_yardstick(targets, criterion), limit)
     }
 
     /// Whether the ideal sections themselves keep it.
@@ -44,12 +46,32 @@ impl Wanted {
         self.keeps(targets, &targets.iter().map(Section::ideal).collect::<Vec<_>>(), &mut Scratch::default())
     }
 
+    /// Whether the transfer functions of a board's sections keep it.
+    pub fn keeps_board(&self, built: &Built, board: &[Biquad]) -> bool {
+        self.keeps(&built.targets(), board, &mut Scratch::default())
+    }
+
+    /// The share of boards that keep it.
+    pub fn estimate(&self, built: &Built, tolerances: &Tolerances, sampling: &Sampling) -> Yield {
+        match self {
+            Wanted::Mask(gauge) => estimate(built, tolerances, gauge, sampling),
+            Wanted::Within(..) => {
+                let targets = built.targets();
+                counted(built, tolerances, sampling, 1, &|board, scratch, broken| {
+                    let kept = self.keeps(&targets, board, scratch);
+                    broken.fill(!kept);
+                    kept
+                })
+            }
+        }
+    }
+
     fn keeps(&self, targets: &[Section], board: &[Biquad], scratch: &mut Scratch) -> bool {
         match self {
             Wanted::Mask(gauge) => gauge.passes(board, scratch, &mut vec![false; gauge.len()]),
             Wanted::Within(yardstick, limit) => {
                 let stable = board.iter().zip(targets).all(|(h, target)| h.is_stable(target.shape.order()));
-                stable && yardstick.deviation(board).error <= *limit
+                stable && yardstick.within(board, *limit).is_some()
             }
         }
     }

@@ -115,6 +115,7 @@ impl Board<'_> {
             Rank::PartNumbers => picked.sort_by_key(|(c, _)| c.tally.takes.part_numbers),
             Rank::ToBuy => picked.sort_by_key(|(c, _)| c.tally.takes.bought),
             Rank::Cost => picked.sort_by_key(|(c, _)| cost(c)),
+            Rank::PlacedParts => picked.sort_by_key(|(c, _)| c.tally.takes.placed_parts),
         }
         let wanted = ErrorKey::new(goals.wanted_error);
         let marked =
