@@ -1,5 +1,6 @@
 //! A mask: limits that a response has to keep, and how a board stands against them.
 
+use super::within::powers_at;
 use crate::target::{Biquad, Criterion, Section, Yardstick};
 
 /// To what the decibels of a mask relate.
@@ -120,6 +121,13 @@ pub struct Scratch {
     delays: Vec<f64>,
 }
 
+impl Scratch {
+    /// Space for powers.
+    pub(super) fn powers(&mut self) -> &mut Vec<f64> {
+        &mut self.powers
+    }
+}
+
 impl Gauge {
     /// A mask for a cascade of these sections.
     pub fn new(mask: &Mask, sections: &[Section], criterion: Criterion) -> Gauge {
@@ -208,16 +216,7 @@ impl Gauge {
 
     /// Fills in the powers at the points and gives the reference.
     fn measure(&self, board: &[Biquad], scratch: &mut Scratch) -> f64 {
-        scratch.powers.clear();
-        scratch.powers.resize(self.points.len(), 1.0);
-        for h in board {
-            // One section after the other over all frequencies: the compiler can take several at a time.
-            let ([n0, n1, n2], [d0, d1, d2]) = (h.num, h.den);
-            for (power, x) in scratch.powers.iter_mut().zip(&self.points) {
-                let (even, below) = (n0 - n2 * x, d0 - d2 * x);
-                *power *= (even * even + n1 * n1 * x) / (below * below + d1 * d1 * x);
-            }
-        }
+        powers_at(board, &self.points, &mut scratch.powers);
         self.reference_power(board, &scratch.powers)
     }
 

@@ -17,6 +17,7 @@ mod tighten;
 mod tolerance;
 mod trim;
 mod vetted;
+mod within;
 mod yields;
 
 pub use built::{
@@ -36,4 +37,5 @@ pub use tighten::{CAPACITOR_STEPS, RESISTOR_STEPS, Step, Steps, Wanted, coarsest
 pub use tolerance::{Boards, Distribution, Draw, Tolerances};
 pub use trim::{Trim, Watch, trims};
 pub use vetted::{Conditions, MaskResult, Vetted, vet};
+pub use within::Within;
 pub use yields::{Sampling, Yield, estimate};

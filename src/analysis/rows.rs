@@ -3,6 +3,7 @@
 use rayon::prelude::*;
 
 use super::built::Built;
+use super::mask::Scratch;
 use super::spread::{deviations, response_yardstick};
 use super::tighten::Wanted;
 use super::tolerance::Tolerances;
@@ -112,7 +113,7 @@ fn of_board(built: &Built, asked: &YieldQuestion, yardstick: &Yardstick) -> RowY
     let nominal: Vec<Biquad> = built.nominal();
     let spread = deviations(built, &asked.tolerances, yardstick).response;
     RowYield {
-        nominal_keeps: asked.wanted.keeps_board(built, &nominal),
+        nominal_keeps: asked.wanted.keeps(&nominal, &mut Scratch::default()),
         yields: asked.wanted.estimate(built, &asked.tolerances, &asked.sampling),
         spread,
         nominal_is_lost: is_lost_in_spread(yardstick.deviation(&nominal).error, spread.0),

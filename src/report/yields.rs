@@ -67,7 +67,7 @@ impl Record {
     ) -> Record {
         let targets = targets(problem);
         let (within, target_limits) = match (&asked.wanted, mask) {
-            (Wanted::Within(_, limit), _) => (Some(*limit), Vec::new()),
+            (Wanted::Within(within), _) => (Some(within.limit()), Vec::new()),
             (Wanted::Mask(gauge), Some(mask)) => {
                 let ideal: Vec<_> = targets.iter().map(Section::ideal).collect();
                 (None, limits(&targets, mask, &gauge.standings(&ideal)))
