@@ -224,9 +224,9 @@ fn alternatives_take_part_by_their_yield() {
     let is_listed = |row: &Json| rows(&list).iter().any(|kept| parts(kept) == parts(row));
     let (mut kept, mut dropped) = (0, 0);
     for (row, (low, _)) in &every {
-        let as_good =
+        let mut as_good =
             rows(&list).iter().filter(|other| no_worse(rest(other), rest(row)) && parts(other) != parts(row));
-        let beaten = as_good.clone().any(|other| *low <= interval(other).1);
+        let beaten = as_good.any(|other| *low <= interval(other).1);
         if row["alternative"] == false {
             assert!(is_listed(row));
         } else if is_listed(row) {
