@@ -24,10 +24,12 @@ enum Test {
         points: Vec<f64>,
         /// The least and the largest |H|² there.
         between: Vec<(f64, f64)>,
+        /// Whether any one factor may be taken out of all of them.
+        free_gain: bool,
     },
     /// Within a distance of the target at each frequency.
     Distances(Vec<Distance>),
-    /// By the measure itself, which first takes out a flat gain.
+    /// By the measure itself.
     Measure,
 }
 
@@ -48,7 +50,6 @@ impl Within {
         let floor = yardstick.floor_power();
         let samples = yardstick.samples();
         let test = match yardstick.criterion().measure {
-            _ if criterion.ignore_gain => Test::Measure,
             Measure::Decibel => {
                 let factor = 10f64.powf(limit / 10.0);
                 let sides = |target: f64| {
@@ -59,16 +60,17 @@ impl Within {
                 Test::Powers {
                     points: samples.iter().map(|sample| sample.x).collect(),
                     between: samples.iter().map(|sample| sides(sample.power)).collect(),
+                    free_gain: criterion.ignore_gain,
                 }
             }
-            Measure::Vector => {
+            Measure::Vector if !criterion.ignore_gain => {
                 let distance = |w: f64| {
                     let ideal = targets.iter().map(|section| section.ideal().value(w)).product::<Complex64>();
                     Distance { w, ideal, square: limit * limit * ideal.norm_sqr().max(floor) }
                 };
                 Test::Distances(samples.iter().map(|sample| distance(sample.w)).collect())
             }
-            Measure::Weighted(_) => Test::Measure,
+            Measure::Vector | Measure::Weighted(_) => Test::Measure,
         };
         let orders = targets.iter().map(|section| section.shape.order()).collect();
         Within { yardstick, orders, limit, test }
@@ -86,10 +88,18 @@ impl Within {
         }
         // What is not a number keeps nothing.
         match &self.test {
-            Test::Powers { points, between } => {
+            Test::Powers { points, between, free_gain } => {
                 powers_at(board, points, powers);
-                let kept = |(power, (low, high)): (&f64, &(f64, f64))| power >= low && power <= high;
-                powers.iter().zip(between).all(kept)
+                let both = powers.iter().zip(between);
+                if !free_gain {
+                    return both.fold(true, |kept, (power, (low, high))| kept & (power >= low) & (power <= high));
+                }
+                // A factor must lift every power to its least and none above its largest.
+                let factors = both.map(|(power, (low, high))| (low / power, high / power));
+                let (least, most) = factors.fold((0.0, f64::INFINITY), |(least, most), (low, high)| {
+                    (if low > least { low } else { least }, if high < most { high } else { most })
+                });
+                least.is_finite() && least <= most && powers.iter().all(|power| power.is_finite())
             }
             Test::Distances(list) => list.iter().all(|at| {
                 let value = |p: [f64; 3]| Complex64::new(p[0] - p[2] * at.w * at.w, p[1] * at.w);
