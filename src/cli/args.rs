@@ -313,11 +313,11 @@ pub struct GoalArgs {
     /// Rows to list at most [default: 10].
     #[arg(long, value_name = "COUNT")]
     pub rows: Option<String>,
-    /// Further sets to list for each number of part numbers [default: 0].
+    /// Further sets to list for each number of part numbers; with --yield those of them that yield more [default: 0].
     #[arg(long, value_name = "COUNT")]
     pub alternatives: Option<String>,
     /// What the rows are ranked by first; cost then takes part in the front, yield and spread need --yield [default: error].
-    #[arg(long, value_parser = ["error", "part-numbers", "placed-parts", "to-buy", "cost", "yield", "spread"])]
+    #[arg(long, value_parser = ["error", "part-numbers", "to-buy", "cost", "placed-parts", "yield", "spread"])]
     pub rank: Option<String>,
     /// How long to search, such as 10s [default: to the end].
     #[arg(long, value_name = "TIME")]

@@ -321,9 +321,9 @@ fn pairs_of(kinds: &[String], at_most: &Option<String>) -> PairsFile {
 fn rank_of(name: &str) -> RankFile {
     match name {
         "part-numbers" => RankFile::PartNumbers,
-        "placed-parts" => RankFile::PlacedParts,
         "to-buy" => RankFile::ToBuy,
         "cost" => RankFile::Cost,
+        "placed-parts" => RankFile::PlacedParts,
         "yield" => RankFile::Yield,
         "spread" => RankFile::Spread,
         _ => RankFile::Error,

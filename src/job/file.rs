@@ -122,12 +122,12 @@ pub enum RankFile {
     Error,
     /// Part numbers.
     PartNumbers,
-    /// Placed parts.
-    PlacedParts,
     /// Part numbers that must be bought.
     ToBuy,
     /// The cost of the parts of a board.
     Cost,
+    /// Placed parts.
+    PlacedParts,
     /// The share of boards that keep what is wanted.
     Yield,
     /// The spread of the response.
@@ -140,9 +140,9 @@ impl RankFile {
         match self {
             RankFile::Error | RankFile::Yield | RankFile::Spread => Rank::Error,
             RankFile::PartNumbers => Rank::PartNumbers,
-            RankFile::PlacedParts => Rank::PlacedParts,
             RankFile::ToBuy => Rank::ToBuy,
             RankFile::Cost => Rank::Cost,
+            RankFile::PlacedParts => Rank::PlacedParts,
         }
     }
 

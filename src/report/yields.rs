@@ -138,9 +138,13 @@ pub(super) fn conditions(record: &Record, width: usize) -> String {
         share if share > 0.0 => format!("{} of it common to the parts of one part number", of_hundred(share)),
         _ => "each part by itself".to_string(),
     };
+    let boards = match record.shortlist.iter().any(|row| !row.boards.is_empty()) {
+        true => ", of the worst where boards differ in their measured parts",
+        false => "",
+    };
     let unless = if record.stock.is_some() { " where the stock list gives none" } else { "" };
     let line = format!(
-        "share of boards {wanted}, with resistors {}, capacitors {}{unless}, {spread}; {reels}; the same draws for every \
+        "share of boards {wanted}{boards}, with resistors {}, capacitors {}{unless}, {spread}; {reels}; the same draws for every \
          row. Computed for the rows that were found, not searched for.",
         unbroken(&of_hundred(*resistors)),
         unbroken(&of_hundred(*capacitors))
