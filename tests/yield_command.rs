@@ -113,7 +113,7 @@ fn rows_of_a_drawer_have_the_yields_of_vet() {
     for flags in ["--pairs resistors", "--boards 2", "--buy 1 --rank to-buy"] {
         let line = format!("job.ron --yield --mask mask.ron --bar-class-2 {flags}");
         let list = listed(&folder, &line);
-        assert!(table.lines().all(|line| line.chars().count() <= 80), "{table}");
+        assert!(!rows(&list).is_empty(), "{flags}");
         same_as_vet(&folder, &list, "");
     }
 }
@@ -235,7 +235,7 @@ fn rows_are_ranked_by_yield_and_by_spread() {
 #[test]
 fn alternatives_take_part_by_their_yield() {
     let folder = prepared();
-    let line = "jobs/job.ron --alternatives 6 --rows 100 --error-limit 3";
+    let line = "jobs/job.ron --alternatives 4 --rows 100 --error-limit 3";
     let all = listed(&folder, line);
     let every: Vec<(Json, (f64, f64))> = (rows(&all).iter().enumerate())
         .map(|(k, row)| {
