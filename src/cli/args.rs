@@ -71,12 +71,12 @@ Examples:
   roundwell shortlist --shape low-pass --f0 1k --q 0.7071 --gain 1 --circuit tow-thomas
   roundwell shortlist job.ron --yield --mask mask.ron --alternatives 3 --rank yield
 
-Exit codes: 0 found, 1 internal fault, 2 bad input or usage, 3 nothing within the limits, 130 interrupted;
-with --yield 3 too where the target, or every row with its nominal parts, misses what is wanted.";
+Exit codes: 0 found, 1 internal fault, 2 bad input or usage, 3 nothing within the limits, 130 interrupted.
+With --yield, 3 also where the target, or every row with its nominal parts, misses what is wanted.";
 
 /// The long help of `shortlist`: with the columns of the CSV format.
 fn shortlist_long_help() -> String {
-    let columns = CSV_COLUMNS.map(|(name, meaning)| format!("  {name:<18} {meaning}"));
+    let columns = CSV_COLUMNS.map(|(name, meaning)| format!("  {name:<21} {meaning}"));
     format!(
         "{SHORTLIST_HELP}\n\nColumns of the CSV format; numbers in SI units, empty where not known:\n{}",
         columns.join("\n")
