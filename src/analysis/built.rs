@@ -8,7 +8,7 @@ use crate::circuit::{Circuit, Output, Polynomial};
 use crate::parts::{Choice, Lot};
 use crate::search::{self, Chosen, Part, Problem, Row, SectionProblem};
 use crate::target::{Biquad, Criterion, Section, Shape, Yardstick};
-use crate::units::{Kind, Value, format_part, parse_part};
+use crate::units::{Kind, Value, format_part};
 
 /// How the pieces of a slot make up its value.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -153,6 +153,13 @@ pub fn listed_tolerance(lot: &Lot) -> Option<(f64, f64)> {
     Some((ratio(low), ratio(high)))
 }
 
+/// The value of joined parts, as a shortlist is read back.
+fn twelve_digits(value: f64) -> Option<Value> {
+    let text = format!("{value:.11e}");
+    let (digits, power) = text.split_once('e')?;
+    Value::new(digits.replace('.', "").parse().ok()?, power.parse::<i32>().ok()? - 11).ok()
+}
+
 impl BuiltPart {
     /// What one slot of a row holds; `None` for a value that cannot be bought.
     fn of_row(problem: &Problem, part: &Part) -> Option<BuiltPart> {
@@ -168,8 +175,7 @@ impl BuiltPart {
         };
         let value = match part.value {
             Some(value) => value,
-            // As a shortlist is read back: twelve digits.
-            None => parse_part(&format!("{:.11e}", part.ideal), part.kind).ok()?,
+            None => twelve_digits(part.ideal)?,
         };
         let adds = |joint| (joint == search::Joint::Series) == (part.kind == Kind::Resistor);
         let joint = if part.joint.is_none_or(adds) { Joint::Sum } else { Joint::Reciprocal };

@@ -46,7 +46,7 @@ pub struct RowYield {
     /// Whether the nominal parts keep what is wanted.
     pub nominal_keeps: bool,
     /// The share of boards that do.
-    pub yields: Yield,
+    pub keeping: Yield,
     /// The largest standard deviation of the response, from the sensitivities, and where it is, rad/s: see
     /// [`Deviations::response`](super::Deviations::response).
     pub spread: (f64, f64),
@@ -114,7 +114,7 @@ fn of_board(built: &Built, asked: &YieldQuestion, yardstick: &Yardstick) -> RowY
     let spread = deviations(built, &asked.tolerances, yardstick).response;
     RowYield {
         nominal_keeps: asked.wanted.keeps(&nominal, &mut Scratch::default()),
-        yields: asked.wanted.estimate(built, &asked.tolerances, &asked.sampling),
+        keeping: asked.wanted.estimate(built, &asked.tolerances, &asked.sampling),
         spread,
         nominal_is_lost: is_lost_in_spread(yardstick.deviation(&nominal).error, spread.0),
     }
@@ -145,7 +145,7 @@ impl Candidate {
         let takes_no_more = its.0 <= mine.0 && its.1 <= mine.1 && its.2 <= mine.2;
         let cheaper = !cost_counts || other.row.cost <= self.row.cost;
         let no_worse = other.error() <= self.error() && takes_no_more && cheaper;
-        no_worse && self.yields.yields.interval.0 <= other.yields.yields.interval.1
+        no_worse && self.yields.keeping.interval.0 <= other.yields.keeping.interval.1
     }
 }
 
@@ -156,7 +156,7 @@ fn unbeaten(mut rows: Vec<Candidate>, cost_counts: bool) -> Vec<Candidate> {
         let rank = |c: &Candidate| (c.error(), c.takes(), if cost_counts { c.row.cost } else { None });
         rank(a)
             .cmp(&rank(b))
-            .then(b.yields.yields.share().total_cmp(&a.yields.yields.share()))
+            .then(b.yields.keeping.share().total_cmp(&a.yields.keeping.share()))
             .then(a.found.cmp(&b.found))
     });
     let mut kept: Vec<Candidate> = Vec::new();
@@ -177,12 +177,12 @@ fn order(rows: &mut [Candidate], order: Order) {
         Order::Spread => rows.sort_by_key(|c| (ErrorKey::new(c.yields.spread.0), rest(c))),
         Order::Yield => {
             rows.sort_by(|a, b| {
-                b.yields.yields.share().total_cmp(&a.yields.yields.share()).then(rest(a).cmp(&rest(b)))
+                b.yields.keeping.share().total_cmp(&a.yields.keeping.share()).then(rest(a).cmp(&rest(b)))
             });
             let mut start = 0;
             while start < rows.len() {
-                let low = rows[start].yields.yields.interval.0;
-                let alike = rows[start..].iter().take_while(|c| c.yields.yields.interval.1 >= low).count();
+                let low = rows[start].yields.keeping.interval.0;
+                let alike = rows[start..].iter().take_while(|c| c.yields.keeping.interval.1 >= low).count();
                 let end = start + alike.max(1);
                 rows[start..end].sort_by_key(rest);
                 start = end;

@@ -88,7 +88,7 @@ impl Record {
             dropped: found.dropped,
         });
         let record = |row: &RowYield| BuiltRecord {
-            r#yield: YieldRecord::new(&row.yields, &asked.sampling),
+            r#yield: YieldRecord::new(&row.keeping, &asked.sampling),
             response_deviation: row.spread.0,
             response_deviation_at_hz: hertz(row.spread.1),
             nominal_keeps: row.nominal_keeps,
@@ -175,17 +175,17 @@ pub(super) fn columns<'a>(record: &Record, rows: impl Iterator<Item = &'a RowRec
     ]
 }
 
+/// How rows stand that are ranked by yield.
+const RANKED_BY_YIELD: &str = "Ranked by yield: rows whose interval reaches into that of the first of them are not told apart by \
+                               it, and stand by part numbers, what must be bought, placed parts and error.";
+
 /// What is to be said below the table.
 pub(super) fn remarks(record: &Record, width: usize) -> String {
     let Some(yields) = &record.yields else { return String::new() };
     let mut text = String::new();
     let mut say = |line: String| text += &paragraph("", &line, width);
     match yields.order {
-        Some("yield") => {
-            say("Ranked by yield: rows whose interval reaches into that of the first of them are not told \
-                              apart by it, and stand by part numbers, what must be bought, placed parts and error."
-                .to_string())
-        }
+        Some("yield") => say(RANKED_BY_YIELD.to_string()),
         Some(order) => say(format!("Ranked by {order}.")),
         None => {}
     }
