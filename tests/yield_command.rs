@@ -147,10 +147,10 @@ fn where_boards_differ_the_worst_counts() {
 fn the_yields_are_those_of_tighten() {
     let folder = prepared();
     for wanted in ["", "--within 0.7dB"] {
-        let list = listed(&folder, &format!("jobs/job.ron --yield {wanted} --draws 4096 --interval 0"));
+        let list = listed(&folder, &format!("jobs/job.ron --yield {wanted} --draws 1024 --interval 0"));
         for (k, row) in rows(&list).iter().enumerate() {
             let line =
-                format!("tighten list.json {wanted} --rows {} --boards 4096 --interval 0 --format json", k + 1);
+                format!("tighten list.json {wanted} --rows {} --boards 1024 --interval 0 --format json", k + 1);
             let output = run(folder.path(), &line);
             let table = json_of(&output);
             let steps = table["steps"].as_array().unwrap();
