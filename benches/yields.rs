@@ -44,7 +44,7 @@ fn filter() -> Built {
 fn mask() -> Mask {
     let limit = |from: f64, to: f64, lower, upper| Limit { from: from * TAU, to: to * TAU, lower, upper };
     let limits = vec![limit(10.0, 700.0, Some(-1.0), Some(1.0)), limit(2e3, 10e3, None, Some(-40.0))];
-    Mask { reference: Reference::Dc, limits, figures: Vec::new() }
+    Mask { reference: Reference::Dc, limits, delays: Vec::new(), figures: Vec::new() }
 }
 
 const TOLERANCES: Tolerances =

@@ -377,6 +377,7 @@ fn check_order(rank: Rank, outcome: &Outcome) -> Result<(), VerifyError> {
         Rank::PartNumbers => row.part_numbers.map(|count| count as u64),
         Rank::ToBuy => row.to_buy.map(|count| count as u64),
         Rank::Cost => row.cost,
+        Rank::PlacedParts => Some(row.placed_parts as u64),
     };
     let rank_of = |row: &Row| (first(row), error(row));
     for (index, row) in outcome.rows.iter().enumerate() {

@@ -51,7 +51,7 @@ fn anti_alias() -> Built {
 fn anti_alias_mask() -> Mask {
     let limit = |from: f64, to: f64, lower, upper| Limit { from: from * TAU, to: to * TAU, lower, upper };
     let limits = vec![limit(30.0, 3e3, Some(-0.8), Some(0.8)), limit(12e3, 12e3, None, Some(-37.0))];
-    Mask { reference: Reference::Absolute, limits, figures: Vec::new() }
+    Mask { reference: Reference::Absolute, limits, delays: Vec::new(), figures: Vec::new() }
 }
 
 fn tolerances(resistors: f64, capacitors: f64) -> Tolerances {
@@ -165,7 +165,7 @@ proptest! {
         };
         let figures: Vec<FigureLimit> = built.sections.iter().zip(built.nominal()).enumerate()
             .map(|(k, (section, h))| figure(k, Figure::F0, section.target.figures_of(&h).w0)).collect();
-        let gauge = gauge(&built, &Mask { reference: Reference::Absolute, limits: Vec::new(), figures });
+        let gauge = gauge(&built, &Mask { reference: Reference::Absolute, limits: Vec::new(), delays: Vec::new(), figures });
         let distribution = if normal { Distribution::TruncatedNormal } else { Distribution::Uniform };
         let run = |factor: f64| {
             let (resistors, capacitors) = (resistors * factor, capacitors * factor);
@@ -397,7 +397,7 @@ fn unstable_boards_are_told() {
     let target = Section::new("A", Shape::LowPass, 1e4, Some(20.0), 2.95, None).unwrap();
     let built = board(vec![section(target, circuit, "low-pass", &values)]);
     let limit = Limit { from: 10.0, to: 100.0, lower: None, upper: Some(1e3) };
-    let mask = Mask { reference: Reference::Absolute, limits: vec![limit], figures: Vec::new() };
+    let mask = Mask { reference: Reference::Absolute, limits: vec![limit], delays: Vec::new(), figures: Vec::new() };
     let conditions = Conditions {
         tolerances: tolerances(0.05, 0.05),
         mask: Some(mask),

@@ -5,6 +5,8 @@ use std::sync::Arc;
 use num_complex::Complex64;
 
 use crate::circuit::{Circuit, Output, Polynomial};
+use crate::parts::{Choice, Lot};
+use crate::search::{self, Chosen, Part, Problem, Row, SectionProblem};
 use crate::target::{Biquad, Criterion, Section, Shape, Yardstick};
 use crate::units::{Kind, Value, format_part};
 
@@ -142,7 +144,61 @@ pub struct Built {
     pub sections: Vec<BuiltSection>,
 }
 
+/// The tolerance of a lot by its stock list: lowest and highest relative error. `None` where the list does not say, and for a
+/// measured part.
+pub fn listed_tolerance(lot: &Lot) -> Option<(f64, f64)> {
+    let (low, high) = lot.lines.first().filter(|_| lot.measured.is_none())?.tolerance?.limits(lot.nominal);
+    // What the way over ohms and farads leaves behind the twelfth place is taken out.
+    let ratio = |limit: f64| ((limit / lot.nominal.to_f64() - 1.0) * 1e12).round() / 1e12;
+    Some((ratio(low), ratio(high)))
+}
+
+/// The value of joined parts, as a shortlist is read back.
+fn twelve_digits(value: f64) -> Option<Value> {
+    let text = format!("{value:.11e}");
+    let (digits, power) = text.split_once('e')?;
+    Value::new(digits.replace('.', "").parse().ok()?, power.parse::<i32>().ok()? - 11).ok()
+}
+
+impl BuiltPart {
+    /// What one slot of a row holds; `None` for a value that cannot be bought.
+    fn of_row(problem: &Problem, part: &Part) -> Option<BuiltPart> {
+        let piece = |&choice: &Choice| {
+            let lot = problem.supply.lot_of(choice);
+            BuiltPiece {
+                value: choice.value,
+                label: lot.map_or(choice.value, |lot| lot.nominal),
+                is_measured: lot.is_some_and(|lot| lot.measured.is_some()),
+                tolerance: lot.and_then(listed_tolerance),
+                line: lot.and_then(|lot| lot.lines.first()).map(|line| line.line),
+            }
+        };
+        let value = match part.value {
+            Some(value) => value,
+            None => twelve_digits(part.ideal)?,
+        };
+        let adds = |joint| (joint == search::Joint::Series) == (part.kind == Kind::Resistor);
+        let joint = if part.joint.is_none_or(adds) { Joint::Sum } else { Joint::Reciprocal };
+        let pieces: Vec<BuiltPiece> = part.pieces.iter().map(piece).collect();
+        (!pieces.is_empty()).then_some(BuiltPart { slot: part.slot, kind: part.kind, value, pieces, joint })
+    }
+}
+
 impl Built {
+    /// The board of a row, where boards differ the worst of them; `None` where a part cannot be bought.
+    pub fn of_row(problem: &Problem, row: &Row) -> Option<Built> {
+        let section = |(section, chosen): (&SectionProblem, &Chosen)| {
+            let parts = chosen.parts.iter().map(|part| BuiltPart::of_row(problem, part)).collect::<Option<_>>()?;
+            let SectionProblem { target, circuit, output, .. } = section;
+            Some(BuiltSection { target: target.clone(), circuit: circuit.clone(), output: *output, parts })
+        };
+        Some(Built {
+            title: problem.title.clone(),
+            criterion: problem.criterion,
+            sections: problem.sections.iter().zip(&row.sections).map(section).collect::<Option<_>>()?,
+        })
+    }
+
     /// The ideal sections.
     pub fn targets(&self) -> Vec<Section> {
         self.sections.iter().map(|section| section.target.clone()).collect()

@@ -1,5 +1,6 @@
 //! A mask: limits that a response has to keep, and how a board stands against them.
 
+use super::within::powers_at;
 use crate::target::{Biquad, Criterion, Section, Yardstick};
 
 /// To what the decibels of a mask relate.
@@ -15,16 +16,16 @@ pub enum Reference {
     At(f64),
 }
 
-/// A limit of the magnitude over a range of frequencies; at least one of both sides is given.
+/// A limit of the magnitude or of the group delay over a range of frequencies; at least one of both sides is given.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Limit {
     /// Where it begins, rad/s.
     pub from: f64,
     /// Where it ends, rad/s; not below `from`.
     pub to: f64,
-    /// The magnitude must not be below this, dB.
+    /// The magnitude must not be below this, dB; the group delay likewise, s.
     pub lower: Option<f64>,
-    /// The magnitude must not be above this, dB.
+    /// It must not be above this.
     pub upper: Option<f64>,
 }
 
@@ -61,6 +62,8 @@ pub struct Mask {
     pub reference: Reference,
     /// Limits of the magnitude.
     pub limits: Vec<Limit>,
+    /// Limits of the group delay of the whole cascade.
+    pub delays: Vec<Limit>,
     /// Limits of figures.
     pub figures: Vec<FigureLimit>,
 }
@@ -68,7 +71,8 @@ pub struct Mask {
 /// How a board stands against one limit.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub struct Standing {
-    /// Room to the limit: negative where it is broken. In dB for magnitudes and depths, otherwise relative to the limit.
+    /// Room to the limit: negative where it is broken. In dB for magnitudes and depths, in s for group delays, otherwise
+    /// relative to the limit.
     /// NaN where the figure does not exist, such as the depth of a null that is none.
     pub margin: f64,
     /// Where the room is least, rad/s; `None` for figures.
@@ -85,7 +89,7 @@ impl Standing {
 /// The most room to a limit that is told, dB: a response that vanishes lies infinitely far below its limit.
 const MOST_ROOM: f64 = 1000.0;
 
-/// Where the frequencies of one limit lie in the list, and its sides as ratios of power.
+/// Where the frequencies of one limit lie in the list, and its sides: ratios of power, or group delays in s.
 #[derive(Clone, Debug)]
 struct Piece {
     points: std::ops::Range<usize>,
@@ -103,14 +107,25 @@ pub struct Gauge {
     /// ω², limit after limit, then those that only serve to find the peak.
     points: Vec<f64>,
     pieces: Vec<Piece>,
+    /// ω for the limits of the group delay, rad/s.
+    delay_points: Vec<f64>,
+    delays: Vec<Piece>,
     figures: Vec<FigureLimit>,
     orders: Vec<usize>,
 }
 
-/// Space for the powers at the frequencies of a gauge, kept from board to board.
+/// Space for the powers and group delays at the frequencies of a gauge, kept from board to board.
 #[derive(Clone, Debug, Default)]
 pub struct Scratch {
     powers: Vec<f64>,
+    delays: Vec<f64>,
+}
+
+impl Scratch {
+    /// Space for powers.
+    pub(super) fn powers(&mut self) -> &mut Vec<f64> {
+        &mut self.powers
+    }
 }
 
 impl Gauge {
@@ -122,7 +137,8 @@ impl Gauge {
             }
             Yardstick::new(sections, Criterion { band: Some((from, to)), ..criterion }).frequencies().collect()
         };
-        let lists: Vec<Vec<f64>> = mask.limits.iter().map(|limit| grid(limit.from, limit.to)).collect();
+        let lists: Vec<Vec<f64>> =
+            mask.limits.iter().chain(&mask.delays).map(|limit| grid(limit.from, limit.to)).collect();
         let band = criterion.band_for(sections);
         let extra = if mask.reference == Reference::Peak { grid(band.0, band.1) } else { Vec::new() };
         Gauge::at(mask, sections, &lists, &extra)
@@ -134,9 +150,10 @@ impl Gauge {
         let list = |limit: &Limit| {
             (0..count).map(|k| limit.from * (limit.to / limit.from).powf(k as f64 / steps)).collect::<Vec<_>>()
         };
-        Gauge::at(mask, sections, &mask.limits.iter().map(list).collect::<Vec<_>>(), &[])
+        Gauge::at(mask, sections, &mask.limits.iter().chain(&mask.delays).map(list).collect::<Vec<_>>(), &[])
     }
 
+    /// `lists` has the frequencies of each limit of the magnitude, then of each of the group delay.
     fn at(mask: &Mask, sections: &[Section], lists: &[Vec<f64>], extra: &[f64]) -> Gauge {
         let mut points = Vec::new();
         let mut pieces = Vec::new();
@@ -151,13 +168,24 @@ impl Gauge {
             });
         }
         points.extend(extra.iter().map(|w| w * w));
+        let (mut delay_points, mut delays) = (Vec::new(), Vec::new());
+        for (limit, list) in mask.delays.iter().zip(&lists[mask.limits.len().min(lists.len())..]) {
+            let start = delay_points.len();
+            delay_points.extend(list);
+            delays.push(Piece {
+                points: start..delay_points.len(),
+                lower: limit.lower.unwrap_or(f64::NEG_INFINITY),
+                upper: limit.upper.unwrap_or(f64::INFINITY),
+            });
+        }
         let orders = sections.iter().map(|section| section.shape.order()).collect();
-        Gauge { reference: mask.reference, points, pieces, figures: mask.figures.clone(), orders }
+        let (reference, figures) = (mask.reference, mask.figures.clone());
+        Gauge { reference, points, pieces, delay_points, delays, figures, orders }
     }
 
-    /// How many limits there are: those of the magnitude, then those of figures.
+    /// How many limits there are: those of the magnitude, those of the group delay, then those of figures.
     pub fn len(&self) -> usize {
-        self.pieces.len() + self.figures.len()
+        self.pieces.len() + self.delays.len() + self.figures.len()
     }
 
     /// Whether there is no limit.
@@ -165,10 +193,15 @@ impl Gauge {
         self.len() == 0
     }
 
-    /// The angular frequencies at which limits are tested, limit after limit, rad/s.
+    /// The angular frequencies at which limits of the magnitude are tested, limit after limit, rad/s.
     pub fn tested(&self) -> Vec<f64> {
         let end = self.pieces.last().map_or(0, |piece| piece.points.end);
         self.points[..end].iter().map(|x| x.sqrt()).collect()
+    }
+
+    /// At how many frequencies limits are tested, those of the group delay included.
+    pub fn frequencies(&self) -> usize {
+        self.pieces.last().map_or(0, |piece| piece.points.end) + self.delay_points.len()
     }
 
     /// The power to which the decibels relate, once the powers at the points are known.
@@ -183,17 +216,15 @@ impl Gauge {
 
     /// Fills in the powers at the points and gives the reference.
     fn measure(&self, board: &[Biquad], scratch: &mut Scratch) -> f64 {
-        scratch.powers.clear();
-        scratch.powers.resize(self.points.len(), 1.0);
-        for h in board {
-            // One section after the other over all frequencies: the compiler can take several at a time.
-            let ([n0, n1, n2], [d0, d1, d2]) = (h.num, h.den);
-            for (power, x) in scratch.powers.iter_mut().zip(&self.points) {
-                let (even, below) = (n0 - n2 * x, d0 - d2 * x);
-                *power *= (even * even + n1 * n1 * x) / (below * below + d1 * d1 * x);
-            }
-        }
+        powers_at(board, &self.points, &mut scratch.powers);
         self.reference_power(board, &scratch.powers)
+    }
+
+    /// Fills in the group delays at the points of their limits.
+    fn measure_delays(&self, board: &[Biquad], scratch: &mut Scratch) {
+        scratch.delays.clear();
+        let delay = |w: &f64| board.iter().map(|h| h.group_delay(*w)).sum::<f64>();
+        scratch.delays.extend(self.delay_points.iter().map(delay));
     }
 
     /// Whether all poles of all sections lie in the left half plane.
@@ -218,7 +249,14 @@ impl Gauge {
             *broken = !kept;
             all &= kept;
         }
-        for (limit, broken) in self.figures.iter().zip(&mut broken[self.pieces.len()..]) {
+        self.measure_delays(board, scratch);
+        for (piece, broken) in self.delays.iter().zip(&mut broken[self.pieces.len()..]) {
+            let within = |delay: &f64| *delay >= piece.lower && *delay <= piece.upper;
+            let kept = scratch.delays[piece.points.clone()].iter().all(within);
+            *broken = !kept;
+            all &= kept;
+        }
+        for (limit, broken) in self.figures.iter().zip(&mut broken[self.pieces.len() + self.delays.len()..]) {
             let kept = figure_margin(limit, &board[limit.section], self.orders[limit.section]) >= 0.0;
             *broken = !kept;
             all &= kept;
@@ -226,12 +264,18 @@ impl Gauge {
         all
     }
 
-    /// How a board stands against each limit: those of the magnitude, then those of figures.
+    /// How a board stands against each limit: those of the magnitude, those of the group delay, then those of figures.
     pub fn standings(&self, board: &[Biquad]) -> Vec<Standing> {
         let mut scratch = Scratch::default();
         let reference = self.measure(board, &mut scratch);
+        self.measure_delays(board, &mut scratch);
         let stable = self.is_stable(board);
         let decibels = |ratio: f64| 10.0 * ratio.log10();
+        let least = |rooms: &mut dyn Iterator<Item = (f64, f64)>| {
+            let least = rooms.reduce(|least, here| if here.0 < least.0 || here.0.is_nan() { here } else { least });
+            let (margin, at) = least.unwrap_or((f64::NAN, f64::NAN));
+            Standing { margin: if stable { margin } else { f64::NAN }, at: Some(at) }
+        };
         let piece = |piece: &Piece| {
             let room = |power: f64| {
                 let below =
@@ -243,16 +287,18 @@ impl Gauge {
                     below.min(above).clamp(-MOST_ROOM, MOST_ROOM)
                 }
             };
-            let rooms = piece.points.clone().map(|k| (room(scratch.powers[k]), self.points[k].sqrt()));
-            let least = rooms.reduce(|least, here| if here.0 < least.0 || here.0.is_nan() { here } else { least });
-            let (margin, at) = least.unwrap_or((f64::NAN, f64::NAN));
-            Standing { margin: if stable { margin } else { f64::NAN }, at: Some(at) }
+            least(&mut piece.points.clone().map(|k| (room(scratch.powers[k]), self.points[k].sqrt())))
+        };
+        let delay = |piece: &Piece| {
+            let room = |k: usize| (piece.upper - scratch.delays[k]).min(scratch.delays[k] - piece.lower);
+            least(&mut piece.points.clone().map(|k| (room(k), self.delay_points[k])))
         };
         let figure = |limit: &FigureLimit| {
             let margin = figure_margin(limit, &board[limit.section], self.orders[limit.section]);
             Standing { margin: if stable { margin } else { f64::NAN }, at: None }
         };
-        self.pieces.iter().map(piece).chain(self.figures.iter().map(figure)).collect()
+        let delays = self.delays.iter().map(delay);
+        self.pieces.iter().map(piece).chain(delays).chain(self.figures.iter().map(figure)).collect()
     }
 
     /// The smallest margin of the magnitude limits, dB, and where it is, rad/s; `None` where there is no such limit.
@@ -318,6 +364,7 @@ mod tests {
         let mask = Mask {
             reference: Reference::Dc,
             limits: vec![limit(49.8, 50.2, None, Some(-40.0))],
+            delays: Vec::new(),
             figures: Vec::new(),
         };
         let margin = |q: f64| {
@@ -346,6 +393,7 @@ mod tests {
             let mask = Mask {
                 reference,
                 limits: vec![limit(100.0, 500.0, Some(-3.0), Some(25.0)), limit(5e3, 5e3, None, Some(1.0))],
+                delays: Vec::new(),
                 figures: vec![
                     FigureLimit {
                         section: 0,
@@ -377,6 +425,7 @@ mod tests {
         let mask = Mask {
             reference: Reference::Absolute,
             limits: vec![limit(1.0, 10.0, Some(-10.0), Some(10.0))],
+            delays: Vec::new(),
             figures: Vec::new(),
         };
         let gauge = Gauge::new(&mask, std::slice::from_ref(&section), Criterion::default());
@@ -387,6 +436,39 @@ mod tests {
         assert!(!passes(Biquad { num: [f64::NAN, 0.0, 0.0], ..good }));
         let unstable = gauge.standings(&[Biquad { den: [good.den[0], -good.den[1], good.den[2]], ..good }]);
         assert!(!unstable[0].is_met());
+    }
+
+    // Closed forms: two equal first-order low-passes have the group delay 2/w0 / (1 + (w/w0)²), which falls with frequency.
+    #[test]
+    fn group_delays_are_those_of_the_whole_cascade() {
+        let w0 = 1e3 * TAU;
+        let section = Section::new("A", Shape::FirstOrderLowPass, w0, None, 3.0, None).unwrap();
+        let sections = [section.clone(), section];
+        let board = sections.clone().map(|section| section.ideal());
+        let delay = |f: f64| 2.0 / w0 / (1.0 + (f / 1e3).powi(2));
+        let mask = |lower: f64, upper: f64| Mask {
+            reference: Reference::Peak,
+            limits: vec![limit(100.0, 200.0, Some(-3.0), None)],
+            delays: vec![limit(200.0, 800.0, Some(lower), Some(upper)), limit(3e3, 3e3, None, Some(1e-3))],
+            figures: vec![FigureLimit { section: 1, figure: Figure::F0, lower: Some(1.0), upper: None }],
+        };
+        for (lower, upper, kept) in [
+            (0.999 * delay(800.0), 1.001 * delay(200.0), true),
+            (1.001 * delay(800.0), 1.001 * delay(200.0), false),
+            (0.999 * delay(800.0), 0.999 * delay(200.0), false),
+        ] {
+            let gauge = Gauge::new(&mask(lower, upper), &sections, Criterion::default());
+            let found = gauge.standings(&board);
+            assert_eq!(found.len(), gauge.len());
+            let expected = (upper - delay(200.0)).min(delay(800.0) - lower);
+            assert!((found[1].margin - expected).abs() < 1e-15, "{found:?} {expected}");
+            assert!((found[2].margin - (1e-3 - delay(3e3))).abs() < 1e-15);
+            assert!((found[2].at.unwrap() / TAU - 3e3).abs() < 1e-9);
+            let mut broken = vec![true; gauge.len()];
+            assert_eq!(gauge.passes(&board, &mut Scratch::default(), &mut broken), kept);
+            assert_eq!(broken, [false, !kept, false, false]);
+            assert!(gauge.frequencies() > gauge.tested().len() + 100);
+        }
     }
 
     // Source: the null of a notch with a leftover term a s: |H(j wz)| = |a| wz / |D(j wz)|, closed form.

@@ -4,7 +4,7 @@ use rayon::prelude::*;
 
 use super::built::{Built, BuiltPart, FigureSensitivity, Reel, Sensitivities};
 use super::tolerance::{Boards, Draw, Tolerances};
-use crate::target::{Biquad, Figures, Measure, Yardstick};
+use crate::target::{Biquad, Criterion, Figures, Measure, Section, Yardstick};
 
 /// Where the values of drawn boards lie.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -113,6 +113,15 @@ impl Sample {
         let figures = pairs.map(|(section, h)| section.target.figures_of(h)).collect();
         stable.then(|| Sample { figures, error: yardstick.deviation(board).error })
     }
+}
+
+/// A measure of the response, by which tolerances can be judged: the weighted one, which has no frequency, gives way to
+/// decibels.
+pub(super) fn response_yardstick(targets: &[Section], mut criterion: Criterion) -> Yardstick {
+    if matches!(criterion.measure, Measure::Weighted(_)) {
+        criterion.measure = Measure::Decibel;
+    }
+    Yardstick::new(targets, criterion)
 }
 
 /// Standard deviations that follow from the sensitivities.

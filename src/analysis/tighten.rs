@@ -6,8 +6,9 @@ use super::built::Built;
 use super::interval::clopper_pearson;
 use super::mask::{Gauge, Mask, Scratch};
 use super::tolerance::{Boards, Distribution, Draw, Tolerances};
-use super::yields::Sampling;
-use crate::target::{Biquad, Measure, Section, Yardstick};
+use super::within::Within;
+use super::yields::{Sampling, Yield, counted, estimate};
+use crate::target::{Biquad, Criterion, Section};
 
 /// Tolerances in which resistors are sold, the coarsest first, as ratios; letters J to B of IEC 60062.
 pub const RESISTOR_STEPS: [f64; 5] = [0.05, 0.02, 0.01, 0.005, 0.001];
@@ -20,8 +21,8 @@ pub const CAPACITOR_STEPS: [f64; 5] = [0.2, 0.1, 0.05, 0.02, 0.01];
 pub enum Wanted {
     /// All limits of a mask.
     Mask(Gauge),
-    /// An error against the target, in the unit of the measure.
-    Within(Yardstick, f64),
+    /// An error against the target.
+    Within(Within),
 }
 
 impl Wanted {
@@ -32,25 +33,36 @@ impl Wanted {
 
     /// An error of at most `limit` by the measure of a board; under the weighted measure the response error, dB.
     pub fn within(limit: f64, built: &Built) -> Wanted {
-        let mut criterion = built.criterion;
-        if matches!(criterion.measure, Measure::Weighted(_)) {
-            criterion.measure = Measure::Decibel;
-        }
-        Wanted::Within(Yardstick::new(&built.targets(), criterion), limit)
+        Wanted::within_of(limit, &built.targets(), built.criterion)
+    }
+
+    /// The same for any board of these sections.
+    pub fn within_of(limit: f64, targets: &[Section], criterion: Criterion) -> Wanted {
+        Wanted::Within(Within::new(limit, targets, criterion))
     }
 
     /// Whether the ideal sections themselves keep it.
     pub fn target_keeps(&self, targets: &[Section]) -> bool {
-        self.keeps(targets, &targets.iter().map(Section::ideal).collect::<Vec<_>>(), &mut Scratch::default())
+        self.keeps(&targets.iter().map(Section::ideal).collect::<Vec<_>>(), &mut Scratch::default())
     }
 
-    fn keeps(&self, targets: &[Section], board: &[Biquad], scratch: &mut Scratch) -> bool {
+    /// Whether the transfer functions of a board's sections keep it.
+    pub fn keeps(&self, board: &[Biquad], scratch: &mut Scratch) -> bool {
         match self {
             Wanted::Mask(gauge) => gauge.passes(board, scratch, &mut vec![false; gauge.len()]),
-            Wanted::Within(yardstick, limit) => {
-                let stable = board.iter().zip(targets).all(|(h, target)| h.is_stable(target.shape.order()));
-                stable && yardstick.deviation(board).error <= *limit
-            }
+            Wanted::Within(within) => within.keeps(board, scratch.powers()),
+        }
+    }
+
+    /// The share of boards that keep it.
+    pub fn estimate(&self, built: &Built, tolerances: &Tolerances, sampling: &Sampling) -> Yield {
+        match self {
+            Wanted::Mask(gauge) => estimate(built, tolerances, gauge, sampling),
+            Wanted::Within(within) => counted(built, tolerances, sampling, 1, &|board, scratch, broken| {
+                let kept = within.keeps(board, scratch.powers());
+                broken.fill(!kept);
+                kept
+            }),
         }
     }
 }
@@ -116,7 +128,6 @@ struct Candidate {
 }
 
 fn step(rows: &[Built], wanted: &Wanted, tolerances: &Tolerances, sampling: &Sampling) -> Option<Step> {
-    let targets = rows.first()?.targets();
     let mut candidates: Vec<Candidate> = (rows.iter().enumerate())
         .map(|(row, built)| Candidate {
             row,
@@ -134,7 +145,7 @@ fn step(rows: &[Built], wanted: &Wanted, tolerances: &Tolerances, sampling: &Sam
             let (mut numbers, mut board, mut scratch) = (stream.clone(), Vec::new(), Scratch::default());
             for _ in 0..count {
                 candidate.boards.draw(&mut numbers, &mut board);
-                candidate.passed += u64::from(wanted.keeps(&targets, &board, &mut scratch));
+                candidate.passed += u64::from(wanted.keeps(&board, &mut scratch));
             }
             candidate.interval = clopper_pearson(candidate.passed, drawn, sampling.confidence);
         });

@@ -6,11 +6,11 @@ use super::drift::{Climate, Drift, drift};
 use super::levels::{LevelConditions, Levels, levels};
 use super::mask::{Gauge, Mask, Standing};
 use super::real::{Real, RealConditions, real};
-use super::spread::{Deviations, Spread, deviations, spread};
+use super::spread::{Deviations, Spread, deviations, response_yardstick, spread};
 use super::tolerance::Tolerances;
 use super::trim::{Trim, trims};
 use super::yields::{Sampling, Yield, estimate};
-use crate::target::{Biquad, Criterion, Deviation, Figures, Measure, Section};
+use crate::target::{Biquad, Criterion, Deviation, Figures, Section};
 
 /// Under what a board is looked at.
 #[derive(Clone, Debug, PartialEq)]
@@ -77,8 +77,13 @@ impl Vetted {
     /// Whether the nominal error is below a third of the spread that the tolerances cause: then a better nominal fit is
     /// lost in them.
     pub fn nominal_is_lost_in_spread(&self) -> bool {
-        self.nominal.error < self.deviations.response.0 / 3.0
+        is_lost_in_spread(self.nominal.error, self.deviations.response.0)
     }
+}
+
+/// Whether a nominal error is below a third of a spread.
+pub(super) fn is_lost_in_spread(error: f64, spread: f64) -> bool {
+    error < spread / 3.0
 }
 
 /// How many boards are drawn for the spread.
@@ -86,12 +91,8 @@ const SPREAD_BOARDS: usize = 20_000;
 
 /// Looks at a board under all aspects.
 pub fn vet(built: &Built, conditions: &Conditions) -> Vetted {
-    let mut criterion = built.criterion;
-    if matches!(criterion.measure, Measure::Weighted(_)) {
-        criterion.measure = Measure::Decibel;
-    }
-    let targets = built.targets();
-    let yardstick = crate::target::Yardstick::new(&targets, criterion);
+    let yardstick = response_yardstick(&built.targets(), built.criterion);
+    let criterion = Criterion { measure: yardstick.criterion().measure, ..built.criterion };
     let nominal = built.nominal();
     let tolerances = &conditions.tolerances;
     let mask = conditions.mask.as_ref().map(|mask| against(built, mask, criterion, &nominal, conditions));
@@ -138,7 +139,7 @@ fn against(
     };
     let worst = (!mask.limits.is_empty()).then(|| worst_case(built, &conditions.tolerances, &tested, &broken));
     MaskResult {
-        frequencies: tested.len(),
+        frequencies: gauge.frequencies(),
         target: gauge.standings(&ideal),
         nominal: gauge.standings(nominal),
         yields: estimate(built, &conditions.tolerances, &gauge, &conditions.sampling),

@@ -6,6 +6,7 @@ use super::built::Built;
 use super::interval::clopper_pearson;
 use super::mask::{Gauge, Scratch};
 use super::tolerance::{Boards, Draw, Tolerances};
+use crate::target::Biquad;
 
 /// How boards are drawn.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -57,8 +58,22 @@ const ROUND: usize = 8;
 /// Boards are drawn in blocks, each from its own stretch of one stream of numbers, and counted block by block: the result
 /// is the same for any number of threads. After every eight blocks it is looked whether the interval is narrow enough.
 pub fn estimate(built: &Built, tolerances: &Tolerances, gauge: &Gauge, sampling: &Sampling) -> Yield {
+    counted(built, tolerances, sampling, gauge.len(), &|board, scratch, broken| gauge.passes(board, scratch, broken))
+}
+
+/// Whether a board passes; marks each limit that it breaks.
+type Judge<'a> = dyn Fn(&[Biquad], &mut Scratch, &mut [bool]) -> bool + Sync + 'a;
+
+/// The same for whatever a board is judged by, which has so many limits.
+pub(super) fn counted(
+    built: &Built,
+    tolerances: &Tolerances,
+    sampling: &Sampling,
+    limits: usize,
+    passes: &Judge,
+) -> Yield {
     let boards = Boards::new(built, tolerances);
-    let mut found = Yield { boards: 0, passed: 0, interval: (0.0, 1.0), broken: vec![0; gauge.len()] };
+    let mut found = Yield { boards: 0, passed: 0, interval: (0.0, 1.0), broken: vec![0; limits] };
     let mut stream = Draw::new(sampling.seed, tolerances.distribution);
     while found.boards < sampling.boards {
         let mut blocks = Vec::new();
@@ -70,7 +85,7 @@ pub fn estimate(built: &Built, tolerances: &Tolerances, gauge: &Gauge, sampling:
             left -= count;
         }
         let counted: Vec<(u64, Vec<u64>)> =
-            blocks.into_par_iter().map(|(draw, count)| block(boards.clone(), draw, count, gauge)).collect();
+            blocks.into_par_iter().map(|(draw, count)| block(boards.clone(), draw, count, limits, passes)).collect();
         for (passed, broken) in counted {
             found.passed += passed;
             found.broken.iter_mut().zip(broken).for_each(|(sum, more)| *sum += more);
@@ -85,13 +100,13 @@ pub fn estimate(built: &Built, tolerances: &Tolerances, gauge: &Gauge, sampling:
 }
 
 /// How many boards of a block pass, and how many break each limit.
-fn block(mut boards: Boards, mut draw: Draw, count: u64, gauge: &Gauge) -> (u64, Vec<u64>) {
+fn block(mut boards: Boards, mut draw: Draw, count: u64, limits: usize, passes: &Judge) -> (u64, Vec<u64>) {
     let (mut scratch, mut board) = (Scratch::default(), Vec::new());
-    let mut broken = vec![false; gauge.len()];
-    let (mut passed, mut sums) = (0, vec![0; gauge.len()]);
+    let mut broken = vec![false; limits];
+    let (mut passed, mut sums) = (0, vec![0; limits]);
     for _ in 0..count {
         boards.draw(&mut draw, &mut board);
-        if gauge.passes(&board, &mut scratch, &mut broken) {
+        if passes(&board, &mut scratch, &mut broken) {
             passed += 1;
         } else {
             sums.iter_mut().zip(&broken).for_each(|(sum, broken)| *sum += u64::from(*broken));

@@ -11,6 +11,7 @@ use crate::target::Shape;
 
 pub use super::sections_args::SectionsArgs;
 pub use super::tighten_args::TightenArgs;
+pub use super::tolerance_args::{ToleranceArgs, YieldArgs};
 
 /// From ideal filter sections to resistors and capacitors that can be bought, with a proof.
 #[derive(Debug, Parser)]
@@ -68,12 +69,14 @@ Ranges are written FROM..TO. What is given here wins over the job file, in all i
 Examples:
   roundwell shortlist job.ron --format json --out shortlist.json
   roundwell shortlist --shape low-pass --f0 1k --q 0.7071 --gain 1 --circuit tow-thomas
+  roundwell shortlist job.ron --yield --mask mask.ron --alternatives 3 --rank yield
 
-Exit codes: 0 found, 1 internal fault, 2 bad input or usage, 3 nothing within the limits, 130 interrupted.";
+Exit codes: 0 found, 1 internal fault, 2 bad input or usage, 3 nothing within the limits, 130 interrupted.
+With --yield, 3 also where the target, or every row with its nominal parts, misses what is wanted.";
 
 /// The long help of `shortlist`: with the columns of the CSV format.
 fn shortlist_long_help() -> String {
-    let columns = CSV_COLUMNS.map(|(name, meaning)| format!("  {name:<18} {meaning}"));
+    let columns = CSV_COLUMNS.map(|(name, meaning)| format!("  {name:<21} {meaning}"));
     format!(
         "{SHORTLIST_HELP}\n\nColumns of the CSV format; numbers in SI units, empty where not known:\n{}",
         columns.join("\n")
@@ -110,10 +113,12 @@ fn stock_long_help() -> String {
 }
 
 const VET_HELP: &str = "\
-A mask file (RON) holds limits of the magnitude in dB and, for single sections, of f0, q, fz and depth:
+A mask file (RON) holds limits of the magnitude in dB, of the group delay and, for single sections, of
+f0, q, fz and depth:
   (
       reference: Dc,
       limits: [(from: \"10 Hz\", to: \"700 Hz\", lower: \"-1 dB\", upper: \"1 dB\")],
+      delays: [(from: \"10 Hz\", to: \"500 Hz\", lower: \"400 us\", upper: \"450 us\")],
       figures: [(section: \"A\", f0: (\"950 Hz\", \"1050 Hz\"), q: (0.5, 0.6))],
   )
 The reference is Absolute (where none is written), Dc, Peak, or At(a frequency).
@@ -163,6 +168,9 @@ pub struct ShortlistArgs {
 
     #[command(flatten)]
     pub goals: GoalArgs,
+
+    #[command(flatten)]
+    pub yields: YieldArgs,
 
     #[command(flatten)]
     pub output: OutputArgs,
@@ -310,11 +318,11 @@ pub struct GoalArgs {
     /// Rows to list at most [default: 10].
     #[arg(long, value_name = "COUNT")]
     pub rows: Option<String>,
-    /// Further sets to list for each number of part numbers [default: 0].
+    /// Further sets to list for each number of part numbers; with --yield those of them that yield more [default: 0].
     #[arg(long, value_name = "COUNT")]
     pub alternatives: Option<String>,
-    /// What the rows are ranked by first; cost then takes part in the front [default: error].
-    #[arg(long, value_parser = ["error", "part-numbers", "to-buy", "cost"])]
+    /// What the rows are ranked by first; cost then takes part in the front, yield and spread need --yield [default: error].
+    #[arg(long, value_parser = ["error", "part-numbers", "to-buy", "cost", "placed-parts", "yield", "spread"])]
     pub rank: Option<String>,
     /// How long to search, such as 10s [default: to the end].
     #[arg(long, value_name = "TIME")]
@@ -462,21 +470,11 @@ pub struct VetArgs {
     /// Circuit file (.ron), where the list uses a circuit of your own; repeatable.
     #[arg(long, value_name = "FILE")]
     pub circuit: Vec<PathBuf>,
-    /// Mask file (RON) with the limits that the response has to keep.
+    /// Mask file (RON) with the limits that the response has to keep [default: the mask of the list].
     #[arg(long, value_name = "FILE")]
     pub mask: Option<PathBuf>,
-    /// Tolerance of the resistors for which the stock list gives none, to either side.
-    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "1%")]
-    pub resistor_tolerance: String,
-    /// Tolerance of the capacitors for which the stock list gives none, to either side.
-    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "5%")]
-    pub capacitor_tolerance: String,
-    /// How errors are spread: evenly, or normally with a third of the tolerance as standard deviation and cut off at it.
-    #[arg(long, default_value = "uniform", value_parser = ["uniform", "normal"])]
-    pub distribution: String,
-    /// The share of the tolerance by which all parts of one part number are off together, as from one reel.
-    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "0%")]
-    pub reel_share: String,
+    #[command(flatten)]
+    pub tolerances: ToleranceArgs,
     /// Temperatures between which the board has to work, °C; the nominal values hold at 25 °C.
     #[arg(long, value_name = "FROM..TO", allow_hyphen_values = true)]
     pub temperature: Option<String>,
@@ -532,14 +530,11 @@ pub struct VetArgs {
     #[arg(long)]
     pub trim: bool,
     /// Boards to draw at most for the yield.
-    #[arg(long, value_name = "COUNT", allow_hyphen_values = true, default_value = "100000")]
+    #[arg(long, visible_alias = "draws", value_name = "COUNT", allow_hyphen_values = true, default_value = "100000")]
     pub boards: String,
     /// Draw no more once the interval of the yield is this narrow to either side; 0 draws all.
     #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "0.5%")]
     pub interval: String,
-    /// Seed of the draw.
-    #[arg(long, value_name = "NUMBER", allow_hyphen_values = true, default_value = "1")]
-    pub seed: String,
     /// How to write it.
     #[arg(long, value_enum, default_value_t)]
     pub format: ShowFormat,

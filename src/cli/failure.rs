@@ -64,6 +64,15 @@ impl Failure {
         Failure::input(Fault::at("", message).help(help))
     }
 
+    /// The last fault of an input, for a text that names it; any other failure as one.
+    pub fn into_fault(self) -> Fault {
+        let fault = match &self {
+            Failure::Input(texts) => texts.last().and_then(|text| text.faults.last()).cloned(),
+            _ => None,
+        };
+        fault.unwrap_or_else(|| Fault::at("", self.show(false).trim_end().to_string()))
+    }
+
     /// The exit code: 1 for faults of the program, 2 for everything that the user can put right.
     pub fn exit_code(&self) -> u8 {
         match self {

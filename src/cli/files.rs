@@ -51,13 +51,7 @@ pub fn read_bytes(path: &Path) -> Result<Vec<u8>, Failure> {
 /// # Errors
 /// What cannot be read, or is no stock list; without its place.
 pub fn read_stock(path: &Path) -> Result<Stock, Fault> {
-    let bytes = read_bytes(path).map_err(|failure| match failure {
-        Failure::Input(mut texts) => {
-            let fault = texts.pop().and_then(|mut text| text.faults.pop());
-            fault.unwrap_or_else(|| Fault::at("", format!("cannot read {}", path.display())))
-        }
-        other => Fault::at("", other.show(false).trim_end().to_string()),
-    })?;
+    let bytes = read_bytes(path).map_err(Failure::into_fault)?;
     let name = if path == Path::new("-") { "standard input".to_string() } else { path.display().to_string() };
     Stock::read(&bytes).map_err(|error| {
         let help = "name a CSV file with a header such as kind,value,quantity; `roundwell stock FILE` reads one back";

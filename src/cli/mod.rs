@@ -14,6 +14,7 @@ mod stock;
 mod swap;
 mod tighten;
 mod tighten_args;
+mod tolerance_args;
 mod values;
 mod vet;
 mod vet_settings;

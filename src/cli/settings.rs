@@ -6,13 +6,15 @@ use std::time::Duration;
 use super::args::{DrawerArgs, GoalArgs, PartsArgs, SectionArgs, ShortlistArgs, shape_flag};
 use super::failure::{Failure, Faulty};
 use super::files::{Circuits, is_file_name, read_stock, read_text};
+use super::vet::mask_of;
+use crate::analysis::{Mask, Order};
 use crate::job::{
-    Given, Job, JobFile, Joints, MeasureFile, PairsFile, Scalar, Scalars, SectionFile, ShelfFile, Shelves, Sign,
-    SlotFile, Slots, Untie, resolve,
+    Given, Job, JobFile, Joints, MeasureFile, PairsFile, RankFile, Scalar, Scalars, SectionFile, ShelfFile, Shelves,
+    Sign, SlotFile, Slots, Untie, resolve,
 };
 use crate::parts::Stock;
-use crate::search::{Joint, Problem, Rank};
-use crate::target::Shape;
+use crate::search::{Joint, Problem};
+use crate::target::{Section, Shape};
 use crate::text::{Fault, located};
 
 /// A job that can be searched.
@@ -22,6 +24,10 @@ pub struct Settings {
     pub problem: Problem,
     /// How long.
     pub time_limit: Option<Duration>,
+    /// What a board has to keep, where the job or a flag names a mask.
+    pub mask: Option<Mask>,
+    /// What the rows are put in order by once their yields are known.
+    pub order: Order,
 }
 
 impl Settings {
@@ -43,9 +49,10 @@ impl Settings {
         let built = Settings::of(&source, args, |job| {
             // What is built in is there, whatever the stock says.
             (job.stock, job.skip_bad_lines, job.boards, job.spares) = (None, None, None, None);
-            (job.buy, job.bar_class_2, job.rank) = (None, None, None);
+            (job.buy, job.bar_class_2, job.rank, job.mask) = (None, None, None, None);
         })?;
         let open = Settings::of(&source, args, |job| {
+            (job.mask, job.rank) = (None, job.rank.take().filter(|rank| rank.value.order() == Order::AsFound));
             let slots = job.sections.iter_mut().flat_map(|sections| &mut sections.value).flat_map(|s| &mut s.slots);
             slots.flat_map(|slots| &mut slots.value.0).for_each(|(_, slot)| slot.pin = None);
         })?;
@@ -79,13 +86,27 @@ impl Settings {
         edit(&mut job);
         let mut circuits = Circuits::new(source.folder());
         let stock = noted(&mut faults, source.stock(&job));
-        match resolve(&job, &mut |name| circuits.get(name), stock.as_ref()) {
-            Ok(Job { problem, time_limit }) if faults.is_empty() => Ok(Settings { problem, time_limit }),
+        let mask = noted(&mut faults, source.mask(&job));
+        let resolved = resolve(&job, &mut |name| circuits.get(name), stock.as_ref());
+        if let Some(given) = &job.rank
+            && given.value.order() != Order::AsFound
+            && !args.yields.yields
+        {
+            let path = given.flag.unwrap_or("rank");
+            let message = "rows are ranked by yield or spread only where these are computed";
+            faults.push(Fault::at(path, message).help("add --yield"));
+        }
+        let (problem, time_limit, order) = match resolved {
+            Ok(Job { problem, time_limit, order }) if faults.is_empty() => (problem, time_limit, order),
             resolved => {
                 faults.extend(resolved.err().unwrap_or_default());
-                Err(source.failure(faults, circuits.faulty, false))
+                return Err(source.failure(faults, circuits.faulty, false));
             }
-        }
+        };
+        // What a mask may limit is known once the sections are.
+        let targets: Vec<Section> = problem.sections.iter().map(|section| section.target.clone()).collect();
+        let mask = mask.map(|(path, text)| mask_of(&path, &text, &targets)).transpose()?;
+        Ok(Settings { problem, time_limit, mask, order })
     }
 }
 
@@ -115,18 +136,34 @@ impl Source {
         self.path.as_deref().and_then(Path::parent).map(Path::to_path_buf).unwrap_or_default()
     }
 
-    /// The stock list that the job names: from its own folder, or by a flag from the working folder.
-    fn stock(&self, job: &JobFile) -> Option<Result<Stock, Fault>> {
-        let Given { value, flag } = job.stock.as_ref()?;
+    /// A file that the job names: from its own folder, or by a flag from the working folder.
+    fn named(&self, given: &Given<Scalar>, key: &'static str, what: &str) -> Result<PathBuf, Fault> {
+        let Given { value, flag } = given;
         if value.text() == "-" && self.path.as_deref() == Some(Path::new("-")) {
-            let message = "the job and the stock list cannot both come from standard input";
-            return Some(Err(Fault::at(flag.unwrap_or("stock"), message).help("name one of them as a file")));
+            let message = format!("the job and the {what} cannot both come from standard input");
+            return Err(Fault::at(flag.unwrap_or(key), message).help("name one of them as a file"));
         }
-        let path = match flag {
+        Ok(match flag {
             Some(_) => PathBuf::from(value.text()),
             None => self.folder().join(value.text()),
+        })
+    }
+
+    /// The stock list that the job names.
+    fn stock(&self, job: &JobFile) -> Option<Result<Stock, Fault>> {
+        let given = job.stock.as_ref()?;
+        let at = |fault| Fault { path: given.flag.unwrap_or("stock").to_string(), ..fault };
+        Some(self.named(given, "stock", "stock list").and_then(|path| read_stock(&path).map_err(at)))
+    }
+
+    /// The mask file that the job names, and its text.
+    fn mask(&self, job: &JobFile) -> Option<Result<(PathBuf, String), Fault>> {
+        let given = job.mask.as_ref()?;
+        let read = |path: PathBuf| match read_text(&path) {
+            Ok(text) => Ok((path, text)),
+            Err(failure) => Err(Fault { path: given.flag.unwrap_or("mask").to_string(), ..failure.into_fault() }),
         };
-        Some(read_stock(&path).map_err(|fault| Fault { path: flag.unwrap_or("stock").to_string(), ..fault }))
+        Some(self.named(given, "mask", "mask").and_then(read))
     }
 
     /// Faults of the job, and before them those of the circuit files that it names.
@@ -236,6 +273,7 @@ fn lay_over(job: &mut JobFile, args: &ShortlistArgs) -> Vec<Fault> {
         pairs: (!pairs.is_empty()).then(|| Given::flag("--pairs", pairs_of(pairs, pairs_at_most))),
         rank: rank.as_deref().map(|rank| Given::flag("--rank", rank_of(rank))),
         own_set_per_board: given("--own-set-per-board", *own_set_per_board),
+        mask: args.yields.mask.as_deref().map(|path| Given::flag("--mask", path.to_string_lossy().as_ref())),
     };
     for section in job.sections.iter_mut().flat_map(|sections| &mut sections.value) {
         clear(&mut section.circuit, &over.circuit);
@@ -282,12 +320,15 @@ fn pairs_of(kinds: &[String], at_most: &Option<String>) -> PairsFile {
     }
 }
 
-fn rank_of(name: &str) -> Rank {
+fn rank_of(name: &str) -> RankFile {
     match name {
-        "part-numbers" => Rank::PartNumbers,
-        "to-buy" => Rank::ToBuy,
-        "cost" => Rank::Cost,
-        _ => Rank::Error,
+        "part-numbers" => RankFile::PartNumbers,
+        "to-buy" => RankFile::ToBuy,
+        "cost" => RankFile::Cost,
+        "placed-parts" => RankFile::PlacedParts,
+        "yield" => RankFile::Yield,
+        "spread" => RankFile::Spread,
+        _ => RankFile::Error,
     }
 }
 

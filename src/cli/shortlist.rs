@@ -2,14 +2,18 @@
 
 use std::time::Instant;
 
-use super::args::{Format, ShortlistArgs};
+use super::args::{Format, ShortlistArgs, YieldArgs};
 use super::failure::Failure;
 use super::output::Output;
 use super::progress::Watch;
 use super::settings::Settings;
+use super::tighten::{NOTHING_WANTED, WANTED_HELP, limit};
 use super::{FOUND, INTERRUPTED, NOTHING_WITHIN_LIMITS};
+use crate::analysis::{Gauge, Wanted, YieldQuestion, with_yields};
 use crate::report::{Record, write_csv, write_json, write_table};
 use crate::search::{Outcome, StopReason, shortlist};
+use crate::target::Section;
+use crate::text::Fault;
 use crate::verify::verify;
 
 /// Runs the command and gives its exit code.
@@ -18,8 +22,14 @@ use crate::verify::verify;
 /// Bad input, an output that cannot be written, a result that fails its check.
 pub fn run(args: &ShortlistArgs) -> Result<u8, Failure> {
     let settings = Settings::new(args)?;
+    let asked = question(&args.yields, &settings)?;
     let output = Output::open(args.output.out.as_deref())?;
-    let problem = &settings.problem;
+    let mut problem = settings.problem;
+    if asked.is_some() {
+        // The yield decides which rows are listed.
+        problem.goals.rows = MOST_ROWS;
+    }
+    let problem = &problem;
 
     let threads = args.output.threads.map_or(0, usize::from);
     let pool = rayon::ThreadPoolBuilder::new().num_threads(threads).build();
@@ -31,9 +41,47 @@ pub fn run(args: &ShortlistArgs) -> Result<u8, Failure> {
     watch.finish();
 
     verify(problem, &outcome).map_err(Failure::Unverified)?;
-    let record = Record::new(problem, &outcome, seconds);
+    let mask = settings.mask.as_ref();
+    let (record, code) = match asked {
+        None => (Record::new(problem, &outcome, seconds).with_mask(mask, problem), exit_code(&outcome)),
+        Some(asked) => {
+            let (outcome, yields) = pool.install(|| with_yields(problem, outcome, &asked));
+            let record = Record::new(problem, &outcome, seconds).with_mask(mask, problem);
+            let keeps = yields.target_keeps && yields.rows.iter().any(|row| row.nominal_keeps);
+            let code = match exit_code(&outcome) {
+                FOUND if !keeps => NOTHING_WITHIN_LIMITS,
+                code => code,
+            };
+            (record.with_yields(problem, mask, &asked, &yields), code)
+        }
+    };
     output.write(&written(&record, args.output.format, usize::from(args.output.width))?)?;
-    Ok(exit_code(&outcome))
+    Ok(code)
+}
+
+/// As many rows as a job can ask for.
+const MOST_ROWS: usize = 10_000;
+
+/// What is asked of the tolerances, where yields are.
+fn question(args: &YieldArgs, settings: &Settings) -> Result<Option<YieldQuestion>, Failure> {
+    let idle = |flag| Fault::at(flag, "says nothing without --yield").help("add --yield, or leave it out");
+    let mut faults: Vec<Fault> = args.idle().into_iter().map(idle).collect();
+    let mut asked = None;
+    if args.yields {
+        let (tolerances, sampling) = args.read(&mut faults);
+        let problem = &settings.problem;
+        let targets: Vec<Section> = problem.sections.iter().map(|section| section.target.clone()).collect();
+        let wanted = match (args.within.as_deref(), &settings.mask) {
+            (Some(within), _) => limit(within, &problem.criterion.measure)
+                .map(|(limit, _)| Wanted::within_of(limit, &targets, problem.criterion)),
+            (None, Some(mask)) => Ok(Wanted::Mask(Gauge::new(mask, &targets, problem.criterion))),
+            (None, None) => Err(Fault::at("--yield", NOTHING_WANTED).help(WANTED_HELP)),
+        };
+        let wanted = wanted.map_err(|fault| faults.push(fault)).ok();
+        let (order, rows) = (settings.order, problem.goals.rows);
+        asked = wanted.map(|wanted| YieldQuestion { wanted, tolerances, sampling, order, rows });
+    }
+    if faults.is_empty() { Ok(asked) } else { Err(Failure::inputs(faults)) }
 }
 
 fn exit_code(outcome: &Outcome) -> u8 {

@@ -7,9 +7,7 @@ use super::output::Output;
 use super::vet::{circuits_with, faulty, mask};
 use super::vet_settings::{Percent, whole};
 use super::{FOUND, NOTHING_WITHIN_LIMITS};
-use crate::analysis::{
-    Built, CAPACITOR_STEPS, Distribution, RESISTOR_STEPS, Sampling, Steps, Wanted, coarsest, tighten,
-};
+use crate::analysis::{Built, CAPACITOR_STEPS, RESISTOR_STEPS, Sampling, Steps, Wanted, coarsest, tighten};
 use crate::job::Listed;
 use crate::report::{TightenQuestion, TightenRecord, write_tighten_json, write_tighten_table};
 use crate::target::Measure;
@@ -25,25 +23,34 @@ struct Settings {
     rows: Option<Vec<usize>>,
 }
 
+/// There is neither a mask nor an error.
+pub(super) const NOTHING_WANTED: &str = "nothing says what a board has to keep";
+
+/// What to do about that.
+pub(super) const WANTED_HELP: &str =
+    "name a mask with --mask <FILE>, write one into the job, or give an error with --within";
+
 /// Runs the command and gives its exit code.
 ///
 /// # Errors
 /// Bad input, an output that cannot be written.
 pub fn run(args: &TightenArgs) -> Result<u8, Failure> {
     let Settings { steps, sampling, wanted_yield, rows } = settings(args)?;
-    let (title, rows, boards) = boards(args, rows)?;
+    let (listed, rows, boards) = boards(args, rows)?;
     let Some(first) = boards.first() else {
         let fault = Fault::at("--rows", "the list has no rows");
         return Err(Failure::input(
             fault.help("there is nothing to build: widen the shelves or the limits of the job"),
         ));
     };
-    let (wanted, within) = match (&args.mask, &args.within) {
-        (Some(path), _) => (Wanted::mask(&mask(path, first)?, first), None),
-        (None, within) => {
-            let (limit, unit) = limit(within.as_deref().unwrap_or_default(), first)?;
+    let (wanted, within) = match (&args.mask, &args.within, &listed.mask) {
+        (Some(path), ..) => (Wanted::mask(&mask(path, &first.targets())?, first), None),
+        (None, Some(within), _) => {
+            let (limit, unit) = limit(within, &first.criterion.measure).map_err(Failure::input)?;
             (Wanted::within(limit, first), Some((limit, unit)))
         }
+        (None, None, Some(mask)) => (Wanted::mask(mask, first), None),
+        (None, None, None) => return Err(Failure::input(Fault::at("", NOTHING_WANTED).help(WANTED_HELP))),
     };
     let output = Output::open(args.out.as_deref())?;
     let pool = rayon::ThreadPoolBuilder::new().num_threads(args.threads.map_or(0, usize::from)).build();
@@ -52,7 +59,7 @@ pub fn run(args: &TightenArgs) -> Result<u8, Failure> {
     let marked = wanted_yield.map_or(vec![false; found.len()], |yielding| coarsest(&found, yielding));
     let target_keeps = wanted.target_keeps(&first.targets());
     let asked = TightenQuestion {
-        title: &title,
+        title: &listed.title,
         rows: &rows,
         within,
         target_keeps,
@@ -74,25 +81,19 @@ pub fn run(args: &TightenArgs) -> Result<u8, Failure> {
 
 fn settings(args: &TightenArgs) -> Result<Settings, Failure> {
     let mut faults = Vec::new();
-    let share = Percent { name: "the share", most: 100.0, example: "70%" };
     let half_width = Percent { name: "the half-width", most: 49.0, example: "2%" };
     let wanted = Percent { name: "the wanted yield", most: 100.0, example: "95%" };
+    let (distribution, reel_share) = args.draw.read(&mut faults);
+    let half_width = half_width.read("--interval", &args.interval, &mut faults);
+    let boards = whole("--boards", &args.boards, 1, 10_000_000, &mut faults);
     let settings = Settings {
         steps: Steps {
             resistors: RESISTOR_STEPS.to_vec(),
             capacitors: CAPACITOR_STEPS.to_vec(),
-            distribution: match args.distribution.as_str() {
-                "normal" => Distribution::TruncatedNormal,
-                _ => Distribution::Uniform,
-            },
-            reel_share: share.read("--reel-share", &args.reel_share, &mut faults),
+            distribution,
+            reel_share,
         },
-        sampling: Sampling {
-            half_width: half_width.read("--interval", &args.interval, &mut faults),
-            boards: whole("--boards", &args.boards, 1, 10_000_000, &mut faults),
-            seed: whole("--seed", &args.seed, 0, u64::MAX, &mut faults),
-            ..Sampling::default()
-        },
+        sampling: args.draw.sampling(boards, half_width, &mut faults),
         wanted_yield: args.wanted_yield.as_deref().map(|text| wanted.read("--wanted-yield", text, &mut faults)),
         rows: args.rows.as_deref().map(|text| rows(text, &mut faults)),
     };
@@ -127,8 +128,8 @@ fn rows(text: &str, faults: &mut Vec<Fault>) -> Vec<usize> {
     list
 }
 
-/// The title of the list, the numbers of the rows that are asked for, and their boards.
-fn boards(args: &TightenArgs, rows: Option<Vec<usize>>) -> Result<(String, Vec<usize>, Vec<Built>), Failure> {
+/// The list, the numbers of the rows that are asked for, and their boards.
+fn boards(args: &TightenArgs, rows: Option<Vec<usize>>) -> Result<(Listed, Vec<usize>, Vec<Built>), Failure> {
     let text = read_text(&args.list)?;
     let failed = |faults| Failure::Input(vec![faulty(&args.list, &text, faults)]);
     let listed = Listed::parse(&text).map_err(failed)?;
@@ -141,13 +142,13 @@ fn boards(args: &TightenArgs, rows: Option<Vec<usize>>) -> Result<(String, Vec<u
             .map_err(|message| Failure::input(Fault::at("--rows", message).help("choose rows of the list")))?;
         boards.push(listed.built(row, &mut circuits).map_err(|faults| failed(located(&text, faults)))?);
     }
-    Ok((listed.title, rows, boards))
+    Ok((listed, rows, boards))
 }
 
-/// The error that a board may have, in the unit of the list's measure.
-fn limit(text: &str, built: &Built) -> Result<(f64, &'static str), Failure> {
-    let (read, most, unit, example) = match built.criterion.measure {
-        Measure::Vector => (parse_number(text), 1.0, "", "2% (the list's error is a vector error)"),
+/// The error that a board may have, in the unit of the measure.
+pub(super) fn limit(text: &str, measure: &Measure) -> Result<(f64, &'static str), Fault> {
+    let (read, most, unit, example) = match measure {
+        Measure::Vector => (parse_number(text), 1.0, "", "2% (the error is a vector error)"),
         _ => (parse_decibels(text), 100.0, "dB", "1dB"),
     };
     let help = format!("write one such as {example}");
@@ -158,5 +159,5 @@ fn limit(text: &str, built: &Built) -> Result<(f64, &'static str), Failure> {
         }
         Err(error) => Fault::at("--within", error.to_string()),
     };
-    Err(Failure::input(fault.help(help)))
+    Err(fault.help(help))
 }

@@ -5,6 +5,7 @@ use std::path::PathBuf;
 use clap::Args;
 
 use super::args::ShowFormat;
+use super::tolerance_args::DrawArgs;
 
 /// The help that follows the flags.
 pub const HELP: &str = "\
@@ -28,8 +29,8 @@ pub struct TightenArgs {
     /// Circuit file (.ron), where the list uses a circuit of your own; repeatable.
     #[arg(long, value_name = "FILE")]
     pub circuit: Vec<PathBuf>,
-    /// Mask file (RON) with the limits that a board has to keep.
-    #[arg(long, value_name = "FILE", required_unless_present = "within", conflicts_with = "within")]
+    /// Mask file (RON) with the limits that a board has to keep [default: the mask of the list].
+    #[arg(long, value_name = "FILE", conflicts_with = "within")]
     pub mask: Option<PathBuf>,
     /// In place of a mask: the error against the target that a board may have, such as 1dB.
     #[arg(long, value_name = "ERROR", allow_hyphen_values = true)]
@@ -37,21 +38,14 @@ pub struct TightenArgs {
     /// Mark the coarsest steps that reach this yield.
     #[arg(long, value_name = "PERCENT", allow_hyphen_values = true)]
     pub wanted_yield: Option<String>,
-    /// How errors are spread: evenly, or normally with a third of the tolerance as standard deviation and cut off at it.
-    #[arg(long, default_value = "uniform", value_parser = ["uniform", "normal"])]
-    pub distribution: String,
-    /// The share of the tolerance by which all parts of one part number are off together, as from one reel.
-    #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "0%")]
-    pub reel_share: String,
+    #[command(flatten)]
+    pub draw: DrawArgs,
     /// Boards to draw at most for each row and step.
-    #[arg(long, value_name = "COUNT", allow_hyphen_values = true, default_value = "100000")]
+    #[arg(long, visible_alias = "draws", value_name = "COUNT", allow_hyphen_values = true, default_value = "100000")]
     pub boards: String,
     /// Draw no more once the interval of the best row is this narrow to either side; 0 draws all.
     #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "1%")]
     pub interval: String,
-    /// Seed of the draw.
-    #[arg(long, value_name = "NUMBER", allow_hyphen_values = true, default_value = "1")]
-    pub seed: String,
     /// How to write it.
     #[arg(long, value_enum, default_value_t)]
     pub format: ShowFormat,

@@ -14,6 +14,7 @@ use crate::analysis::{Built, Conditions, Mask, vet};
 use crate::circuit::{Circuit, find};
 use crate::job::{Listed, read_mask};
 use crate::report::{VetRecord, write_vet_json, write_vet_table};
+use crate::target::Section;
 use crate::text::{Fault, located};
 
 /// Runs the command and gives its exit code.
@@ -22,8 +23,11 @@ use crate::text::{Fault, located};
 /// Bad input, an output that cannot be written.
 pub fn run(args: &VetArgs) -> Result<u8, Failure> {
     let VetSettings { tolerances, sampling, climate, real, levels } = VetSettings::new(args)?;
-    let (built, boards) = board(args)?;
-    let mask = args.mask.as_deref().map(|path| mask(path, &built)).transpose()?;
+    let (built, boards, listed) = board(args)?;
+    let mask = match args.mask.as_deref() {
+        Some(path) => Some(mask(path, &built.targets())?),
+        None => listed,
+    };
     let output = Output::open(args.out.as_deref())?;
     let pool = rayon::ThreadPoolBuilder::new().num_threads(args.threads.map_or(0, usize::from)).build();
     let pool = pool.map_err(|error| Failure::Threads(error.to_string()))?;
@@ -41,8 +45,8 @@ pub(super) fn faulty(path: &Path, text: &str, faults: Vec<Fault>) -> Faulty {
     Faulty { file, text: text.to_string(), faults, is_first_round: false }
 }
 
-/// The board of the row that is asked for, and of how many that differ it is the worst.
-fn board(args: &VetArgs) -> Result<(Built, usize), Failure> {
+/// The board of the row that is asked for, of how many that differ it is the worst, and the mask of the list.
+fn board(args: &VetArgs) -> Result<(Built, usize, Option<Mask>), Failure> {
     let text = read_text(&args.list)?;
     let failed = |faults| Failure::Input(vec![faulty(&args.list, &text, faults)]);
     let listed = Listed::parse(&text).map_err(failed)?;
@@ -51,7 +55,8 @@ fn board(args: &VetArgs) -> Result<(Built, usize), Failure> {
         .row(args.row)
         .map_err(|message| Failure::input(Fault::at("--row", message).help("choose a row of the list")))?;
     let built = listed.built(row, &mut circuits).map_err(|faults| failed(located(&text, faults)))?;
-    Ok((built, row.boards))
+    let boards = row.boards;
+    Ok((built, boards, listed.mask))
 }
 
 /// Finds a circuit by its identifier: among the files that are given, then in the library.
@@ -70,9 +75,13 @@ pub(super) fn circuits_with(
 }
 
 /// Reads a mask file.
-pub(super) fn mask(path: &Path, built: &Built) -> Result<Mask, Failure> {
-    let text = read_text(path)?;
-    read_mask(&text, &built.targets()).map_err(|faults| Failure::Input(vec![faulty(path, &text, faults)]))
+pub(super) fn mask(path: &Path, sections: &[Section]) -> Result<Mask, Failure> {
+    mask_of(path, &read_text(path)?, sections)
+}
+
+/// The mask of a text that was read from a file.
+pub(super) fn mask_of(path: &Path, text: &str, sections: &[Section]) -> Result<Mask, Failure> {
+    read_mask(text, sections).map_err(|faults| Failure::Input(vec![faulty(path, text, faults)]))
 }
 
 /// The record in the wanted format.

@@ -2,9 +2,7 @@
 
 use super::args::VetArgs;
 use super::failure::{Failure, Faulty};
-use crate::analysis::{
-    Climate, Distribution, KindDrift, LevelConditions, RealConditions, Sampling, Surroundings, Tolerances,
-};
+use crate::analysis::{Climate, KindDrift, LevelConditions, RealConditions, Sampling, Surroundings, Tolerances};
 use crate::parts::TemperatureCoefficient;
 use crate::text::Fault;
 use crate::units::{Kind, parse_frequency, parse_number, parse_part};
@@ -43,27 +41,11 @@ impl VetSettings {
 }
 
 fn read(args: &VetArgs, faults: &mut Vec<Fault>) -> VetSettings {
-    let tolerance = Percent { name: "a tolerance", most: 90.0, example: "1%" };
-    let tolerances = Tolerances {
-        resistors: tolerance.read("--resistor-tolerance", &args.resistor_tolerance, faults),
-        capacitors: tolerance.read("--capacitor-tolerance", &args.capacitor_tolerance, faults),
-        distribution: match args.distribution.as_str() {
-            "normal" => Distribution::TruncatedNormal,
-            _ => Distribution::Uniform,
-        },
-        reel_share: Percent { name: "the share", most: 100.0, example: "70%" }.read(
-            "--reel-share",
-            &args.reel_share,
-            faults,
-        ),
-    };
+    let tolerances = args.tolerances.read(faults);
     let half_width = Percent { name: "the half-width", most: 49.0, example: "0.5%" };
-    let sampling = Sampling {
-        half_width: half_width.read("--interval", &args.interval, faults),
-        boards: whole("--boards", &args.boards, 1, 100_000_000, faults),
-        seed: whole("--seed", &args.seed, 0, u64::MAX, faults),
-        ..Sampling::default()
-    };
+    let half_width = half_width.read("--interval", &args.interval, faults);
+    let boards = whole("--boards", &args.boards, 1, 100_000_000, faults);
+    let sampling = args.tolerances.draw.sampling(boards, half_width, faults);
     let (climate, real) = (climate(args, faults), real(args, faults));
     let around = real.map_or(Surroundings::IDEAL, |real| real.around);
     let levels = levels(args, around, faults);

@@ -9,6 +9,7 @@ use serde::de::{Deserializer, Error, MapAccess, SeqAccess, Visitor};
 
 use super::given::{Given, Scalar, Scalars};
 use super::shelf::Shelves;
+use crate::analysis::Order;
 use crate::search::{Joint, Rank};
 use crate::target::{Approximation, Reference, Shape};
 use crate::text::{self, Fault};
@@ -95,9 +96,11 @@ written! {
         /// Where two parts may take the place of one; nowhere.
         pairs: PairsFile,
         /// What the rows are ranked by; the error.
-        rank: Rank,
+        rank: RankFile,
         /// Whether each of several boards with measured parts may have other parts beside them; false.
         own_set_per_board: bool,
+        /// The mask file (RON) with the limits that a board has to keep, named from the folder of the job file.
+        mask: Scalar,
     }
 }
 
@@ -112,6 +115,48 @@ written! {
         slots: BTreeMap<String, Joints>,
         /// How many slots of a section may hold a pair; 1.
         at_most: Scalar,
+    }
+}
+
+/// What the rows are ranked by: a figure that the search knows, or one that follows from tolerances.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Deserialize)]
+#[serde(rename = "Rank")]
+pub enum RankFile {
+    /// The error.
+    Error,
+    /// Part numbers.
+    PartNumbers,
+    /// Part numbers that must be bought.
+    ToBuy,
+    /// The cost of the parts of a board.
+    Cost,
+    /// Placed parts.
+    PlacedParts,
+    /// The share of boards that keep what is wanted.
+    Yield,
+    /// The spread of the response.
+    Spread,
+}
+
+impl RankFile {
+    /// What the search ranks by; the error where the order comes from tolerances.
+    pub fn searched(self) -> Rank {
+        match self {
+            RankFile::Error | RankFile::Yield | RankFile::Spread => Rank::Error,
+            RankFile::PartNumbers => Rank::PartNumbers,
+            RankFile::ToBuy => Rank::ToBuy,
+            RankFile::Cost => Rank::Cost,
+            RankFile::PlacedParts => Rank::PlacedParts,
+        }
+    }
+
+    /// What follows from tolerances.
+    pub fn order(self) -> Order {
+        match self {
+            RankFile::Yield => Order::Yield,
+            RankFile::Spread => Order::Spread,
+            _ => Order::AsFound,
+        }
     }
 }
 

@@ -142,7 +142,7 @@ pub(super) fn goals(desk: &mut Desk, job: &JobFile, measure: Checked<Measure>, s
         rows: rows?.unwrap_or(usual.rows),
         alternatives: alternatives?.unwrap_or(usual.alternatives),
         impedance: impedance?.map(|(low, high)| (low.to_f64(), high.to_f64())),
-        rank: job.rank.as_ref().map_or(usual.rank, |given| given.value),
+        rank: job.rank.as_ref().map_or(usual.rank, |given| given.value.searched()),
         each_board_its_own: job.own_set_per_board.as_ref().is_some_and(|given| given.value),
     })
 }

@@ -6,7 +6,8 @@ use std::sync::Arc;
 
 use serde::Deserialize;
 
-use crate::analysis::{Built, BuiltPart, BuiltPiece, BuiltSection, Joint};
+use super::mask::RawMask;
+use crate::analysis::{Built, BuiltPart, BuiltPiece, BuiltSection, Joint, Mask};
 use crate::circuit::Circuit;
 use crate::target::{Criterion, Measure, Section, Shape, Weights};
 use crate::text::{Fault, located, suggestion};
@@ -27,6 +28,8 @@ pub struct Listed {
     pub title: String,
     /// By what the rows were judged; the band is always there.
     pub criterion: Criterion,
+    /// What a board has to keep, where the job said so.
+    pub mask: Option<Mask>,
     /// What was wanted, in signal order.
     pub sections: Vec<ListedSection>,
     /// The rows in the order of the file.
@@ -76,6 +79,8 @@ pub struct ListedPart {
 struct RawList {
     title: String,
     measure: RawMeasure,
+    #[serde(default)]
+    mask: Option<RawMask>,
     sections: Vec<RawSection>,
     shortlist: Vec<RawRow>,
 }
@@ -204,8 +209,17 @@ impl Listed {
                 faults.push(Fault::at(format!("shortlist[{k}].rank"), message).help("number the rows from 1"));
             }
         }
-        match sections.into_iter().collect::<Option<Vec<_>>>() {
-            Some(sections) if faults.is_empty() => Ok(Listed { title: raw.title, criterion, sections, rows }),
+        let sections: Option<Vec<ListedSection>> = sections.into_iter().collect();
+        let mut mask = None;
+        if let (Some(raw), Some(sections)) = (&raw.mask, &sections) {
+            let targets: Vec<Section> = sections.iter().map(|section| section.target.clone()).collect();
+            match raw.read(&targets) {
+                Ok(read) => mask = Some(read),
+                Err(more) => faults.extend(more),
+            }
+        }
+        match sections {
+            Some(sections) if faults.is_empty() => Ok(Listed { title: raw.title, criterion, mask, sections, rows }),
             _ => Err(located(text, faults)),
         }
     }

@@ -9,7 +9,7 @@ use super::given::Scalar;
 use crate::analysis::{Figure, FigureLimit, Limit, Mask, Reference, has_reference};
 use crate::target::{Section, Shape};
 use crate::text::{self, Fault, located, suggestion};
-use crate::units::{parse_decibels, parse_frequency, parse_number};
+use crate::units::{QuantityError, parse_decibels, parse_delay, parse_frequency, parse_number};
 
 #[derive(Deserialize)]
 #[serde(deny_unknown_fields, rename = "Mask")]
@@ -18,6 +18,8 @@ struct MaskFile {
     reference: ReferenceFile,
     #[serde(default)]
     limits: Vec<LimitFile>,
+    #[serde(default)]
+    delays: Vec<LimitFile>,
     #[serde(default)]
     figures: Vec<FigureFile>,
 }
@@ -65,30 +67,100 @@ struct FigureFile {
 pub fn read_mask(source: &str, sections: &[Section]) -> Result<Mask, Vec<Fault>> {
     let file: MaskFile = text::parse(source)?;
     let mut desk = Desk::default();
-    let mask = checked(&mut desk, &file, sections);
+    let mask = checked(&mut desk, &Place::job(), &file, sections);
     match mask {
         Ok(mask) if desk.faults.is_empty() => Ok(mask),
         _ => Err(located(source, desk.faults)),
     }
 }
 
-fn checked(desk: &mut Desk, file: &MaskFile, sections: &[Section]) -> Checked<Mask> {
-    let root = Place::job();
-    if file.limits.is_empty() && file.figures.is_empty() {
-        let help =
-            "write limits: [(from: \"10 Hz\", to: \"700 Hz\", lower: \"-0.5 dB\", upper: \"0.5 dB\")], for example";
-        return Err(desk.note(&root, "the mask has no limits", help));
-    }
-    let reference = reference(desk, &root.key("reference"), &file.reference, sections);
-    let limits: Vec<Checked<Limit>> =
-        (file.limits.iter().enumerate()).map(|(k, l)| limit(desk, &root.key("limits").item(k), l)).collect();
-    for (k, one) in limits.iter().enumerate() {
-        for (j, other) in limits[..k].iter().enumerate() {
-            if let (Ok(one), Ok(other)) = (one, other) {
-                compare(desk, &root.key("limits"), (j, other), (k, one));
+/// A mask as it stands in the JSON of a shortlist.
+#[derive(Deserialize)]
+pub(super) struct RawMask {
+    reference: String,
+    reference_hz: Option<f64>,
+    limits: Vec<RawPiece>,
+    #[serde(default)]
+    delays: Vec<RawPiece>,
+    #[serde(default)]
+    figures: Vec<RawFigures>,
+}
+
+#[derive(Deserialize)]
+struct RawPiece {
+    from_hz: f64,
+    to_hz: f64,
+    lower: Option<f64>,
+    upper: Option<f64>,
+}
+
+#[derive(Deserialize)]
+struct RawFigures {
+    section: String,
+    f0_hz: Option<[f64; 2]>,
+    q: Option<[f64; 2]>,
+    fz_hz: Option<[f64; 2]>,
+    depth_db: Option<f64>,
+}
+
+impl RawMask {
+    /// The mask for a cascade of these sections, with the checks of a mask file.
+    ///
+    /// # Errors
+    /// Those of [`read_mask`], by their paths under `mask`.
+    pub(super) fn read(&self, sections: &[Section]) -> Result<Mask, Vec<Fault>> {
+        // Written out without an exponent, and read back as the same number.
+        let scalar = |number: f64| Scalar::from(number.to_string().as_str());
+        let pair = |range: &Option<[f64; 2]>| range.map(|[low, high]| (scalar(low), scalar(high)));
+        let piece = |raw: &RawPiece| LimitFile {
+            from: scalar(raw.from_hz),
+            to: scalar(raw.to_hz),
+            lower: raw.lower.map(scalar),
+            upper: raw.upper.map(scalar),
+        };
+        let figures = |raw: &RawFigures| FigureFile {
+            section: raw.section.as_str().into(),
+            f0: pair(&raw.f0_hz),
+            q: pair(&raw.q),
+            fz: pair(&raw.fz_hz),
+            depth: raw.depth_db.map(scalar),
+        };
+        let mut desk = Desk::default();
+        let place = Place::job().key("mask");
+        let reference = match (self.reference.as_str(), self.reference_hz) {
+            ("absolute", _) => ReferenceFile::Absolute,
+            ("dc", _) => ReferenceFile::Dc,
+            ("peak", _) => ReferenceFile::Peak,
+            ("frequency", Some(hertz)) => ReferenceFile::At(scalar(hertz)),
+            (other, _) => {
+                let known = ["absolute", "dc", "peak", "frequency"];
+                let help = suggestion(other, "the references are", &known) + "; frequency needs reference_hz";
+                desk.note(&place.key("reference"), format!("`{other}` cannot be used as a reference"), help);
+                ReferenceFile::Absolute
             }
+        };
+        let file = MaskFile {
+            reference,
+            limits: self.limits.iter().map(piece).collect(),
+            delays: self.delays.iter().map(piece).collect(),
+            figures: self.figures.iter().map(figures).collect(),
+        };
+        match checked(&mut desk, &place, &file, sections) {
+            Ok(mask) if desk.faults.is_empty() => Ok(mask),
+            _ => Err(desk.faults),
         }
     }
+}
+
+fn checked(desk: &mut Desk, root: &Place, file: &MaskFile, sections: &[Section]) -> Checked<Mask> {
+    if file.limits.is_empty() && file.delays.is_empty() && file.figures.is_empty() {
+        let help =
+            "write limits: [(from: \"10 Hz\", to: \"700 Hz\", lower: \"-0.5 dB\", upper: \"0.5 dB\")], for example";
+        return Err(desk.note(root, "the mask has no limits", help));
+    }
+    let reference = reference(desk, &root.key("reference"), &file.reference, sections);
+    let limits = all_limits(desk, &root.key("limits"), &file.limits, &LEVELS);
+    let delays = all_limits(desk, &root.key("delays"), &file.delays, &DELAYS);
     let mut figures = Vec::new();
     for (k, figure) in file.figures.iter().enumerate() {
         let place = root.key("figures").item(k);
@@ -98,7 +170,7 @@ fn checked(desk: &mut Desk, file: &MaskFile, sections: &[Section]) -> Checked<Ma
         }
         figures.extend(figure_limits(desk, &place, figure, sections));
     }
-    Ok(Mask { reference: reference?, limits: limits.into_iter().collect::<Checked<_>>()?, figures })
+    Ok(Mask { reference: reference?, limits: limits?, delays: delays?, figures })
 }
 
 fn reference(desk: &mut Desk, place: &Place, file: &ReferenceFile, sections: &[Section]) -> Checked<Reference> {
@@ -118,11 +190,39 @@ fn reference(desk: &mut Desk, place: &Place, file: &ReferenceFile, sections: &[S
     Err(desk.note(place, message, "relate the limits to Peak, or to At(a frequency that passes)"))
 }
 
-fn limit(desk: &mut Desk, place: &Place, file: &LimitFile) -> Checked<Limit> {
+/// What limits are about.
+struct Subject {
+    unit: &'static str,
+    /// Reads one.
+    read: fn(&str) -> Result<f64, QuantityError>,
+}
+
+/// Limits of the magnitude.
+const LEVELS: Subject = Subject { unit: "dB", read: parse_decibels };
+
+/// Limits of the group delay.
+const DELAYS: Subject = Subject { unit: "s", read: parse_delay };
+
+/// All limits of one subject, none in the way of another.
+fn all_limits(desk: &mut Desk, place: &Place, files: &[LimitFile], subject: &Subject) -> Checked<Vec<Limit>> {
+    let limits: Vec<Checked<Limit>> =
+        files.iter().enumerate().map(|(k, file)| limit(desk, &place.item(k), file, subject)).collect();
+    for (k, one) in limits.iter().enumerate() {
+        for (j, other) in limits[..k].iter().enumerate() {
+            if let (Ok(one), Ok(other)) = (one, other) {
+                compare(desk, place, (j, other), (k, one), subject.unit);
+            }
+        }
+    }
+    limits.into_iter().collect()
+}
+
+fn limit(desk: &mut Desk, place: &Place, file: &LimitFile, subject: &Subject) -> Checked<Limit> {
+    let Subject { unit, read } = subject;
     let from = desk.value(&place.key("from"), &file.from, parse_frequency);
     let to = desk.value(&place.key("to"), &file.to, parse_frequency);
     let mut level = |key: &str, scalar: &Option<Scalar>| -> Checked<Option<f64>> {
-        scalar.as_ref().map(|scalar| desk.value(&place.key(key), scalar, parse_decibels)).transpose()
+        scalar.as_ref().map(|scalar| desk.value(&place.key(key), scalar, read)).transpose()
     };
     let (lower, upper) = (level("lower", &file.lower), level("upper", &file.upper));
     let (from, to, lower, upper) = (from?, to?, lower?, upper?);
@@ -131,9 +231,11 @@ fn limit(desk: &mut Desk, place: &Place, file: &LimitFile) -> Checked<Limit> {
         return Err(desk.note(place, message, "write the smaller frequency first"));
     }
     match (lower, upper) {
-        (None, None) => Err(desk.note(place, "the limit limits nothing", "give lower, upper or both, in dB")),
+        (None, None) => {
+            Err(desk.note(place, "the limit limits nothing", format!("give lower, upper or both, in {unit}")))
+        }
         (Some(lower), Some(upper)) if lower > upper => {
-            let message = format!("the lower limit of {lower} dB lies above the upper limit of {upper} dB");
+            let message = format!("the lower limit of {lower} {unit} lies above the upper limit of {upper} {unit}");
             Err(desk.note(place, message, "exchange the two"))
         }
         _ => Ok(Limit { from: from * TAU, to: to * TAU, lower, upper }),
@@ -141,7 +243,13 @@ fn limit(desk: &mut Desk, place: &Place, file: &LimitFile) -> Checked<Limit> {
 }
 
 /// Notes limits that overlap on one side, and lower ones above upper ones where they overlap.
-fn compare(desk: &mut Desk, place: &Place, (j, other): (usize, &Limit), (k, one): (usize, &Limit)) -> Option<Noted> {
+fn compare(
+    desk: &mut Desk,
+    place: &Place,
+    (j, other): (usize, &Limit),
+    (k, one): (usize, &Limit),
+    unit: &str,
+) -> Option<Noted> {
     let (from, to) = (one.from.max(other.from), one.to.min(other.to));
     // Pieces may touch: both hold at the frequency between them.
     if from > to || (from >= to && one.from < one.to && other.from < other.to) {
@@ -159,8 +267,8 @@ fn compare(desk: &mut Desk, place: &Place, (j, other): (usize, &Limit), (k, one)
     let crossed = |lower: Option<f64>, upper: Option<f64>| lower.zip(upper).filter(|(lower, upper)| lower > upper);
     let (lower, upper) = crossed(one.lower, other.upper).or(crossed(other.lower, one.upper))?;
     let message = format!(
-        "limits {} and {} contradict each other {range}: the lower limit of {lower} dB lies above the upper limit of \
-         {upper} dB",
+        "limits {} and {} contradict each other {range}: the lower limit of {lower} {unit} lies above the upper limit \
+         of {upper} {unit}",
         j + 1,
         k + 1
     );

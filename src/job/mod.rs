@@ -21,7 +21,8 @@ mod stock;
 mod tests;
 
 pub use file::{
-    FilterFile, JobFile, Joints, MeasureFile, PairsFile, Response, SectionFile, Sign, SlotFile, Slots, Untie,
+    FilterFile, JobFile, Joints, MeasureFile, PairsFile, RankFile, Response, SectionFile, Sign, SlotFile, Slots,
+    Untie,
 };
 pub use filter::resolve_filter;
 pub use given::{Given, Scalar, Scalars};

@@ -11,6 +11,7 @@ use super::section::{Circuits, Written, has_inexact_null};
 use super::shelf::shelf;
 use super::slots::{Board, ByKind};
 use super::stock::{Source, check_rank, pairs};
+use crate::analysis::Order;
 use crate::circuit::Circuit;
 use crate::parts::{Shelf, Stock};
 use crate::search::{Problem, SectionProblem};
@@ -27,6 +28,8 @@ pub struct Job {
     pub problem: Problem,
     /// How long to search, where the job says so.
     pub time_limit: Option<Duration>,
+    /// Whether the rows are ranked by what follows from tolerances.
+    pub order: Order,
 }
 
 /// Resolves a job: fills in the defaults, finds the circuits, chooses the outputs, puts the shelves together.
@@ -126,6 +129,7 @@ fn resolved(desk: &mut Desk, job: &JobFile, circuits: Circuits, stock: Option<&S
             supply: source.supply.clone(),
         },
         time_limit: time_limit?,
+        order: job.rank.as_ref().map_or(Order::AsFound, |given| given.value.order()),
     })
 }
 

@@ -161,8 +161,8 @@ fn buying(text: &str) -> Result<(Buying, Option<Kind>), String> {
 pub(super) fn check_rank(desk: &mut Desk, job: &JobFile, source: &Source, shelves: &[&Shelf]) {
     let Some(At { value: rank, place }) = Place::job().find("rank", &job.rank) else { return };
     let supply = &source.supply;
-    match rank {
-        Rank::Error | Rank::PartNumbers => {}
+    match rank.searched() {
+        Rank::Error | Rank::PartNumbers | Rank::PlacedParts => {}
         Rank::ToBuy if supply.has_stock() && supply.buying != Buying::Forbidden => {}
         Rank::ToBuy => {
             let help = if supply.has_stock() {

@@ -5,7 +5,7 @@ use std::io::{self, Write};
 use super::record::{ChosenRecord, PartRecord, Record, RowRecord};
 
 /// The columns, in order, with what each holds. Numbers are unrounded, in SI units; what is not known is empty.
-pub const CSV_COLUMNS: [(&str, &str); 31] = [
+pub const CSV_COLUMNS: [(&str, &str); 37] = [
     ("row", "`shortlist`, `ideal parts` or `nearest value to each`"),
     ("rank", "place in the shortlist, from 1"),
     ("marked", "whether the row has the fewest part numbers within the wanted error"),
@@ -37,6 +37,15 @@ pub const CSV_COLUMNS: [(&str, &str); 31] = [
     ("board", "number of the board, from 1, where measured parts make boards differ; empty where all are alike"),
     ("to_buy", "different parts of the row that must be bought; empty without a stock list"),
     ("cost", "what the parts of one board of the row cost, in the currency of the stock list"),
+    ("yield", "share of boards of the row that keep the mask or the error; this and the next only with --yield"),
+    ("yield_low", "lower end of its interval"),
+    ("yield_high", "upper end of its interval"),
+    (
+        "response_deviation",
+        "largest standard deviation of the response of the row, dB, or a ratio under the vector measure",
+    ),
+    ("nominal_keeps", "whether the nominal parts of the row keep the mask or the error"),
+    ("nominal_error_is_lost", "whether the nominal error of the row is below a third of that deviation"),
 ];
 
 /// Writes the record as CSV (RFC 4180 quoting, line feed as line end), columns as in [`CSV_COLUMNS`].
@@ -74,11 +83,12 @@ fn fields(
     board: Option<usize>,
     section: &ChosenRecord,
     part: &PartRecord,
-) -> [String; 31] {
+) -> [String; 37] {
     let number = |value: Option<f64>| value.map_or(String::new(), plain);
     let count = |value: Option<usize>| value.map_or(String::new(), |value| value.to_string());
     let levels: Vec<String> = section.levels_ohm.iter().map(|&level| plain(level)).collect();
     let achieved = &section.achieved;
+    let built = row.built.as_ref();
     [
         row.name.unwrap_or("shortlist").to_string(),
         count(row.rank),
@@ -111,6 +121,12 @@ fn fields(
         count(board),
         count(row.to_buy),
         number(row.cost),
+        number(built.map(|built| built.r#yield.share)),
+        number(built.map(|built| built.r#yield.interval[0])),
+        number(built.map(|built| built.r#yield.interval[1])),
+        number(built.map(|built| built.response_deviation)),
+        built.map_or(String::new(), |built| built.nominal_keeps.to_string()),
+        built.map_or(String::new(), |built| built.nominal_error_is_lost.to_string()),
     ]
 }
 

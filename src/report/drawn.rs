@@ -6,6 +6,7 @@ use serde::Serialize;
 
 use super::need::measured_notation;
 use super::record::{ChosenRecord, PieceRecord, RowRecord};
+use crate::analysis::listed_tolerance;
 use crate::parts::{Buying, Choice, Lot, Origin, Price, Supply};
 use crate::search::{BuiltBoard, Chosen, Part, Problem, Row, SectionProblem};
 use crate::units::{Kind, format_part};
@@ -89,18 +90,10 @@ pub(super) fn piece(supply: &Supply, kind: Kind, choice: Choice) -> PieceRecord 
         value: choice.value.to_f64(),
         notation: format_part(lot.map_or(choice.value, |lot| lot.nominal), kind),
         measured: lot.and_then(|lot| lot.measured).map(|value| value.to_f64()),
-        tolerance: lot.and_then(ratios),
+        tolerance: lot.and_then(listed_tolerance).map(|(low, high)| [low, high]),
         id: lot.and_then(|lot| lot.id()).map(str::to_owned),
         lines: lot.map_or(Vec::new(), |lot| lot.lines.iter().map(|line| line.line).collect()),
     }
-}
-
-/// The tolerance of a lot by its list as ratios; `None` for a measured part.
-fn ratios(lot: &Lot) -> Option<[f64; 2]> {
-    let (low, high) = lot.lines.first().filter(|_| lot.measured.is_none())?.tolerance?.limits(lot.nominal);
-    // What the way over ohms and farads leaves behind the twelfth place is taken out.
-    let ratio = |limit: f64| ((limit / lot.nominal.to_f64() - 1.0) * 1e12).round() / 1e12;
-    Some([ratio(low), ratio(high)])
 }
 
 /// How far what stands in a slot may be from its value: the value of the whole with all its parts at their lowest, and at

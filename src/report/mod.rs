@@ -6,6 +6,7 @@ mod drawn;
 mod filter;
 mod json;
 mod layout;
+mod mask;
 mod need;
 mod numbers;
 mod record;
@@ -20,6 +21,7 @@ mod vet_levels;
 mod vet_real;
 mod vet_table;
 mod vet_trim;
+mod yields;
 
 #[cfg(test)]
 mod sample;
@@ -32,6 +34,7 @@ pub use filter::{
 };
 pub use json::write_json;
 pub use layout::{Align, Column, grid, paragraph, printable, unbroken};
+pub use mask::{FiguresOfMask, MaskRecord, PieceOfMask};
 pub use need::{NEED_FORMAT, NeedLine, NeedRecord, Quantity, write_need_json, write_need_table};
 pub use numbers::{error_in_words, percent};
 pub use record::{
@@ -51,11 +54,12 @@ pub use tighten::{
 };
 pub use together::{BestRecord, BoundRecord, TogetherSearch};
 pub use vet::{
-    LimitRecord, MaskOutcome, OffPart, SpreadRecord, VET_FORMAT, VetPart, VetPiece, VetRecord, VetSection,
-    WorstRecord, YieldRecord, write_vet_json,
+    LimitRecord, MaskOutcome, OffPart, SpreadRecord, TolerancesRecord, VET_FORMAT, VetPart, VetPiece, VetRecord,
+    VetSection, WorstRecord, YieldRecord, write_vet_json,
 };
 pub use vet_drift::{DriftRecord, FigureDriftRecord, KindDriftRecord};
 pub use vet_levels::{LevelsRecord, PeakRecord};
 pub use vet_real::{RealRecord, RealSectionRecord, SlewRecord};
 pub use vet_table::write_vet_table;
 pub use vet_trim::TrimRecord;
+pub use yields::{BuiltRecord, YieldsRecord};

@@ -5,8 +5,10 @@ use std::f64::consts::TAU;
 use serde::Serialize;
 
 use super::drawn::{BoardRecord, SupplyRecord, TakenRecord, boards, class_2, piece, taken, tolerance};
+use super::mask::MaskRecord;
 use super::numbers::error_in_words;
 use super::together::TogetherSearch;
+use super::yields::{BuiltRecord, YieldsRecord};
 use crate::parts::{Shelf, Supply};
 use crate::search::{Chosen, End, Joint, Outcome, Part, Problem, Proof, Row, SectionProblem, SectionSummary};
 use crate::target::{Criterion, Figures, Measure, Shape, Weights};
@@ -31,11 +33,15 @@ pub struct Record {
     pub wanted: WantedRecord,
     /// The stock that was drawn on; `None` without a stock list.
     pub stock: Option<SupplyRecord>,
+    /// What a board has to keep, where the job or a flag names a mask.
+    pub mask: Option<MaskRecord>,
+    /// What was asked of the tolerances; `None` where no yields were asked for.
+    pub yields: Option<YieldsRecord>,
     /// The sections in signal order.
     pub sections: Vec<SectionRecord>,
     /// Rank of the row with the fewest part numbers within the wanted error.
     pub marked: Option<usize>,
-    /// The rows, best error first.
+    /// The rows in the order that was asked for, otherwise best error first.
     pub shortlist: Vec<RowRecord>,
     /// Rows to compare with: `ideal parts` (resistors unrounded) and `nearest value to each` (those, each rounded).
     pub references: Vec<RowRecord>,
@@ -235,6 +241,8 @@ pub struct RowRecord {
     pub alternative: bool,
     /// Whether the row is proved to be the best of its kind.
     pub proved: bool,
+    /// What tolerances make of it; `None` where no yields were asked for, and for unrounded parts.
+    pub built: Option<BuiltRecord>,
     /// The sections in signal order; where boards differ, those of the worst board.
     pub sections: Vec<ChosenRecord>,
     /// The boards, where measured parts make them differ.
@@ -345,6 +353,8 @@ impl Record {
                 impedance_ohm: problem.goals.impedance.map(|(from, to)| [from, to]),
             },
             stock: SupplyRecord::new(&problem.supply),
+            mask: None,
+            yields: None,
             sections: problem.sections.iter().map(SectionRecord::new).collect(),
             marked: outcome.marked.map(|index| index + 1),
             shortlist: outcome.rows.iter().zip(1..).map(|(found, rank)| row(found, Some(rank), None)).collect(),
@@ -535,6 +545,7 @@ impl RowRecord {
             placed_parts: row.placed_parts,
             alternative: row.alternative,
             proved: row.proved,
+            built: None,
             to_buy: row.to_buy,
             cost: row.cost.map(|millionths| millionths as f64 / 1e6),
             cost_millionths: row.cost,

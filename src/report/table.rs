@@ -7,6 +7,15 @@ use super::drawn::{SupplyRecord, money};
 use super::layout::{Column, grid, paragraph, printable, unbroken};
 use super::numbers::{count, decimal_column, error_in_words, level, rounded_part, short, span_of_time};
 use super::record::{ChosenRecord, MeasureRecord, PartRecord, Record, RowRecord, SectionSearch, TargetRecord};
+use super::yields;
+
+/// What the values do not hold for.
+const CAUTION: &str = "Values are computed for ideal parts and ideal op-amps: tolerances, op-amp bandwidth and the layout come \
+                       on top. Measure the build.";
+
+/// The same where tolerances are counted.
+const CAUTION_WITH_YIELDS: &str = "Values are computed for ideal parts and ideal op-amps, yield and spread for the tolerances \
+                                   above: temperature, ageing, op-amp bandwidth and the layout come on top. Measure the build.";
 
 /// Writes the record as text of at most `width` characters to the line (40 at least; a name that is longer is not
 /// broken).
@@ -21,12 +30,7 @@ pub fn write_table(record: &Record, width: usize, out: &mut dyn Write) -> io::Re
         figures(record, width),
         values(record, width),
         detail(record, width),
-        paragraph(
-            "",
-            "Values are computed for ideal parts and ideal op-amps: tolerances, op-amp bandwidth and the layout come on \
-             top. Measure the build.",
-            width,
-        ),
+        paragraph("", if record.yields.is_some() { CAUTION_WITH_YIELDS } else { CAUTION }, width),
     ];
     let filled: Vec<String> = blocks.into_iter().filter(|block| !block.is_empty()).collect();
     out.write_all(filled.join("\n").as_bytes())
@@ -87,7 +91,8 @@ fn searched(record: &Record, width: usize) -> String {
     if let Some(reason) = &search.reason {
         text += &paragraph("        ", &format!("Stopped: {reason}. What is not proved is marked ?."), width);
     }
-    text + &paragraph("Error:  ", &measure_in_words(&record.measure), width)
+    text += &paragraph("Error:  ", &measure_in_words(&record.measure), width);
+    text + &yields::conditions(record, width)
 }
 
 fn stock_in_words(stock: &SupplyRecord) -> String {
@@ -202,7 +207,7 @@ fn outcome(record: &Record, width: usize) -> String {
 }
 
 /// The rows of the table: shortlist, then references.
-fn rows(record: &Record) -> impl Iterator<Item = &RowRecord> {
+fn rows(record: &Record) -> impl Iterator<Item = &RowRecord> + Clone {
     record.shortlist.iter().chain(&record.references)
 }
 
@@ -234,14 +239,21 @@ fn figures(record: &Record, width: usize) -> String {
     }
     let counted = |number: Option<usize>| number.map_or("-".to_string(), |number| number.to_string());
     columns.push(Column::right("response\nerror dB", decimal_column(&collect(&|row| row.response_error_db))));
+    let mut detail = Vec::new();
     if rows(record).any(|row| row.error_at_hz.is_some()) {
-        columns.push(Column::right("largest\nat", rows(record).map(worst_frequency).collect()));
+        detail.push(Column::right("largest\nat", rows(record).map(worst_frequency).collect()));
+    }
+    let misses = collect(&|row| row.worst_miss.map(|miss| 100.0 * miss));
+    detail.push(Column::right("worst\nmiss %", decimal_column(&misses)));
+    // Where there are yields, what is decided by stands together, and the detail comes last.
+    if record.yields.is_none() {
+        columns.append(&mut detail);
     }
     columns.extend([
-        Column::right("worst\nmiss %", decimal_column(&collect(&|row| row.worst_miss.map(|miss| 100.0 * miss)))),
         Column::right("part\nnumbers", rows(record).map(|row| counted(row.part_numbers)).collect()),
         Column::right("placed\nparts", rows(record).map(|row| row.placed_parts.to_string()).collect()),
     ]);
+    columns.extend(yields::columns(record, rows(record)));
     if record.stock.as_ref().is_some_and(|stock| stock.most_to_buy != Some(0)) {
         columns.push(Column::right("to\nbuy", rows(record).map(|row| counted(row.to_buy)).collect()));
     }
@@ -250,13 +262,18 @@ fn figures(record: &Record, width: usize) -> String {
         let costs = rows(record).map(|row| money(row.cost_millionths)).collect();
         columns.push(Column::right(format!("cost\n{}", printable(currency)), costs));
     }
+    columns.append(&mut detail);
     let mut text = grid(&columns, 1, width);
     if record.marked.is_some() {
         let wanted = error_in_words(record.measure.unit, record.wanted.wanted_error);
         text += &paragraph("* ", &format!("fewest part numbers within the wanted error of {wanted}"), width);
     }
     if record.shortlist.iter().any(|row| row.alternative) {
-        text += &paragraph("+ ", "an alternative: another row is as good or better in every respect", width);
+        let line = match record.yields {
+            None => "an alternative: another row is as good or better in every respect",
+            Some(_) => "an alternative: another row is as good or better in every respect but the yield",
+        };
+        text += &paragraph("+ ", line, width);
     }
     if record.search.more_rows > 0 {
         let line = format!("{} more, not listed: ask for more rows", record.search.more_rows);
@@ -265,7 +282,7 @@ fn figures(record: &Record, width: usize) -> String {
     if record.shortlist.iter().any(|row| is_open(record, row)) {
         text += &paragraph("? ", "not proved: the search ended before better sets were ruled out", width);
     }
-    text
+    text + &yields::remarks(record, width)
 }
 
 /// Where the error is largest; nowhere in particular where it is nothing but rounding.

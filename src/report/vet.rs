@@ -11,10 +11,10 @@ use super::vet_levels::LevelsRecord;
 use super::vet_real::RealRecord;
 use super::vet_trim::TrimRecord;
 use crate::analysis::{
-    Built, BuiltPiece, Conditions, Distribution, Figure, FigureLimit, Limit, Mask, MaskResult, Quantiles, Reference,
+    Built, BuiltPiece, Conditions, Distribution, Figure, FigureLimit, Limit, Mask, MaskResult, Quantiles, Sampling,
     Standing, Tolerances, Vetted, WorstCase, Yield,
 };
-use crate::target::Figures;
+use crate::target::{Figures, Section};
 use crate::units::{Kind, format_part};
 
 /// The name and version of the JSON format: keys may be added to it, none is renamed or removed.
@@ -139,19 +139,19 @@ pub struct MaskOutcome {
 /// One limit of a mask.
 #[derive(Clone, Debug, PartialEq, Serialize)]
 pub struct LimitRecord {
-    /// `magnitude`, or the figure: `f0`, `q`, `fz` or `depth`.
+    /// `magnitude`, `delay` for the group delay, or the figure: `f0`, `q`, `fz` or `depth`.
     pub what: &'static str,
     /// The section of a figure.
     pub section: Option<String>,
-    /// Where a limit of the magnitude begins, Hz.
+    /// Where a limit of the magnitude or of the group delay begins, Hz.
     pub from_hz: Option<f64>,
     /// Where it ends, Hz.
     pub to_hz: Option<f64>,
-    /// The lower side: dB for magnitudes and depths, Hz for frequencies, a plain ratio for Q.
+    /// The lower side: dB for magnitudes and depths, s for group delays, Hz for frequencies, a plain ratio for Q.
     pub lower: Option<f64>,
     /// The upper side.
     pub upper: Option<f64>,
-    /// The room that the ideal target leaves, dB, or relative for f0, Q and fz; negative where the limit is broken.
+    /// The room that the ideal target leaves, dB, s for group delays, or relative for f0, Q and fz; negative where the limit is broken.
     pub target_margin: Option<f64>,
     /// Where it is least, Hz.
     pub target_margin_at_hz: Option<f64>,
@@ -260,7 +260,7 @@ pub struct OffPart {
 }
 
 /// The frequency of an angular frequency, without what the detour over 2π left in the last digits.
-fn hertz(w: f64) -> f64 {
+pub(super) fn hertz(w: f64) -> f64 {
     let f = w / TAU;
     format!("{f:.13e}").parse().unwrap_or(f)
 }
@@ -296,15 +296,7 @@ impl VetRecord {
                 floor_db: criterion.floor_db,
                 ignore_gain: criterion.ignore_gain,
             },
-            tolerances: TolerancesRecord {
-                resistors: tolerances.resistors,
-                capacitors: tolerances.capacitors,
-                distribution: match tolerances.distribution {
-                    Distribution::Uniform => "uniform",
-                    Distribution::TruncatedNormal => "normal",
-                },
-                reel_share: tolerances.reel_share,
-            },
+            tolerances: TolerancesRecord::new(tolerances),
             nominal_error: known(found.nominal.error),
             nominal_error_at_hz: found.nominal.at.map(hertz),
             mask: conditions
@@ -380,27 +372,46 @@ impl VetSection {
     }
 }
 
+impl TolerancesRecord {
+    pub(super) fn new(tolerances: &Tolerances) -> TolerancesRecord {
+        TolerancesRecord {
+            resistors: tolerances.resistors,
+            capacitors: tolerances.capacitors,
+            distribution: match tolerances.distribution {
+                Distribution::Uniform => "uniform",
+                Distribution::TruncatedNormal => "normal",
+            },
+            reel_share: tolerances.reel_share,
+        }
+    }
+}
+
+impl YieldRecord {
+    pub(super) fn new(found: &Yield, sampling: &Sampling) -> YieldRecord {
+        YieldRecord {
+            share: found.share(),
+            interval: [found.interval.0, found.interval.1],
+            confidence: sampling.confidence,
+            boards: found.boards,
+            passed: found.passed,
+            seed: sampling.seed,
+        }
+    }
+}
+
 impl MaskOutcome {
     fn new(built: &Built, mask: &Mask, result: &MaskResult, conditions: &Conditions) -> MaskOutcome {
-        let (reference, reference_hz) = match mask.reference {
-            Reference::Absolute => ("absolute", None),
-            Reference::Dc => ("dc", None),
-            Reference::Peak => ("peak", None),
-            Reference::At(w) => ("frequency", Some(hertz(w))),
-        };
-        let standings = result.target.iter().zip(&result.nominal).zip(&result.yields.broken);
-        let limits = mask.limits.iter().map(magnitude_limit);
-        let figures = mask.figures.iter().map(|limit| figure_limit(built, limit));
-        let limits = limits.chain(figures).zip(standings).map(|(limit, ((target, nominal), broken))| LimitRecord {
-            target_margin: known(target.margin),
-            target_margin_at_hz: target.at.map(hertz),
+        let (reference, reference_hz) = super::mask::reference(mask.reference);
+        let rest = result.nominal.iter().zip(&result.yields.broken);
+        let limits = limits(&built.targets(), mask, &result.target).into_iter().zip(rest);
+        let limits = limits.map(|(limit, (nominal, broken))| LimitRecord {
             nominal_margin: known(nominal.margin),
             nominal_margin_at_hz: nominal.at.map(hertz),
             broken: *broken,
             ..limit
         });
         let all_met = |standings: &[Standing]| standings.iter().all(Standing::is_met);
-        let Yield { boards, passed, interval, .. } = result.yields;
+        let Yield { boards, passed, .. } = result.yields;
         MaskOutcome {
             reference,
             reference_hz,
@@ -412,14 +423,7 @@ impl MaskOutcome {
                 _ => None,
             },
             limits: limits.collect(),
-            r#yield: YieldRecord {
-                share: result.yields.share(),
-                interval: [interval.0, interval.1],
-                confidence: conditions.sampling.confidence,
-                boards,
-                passed,
-                seed: conditions.sampling.seed,
-            },
+            r#yield: YieldRecord::new(&result.yields, &conditions.sampling),
             worst_case: result.worst.as_ref().map(|worst| WorstRecord::new(built, worst)),
         }
     }
@@ -439,12 +443,26 @@ const BLANK: LimitRecord = LimitRecord {
     broken: 0,
 };
 
-fn magnitude_limit(limit: &Limit) -> LimitRecord {
-    let Limit { from, to, lower, upper } = *limit;
-    LimitRecord { from_hz: Some(hertz(from)), to_hz: Some(hertz(to)), lower, upper, ..BLANK }
+/// The limits of a mask, and how the ideal target stands against each.
+pub(super) fn limits(targets: &[Section], mask: &Mask, standings: &[Standing]) -> Vec<LimitRecord> {
+    let limits = mask.limits.iter().map(|limit| over_frequency("magnitude", limit));
+    let delays = mask.delays.iter().map(|limit| over_frequency("delay", limit));
+    let figures = mask.figures.iter().map(|limit| figure_limit(targets, limit));
+    let all = limits.chain(delays).chain(figures).zip(standings);
+    let limit = |(limit, target): (LimitRecord, &Standing)| LimitRecord {
+        target_margin: known(target.margin),
+        target_margin_at_hz: target.at.map(hertz),
+        ..limit
+    };
+    all.map(limit).collect()
 }
 
-fn figure_limit(built: &Built, limit: &FigureLimit) -> LimitRecord {
+fn over_frequency(what: &'static str, limit: &Limit) -> LimitRecord {
+    let Limit { from, to, lower, upper } = *limit;
+    LimitRecord { what, from_hz: Some(hertz(from)), to_hz: Some(hertz(to)), lower, upper, ..BLANK }
+}
+
+fn figure_limit(targets: &[Section], limit: &FigureLimit) -> LimitRecord {
     let (what, is_frequency) = match limit.figure {
         Figure::F0 => ("f0", true),
         Figure::Q => ("q", false),
@@ -452,7 +470,7 @@ fn figure_limit(built: &Built, limit: &FigureLimit) -> LimitRecord {
         Figure::Depth => ("depth", false),
     };
     let shown = |bound: f64| if is_frequency { hertz(bound) } else { bound };
-    let section = Some(built.sections[limit.section].target.name.clone());
+    let section = Some(targets[limit.section].name.clone());
     LimitRecord { what, section, lower: limit.lower.map(shown), upper: limit.upper.map(shown), ..BLANK }
 }
 

@@ -159,14 +159,18 @@ fn room(limit: &LimitRecord, margin: Option<f64>) -> String {
         // A response that vanishes lies this far below its limit.
         Some(margin) if margin >= 999.0 => "all".to_string(),
         Some(margin) if matches!(limit.what, "magnitude" | "depth") => decibels(margin),
+        Some(margin) if limit.what == "delay" => level(margin, 3, "s"),
         Some(margin) => format!("{} %", short(100.0 * margin, 3)),
     }
 }
 
 fn named(limit: &LimitRecord) -> String {
+    let delay = if limit.what == "delay" { "delay, " } else { "" };
     match (limit.from_hz, limit.to_hz, &limit.section) {
-        (Some(from), Some(to), _) if from < to => format!("{} to {}", level(from, 5, "Hz"), level(to, 5, "Hz")),
-        (Some(from), ..) => level(from, 5, "Hz"),
+        (Some(from), Some(to), _) if from < to => {
+            format!("{delay}{} to {}", level(from, 5, "Hz"), level(to, 5, "Hz"))
+        }
+        (Some(from), ..) => format!("{delay}{}", level(from, 5, "Hz")),
         (None, _, section) => {
             let figure = if limit.what == "q" { "Q" } else { limit.what };
             format!("{figure} of {}", section.as_deref().unwrap_or_default())
@@ -178,15 +182,16 @@ fn bound(limit: &LimitRecord, bound: Option<f64>) -> String {
     match (bound, limit.what) {
         (None, _) => "-".to_string(),
         (Some(bound), "magnitude" | "depth") => format!("{} dB", short(bound, 4)),
+        (Some(bound), "delay") => level(bound, 4, "s"),
         (Some(bound), "q") => short(bound, 5),
         (Some(bound), _) => level(bound, 5, "Hz"),
     }
 }
 
-/// The limit with the least room, and how it is told.
-fn tightest(mask: &MaskOutcome, of: fn(&LimitRecord) -> (Option<f64>, Option<f64>)) -> String {
+/// The limits that are broken, by how much and where.
+pub(super) fn missed(limits: &[LimitRecord], of: fn(&LimitRecord) -> (Option<f64>, Option<f64>)) -> String {
     let broken = |limit: &&LimitRecord| of(limit).0.is_none_or(|margin| margin < 0.0);
-    let list: Vec<String> = (mask.limits.iter().filter(broken))
+    let list: Vec<String> = (limits.iter().filter(broken))
         .map(|limit| {
             let (margin, at) = of(limit);
             let by = margin.map_or("altogether".to_string(), |margin| format!("by {}", room(limit, Some(-margin))));
@@ -197,16 +202,21 @@ fn tightest(mask: &MaskOutcome, of: fn(&LimitRecord) -> (Option<f64>, Option<f64
     list.join("; ")
 }
 
-/// The mask: which of target, nominal parts and tolerances fails, and each limit.
-fn against(mask: &MaskOutcome, width: usize) -> String {
-    let relation = match (mask.reference, mask.reference_hz) {
+/// To what the decibels of a mask relate.
+pub(super) fn relation(reference: &str, hertz: Option<f64>) -> String {
+    match (reference, hertz) {
         ("dc", _) => "relative to DC".to_string(),
         ("peak", _) => "relative to the peak".to_string(),
         (_, Some(f)) => format!("relative to {}", unbroken(&level(f, 5, "Hz"))),
         _ => "absolute".to_string(),
-    };
-    let target = tightest(mask, |limit| (limit.target_margin, limit.target_margin_at_hz));
-    let nominal = tightest(mask, |limit| (limit.nominal_margin, limit.nominal_margin_at_hz));
+    }
+}
+
+/// The mask: which of target, nominal parts and tolerances fails, and each limit.
+fn against(mask: &MaskOutcome, width: usize) -> String {
+    let relation = relation(mask.reference, mask.reference_hz);
+    let target = missed(&mask.limits, |limit| (limit.target_margin, limit.target_margin_at_hz));
+    let nominal = missed(&mask.limits, |limit| (limit.nominal_margin, limit.nominal_margin_at_hz));
     let tested = match mask.frequencies {
         0 => String::new(),
         some => format!(", {relation}, tested at {} frequencies", count(some as u64)),

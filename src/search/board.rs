@@ -146,6 +146,7 @@ impl Board<'_> {
             Rank::PartNumbers => picked.sort_by_key(|(c, _)| c.tally.takes.part_numbers),
             Rank::ToBuy => picked.sort_by_key(|(c, _)| c.tally.takes.bought),
             Rank::Cost => picked.sort_by_key(|(c, _)| cost(c)),
+            Rank::PlacedParts => picked.sort_by_key(|(c, _)| c.tally.takes.placed_parts),
         }
         let marked =
             (0..picked.len()).filter(|&i| picked[i].0.key <= wanted).min_by_key(|&i| (picked[i].0.tally.takes, i));

@@ -2,8 +2,6 @@
 
 use std::sync::Arc;
 
-use serde::Deserialize;
-
 use crate::circuit::{Circuit, Output};
 use crate::parts::{Shelf, Supply};
 use crate::target::{Criterion, Section};
@@ -144,7 +142,7 @@ impl Goals {
 }
 
 /// What rows are ranked by first; the others follow in the order given here.
-#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Deserialize)]
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
 pub enum Rank {
     /// The error.
     #[default]
@@ -155,6 +153,8 @@ pub enum Rank {
     ToBuy,
     /// The cost of the parts of a board, which then takes part in the front.
     Cost,
+    /// Placed parts.
+    PlacedParts,
 }
 
 impl Default for Goals {

@@ -276,6 +276,18 @@ impl Biquad {
         poly(&self.num) / poly(&self.den)
     }
 
+    /// The group delay −dφ/dω at ω in rad/s, s. The jump of the phase at a zero on the imaginary axis is no delay.
+    pub fn group_delay(&self, w: f64) -> f64 {
+        let x = w * w;
+        // Of p0 + p1 s + p2 s²: the derivative of atan2(p1 w, p0 - p2 w²).
+        let turn = |[p0, p1, p2]: [f64; 3]| {
+            let (even, odd) = (p0 - p2 * x, p1 * w);
+            // Without an odd part the phase turns nowhere, not even where the whole vanishes.
+            if p1.abs() > 0.0 { p1 * (p0 + p2 * x) / (even * even + odd * odd) } else { 0.0 }
+        };
+        turn(self.den) - turn(self.num)
+    }
+
     /// Whether all poles lie strictly in the left half plane (all coefficients present of one sign: Hurwitz for order
     /// one and two).
     pub fn is_stable(&self, order: usize) -> bool {
@@ -316,6 +328,36 @@ mod tests {
                 assert!((h.power(w * w) - h.value(w).norm_sqr()).abs() < 1e-12 * h.power(w * w).max(1e-3));
             }
         }
+    }
+
+    /// Against the central difference of the phase, as `scipy.signal.group_delay` would be checked; and, as closed forms,
+    /// 2 ζ/w0 at DC for a second-order low-pass, twice 1/w0 there for a first-order all-pass.
+    #[test]
+    fn the_group_delay_is_the_slope_of_the_phase() {
+        for shape in Shape::ALL {
+            for wz in [None, Some(2.0), Some(5.0)] {
+                if wz.is_some() && shape != Shape::Notch {
+                    continue;
+                }
+                let h = section(shape, wz).ideal();
+                for w in [0.1, 1.0, 2.9, 3.1, 10.0] {
+                    let step = 1e-5 * w;
+                    let slope = -(h.value(w + step) / h.value(w - step)).arg() / (2.0 * step);
+                    let found = h.group_delay(w);
+                    assert!((found - slope).abs() < 1e-8 * found.abs().max(1.0), "{shape:?} {w} {found} {slope}");
+                }
+            }
+        }
+        // A null that leaves a little: its zeros turn the phase as poles do.
+        let h = Biquad { num: [4.0, 0.1, 1.0], den: [9.0, 1.2, 1.0] };
+        let slope = -(h.value(2.0 + 1e-6) / h.value(2.0 - 1e-6)).arg() / 2e-6;
+        assert!((h.group_delay(2.0) - slope).abs() < 1e-6 * slope.abs(), "{slope}");
+        let low_pass = Section::new("s", Shape::LowPass, 3.0, Some(2.5), 1.0, None).unwrap().ideal();
+        assert!((low_pass.group_delay(0.0) - 1.0 / (2.5 * 3.0)).abs() < 1e-15);
+        assert!((section(Shape::FirstOrderAllPass, None).ideal().group_delay(0.0) - 2.0 / 3.0).abs() < 1e-15);
+        // At the null itself only the poles count: Q/w0 times 2 at w0.
+        let null = section(Shape::Notch, Some(3.0)).ideal();
+        assert!((null.group_delay(3.0) - 2.0 * 2.5 / 3.0).abs() < 1e-12);
     }
 
     #[test]

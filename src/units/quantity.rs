@@ -140,6 +140,18 @@ const TIME: Quantity = Quantity {
     mistaken: None,
 };
 
+const DELAY: Quantity = Quantity {
+    name: "a delay",
+    example: "100 us",
+    unit: "in s, ms, us or ns",
+    symbol: " s",
+    units: &[Unit::prefixed("s")],
+    bare_prefix: false,
+    low: -1e6,
+    high: 1e6,
+    mistaken: None,
+};
+
 const NUMBER: Quantity = Quantity {
     name: "a number",
     example: "0.7071 or 1 %",
@@ -194,6 +206,14 @@ pub fn parse_decibels(text: &str) -> Result<f64, QuantityError> {
 /// [`QuantityError`] for anything but a number from 1 µs to 1e7 s.
 pub fn parse_seconds(text: &str) -> Result<f64, QuantityError> {
     TIME.parse(text)
+}
+
+/// Reads a delay in seconds, which may be negative: `100 us`, `2.5 ms`, `1e-4`.
+///
+/// # Errors
+/// [`QuantityError`] for anything but a number from -1e6 s to 1e6 s.
+pub fn parse_delay(text: &str) -> Result<f64, QuantityError> {
+    DELAY.parse(text)
 }
 
 /// Reads a plain number, or a percentage as its hundredth: `0.7071`, `-2`, `1 %`.

@@ -74,8 +74,9 @@ const EXAMPLE: &str = r#"(
 
 #[test]
 fn the_example_resolves_to_its_problem() {
-    let Job { problem, time_limit } = sound(EXAMPLE);
+    let Job { problem, time_limit, order } = sound(EXAMPLE);
     assert_eq!(problem.title, "Vibration logger, anti-alias");
+    assert_eq!(order, crate::analysis::Order::AsFound);
     assert_eq!(time_limit, Some(Duration::from_secs(10)));
     assert_eq!(
         problem.criterion,

@@ -176,6 +176,8 @@ fn ranks_and_sets_of_single_boards() {
     for (inner, rank) in [
         ("rank: Error", Rank::Error),
         ("rank: PartNumbers", Rank::PartNumbers),
+        ("rank: PlacedParts", Rank::PlacedParts),
+        ("rank: Yield", Rank::Error),
         ("rank: ToBuy, buy: 1", Rank::ToBuy),
         ("rank: Cost", Rank::Cost),
         // A bought part of a value that the list names has the price of its line.
@@ -331,7 +333,7 @@ fn flags_win_over_the_keys_of_the_stock() {
         boards: Some(Given::flag("--boards", "7")),
         buy: Some(Given::flag("--buy", "resistors:2")),
         bar_class_2: Some(Given::flag("--bar-class-2", false)),
-        rank: Some(Given::flag("--rank", Rank::PartNumbers)),
+        rank: Some(Given::flag("--rank", RankFile::PartNumbers)),
         ..JobFile::default()
     });
     let problem = resolve(&job, &mut circuits, Some(&stock(LIST))).unwrap().problem;
