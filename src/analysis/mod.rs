@@ -25,7 +25,7 @@ pub use interval::clopper_pearson;
 pub use levels::{LevelConditions, Levels, Noise, Peak, levels};
 pub use mask::{Figure, FigureLimit, Gauge, Limit, Mask, Reference, Scratch, Standing, figure_of, has_reference};
 pub use network::{Network, Reach, Surroundings};
-pub use real::{Real, RealConditions, RealSection, Slew, real};
+pub use real::{Real, RealConditions, RealEnd, RealSection, Slew, real};
 pub use spread::{Deviations, Quantiles, SectionSpread, Spread, deviations, spread};
 pub use tighten::{CAPACITOR_STEPS, RESISTOR_STEPS, Step, Steps, Wanted, coarsest, tighten};
 pub use tolerance::{Boards, Distribution, Draw, Tolerances};

@@ -9,6 +9,7 @@ use crate::parts::STOCK_COLUMNS;
 use crate::report::CSV_COLUMNS;
 use crate::target::Shape;
 
+pub use super::around::AroundArgs;
 pub use super::sections_args::SectionsArgs;
 pub use super::tighten_args::TightenArgs;
 
@@ -493,21 +494,9 @@ pub struct VetArgs {
     /// By how much a capacitor can be off at the end of its life, to either side.
     #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "0%")]
     pub capacitor_ageing: String,
-    /// Gain-bandwidth product of the op-amps, Hz [default: ideal op-amps].
-    #[arg(long, value_name = "FREQUENCY", allow_hyphen_values = true)]
-    pub gbw: Option<String>,
-    /// Output resistance of the op-amps, ohms [default: 0].
-    #[arg(long, value_name = "OHMS", allow_hyphen_values = true)]
-    pub output_resistance: Option<String>,
-    /// Resistance of the source, ohms [default: 0].
-    #[arg(long, value_name = "OHMS", allow_hyphen_values = true)]
-    pub source_resistance: Option<String>,
-    /// Load from the output to ground, ohms [default: none].
-    #[arg(long, value_name = "OHMS", allow_hyphen_values = true)]
-    pub load_resistance: Option<String>,
-    /// Stray capacitance from every node to ground, farads [default: none].
-    #[arg(long, value_name = "FARADS", allow_hyphen_values = true)]
-    pub stray: Option<String>,
+    #[command(flatten)]
+    pub around: AroundArgs,
+
     /// The largest shift of f0 and Q that is wanted from the op-amps, for the least gain-bandwidth product [default: 1%].
     #[arg(long, value_name = "PERCENT", allow_hyphen_values = true)]
     pub shift: Option<String>,

@@ -1,6 +1,7 @@
 //! The command line: the only place that opens files, prints and reads the clock.
 
 mod args;
+mod around;
 mod circuits;
 mod failure;
 mod files;

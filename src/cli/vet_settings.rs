@@ -1,13 +1,14 @@
 //! What the flags of `vet` say, checked, with all their faults.
 
 use super::args::VetArgs;
+use super::around::Around;
 use super::failure::{Failure, Faulty};
 use crate::analysis::{
     Climate, Distribution, KindDrift, LevelConditions, RealConditions, Sampling, Surroundings, Tolerances,
 };
 use crate::parts::TemperatureCoefficient;
 use crate::text::Fault;
-use crate::units::{Kind, parse_frequency, parse_number, parse_part};
+use crate::units::parse_number;
 
 /// The flags of `vet` as values.
 #[derive(Debug)]
@@ -181,36 +182,14 @@ fn temperatures(text: &str, faults: &mut Vec<Fault>) -> (f64, f64) {
 }
 
 fn real(args: &VetArgs, faults: &mut Vec<Fault>) -> Option<RealConditions> {
-    let given = [
-        &args.gbw,
-        &args.output_resistance,
-        &args.source_resistance,
-        &args.load_resistance,
-        &args.stray,
-        &args.shift,
-        &args.output_level,
-    ];
-    if given.into_iter().all(Option::is_none) {
+    if !args.around.is_given() && args.shift.is_none() && args.output_level.is_none() {
         return None;
     }
-    let bandwidth = args.gbw.as_deref().and_then(|text| noted(parse_frequency(text), "--gbw", faults));
-    if args.gbw.is_none() && args.shift.is_some() {
+    let Around { surroundings: around, spread } = args.around.read(faults);
+    if args.around.gbw.is_none() && args.shift.is_some() {
         let fault = Fault::at("--shift", "says nothing about ideal op-amps");
         faults.push(fault.help("add the gain-bandwidth product, such as --gbw 3MHz"));
     }
-    let mut part = |flag: &str, text: &Option<String>, kind: Kind| -> Option<f64> {
-        let text = text.as_deref().filter(|text| text.trim() != "0")?;
-        noted(parse_part(text, kind), flag, faults).map(|value| value.to_f64())
-    };
-    let output_resistance = part("--output-resistance", &args.output_resistance, Kind::Resistor).unwrap_or(0.0);
-    let source_resistance = part("--source-resistance", &args.source_resistance, Kind::Resistor).unwrap_or(0.0);
-    let stray = part("--stray", &args.stray, Kind::Capacitor).unwrap_or(0.0);
-    // A load of zero would be a short circuit: it is read as any other value, and refused.
-    let load_resistance = args
-        .load_resistance
-        .as_deref()
-        .and_then(|text| noted(parse_part(text, Kind::Resistor), "--load-resistance", faults));
-    let load_resistance = load_resistance.map(|value| value.to_f64());
     let shift = args.shift.as_deref().map_or(0.01, |text| {
         let shift = Percent { name: "the shift", most: 50.0, example: "1%" }.read("--shift", text, faults);
         if shift <= 0.0 {
@@ -220,8 +199,7 @@ fn real(args: &VetArgs, faults: &mut Vec<Fault>) -> Option<RealConditions> {
         shift
     });
     let level = args.output_level.as_deref().and_then(|text| volts("--output-level", text, faults));
-    let around = Surroundings { bandwidth, output_resistance, source_resistance, load_resistance, stray };
-    Some(RealConditions { around, shift, level })
+    Some(RealConditions { around, shift, level, spread })
 }
 
 /// An amplitude.
@@ -256,6 +234,6 @@ fn levels(args: &VetArgs, around: Surroundings, faults: &mut Vec<Fault>) -> Opti
 }
 
 /// A value, or the fault of its flag.
-fn noted<T, E: std::fmt::Display>(read: Result<T, E>, flag: &str, faults: &mut Vec<Fault>) -> Option<T> {
+pub(super) fn noted<T, E: std::fmt::Display>(read: Result<T, E>, flag: &str, faults: &mut Vec<Fault>) -> Option<T> {
     read.map_err(|error| faults.push(Fault::at(flag, error.to_string()))).ok()
 }

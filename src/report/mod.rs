@@ -54,6 +54,6 @@ pub use vet::{
 };
 pub use vet_drift::{DriftRecord, FigureDriftRecord, KindDriftRecord};
 pub use vet_levels::{LevelsRecord, PeakRecord};
-pub use vet_real::{RealRecord, RealSectionRecord, SlewRecord};
+pub use vet_real::{RealEndRecord, RealRecord, RealSectionRecord, SlewRecord};
 pub use vet_table::write_vet_table;
 pub use vet_trim::TrimRecord;
