@@ -4,6 +4,7 @@
 //! Nothing here prints, opens files or reads the clock, and every result is the same for any number of threads.
 
 mod built;
+mod compensate;
 mod corners;
 mod drift;
 mod interval;
@@ -19,6 +20,7 @@ mod vetted;
 mod yields;
 
 pub use built::{Built, BuiltPart, BuiltPiece, BuiltSection, FigureSensitivity, Formula, Joint, Reel, Sensitivities};
+pub use compensate::{BuiltRow, Compensated, Corrected, Correction, compensated, correct, miss};
 pub use corners::{Judge, WorstCase, worst_case};
 pub use drift::{Climate, Drift, Extremes, FigureDrift, KindDrift, SectionDrift, drift};
 pub use interval::clopper_pearson;

@@ -78,13 +78,11 @@ pub struct RealConditions {
     pub spread: f64,
 }
 
-impl RealConditions {
-    /// The surroundings with the least and with the largest gain-bandwidth product; none without a spread.
-    pub fn ends(&self) -> Vec<Surroundings> {
-        let bandwidth = self.around.bandwidth.filter(|_| self.spread > 0.0);
-        let end = |bandwidth: f64, factor: f64| Surroundings { bandwidth: Some(bandwidth * factor), ..self.around };
-        bandwidth.map_or(Vec::new(), |b| [1.0 - self.spread, 1.0 + self.spread].map(|factor| end(b, factor)).to_vec())
-    }
+/// The surroundings with the least and with the largest gain-bandwidth product; none without a spread.
+pub(super) fn both_ends(around: &Surroundings, spread: f64) -> Vec<Surroundings> {
+    let bandwidth = around.bandwidth.filter(|_| spread > 0.0);
+    let end = |bandwidth: f64, factor: f64| Surroundings { bandwidth: Some(bandwidth * factor), ..*around };
+    bandwidth.map_or(Vec::new(), |b| [1.0 - spread, 1.0 + spread].map(|factor| end(b, factor)).to_vec())
 }
 
 /// What a board becomes with such op-amps and surroundings.
@@ -97,16 +95,11 @@ pub fn real(built: &Built, conditions: &RealConditions, yardstick: &Yardstick) -
     let mut sections = each_section(built, around);
     for (k, section) in sections.iter_mut().enumerate() {
         if let RealSection::Stable { least_bandwidth: least, .. } = section {
-            let own = own_surroundings(built, around, k);
+            let own = own_surroundings(around, k, built.sections.len());
             *least = around.bandwidth.and_then(|_| least_bandwidth(&built.sections[k], &own, conditions.shift));
         }
     }
-    let end = |around: &Surroundings| {
-        let sections = each_section(built, around);
-        let error = whole_error(built, around, &sections, yardstick);
-        around.bandwidth.map(|bandwidth| RealEnd { bandwidth, sections, error })
-    };
-    let ends = conditions.ends().iter().filter_map(end).collect();
+    let ends = real_ends(built, around, conditions.spread, yardstick);
     let slew = conditions.level.filter(|_| are_stable(&sections)).and_then(|level| {
         let chain: Vec<&BuiltSection> = built.sections.iter().collect();
         slew(built, &Network::new(&chain, around), yardstick, level)
@@ -115,9 +108,19 @@ pub fn real(built: &Built, conditions: &RealConditions, yardstick: &Yardstick) -
     Real { sections, error, slew, ends }
 }
 
+/// The board at both ends of the spread.
+pub(super) fn real_ends(built: &Built, around: &Surroundings, spread: f64, yardstick: &Yardstick) -> Vec<RealEnd> {
+    let end = |around: &Surroundings| {
+        let sections = each_section(built, around);
+        let error = whole_error(built, around, &sections, yardstick);
+        around.bandwidth.map(|bandwidth| RealEnd { bandwidth, sections, error })
+    };
+    both_ends(around, spread).iter().filter_map(end).collect()
+}
+
 /// What surrounds one section: the first has the source's resistance, the last the load.
-fn own_surroundings(built: &Built, around: &Surroundings, index: usize) -> Surroundings {
-    let is_last = index + 1 == built.sections.len();
+pub(super) fn own_surroundings(around: &Surroundings, index: usize, count: usize) -> Surroundings {
+    let is_last = index + 1 == count;
     Surroundings {
         source_resistance: if index == 0 { around.source_resistance } else { 0.0 },
         load_resistance: around.load_resistance.filter(|_| is_last),
@@ -126,8 +129,8 @@ fn own_surroundings(built: &Built, around: &Surroundings, index: usize) -> Surro
 }
 
 /// The poles of each section, without least bandwidths.
-fn each_section(built: &Built, around: &Surroundings) -> Vec<RealSection> {
-    let section = |(k, section)| real_section(section, &own_surroundings(built, around, k));
+pub(super) fn each_section(built: &Built, around: &Surroundings) -> Vec<RealSection> {
+    let section = |(k, section)| real_section(section, &own_surroundings(around, k, built.sections.len()));
     built.sections.iter().enumerate().map(section).collect()
 }
 
@@ -136,7 +139,7 @@ fn are_stable(sections: &[RealSection]) -> bool {
 }
 
 /// The error of the whole board and where, rad/s; `None` where a section is not known to be stable.
-fn whole_error(
+pub(super) fn whole_error(
     built: &Built,
     around: &Surroundings,
     sections: &[RealSection],

@@ -6,7 +6,7 @@ use clap::builder::PossibleValuesParser;
 use clap::{Args, Parser, Subcommand, ValueEnum};
 
 use crate::parts::STOCK_COLUMNS;
-use crate::report::CSV_COLUMNS;
+use crate::report::{COMPENSATED_CSV_COLUMNS, CSV_COLUMNS};
 use crate::target::Shape;
 
 pub use super::around::AroundArgs;
@@ -65,6 +65,7 @@ pub enum Command {
 const SHORTLIST_HELP: &str = "\
 Shelves are written as series and single values, then a range: E24,E96:1k..1M or 10k,22k,47k.
 Ranges are written FROM..TO. What is given here wins over the job file, in all its sections.
+With op-amps or surroundings, sections are searched for whose built network gives what the job wants.
 
 Examples:
   roundwell shortlist job.ron --format json --out shortlist.json
@@ -74,10 +75,15 @@ Exit codes: 0 found, 1 internal fault, 2 bad input or usage, 3 nothing within th
 
 /// The long help of `shortlist`: with the columns of the CSV format.
 fn shortlist_long_help() -> String {
-    let columns = CSV_COLUMNS.map(|(name, meaning)| format!("  {name:<18} {meaning}"));
+    let lines = |columns: &[(&str, &str)]| {
+        let lines: Vec<String> = columns.iter().map(|(name, meaning)| format!("  {name:<18} {meaning}")).collect();
+        lines.join("\n")
+    };
     format!(
-        "{SHORTLIST_HELP}\n\nColumns of the CSV format; numbers in SI units, empty where not known:\n{}",
-        columns.join("\n")
+        "{SHORTLIST_HELP}\n\nColumns of the CSV format; numbers in SI units, empty where not known:\n{}\n\
+         With op-amps or surroundings also:\n{}",
+        lines(&CSV_COLUMNS),
+        lines(&COMPENSATED_CSV_COLUMNS)
     )
 }
 
@@ -164,6 +170,9 @@ pub struct ShortlistArgs {
 
     #[command(flatten)]
     pub goals: GoalArgs,
+
+    #[command(flatten)]
+    pub around: AroundArgs,
 
     #[command(flatten)]
     pub output: OutputArgs,

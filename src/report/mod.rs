@@ -1,5 +1,7 @@
 //! The result of a search as one plain record, a stock list as another, and their renderers. Each renderer writes to a writer; none opens files.
 
+mod compensated;
+mod compensated_table;
 mod csv;
 mod detail;
 mod drawn;
@@ -23,6 +25,11 @@ mod vet_trim;
 #[cfg(test)]
 mod sample;
 
+pub use compensated::{
+    BuiltErrorRecord, BuiltRowRecord, BuiltSectionRecord, COMPENSATED_CSV_COLUMNS, CompensatedRecord,
+    CompensationRecord, CorrectionRecord, write_compensated_csv, write_compensated_json,
+};
+pub use compensated_table::write_compensated_table;
 pub use csv::{CSV_COLUMNS, write_csv};
 pub use drawn::{BoardRecord, SupplyRecord, TakenRecord};
 pub use filter::{

@@ -312,7 +312,7 @@ pub struct PieceRecord {
 
 /// The frequency of an angular frequency that came from one: what the detour over 2π left in the last digits is taken
 /// out, so that 1 kHz is 1000 and not 999.9999999999999.
-fn hertz(w: f64) -> f64 {
+pub(super) fn hertz(w: f64) -> f64 {
     let f = w / TAU;
     format!("{f:.13e}").parse().unwrap_or(f)
 }

@@ -151,25 +151,30 @@ impl RealSectionRecord {
     }
 }
 
-/// The section of the page.
-pub(super) fn real_table(real: &RealRecord, unit: &str, width: usize) -> String {
-    let mut around = vec![match real.bandwidth_hz {
+/// Op-amps with the spread of their gain-bandwidth product, the resistances of their outputs, of source and load, strays.
+pub(super) fn around_in_words((bandwidth, spread): (Option<f64>, f64), ohms: [f64; 3], stray: f64) -> String {
+    let mut around = vec![match bandwidth {
         Some(bandwidth) => format!("op-amps of {}", unbroken(&level(bandwidth, 4, "Hz"))),
         None => "ideal op-amps".to_string(),
     }];
-    for (ohms, name) in [
-        (real.output_resistance_ohm, "output resistance"),
-        (real.source_resistance_ohm, "source"),
-        (real.load_resistance_ohm.unwrap_or(0.0), "load"),
-    ] {
-        if ohms > 0.0 {
-            around.push(format!("{name} {}", unbroken(&level(ohms, 4, "Ω"))));
-        }
+    if spread > 0.0 {
+        around.push(format!("{} and all alike", unbroken(&format!("±{}", of_hundred(spread)))));
     }
-    if real.stray_farad > 0.0 {
-        around.push(format!("{} from every node to ground", unbroken(&level(real.stray_farad, 4, "F"))));
+    for (ohms, name) in ohms.into_iter().zip(["output resistance", "source", "load"]).filter(|(ohms, _)| *ohms > 0.0)
+    {
+        around.push(format!("{name} {}", unbroken(&level(ohms, 4, "Ω"))));
     }
-    let mut text = paragraph("", &format!("Real network: {}", around.join(", ")), width);
+    if stray > 0.0 {
+        around.push(format!("{} from every node to ground", unbroken(&level(stray, 4, "F"))));
+    }
+    around.join(", ")
+}
+
+/// The section of the page.
+pub(super) fn real_table(real: &RealRecord, unit: &str, width: usize) -> String {
+    let ohms = [real.output_resistance_ohm, real.source_resistance_ohm, real.load_resistance_ohm.unwrap_or(0.0)];
+    let around = around_in_words((real.bandwidth_hz, 0.0), ohms, real.stray_farad);
+    let mut text = paragraph("", &format!("Real network: {around}"), width);
     for section in &real.sections {
         let line = match section.state {
             "unstable" => "unstable: it oscillates. Take faster op-amps, another circuit, or a lower Q.",
@@ -248,16 +253,16 @@ fn ends_table(real: &RealRecord, unit: &str, width: usize) -> String {
     ];
     text += &grid(&columns, 1, width);
     let error = |end: &RealEndRecord| {
-        let at = unbroken(&format!("GBW {}", level(end.bandwidth_hz, 4, "Hz")));
+        let with = unbroken(&format!("with {}", level(end.bandwidth_hz, 4, "Hz")));
         match (end.error, end.error_at_hz) {
             (Some(error), Some(hertz)) => {
                 let place = unbroken(&level(hertz, 4, "Hz"));
-                format!("at {at} {} at {place}", unbroken(&rounded(unit, error)))
+                format!("{} at {place} {with}", unbroken(&rounded(unit, error)))
             }
-            _ => format!("at {at} none: a section is not known to be stable"),
+            _ => format!("none {with}, for a section is not known to be stable"),
         }
     };
     let errors: Vec<String> = real.ends.iter().map(error).collect();
-    let line = format!("error of the whole board against the target {}", errors.join(", "));
+    let line = format!("error of the whole board against the target: {}", errors.join(", "));
     text + "\n" + &paragraph("   ", &line, width)
 }
