@@ -6,6 +6,7 @@
 mod built;
 mod compensate;
 mod corners;
+mod cost;
 mod drift;
 mod interval;
 mod levels;
@@ -22,6 +23,7 @@ mod yields;
 pub use built::{Built, BuiltPart, BuiltPiece, BuiltSection, FigureSensitivity, Formula, Joint, Reel, Sensitivities};
 pub use compensate::{BuiltRow, Compensated, Corrected, Correction, compensated, correct, miss};
 pub use corners::{Judge, WorstCase, worst_case};
+pub use cost::{StepPrices, cheapest, costs};
 pub use drift::{Climate, Drift, Extremes, FigureDrift, KindDrift, SectionDrift, drift};
 pub use interval::clopper_pearson;
 pub use levels::{LevelConditions, Levels, Noise, Peak, levels};

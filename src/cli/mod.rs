@@ -6,6 +6,7 @@ mod circuits;
 mod failure;
 mod files;
 mod output;
+mod price_args;
 mod progress;
 mod sections;
 mod sections_args;

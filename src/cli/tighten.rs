@@ -4,14 +4,16 @@ use super::args::{ShowFormat, TightenArgs};
 use super::failure::{Failure, Faulty};
 use super::files::read_text;
 use super::output::Output;
+use super::price_args::Prices;
 use super::vet::{circuits_with, faulty, mask};
 use super::vet_settings::{Percent, whole};
 use super::{FOUND, NOTHING_WITHIN_LIMITS};
 use crate::analysis::{
-    Built, CAPACITOR_STEPS, Distribution, RESISTOR_STEPS, Sampling, Steps, Wanted, coarsest, tighten,
+    Built, CAPACITOR_STEPS, Distribution, RESISTOR_STEPS, Sampling, StepPrices, Steps, Wanted, cheapest, coarsest,
+    costs, tighten,
 };
 use crate::job::Listed;
-use crate::report::{TightenQuestion, TightenRecord, write_tighten_json, write_tighten_table};
+use crate::report::{StepCosts, TightenQuestion, TightenRecord, write_tighten_json, write_tighten_table};
 use crate::target::Measure;
 use crate::text::{Fault, located};
 use crate::units::{parse_decibels, parse_number};
@@ -21,6 +23,7 @@ struct Settings {
     steps: Steps,
     sampling: Sampling,
     wanted_yield: Option<f64>,
+    prices: Option<Prices>,
     /// The rows that are asked for; `None` for all.
     rows: Option<Vec<usize>>,
 }
@@ -30,7 +33,7 @@ struct Settings {
 /// # Errors
 /// Bad input, an output that cannot be written.
 pub fn run(args: &TightenArgs) -> Result<u8, Failure> {
-    let Settings { steps, sampling, wanted_yield, rows } = settings(args)?;
+    let Settings { steps, sampling, wanted_yield, prices, rows } = settings(args)?;
     let (title, rows, boards) = boards(args, rows)?;
     let Some(first) = boards.first() else {
         let fault = Fault::at("--rows", "the list has no rows");
@@ -51,6 +54,12 @@ pub fn run(args: &TightenArgs) -> Result<u8, Failure> {
     let found = pool.install(|| tighten(&boards, &wanted, &steps, &sampling));
     let marked = wanted_yield.map_or(vec![false; found.len()], |yielding| coarsest(&found, yielding));
     let target_keeps = wanted.target_keeps(&first.targets());
+    let prices = prices.map(|Prices { resistors, capacitors, currency }| {
+        let prices = StepPrices { resistors, capacitors };
+        let costs = costs(&found, &boards, &prices);
+        let cheapest = wanted_yield.and_then(|wanted| cheapest(&found, &costs, wanted));
+        StepCosts { prices, currency, costs, cheapest }
+    });
     let asked = TightenQuestion {
         title: &title,
         rows: &rows,
@@ -59,6 +68,7 @@ pub fn run(args: &TightenArgs) -> Result<u8, Failure> {
         steps: &steps,
         sampling: &sampling,
         wanted_yield,
+        costs: prices.as_ref(),
     };
     let record = TightenRecord::new(&asked, &found, &marked);
     let mut bytes = Vec::new();
@@ -94,6 +104,7 @@ fn settings(args: &TightenArgs) -> Result<Settings, Failure> {
             ..Sampling::default()
         },
         wanted_yield: args.wanted_yield.as_deref().map(|text| wanted.read("--wanted-yield", text, &mut faults)),
+        prices: args.prices.read(&RESISTOR_STEPS, &CAPACITOR_STEPS, &mut faults),
         rows: args.rows.as_deref().map(|text| rows(text, &mut faults)),
     };
     if faults.is_empty() {

@@ -5,14 +5,16 @@ use std::path::PathBuf;
 use clap::Args;
 
 use super::args::ShowFormat;
+use super::price_args::PriceArgs;
 
 /// The help that follows the flags.
 pub const HELP: &str = "\
 Each step gives all resistors one tolerance, all capacitors another; the tolerances of a stock list do
-not count here. Measured parts stay as they are.
+not count here. Measured parts stay as they are, and cost nothing.
 
 Example:
-  roundwell tighten shortlist.json --mask mask.ron --wanted-yield 95%
+  roundwell tighten shortlist.json --mask mask.ron --wanted-yield 95% \
+      --resistor-price 5%=0.005,1%=0.01,0.1%=0.08 --capacitor-price 5%=0.04,2%=0.09,1%=0.15
 
 Exit codes: 0 done, 2 bad input or usage, 3 the target misses what is wanted, or no step reaches the
 wanted yield.";
@@ -37,6 +39,9 @@ pub struct TightenArgs {
     /// Mark the coarsest steps that reach this yield.
     #[arg(long, value_name = "PERCENT", allow_hyphen_values = true)]
     pub wanted_yield: Option<String>,
+    #[command(flatten)]
+    pub prices: PriceArgs,
+
     /// How errors are spread: evenly, or normally with a third of the tolerance as standard deviation and cut off at it.
     #[arg(long, default_value = "uniform", value_parser = ["uniform", "normal"])]
     pub distribution: String,

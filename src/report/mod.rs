@@ -53,7 +53,7 @@ pub use swap::{
 };
 pub use table::write_table;
 pub use tighten::{
-    StepRecord, TIGHTEN_FORMAT, TightenQuestion, TightenRecord, write_tighten_json, write_tighten_table,
+    StepCosts, StepRecord, TIGHTEN_FORMAT, TightenQuestion, TightenRecord, write_tighten_json, write_tighten_table,
 };
 pub use vet::{
     LimitRecord, MaskOutcome, OffPart, SpreadRecord, VET_FORMAT, VetPart, VetPiece, VetRecord, VetSection,
