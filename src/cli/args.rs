@@ -476,6 +476,10 @@ pub struct VetArgs {
     /// Tolerance of the capacitors for which the stock list gives none, to either side.
     #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "5%")]
     pub capacitor_tolerance: String,
+    /// Tolerance of the part in one slot, such as R3=0.1% or A:R3=0.1%, whatever a stock list says; of a measured part the
+    /// accuracy of the measurement. Repeatable.
+    #[arg(long, value_name = "SLOT=PERCENT", value_delimiter = ',', allow_hyphen_values = true)]
+    pub tolerance: Vec<String>,
     /// How errors are spread: evenly, or normally with a third of the tolerance as standard deviation and cut off at it.
     #[arg(long, default_value = "uniform", value_parser = ["uniform", "normal"])]
     pub distribution: String,
@@ -485,7 +489,7 @@ pub struct VetArgs {
     /// Temperatures between which the board has to work, °C; the nominal values hold at 25 °C.
     #[arg(long, value_name = "FROM..TO", allow_hyphen_values = true)]
     pub temperature: Option<String>,
-    /// Temperature coefficient of the resistors, such as 100 (to either side), -200 or -200±100 [default: 100].
+    /// Temperature coefficient of the resistors for which the stock list gives none, such as 100 (to either side), -200 or -200±100 [default: 100].
     #[arg(long, value_name = "PPM/K", allow_hyphen_values = true)]
     pub resistor_coefficient: Option<String>,
     /// Temperature coefficient of the capacitors [default: 30, as for C0G].
@@ -497,7 +501,7 @@ pub struct VetArgs {
     /// The same for capacitors.
     #[arg(long, value_name = "PPM/K", allow_hyphen_values = true)]
     pub capacitor_tracking: Option<String>,
-    /// By how much a resistor can be off at the end of its life, to either side.
+    /// By how much a resistor can be off at the end of its life, to either side, where the stock list does not say.
     #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "0%")]
     pub resistor_ageing: String,
     /// By how much a capacitor can be off at the end of its life, to either side.
@@ -524,6 +528,9 @@ pub struct VetArgs {
     /// Plan a trim: which resistor sets what, how far it has to reach, and what to look at.
     #[arg(long)]
     pub trim: bool,
+    /// Resistor values of which one may be selected on test in place of a trimmer [default: E96:1..10M].
+    #[arg(long, value_name = "SHELF", requires = "trim")]
+    pub trim_values: Option<String>,
     /// Boards to draw at most for the yield.
     #[arg(long, value_name = "COUNT", allow_hyphen_values = true, default_value = "100000")]
     pub boards: String,

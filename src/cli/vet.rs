@@ -21,13 +21,19 @@ use crate::text::{Fault, located};
 /// # Errors
 /// Bad input, an output that cannot be written.
 pub fn run(args: &VetArgs) -> Result<u8, Failure> {
-    let VetSettings { tolerances, sampling, climate, real, levels } = VetSettings::new(args)?;
-    let (built, boards) = board(args)?;
+    let VetSettings { tolerances, sampling, climate, drifts, slots, select, real, levels } = VetSettings::new(args)?;
+    let (mut built, boards) = board(args)?;
+    let missing: Vec<Fault> = slots.iter().filter_map(|slot| slot.apply(&mut built).err()).collect();
+    if !missing.is_empty() {
+        let (file, text) = (String::new(), String::new());
+        return Err(Failure::Input(vec![Faulty { file, text, faults: missing, is_first_round: false }]));
+    }
+    let climate = (drifts || built.has_ageing()).then_some(climate);
     let mask = args.mask.as_deref().map(|path| mask(path, &built)).transpose()?;
     let output = Output::open(args.out.as_deref())?;
     let pool = rayon::ThreadPoolBuilder::new().num_threads(args.threads.map_or(0, usize::from)).build();
     let pool = pool.map_err(|error| Failure::Threads(error.to_string()))?;
-    let conditions = Conditions { tolerances, mask, climate, real, levels, trim: args.trim, sampling };
+    let conditions = Conditions { tolerances, mask, climate, real, levels, trim: args.trim, select, sampling };
     let found = pool.install(|| vet(&built, &conditions));
     let record = VetRecord::new(&built, args.row, boards, &conditions, &found);
     output.write(&written(&record, args.format, usize::from(args.width))?)?;

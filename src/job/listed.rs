@@ -8,6 +8,7 @@ use serde::Deserialize;
 
 use crate::analysis::{Built, BuiltPart, BuiltPiece, BuiltSection, Joint};
 use crate::circuit::Circuit;
+use crate::parts::TemperatureCoefficient;
 use crate::target::{Criterion, Measure, Section, Shape, Weights};
 use crate::text::{Fault, located, suggestion};
 use crate::units::{Kind, Value, parse_part};
@@ -136,6 +137,8 @@ struct RawPiece {
     notation: Option<String>,
     measured: Option<f64>,
     tolerance: Option<[f64; 2]>,
+    temperature_coefficient_ppm: Option<[f64; 2]>,
+    ageing: Option<f64>,
     #[serde(default)]
     lines: Vec<usize>,
 }
@@ -396,7 +399,27 @@ fn read_piece(path: &str, raw: &RawPiece, kind: Kind, faults: &mut Vec<Fault>) -
         faults.push(Fault::at(format!("{path}.tolerance"), message).help("write ratios: 5 % is -0.05 and 0.05"));
     }
     let is_measured = raw.measured.is_some();
-    Some(BuiltPiece { value, label, is_measured, tolerance, line: raw.lines.first().copied() })
+    let coefficient = raw.temperature_coefficient_ppm.map(|[low, high]| (low, high));
+    // Twice the largest that a stock list may state: mean and spread.
+    let most = 2.0 * f64::from(TemperatureCoefficient::LARGEST);
+    if let Some((low, high)) = coefficient.filter(|(low, high)| !(-most <= *low && low <= high && *high <= most)) {
+        let message = format!("{low} to {high} ppm/K is no range of temperature coefficients up to {most} ppm/K");
+        let fault = Fault::at(format!("{path}.temperature_coefficient_ppm"), message);
+        faults.push(fault.help("write the smaller one first, such as -50 and 50"));
+    }
+    if let Some(ageing) = raw.ageing.filter(|ageing| !(0.0..1.0).contains(ageing)) {
+        let message = format!("{ageing} is no ageing: it is a ratio from 0 to below 1");
+        faults.push(Fault::at(format!("{path}.ageing"), message).help("write 0.005 for 0.5 %"));
+    }
+    Some(BuiltPiece {
+        tolerance,
+        line: raw.lines.first().copied(),
+        label,
+        is_measured,
+        coefficient: coefficient.map(|(low, high)| (low * 1e-6, high * 1e-6)),
+        ageing: raw.ageing,
+        ..BuiltPiece::from(value)
+    })
 }
 
 /// How pieces make up the value of a slot, if they do: one piece is the value itself.

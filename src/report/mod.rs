@@ -59,8 +59,8 @@ pub use vet::{
     LimitRecord, MaskOutcome, OffPart, SpreadRecord, VET_FORMAT, VetPart, VetPiece, VetRecord, VetSection,
     WorstRecord, YieldRecord, write_vet_json,
 };
-pub use vet_drift::{DriftRecord, FigureDriftRecord, KindDriftRecord};
+pub use vet_drift::{DriftRecord, FigureDriftRecord, KindDriftRecord, PartDriftRecord};
 pub use vet_levels::{LevelsRecord, PeakRecord};
 pub use vet_real::{RealEndRecord, RealRecord, RealSectionRecord, SlewRecord};
 pub use vet_table::write_vet_table;
-pub use vet_trim::TrimRecord;
+pub use vet_trim::{SelectRecord, TrimRecord};

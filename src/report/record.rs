@@ -304,6 +304,10 @@ pub struct PieceRecord {
     /// How far it may be off its label by the tolerance of the stock list, as ratios: lowest and highest, such as −0.05 and
     /// 0.05. `None` where the list does not say, and for a measured part.
     pub tolerance: Option<[f64; 2]>,
+    /// Its least and its largest temperature coefficient by the stock list, ppm/K; `None` where the list does not say.
+    pub temperature_coefficient_ppm: Option<[f64; 2]>,
+    /// By how much it may be off at the end of its life by the stock list, a ratio, to either side.
+    pub ageing: Option<f64>,
     /// What the part or its drawer is called.
     pub id: Option<String>,
     /// The lines of the stock list that it is taken from.

@@ -100,7 +100,8 @@ pub struct VetPiece {
     pub notation: String,
     /// How far it may be off, as ratios: lowest and highest.
     pub tolerance: [f64; 2],
-    /// From where that is: `flag`, `list` for the stock list, or `measured` for a measured part, which is off by nothing.
+    /// From where that is: `flag` for that of all parts of the kind, `slot` for one given for this slot, `list` for the stock
+    /// list, or `measured` for a measured part, which is off by nothing.
     pub tolerance_from: &'static str,
 }
 
@@ -325,7 +326,10 @@ impl VetRecord {
                 .as_ref()
                 .zip(found.levels.as_ref())
                 .map(|(c, l)| LevelsRecord::new(built, c, l)),
-            trims: found.trims.as_ref().map(|list| list.iter().map(|trim| TrimRecord::new(built, trim)).collect()),
+            trims: found.trims.as_ref().map(|list| {
+                let both = list.iter().zip(&found.selections);
+                both.map(|(trim, select)| TrimRecord::new(built, trim, select.as_ref())).collect()
+            }),
         }
     }
 }
@@ -346,6 +350,7 @@ fn piece(kind: Kind, piece: &BuiltPiece, tolerances: &Tolerances) -> VetPiece {
         notation: format_part(piece.label, kind),
         tolerance: [low, high],
         tolerance_from: match piece.tolerance {
+            _ if piece.has_own_tolerance => "slot",
             _ if piece.is_measured => "measured",
             Some(_) => "list",
             None => "flag",

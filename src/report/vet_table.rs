@@ -110,6 +110,7 @@ fn said_tolerances(record: &VetRecord) -> Vec<String> {
     };
     // How far up, in words, and for which parts.
     let mut listed: Vec<(f64, String, Vec<String>)> = Vec::new();
+    let mut own: Vec<(f64, String, Vec<String>)> = Vec::new();
     let mut measured: Vec<String> = Vec::new();
     for (section, part) in record.sections.iter().flat_map(|s| s.parts.iter().map(move |part| (s, part))) {
         for piece in &part.made_of {
@@ -117,21 +118,27 @@ fn said_tolerances(record: &VetRecord) -> Vec<String> {
             let name = unbroken(&format!("{} {}{of_pair}", section.name, part.slot));
             match piece.tolerance_from {
                 "measured" => measured.push(name),
-                "list" => {
+                from @ ("list" | "slot") => {
                     let words = unbroken(&in_words(piece.tolerance));
-                    match listed.iter_mut().find(|(_, known, _)| *known == words) {
+                    let lines = if from == "list" { &mut listed } else { &mut own };
+                    match lines.iter_mut().find(|(_, known, _)| *known == words) {
                         Some((_, _, names)) => names.push(name),
-                        None => listed.push((piece.tolerance[1], words, vec![name])),
+                        None => lines.push((piece.tolerance[1], words, vec![name])),
                     }
                 }
                 _ => {}
             }
         }
     }
-    listed.sort_by(|(a, ..), (b, ..)| b.total_cmp(a));
-    let shown = listed.into_iter();
-    let mut lines: Vec<String> =
-        shown.map(|(_, words, names)| format!("{words} by the stock list: {}", names.join(", "))).collect();
+    let mut lines = Vec::new();
+    for (mut found, by) in [(listed, "by the stock list"), (own, "as given for")] {
+        found.sort_by(|(a, ..), (b, ..)| b.total_cmp(a));
+        let shown = found.into_iter();
+        lines.extend(shown.map(|(_, words, names)| match by {
+            "as given for" => format!("{words} {by} {}", names.join(", ")),
+            _ => format!("{words} {by}: {}", names.join(", ")),
+        }));
+    }
     if !measured.is_empty() {
         lines.push(format!("measured, and taken without a tolerance: {}", measured.join(", ")));
     }
