@@ -248,6 +248,12 @@ fn vet_agrees_with_the_shortlist() {
         near(&row["ends"][end]["error"], &vetted["real"]["ends"][end]["error"]);
         near(&row["ends"][end]["sections"][0]["q"], &vetted["real"]["ends"][end]["sections"][0]["q"]);
     }
+    // What is computed for ideal op-amps is said to be off.
+    assert_eq!(vetted["is_compensated"], true);
+    let page = in_one_line(&out(&run(folder.path(), "vet list.json --row 1 --boards 100")));
+    assert!(page.contains("off by that correction. Add the op-amps, such as --gbw 10MHz"), "{page}");
+    let steps = in_one_line(&out(&run(folder.path(), "tighten list.json --within 3dB --boards 100")));
+    assert!(steps.contains("off by that correction"), "{steps}");
 }
 
 #[test]

@@ -34,7 +34,7 @@ struct Settings {
 /// Bad input, an output that cannot be written.
 pub fn run(args: &TightenArgs) -> Result<u8, Failure> {
     let Settings { steps, sampling, wanted_yield, prices, rows } = settings(args)?;
-    let (title, rows, boards) = boards(args, rows)?;
+    let Boards { title, rows, boards, is_compensated } = boards(args, rows)?;
     let Some(first) = boards.first() else {
         let fault = Fault::at("--rows", "the list has no rows");
         return Err(Failure::input(
@@ -63,6 +63,7 @@ pub fn run(args: &TightenArgs) -> Result<u8, Failure> {
     let asked = TightenQuestion {
         title: &title,
         rows: &rows,
+        is_compensated,
         within,
         target_keeps,
         steps: &steps,
@@ -138,8 +139,18 @@ fn rows(text: &str, faults: &mut Vec<Fault>) -> Vec<usize> {
     list
 }
 
-/// The title of the list, the numbers of the rows that are asked for, and their boards.
-fn boards(args: &TightenArgs, rows: Option<Vec<usize>>) -> Result<(String, Vec<usize>, Vec<Built>), Failure> {
+/// The rows of a list.
+struct Boards {
+    title: String,
+    /// The numbers of the rows that are asked for.
+    rows: Vec<usize>,
+    boards: Vec<Built>,
+    /// Whether they were searched for with real op-amps in mind.
+    is_compensated: bool,
+}
+
+/// The rows of the list that are asked for.
+fn boards(args: &TightenArgs, rows: Option<Vec<usize>>) -> Result<Boards, Failure> {
     let text = read_text(&args.list)?;
     let failed = |faults| Failure::Input(vec![faulty(&args.list, &text, faults)]);
     let listed = Listed::parse(&text).map_err(failed)?;
@@ -152,7 +163,7 @@ fn boards(args: &TightenArgs, rows: Option<Vec<usize>>) -> Result<(String, Vec<u
             .map_err(|message| Failure::input(Fault::at("--rows", message).help("choose rows of the list")))?;
         boards.push(listed.built(row, &mut circuits).map_err(|faults| failed(located(&text, faults)))?);
     }
-    Ok((listed.title, rows, boards))
+    Ok(Boards { title: listed.title, rows, boards, is_compensated: listed.is_compensated })
 }
 
 /// The error that a board may have, in the unit of the list's measure.

@@ -22,7 +22,7 @@ use crate::text::{Fault, located};
 /// Bad input, an output that cannot be written.
 pub fn run(args: &VetArgs) -> Result<u8, Failure> {
     let VetSettings { tolerances, sampling, climate, drifts, slots, select, real, levels } = VetSettings::new(args)?;
-    let (mut built, boards) = board(args)?;
+    let (mut built, boards, is_compensated) = board(args)?;
     let missing: Vec<Fault> = slots.iter().filter_map(|slot| slot.apply(&mut built).err()).collect();
     if !missing.is_empty() {
         let (file, text) = (String::new(), String::new());
@@ -35,7 +35,8 @@ pub fn run(args: &VetArgs) -> Result<u8, Failure> {
     let pool = pool.map_err(|error| Failure::Threads(error.to_string()))?;
     let conditions = Conditions { tolerances, mask, climate, real, levels, trim: args.trim, select, sampling };
     let found = pool.install(|| vet(&built, &conditions));
-    let record = VetRecord::new(&built, args.row, boards, &conditions, &found);
+    let mut record = VetRecord::new(&built, args.row, boards, &conditions, &found);
+    record.is_compensated = is_compensated;
     output.write(&written(&record, args.format, usize::from(args.width))?)?;
     let missed = record.mask.as_ref().is_some_and(|mask| matches!(mask.fails, Some("target" | "nominal")));
     Ok(if missed { NOTHING_WITHIN_LIMITS } else { FOUND })
@@ -47,8 +48,9 @@ pub(super) fn faulty(path: &Path, text: &str, faults: Vec<Fault>) -> Faulty {
     Faulty { file, text: text.to_string(), faults, is_first_round: false }
 }
 
-/// The board of the row that is asked for, and of how many that differ it is the worst.
-fn board(args: &VetArgs) -> Result<(Built, usize), Failure> {
+/// The board of the row that is asked for, of how many that differ it is the worst, and whether it was searched for with real
+/// op-amps in mind.
+fn board(args: &VetArgs) -> Result<(Built, usize, bool), Failure> {
     let text = read_text(&args.list)?;
     let failed = |faults| Failure::Input(vec![faulty(&args.list, &text, faults)]);
     let listed = Listed::parse(&text).map_err(failed)?;
@@ -57,7 +59,7 @@ fn board(args: &VetArgs) -> Result<(Built, usize), Failure> {
         .row(args.row)
         .map_err(|message| Failure::input(Fault::at("--row", message).help("choose a row of the list")))?;
     let built = listed.built(row, &mut circuits).map_err(|faults| failed(located(&text, faults)))?;
-    Ok((built, row.boards))
+    Ok((built, row.boards, listed.is_compensated))
 }
 
 /// Finds a circuit by its identifier: among the files that are given, then in the library.

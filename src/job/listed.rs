@@ -32,6 +32,8 @@ pub struct Listed {
     pub sections: Vec<ListedSection>,
     /// The rows in the order of the file.
     pub rows: Vec<ListedRow>,
+    /// Whether they were searched for with real op-amps or surroundings in mind: with ideal ones they miss their target.
+    pub is_compensated: bool,
 }
 
 /// A section as it was asked for.
@@ -79,6 +81,7 @@ struct RawList {
     measure: RawMeasure,
     sections: Vec<RawSection>,
     shortlist: Vec<RawRow>,
+    compensation: Option<serde::de::IgnoredAny>,
 }
 
 #[derive(Deserialize)]
@@ -208,7 +211,10 @@ impl Listed {
             }
         }
         match sections.into_iter().collect::<Option<Vec<_>>>() {
-            Some(sections) if faults.is_empty() => Ok(Listed { title: raw.title, criterion, sections, rows }),
+            Some(sections) if faults.is_empty() => {
+                let is_compensated = raw.compensation.is_some();
+                Ok(Listed { title: raw.title, criterion, sections, rows, is_compensated })
+            }
             _ => Err(located(text, faults)),
         }
     }

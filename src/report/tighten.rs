@@ -7,7 +7,7 @@ use serde::Serialize;
 use super::drawn::money;
 use super::layout::{Column, grid, paragraph, printable, unbroken};
 use super::numbers::{count, error_in_words};
-use super::vet_table::of_hundred;
+use super::vet_table::{compensated_in_words, of_hundred};
 use crate::analysis::{Distribution, Sampling, Step, StepPrices, Steps};
 
 /// The name and version of the JSON format: keys may be added to it, none is renamed or removed.
@@ -22,6 +22,9 @@ pub struct TightenRecord {
     pub title: String,
     /// The rows of the list that were compared.
     pub rows: Vec<usize>,
+    /// Whether the list was searched for with real op-amps or surroundings in mind: with the ideal ones that are assumed here
+    /// its boards are off by that correction.
+    pub is_compensated: bool,
     /// The error that a board may have, in the unit of the measure; `None` where it has to keep a mask.
     pub within: Option<f64>,
     /// The unit of that: `dB`, or empty for a plain ratio.
@@ -96,6 +99,8 @@ pub struct TightenQuestion<'a> {
     pub title: &'a str,
     /// The numbers of the rows.
     pub rows: &'a [usize],
+    /// Whether the list was searched for with real op-amps in mind.
+    pub is_compensated: bool,
     /// The error that a board may have, and its unit; `None` for a mask.
     pub within: Option<(f64, &'static str)>,
     /// Whether the target itself keeps it.
@@ -136,6 +141,7 @@ impl TightenRecord {
             format: TIGHTEN_FORMAT,
             title: asked.title.to_string(),
             rows: asked.rows.to_vec(),
+            is_compensated: asked.is_compensated,
             within: asked.within.map(|(limit, _)| limit),
             unit: asked.within.map_or("", |(_, unit)| unit),
             target_keeps: asked.target_keeps,
@@ -181,6 +187,9 @@ pub fn write_tighten_table(record: &TightenRecord, width: usize, out: &mut dyn W
         let line =
             format!("The target itself misses {wanted}: no parts mend that. Change the target or what is wanted.");
         text += &paragraph("", &line, width);
+    }
+    if record.is_compensated {
+        text += &paragraph("! ", &compensated_in_words(true), width);
     }
     let spread = if record.distribution == "uniform" { "evenly" } else { "normally, cut off at the tolerance" };
     let reels = match record.reel_share {

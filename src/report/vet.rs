@@ -33,6 +33,9 @@ pub struct VetRecord {
     /// How many boards of the row differ in their measured parts: what is looked at is the worst of them. 0 where all
     /// boards are alike.
     pub boards: usize,
+    /// Whether the list was searched for with real op-amps or surroundings in mind: then only `real` judges what is built, and
+    /// all else is off by their correction.
+    pub is_compensated: bool,
     /// The sections in signal order.
     pub sections: Vec<VetSection>,
     /// What the error is.
@@ -282,6 +285,7 @@ impl VetRecord {
             title: built.title.clone(),
             row,
             boards,
+            is_compensated: false,
             sections: built
                 .sections
                 .iter()

@@ -99,7 +99,20 @@ fn board(record: &VetRecord, width: usize) -> String {
     for line in said {
         text += &paragraph("            ", &line, width);
     }
-    text + &paragraph("Error:      ", &measure_in_words(&record.measure), width)
+    text += &paragraph("Error:      ", &measure_in_words(&record.measure), width);
+    if record.is_compensated {
+        text += &paragraph("! ", &compensated_in_words(record.real.is_some()), width);
+    }
+    text
+}
+
+/// What has to be said of a list that was searched for with real op-amps in mind.
+pub(super) fn compensated_in_words(is_real_shown: bool) -> String {
+    let next = if is_real_shown { "" } else { " Add the op-amps, such as --gbw 10MHz, to see what is built." };
+    format!(
+        "The list was searched for with real op-amps or surroundings in mind: whatever is computed for ideal ones is off by \
+         that correction.{next}"
+    )
 }
 
 /// The tolerances that the flags do not give: those of the stock list, the largest first, and measured parts.

@@ -13,7 +13,8 @@ For every output of every circuit a section is searched, and the first row's par
 Poles, zeros and least orders of `roundwell sections` are compared with scipy.signal, and where scipy has no such filter
 with the definition of its magnitude. All rows of the example jobs are recomputed the same way, and the best row of three
 part numbers is compared with all sets of so many. What `vet` says of a row is compared with boards drawn in numpy, its
-worst case, real response, headroom and noise with ngspice. The last line counts the checks; the exit code is 1 if one
+worst case, real response, headroom and noise with ngspice, and so is what rows searched for with real op-amps give as
+built. The last line counts the checks; the exit code is 1 if one
 failed.
 """
 
