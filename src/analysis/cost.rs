@@ -21,7 +21,7 @@ fn bought(built: &Built, kind: Kind) -> u64 {
 }
 
 /// What the parts of one board of each step's row cost, millionths of the currency: parts of a kind times their price. `None`
-/// where a price that is needed is not known. The steps lie in the order in which [`super::tighten`] gives them.
+/// where a price that is needed is not known. The steps lie in the order in which [`super::tighten()`] gives them.
 pub fn costs(steps: &[Step], rows: &[Built], prices: &StepPrices) -> Vec<Option<u64>> {
     let price = |list: &[Option<u64>], step: usize, count: u64| match count {
         0 => Some(0),

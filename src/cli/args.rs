@@ -59,7 +59,7 @@ pub enum Command {
     Vet(Box<VetArgs>),
     /// What tighter parts would buy: the yield of the best row for each step of tolerances.
     #[command(after_help = super::tighten_args::HELP)]
-    Tighten(TightenArgs),
+    Tighten(Box<TightenArgs>),
 }
 
 const SHORTLIST_HELP: &str = "\
