@@ -6,12 +6,13 @@ mod command;
 mod support;
 
 use std::path::Path;
+use std::sync::atomic::{AtomicUsize, Ordering};
 
 use command::{code, err, in_one_line, json, out, refused, run, without_time};
 use num_complex::Complex64;
 use roundwell::analysis::{Corrected, RealSection, Surroundings, compensated, correct, miss};
 use roundwell::parts::Series;
-use roundwell::search::{Problem, Row, Unwatched, ideal_parts, shortlist};
+use roundwell::search::{Monitor, Problem, Row, StopReason, Unwatched, ideal_parts, shortlist};
 use roundwell::target::Shape;
 use roundwell::units::Kind;
 use support::{Slots, TAU, all_rows, ohms, second, section, series};
@@ -139,6 +140,38 @@ fn rows_hit_the_target_as_built() {
     // Ideal op-amps ask for no correction.
     let ideal = compensated(&problem, &Surroundings::IDEAL, 0.0, &Unwatched);
     assert_eq!((ideal.outcome.rows, ideal.searches), (plain.rows, 1));
+}
+
+/// Stops once it has been asked so many times.
+struct Patience(AtomicUsize, usize);
+
+impl Monitor for Patience {
+    fn stop(&self) -> Option<StopReason> {
+        let asked = self.0.fetch_add(1, Ordering::Relaxed);
+        (asked >= self.1).then_some(StopReason::Interrupted)
+    }
+}
+
+/// A further search that is stopped is not counted, and it is said; the best so far stays.
+#[test]
+fn a_search_for_better_ratios_can_be_stopped() {
+    let mut problem = fast();
+    problem.sections[0].equal.clear();
+    problem.goals.error_resolution = 1e-3;
+    let pool = rayon::ThreadPoolBuilder::new().num_threads(1).build().unwrap();
+    let searched = |patience: usize| {
+        let monitor = Patience(AtomicUsize::new(0), patience);
+        let found = pool.install(|| compensated(&problem, &with_bandwidth(GBW), 0.0, &monitor));
+        (found, monitor.0.into_inner())
+    };
+    let (whole, asked) = searched(usize::MAX);
+    assert_eq!((whole.stopped, whole.outcome.stopped), (None, None));
+    let (cut, _) = searched(asked - 1);
+    assert_eq!((cut.stopped, cut.outcome.stopped), (Some(StopReason::Interrupted), None));
+    assert_eq!(cut.searches, whole.searches - 1);
+    let (first, _) = searched(0);
+    assert_eq!((first.stopped, first.outcome.stopped), (None, Some(StopReason::Interrupted)));
+    assert_eq!(first.searches, 1);
 }
 
 // Source: 1/Q becomes 1/Q - 4 f0/GBW in the Tow-Thomas circuit (Budak; from memory), to first order.

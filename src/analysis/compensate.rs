@@ -13,7 +13,7 @@ use super::real::{
     RealEnd, RealSection, both_ends, each_section, own_surroundings, real_ends, real_section, whole_error,
 };
 use crate::search::{
-    Chosen, Monitor, Outcome, Problem, Row, SectionProblem, ideal_parts, ideal_parts_near, shortlist,
+    Chosen, Monitor, Outcome, Problem, Row, SectionProblem, StopReason, ideal_parts, ideal_parts_near, shortlist,
 };
 use crate::target::{Criterion, Measure, Section, Shape, Yardstick};
 use crate::units::{Kind, Value, parse_part};
@@ -80,6 +80,8 @@ pub struct Compensated {
     pub best: Option<usize>,
     /// How many searches were made, each for other ratios of the parts.
     pub searches: usize,
+    /// Why a later one of them was stopped and is not counted, where one was.
+    pub stopped: Option<StopReason>,
 }
 
 /// How many searches are made at most.
@@ -105,10 +107,14 @@ pub fn compensated(problem: &Problem, around: &Surroundings, spread: f64, monito
         if tried.iter().any(|known| are_alike(known, &corrections)) {
             continue;
         }
-        tried.push(corrections.clone());
-        let found = searched(problem, around, spread, corrections, monitor);
-        if found.outcome.stopped.is_some() {
+        let found = searched(problem, around, spread, corrections.clone(), monitor);
+        if let Some(reason @ (StopReason::TimeLimit | StopReason::Interrupted)) = found.outcome.stopped {
+            best.stopped = Some(reason);
             break;
+        }
+        tried.push(corrections);
+        if found.outcome.stopped.is_some() {
+            continue;
         }
         if rank(&found) < rank(&best) {
             ahead.splice(0..0, rows_to_try(problem, &found));
@@ -212,7 +218,18 @@ fn searched(
         }),
     };
     let (ideal, nearest) = (outcome.ideal.as_ref().map(built), outcome.nearest.as_ref().map(built));
-    Compensated { problem: adjusted, outcome, corrections, rows, ideal, nearest, marked, best, searches: 1 }
+    Compensated {
+        problem: adjusted,
+        outcome,
+        corrections,
+        rows,
+        ideal,
+        nearest,
+        marked,
+        best,
+        searches: 1,
+        stopped: None,
+    }
 }
 
 /// A section with these values by slot, to twelve digits.

@@ -45,6 +45,7 @@ pub fn run(args: &ShortlistArgs) -> Result<u8, Failure> {
         let weighted = matches!(problem.criterion.measure, Measure::Weighted(_));
         let works = |row: &BuiltRow| row.error.is_some_and(|(error, _)| weighted || is_near(error));
         return Ok(match exit_code(&found.outcome) {
+            _ if found.stopped == Some(StopReason::Interrupted) => INTERRUPTED,
             FOUND if !found.rows.iter().any(works) => NOTHING_WITHIN_LIMITS,
             code => code,
         });

@@ -41,6 +41,8 @@ pub struct CompensationRecord {
     pub stray_farad: f64,
     /// How many searches were made, each adjusted for other ratios of the parts; the best is shown.
     pub searches: usize,
+    /// Why no further ratios were tried, where that was not for want of them.
+    pub stopped: Option<String>,
     /// The sections in signal order.
     pub sections: Vec<CorrectionRecord>,
     /// The rows as built, in the order of the shortlist.
@@ -167,6 +169,11 @@ impl BuiltSectionRecord {
         }
     }
 
+    /// Whether f0 or Q miss by more than those of another, and by more than `least`.
+    pub(super) fn misses_more_than(&self, other: &BuiltSectionRecord, least: f64) -> bool {
+        self.worst_miss() > other.worst_miss().max(least)
+    }
+
     fn worst_miss(&self) -> f64 {
         self.f0_miss.map_or(f64::INFINITY, f64::abs).max(self.q_miss.map_or(0.0, f64::abs))
     }
@@ -243,6 +250,7 @@ impl CompensatedRecord {
             load_resistance_ohm: around.load_resistance,
             stray_farad: around.stray,
             searches: found.searches,
+            stopped: found.stopped.map(|reason| reason.describe().to_string()),
             sections: wanted.iter().zip(&found.corrections).map(|(w, c)| CorrectionRecord::new(w, c)).collect(),
             rows,
             references: references.iter().filter_map(|(name, r)| Some(row(None, Some(name), r.as_ref()?))).collect(),

@@ -85,6 +85,10 @@ fn corrections(record: &CompensatedRecord, width: usize) -> String {
         1 => "One search was made, for the ratios of the ideal parts.".to_string(),
         searches => format!("{searches} searches were made, each for other ratios; the best is shown."),
     };
+    if let Some(reason) = &compensation.stopped {
+        let line = format!("The search for better ratios was stopped: {reason}.");
+        text += &paragraph("", &line, width);
+    }
     text + &paragraph(
         "",
         &format!(
@@ -148,12 +152,19 @@ fn as_built(record: &CompensatedRecord, list: &Record, width: usize) -> String {
         }
     }
     for (k, bandwidth) in ends_of(compensation).iter().enumerate() {
-        let header = format!("error {in_unit}\n{}", level(*bandwidth, 3, "Hz"));
+        let header = format!("{in_unit} at\n{}", level(*bandwidth, 3, "Hz"));
         columns.push(Column::right(header, errors(&|row| row.ends.get(k)?.error)));
     }
     let mut text = paragraph("", "As built, against what is wanted:", width) + &grid(&columns, 1, width);
     if rows.iter().any(|row| row.nominal.sections.iter().any(|section| section.state == "unstable")) {
         text += &paragraph("  ", "unstable: it oscillates", width);
+    }
+    // Another network asks for another correction.
+    let others = compensation.references.iter().filter(|row| row.name == Some("ideal parts"));
+    let mut others = others.flat_map(|row| &row.nominal.sections).zip(&compensation.sections);
+    if others.any(|(built, section)| built.misses_more_than(&section.with, 1e-4)) {
+        let line = "the ideal parts, and the values nearest to them, have other ratios than the correction is for";
+        text += &paragraph("  ", line, width);
     }
     if let Some(best) = compensation.best.filter(|best| Some(*best) != compensation.marked) {
         text += &paragraph("  ", &format!("row {best} comes closest as built"), width);
