@@ -37,7 +37,7 @@ fn problem(title: String, sections: Vec<SectionProblem>) -> Problem {
 fn butterworth(order: usize, circuit: &str, gain: f64) -> Problem {
     let one = |k: usize| {
         let q = 0.5 / (PI * (2 * k + 1) as f64 / (2 * order) as f64).cos();
-        let target = Section::new(&format!("{}", k + 1), Shape::LowPass, TAU * 1e3, Some(q), gain, None);
+        let target = Section::new(format!("{}", k + 1), Shape::LowPass, TAU * 1e3, Some(q), gain, None);
         section(target.expect("a section"), circuit, "low-pass")
     };
     problem(format!("Butterworth {order}, {circuit}"), (0..order / 2).map(one).collect())

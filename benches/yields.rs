@@ -74,6 +74,7 @@ fn one_board_in_full(bencher: Bencher) {
         real: None,
         levels: None,
         trim: false,
+        select: Vec::new(),
         sampling: Sampling::default(),
     };
     let built = filter();

@@ -377,7 +377,9 @@ fn the_keys_of_the_json_are_there() {
         ["kind", "value", "notation", "grade", "measured", "id", "lines", "per_board", "need", "available", "to_buy"];
     assert_eq!(keys(&row["taken"][0]), all(&expected));
     let piece = &row["sections"][0]["parts"][0]["made_of"][0];
-    assert_eq!(keys(piece), all(&["value", "notation", "measured", "tolerance", "id", "lines"]));
+    let expected =
+        ["value", "notation", "measured", "tolerance", "temperature_coefficient_ppm", "ageing", "id", "lines"];
+    assert_eq!(keys(piece), all(&expected));
     // Without a stock list nothing is said of one.
     assert!(listed(&folder, SECTION)["stock"].is_null());
 }

@@ -198,3 +198,25 @@ proptest! {
         prop_assert!(less.with_age.0 >= less.temperature.0 - 1e-12);
     }
 }
+
+// Source: closed form, w0 = 1/(R C); what the list says of the capacitor counts whatever the flags say of its kind.
+#[test]
+fn what_a_stock_list_says_of_a_part_counts_for_it() {
+    let mut built = first_order();
+    let capacitor = built.sections[0].parts.iter_mut().find(|part| part.kind == Kind::Capacitor).unwrap();
+    (capacitor.pieces[0].coefficient, capacitor.pieces[0].ageing) = (Some((-870e-6, -630e-6)), Some(0.02));
+    let mut around = climate(either(100.0, 200.0), exact(500.0));
+    (around.resistors.ageing, around.capacitors.ageing) = (0.005, 0.3);
+    let found = drifted(&built, &around).sections[0].f0;
+    let change = |r: f64, c: f64, kelvin: f64, age: f64| {
+        1.0 / ((1.0 + r * kelvin + 0.25 * age) * (1.0 + c * kelvin + age)) - 1.0
+    };
+    // Hot, the resistor may fall and the capacitor falls by 870 ppm/K at most; cold both rise.
+    let (high, low) = (change(-100e-6, -870e-6, 35.0, 0.0), change(-100e-6, -870e-6, -45.0, 0.0));
+    assert!(
+        (found.temperature.high - high).abs() < 1e-12 && (found.temperature.low - low).abs() < 1e-12,
+        "{found:?}"
+    );
+    let (high, low) = (change(-100e-6, -870e-6, 35.0, -0.02), change(-100e-6, -870e-6, -45.0, 0.02));
+    assert!((found.with_age.high - high).abs() < 1e-12 && (found.with_age.low - low).abs() < 1e-12, "{found:?}");
+}

@@ -38,7 +38,7 @@ fn target(shape: Shape, f0: f64, q: f64) -> Section {
 }
 
 fn conditions(around: Surroundings) -> RealConditions {
-    RealConditions { around, shift: 0.01, level: None }
+    RealConditions { around, shift: 0.01, level: None, spread: 0.0 }
 }
 
 fn with_bandwidth(bandwidth: f64) -> Surroundings {
@@ -266,4 +266,45 @@ fn the_slew_rate_follows_the_sine() {
     let expected = 10.0 / (R * C) * 5.0 * h(10.0) / h(0.1);
     assert!((slew.rate / expected - 1.0).abs() < 1e-9, "{slew:?} {expected}");
     assert_eq!((slew.section, slew.op_amp), (0, 0));
+}
+
+// Source: the exact cubic of the test above, once more with its coefficients written out; its roots found here by Newton's
+// iteration from the ideal pole. First order: f0 moves by -Q f0/GBW.
+#[test]
+fn both_ends_of_the_bandwidth_are_those_of_the_exact_roots() {
+    let (q, f0) = (5.0, 40e3);
+    let c = 1.0 / (TAU * f0 * R);
+    let (c1, c2) = (2.0 * q * c, c / (2.0 * q));
+    let values = [("R1", R), ("R2", R), ("C1", c1), ("C2", c2)];
+    let built = board(target(Shape::LowPass, f0, q), "sallen-key-low-pass", "low-pass", &values);
+    let exact = |bandwidth: f64| {
+        let (t, a, b) = (1.0 / (TAU * bandwidth), R * (c1 + 2.0 * c2), R * R * c1 * c2);
+        let coefficients = [1.0, a + t - R * c1, b + a * t, b * t];
+        let zero = num_complex::Complex64::new(0.0, 0.0);
+        let at = |s: num_complex::Complex64| coefficients.iter().rev().fold(zero, |sum, k| sum * s + k);
+        let slope =
+            |s: num_complex::Complex64| s * s * 3.0 * coefficients[3] + s * 2.0 * coefficients[2] + coefficients[1];
+        let mut s = num_complex::Complex64::new(-0.1, 1.0) * TAU * f0;
+        (0..50).for_each(|_| s -= at(s) / slope(s));
+        (s.norm() / (TAU * f0), s.norm() / (-2.0 * s.re))
+    };
+    let asked = RealConditions { spread: 0.3, ..conditions(with_bandwidth(10e6)) };
+    let found = real(&built, &asked, &built.yardstick());
+    assert_eq!(found.ends.len(), 2);
+    for (end, bandwidth) in found.ends.iter().zip([7e6, 13e6]) {
+        assert!((end.bandwidth / bandwidth - 1.0).abs() < 1e-12);
+        let RealSection::Stable { w0, q: Some(quality), least_bandwidth: None } = end.sections[0] else {
+            panic!("{end:?}");
+        };
+        let (expected, of_q) = exact(bandwidth);
+        assert!((w0 / (TAU * f0) / expected - 1.0).abs() < 1e-9 && (quality / of_q - 1.0).abs() < 1e-8, "{quality}");
+        assert!(end.error.is_some());
+    }
+    // The slower op-amp is the worse one, and both lie about what the nominal one gives.
+    let error = |end: usize| found.ends[end].error.unwrap().0;
+    assert!(error(0) > found.error.unwrap().0 && error(1) < found.error.unwrap().0);
+    // Without a spread there are no ends.
+    assert!(looked_at(&built, with_bandwidth(10e6)).ends.is_empty());
+    let ideal = RealConditions { spread: 0.3, ..conditions(Surroundings::IDEAL) };
+    assert!(real(&built, &ideal, &built.yardstick()).ends.is_empty());
 }

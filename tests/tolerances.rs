@@ -118,6 +118,7 @@ fn the_result_is_the_same_for_any_number_of_threads() {
         real: None,
         levels: None,
         trim: false,
+        select: Vec::new(),
         sampling: sampling(5, 20_000),
     };
     let with = |threads| {
@@ -405,6 +406,7 @@ fn unstable_boards_are_told() {
         real: None,
         levels: None,
         trim: false,
+        select: Vec::new(),
         sampling: sampling(1, 2000),
     };
     let found = vet(&built, &conditions);
@@ -432,6 +434,7 @@ fn the_nominal_error_matters_or_not() {
                 real: None,
                 levels: None,
                 trim: false,
+                select: Vec::new(),
                 sampling: sampling(1, 100),
             },
         )

@@ -7,10 +7,12 @@ mod support;
 use std::f64::consts::TAU;
 
 use roundwell::analysis::{
-    Boards, Built, BuiltPart, BuiltSection, Distribution, Joint, Sensitivities, Tolerances, Trim, Watch, trims,
+    Boards, Built, BuiltPart, BuiltSection, Distribution, Joint, Sensitivities, Tolerances, Trim, Watch, selection,
+    trims,
 };
+use roundwell::parts::Series;
 use roundwell::target::{Criterion, Section, Shape};
-use roundwell::units::{Kind, parse_part};
+use roundwell::units::{Kind, format_part, parse_part};
 
 fn board(target: Section, id: &str, output: &str, values: &[(&str, f64)]) -> Built {
     let circuit = support::library(id);
@@ -147,4 +149,37 @@ fn what_is_watched_rests_on_what_is_set() {
     let found = trims(&notch, &tolerances(0.01, 0.05));
     assert_eq!(named(&notch, &found), [("R1".to_string(), "f0")]);
     assert!(matches!(found[0].watch, Watch::Least { at } if (at / 50.0 / TAU - 1.0).abs() < 1e-12));
+}
+
+/// Values to select from on test, by hand: R2 = 10k has to reach 8.7k to 11.3k; of E24 with 1 % that is 8k2 (8.282k at most) to 12k
+/// (11.88k at least). The widest step is that from 8k2 to 9k1; f0 follows R2 with -1/2.
+#[test]
+fn values_selected_on_test_cover_the_reach() {
+    let built = tow_thomas();
+    let plan = trims(&built, &tolerances(0.01, 0.05));
+    let (least, most) = Kind::Resistor.range();
+    let shelf = Series::E24.values_between(least, most);
+    let nominal = parse_part("10k", Kind::Resistor).unwrap();
+    let found = selection(&plan[0], nominal, &shelf, 0.01).unwrap();
+    let names: Vec<String> = found.values.iter().map(|value| format_part(*value, Kind::Resistor)).collect();
+    assert_eq!(names, ["8k2", "9k1", "10k", "11k", "12k"]);
+    assert!((plan[0].sensitivity + 0.5).abs() < 1e-12, "{}", plan[0].sensitivity);
+    assert!((found.leaves - 0.5 * 0.9 / 17.3).abs() < 1e-12, "{}", found.leaves);
+    let (a, b) = (8.2 * 0.99, 9.1 * 1.01);
+    assert!((found.leaves_with_tolerance - 0.5 * (b - a) / (b + a)).abs() < 1e-12);
+    // Brute force: whatever is needed between them, one of the values leaves no more, and somewhere no less.
+    let left = |needed: f64| {
+        let off = found.values.iter().map(|value| (value.to_f64() / needed - 1.0).abs());
+        0.5 * off.fold(f64::INFINITY, f64::min)
+    };
+    let worst = (0..=380_000).map(|k| left(8.2e3 + 0.01 * f64::from(k))).fold(0.0, f64::max);
+    assert!(worst <= found.leaves * (1.0 + 1e-12) && worst > found.leaves * 0.9999, "{worst}");
+    // A finer series leaves less; a shelf that ends too early does not do.
+    let fine = selection(&plan[0], nominal, &Series::E96.values_between(least, most), 0.01).unwrap();
+    assert!(fine.leaves < found.leaves / 3.0 && fine.values.len() > 10);
+    for (from, to) in [("8k7", "1M"), ("1k", "11k")] {
+        let end = |text| parse_part(text, Kind::Resistor).unwrap();
+        assert_eq!(selection(&plan[0], nominal, &Series::E24.values_between(end(from), end(to)), 0.01), None);
+    }
+    assert_eq!(selection(&plan[0], nominal, &[], 0.01), None);
 }

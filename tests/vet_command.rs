@@ -258,12 +258,23 @@ fn real_op_amps_are_shown_where_they_are_asked_for() {
     assert_eq!(page(""), "");
     let full = "--gbw 1MHz --output-resistance 75 --source-resistance 50 --load-resistance 2k --stray 3p --shift 0.5% \
                 --output-level 5";
-    let shown = [page(full), page("--stray 10p"), page("--gbw 2kHz")];
+    let spread = "--gbw 1MHz --gbw-spread 30%";
+    let shown =
+        [page(full), page("--stray 10p"), page("--gbw 2kHz"), page(spread), page("--gbw 9k --gbw-spread 90%")];
     insta::assert_snapshot!(shown.join("\n--------\n"));
     let output = run(folder.path(), &format!("vet list.json --row 2 --format json {full}"));
     let value: Json = serde_json::from_slice(&output.stdout).unwrap();
     assert_eq!(value["real"]["sections"][0]["state"], "stable");
     assert_eq!(value["real"]["slew"]["op_amp"], "A1");
+    assert_eq!((&value["real"]["bandwidth_spread"], &value["real"]["ends"]), (&json!(0.0), &json!([])));
+    let output = run(folder.path(), &format!("vet list.json --row 2 --format json {spread}"));
+    let value: Json = serde_json::from_slice(&output.stdout).unwrap();
+    let ends = value["real"]["ends"].as_array().unwrap();
+    assert_eq!(value["real"]["bandwidth_spread"], 0.3);
+    assert_eq!((ends[0]["bandwidth_hz"].as_f64(), ends[1]["bandwidth_hz"].as_f64()), (Some(7e5), Some(1.3e6)));
+    for end in ends {
+        assert!(end["error"].as_f64().unwrap() > 0.0 && end["sections"][0]["f0_hz"].as_f64().unwrap() > 900.0);
+    }
 }
 
 #[test]
@@ -388,8 +399,15 @@ fn bad_input_is_told_with_its_range() {
         "vet list.json --resistor-coefficient 50".to_string(),
         "vet list.json --gbw -1MHz --load-resistance 0 --stray 10k --shift 0% --output-level 0".to_string(),
         "vet list.json --shift 1%".to_string(),
+        "vet list.json --gbw 1MHz --gbw-spread 130%".to_string(),
+        "vet list.json --gbw 1MHz --gbw-spread -30%".to_string(),
+        "vet list.json --gbw 1MHz --gbw-spread 30".to_string(),
+        "vet list.json --gbw-spread 30%".to_string(),
         "vet list.json --swing 0 --voltage-noise -1 --current-noise x".to_string(),
         "vet list.json --voltage-noise 5".to_string(),
+        "vet list.json --trim --trim-values E7:1k..1M".to_string(),
+        "vet list.json --trim --trim-values E24:1M..1k".to_string(),
+        "vet list.json --trim-values E24".to_string(),
         "vet job.ron".to_string(),
         "vet none.json".to_string(),
         "vet list.json --mask none.ron".to_string(),

@@ -166,6 +166,9 @@ fn faults_of_pairs_and_measured_parts_are_told() {
         ("0/made_of/0/notation", json!("11k"), "the value on the label is another than the value"),
         ("0/made_of/0/tolerance", json!([0.1, -0.1]), "0.1 to -0.1 is no tolerance"),
         ("0/made_of/0/tolerance", json!([-1.0, 0.5]), "-1 to 0.5 is no tolerance"),
+        ("0/made_of/0/temperature_coefficient_ppm", json!([50.0, -50.0]), "50 to -50 ppm/K is no range"),
+        ("0/made_of/0/temperature_coefficient_ppm", json!([-5e4, 0.0]), "-50000 to 0 ppm/K is no range"),
+        ("0/made_of/0/ageing", json!(-0.1), "-0.1 is no ageing: it is a ratio from 0 to below 1"),
         ("1/made_of/0/measured", json!(9.9e-9), "the value of a measured part is what was measured"),
     ] {
         let found = told(pointer, value);
@@ -205,4 +208,84 @@ fn a_tolerance_of_two_sides_keeps_to_them() {
         assert_eq!(built.sections[0].parts[1].kind, Kind::Capacitor);
         assert!((worst.errors[1] - limit).abs() < 1e-12 && worst.errors[0].abs() < 1e-12, "{worst:?}");
     }
+}
+
+/// A drawer that says how its parts change: page and JSON say so, and the drift is that of the closed form 1/(R C).
+#[test]
+fn drift_goes_by_the_columns_of_the_list() {
+    let folder = tempfile::tempdir().unwrap();
+    let drawer = "kind,value,quantity,tempco,ageing\nR,30k,9,±25,0.2%\nC,10n,9,-750±120,\n";
+    fs::write(folder.path().join("drawer.csv"), drawer).unwrap();
+    let job = "(circuit: \"rc-low-pass\", stock: \"drawer.csv\", error_limit: 3, sections: [(name: \"A\", \
+               shape: FirstOrderLowPass, f0: \"537.5 Hz\")])";
+    fs::write(folder.path().join("job.ron"), job).unwrap();
+    run(folder.path(), "shortlist job.ron --format json --out list.json");
+    let (text, _) = listed(&folder);
+    let list: Json = serde_json::from_str(&text).unwrap();
+    let parts = &list["shortlist"][0]["sections"][0]["parts"];
+    assert_eq!(parts[0]["made_of"][0]["temperature_coefficient_ppm"], json!([-25.0, 25.0]));
+    assert_eq!(parts[0]["made_of"][0]["ageing"], json!(0.002));
+    assert_eq!(parts[1]["made_of"][0]["temperature_coefficient_ppm"], json!([-870.0, -630.0]));
+    assert_eq!(parts[1]["made_of"][0]["ageing"], Json::Null);
+    // The list alone asks for the drift by age; capacitors do not age unless a flag says so.
+    let (json, text) = vetted(&folder, "");
+    let f0 = |json: &Json, key: &str| {
+        let of = &json["drift"]["figures"][0];
+        assert_eq!(of["figure"], "f0");
+        [of[key][0].as_f64().unwrap(), of[key][1].as_f64().unwrap()]
+    };
+    let [low, high] = f0(&json, "with_age");
+    assert!((low - (1.0 / 1.002 - 1.0)).abs() < 1e-12 && (high - (1.0 / 0.998 - 1.0)).abs() < 1e-12, "{low} {high}");
+    assert!(
+        text.contains("Drift by age") && text.contains("0.2 % over their life by the stock list: A R1"),
+        "{text}"
+    );
+    let (json, text) = vetted(&folder, "--temperature -20..60 --capacitor-coefficient 9000 --capacitor-ageing 1%");
+    let [low, high] = f0(&json, "by_temperature");
+    let change = |r: f64, c: f64, kelvin: f64| 1.0 / ((1.0 + r * kelvin) * (1.0 + c * kelvin)) - 1.0;
+    assert!((high - change(-25e-6, -870e-6, 35.0)).abs() < 1e-12, "{high}");
+    assert!((low - change(-25e-6, -870e-6, -45.0)).abs() < 1e-12, "{low}");
+    let [_, high] = f0(&json, "with_age");
+    let aged = 1.0 / ((1.0 - 25e-6 * 35.0 - 0.002) * (1.0 - 870e-6 * 35.0 - 0.01)) - 1.0;
+    assert!((high - aged).abs() < 1e-12, "{high} {aged}");
+    assert!(text.contains("-870 to -630 ppm/K by the stock list: A C1"), "{text}");
+    assert!(text.contains("-25 to 25 ppm/K; 0.2 % over their life by the stock list: A R1"), "{text}");
+    assert_eq!(json["drift"]["parts"][1]["coefficient_ppm"], json!([-870.0, -630.0]));
+}
+
+/// A tolerance for one slot wins over the list; for a measured part it is the accuracy of the measurement.
+#[test]
+fn a_slot_has_a_tolerance_of_its_own() {
+    let folder = prepared(1, MEASURED);
+    let (json, text) = vetted(&folder, "--tolerance R1=0.1%,A:C1=0.3%");
+    let made_of = |part: usize, piece: usize| json["sections"][0]["parts"][part]["made_of"][piece].clone();
+    for (part, piece, tolerance) in [(0, 0, 0.001), (0, 1, 0.001), (1, 0, 0.003)] {
+        let found = made_of(part, piece);
+        assert_eq!(
+            (&found["tolerance"], &found["tolerance_from"]),
+            (&json!([-tolerance, tolerance]), &json!("slot"))
+        );
+    }
+    // f0 = 1/(2π R C); 20k and 10k in series count by their shares, each spread evenly.
+    let expected = ((0.001f64 / 3.0).powi(2) + (0.002f64 / 3.0).powi(2) + 0.003f64.powi(2)).sqrt() / 3f64.sqrt();
+    let found = json["spread"]["figures"][0]["sensitivity_deviation"].as_f64().unwrap();
+    assert!((found / expected - 1.0).abs() < 1e-9, "{found} {expected}");
+    assert!(text.contains("±0.3 % as given for A C1 ±0.1 % as given for A R1 20k, A R1 10k"), "{text}");
+    let refused = |flags: &str| {
+        let binary = env!("CARGO_BIN_EXE_roundwell");
+        let mut command = Command::new(binary);
+        command.args(["vet", "list.json"]).args(flags.split_whitespace()).current_dir(folder.path());
+        let output = command.output().unwrap();
+        assert_eq!(output.status.code(), Some(2), "{flags}");
+        String::from_utf8(output.stderr).unwrap()
+    };
+    let flags = [
+        "--tolerance R3=0.1%",
+        "--tolerance B:R1=0.1%",
+        "--tolerance R1",
+        "--tolerance R1=95%,C1=5",
+        "--tolerance R1=-1%",
+    ];
+    let shown: Vec<String> = flags.iter().map(|flags| format!("$ {flags}\n{}", refused(flags))).collect();
+    insta::assert_snapshot!(shown.join("\n"));
 }

@@ -33,12 +33,28 @@ pub struct BuiltPiece {
     pub tolerance: Option<(f64, f64)>,
     /// The first line of the stock list that it is taken from.
     pub line: Option<usize>,
+    /// Whether the tolerance was given for its slot: then it counts even where the part was measured, as the accuracy of
+    /// that measurement.
+    pub has_own_tolerance: bool,
+    /// Its least and its largest temperature coefficient by the stock list, 1/K; `None` where no list says.
+    pub coefficient: Option<(f64, f64)>,
+    /// By how much it can be off at the end of its life by the stock list, relative, to either side; `None` where no list says.
+    pub ageing: Option<f64>,
 }
 
 impl From<Value> for BuiltPiece {
     /// A part that is in no stock list.
     fn from(value: Value) -> BuiltPiece {
-        BuiltPiece { value, label: value, is_measured: false, tolerance: None, line: None }
+        BuiltPiece {
+            value,
+            label: value,
+            is_measured: false,
+            tolerance: None,
+            line: None,
+            has_own_tolerance: false,
+            coefficient: None,
+            ageing: None,
+        }
     }
 }
 
@@ -165,12 +181,17 @@ impl BuiltPart {
     fn of_row(problem: &Problem, part: &Part) -> Option<BuiltPart> {
         let piece = |&choice: &Choice| {
             let lot = problem.supply.lot_of(choice);
+            let line = lot.and_then(|lot| lot.lines.first());
+            let coefficient = line.and_then(|line| line.temperature_coefficient);
             BuiltPiece {
                 value: choice.value,
                 label: lot.map_or(choice.value, |lot| lot.nominal),
                 is_measured: lot.is_some_and(|lot| lot.measured.is_some()),
                 tolerance: lot.and_then(listed_tolerance),
-                line: lot.and_then(|lot| lot.lines.first()).map(|line| line.line),
+                line: line.map(|line| line.line),
+                has_own_tolerance: false,
+                coefficient: coefficient.map(|c| (1e-6 * (c.mean() - c.spread()), 1e-6 * (c.mean() + c.spread()))),
+                ageing: line.and_then(|line| line.ageing).map(|ageing| ageing.to_f64()),
             }
         };
         let value = match part.value {
@@ -202,6 +223,28 @@ impl Built {
     /// The ideal sections.
     pub fn targets(&self) -> Vec<Section> {
         self.sections.iter().map(|section| section.target.clone()).collect()
+    }
+
+    /// Gives every part in a slot of that name a tolerance of its own, to either side, in the section of that name or in all.
+    /// Whether there is such a slot with a part.
+    pub fn set_tolerance(&mut self, section: Option<&str>, slot: &str, tolerance: f64) -> bool {
+        let mut found = false;
+        for of in self.sections.iter_mut().filter(|of| section.is_none_or(|name| of.target.name == name)) {
+            let circuit = of.circuit.clone();
+            for part in of.parts.iter_mut().filter(|part| circuit.slots[part.slot].name == slot) {
+                found = true;
+                for piece in &mut part.pieces {
+                    (piece.tolerance, piece.has_own_tolerance) = (Some((-tolerance, tolerance)), true);
+                }
+            }
+        }
+        found
+    }
+
+    /// Whether the stock list says of some part how it ages.
+    pub fn has_ageing(&self) -> bool {
+        let parts = self.sections.iter().flat_map(|section| &section.parts);
+        parts.flat_map(|part| &part.pieces).any(|piece| piece.ageing.is_some_and(|ageing| ageing > 0.0))
     }
 
     /// The measure, ready for use.

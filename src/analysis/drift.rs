@@ -92,6 +92,9 @@ struct Piece {
     part: usize,
     reel: Reel,
     share: f64,
+    /// What the stock list says of it.
+    coefficient: Option<(f64, f64)>,
+    ageing: Option<f64>,
 }
 
 struct Drifting<'a> {
@@ -104,7 +107,8 @@ struct Drifting<'a> {
 /// How far a board moves at the worst: coefficients and ages such that a figure, or the response at a frequency, moves most.
 ///
 /// Parts of one part number have one coefficient. Those of different part numbers lie anywhere in the range of their kind,
-/// but no further apart than its tracking: what depends on ratios of parts alike moves by the tracking alone. Which
+/// but no further apart than its tracking: what depends on ratios of parts alike moves by the tracking alone. A part whose
+/// stock list gives its coefficients lies anywhere between those, whatever the others do; its ageing counts likewise. Which
 /// coefficients move a figure most follows from the signs of the sensitivities; the board with those is then computed in
 /// full.
 pub fn drift(built: &Built, climate: &Climate, yardstick: &Yardstick) -> Drift {
@@ -114,7 +118,13 @@ pub fn drift(built: &Built, climate: &Climate, yardstick: &Yardstick) -> Drift {
     let pieces = (parts.iter().enumerate())
         .flat_map(|(k, part)| {
             let shares = part.shares().into_iter();
-            shares.zip(&part.pieces).map(move |(share, piece)| Piece { part: k, reel: piece.reel(part.kind), share })
+            shares.zip(&part.pieces).map(move |(share, piece)| Piece {
+                part: k,
+                reel: piece.reel(part.kind),
+                share,
+                coefficient: piece.coefficient,
+                ageing: piece.ageing,
+            })
         })
         .collect();
     let drifting = Drifting { climate, parts, pieces, boards: Boards::new(built, &none) };
@@ -170,9 +180,11 @@ impl Drifting<'_> {
                     let at_top = if piece.reel.0 == Kind::Resistor { resistors_high } else { capacitors_high };
                     let bottom = if at_top { drift.high - width } else { drift.low };
                     let sum = sums.get(&piece.reel).copied().unwrap_or(0.0);
-                    let coefficient = if goal * sum * kelvin > 0.0 { bottom + width } else { bottom };
+                    let (least, largest) = piece.coefficient.unwrap_or((bottom, bottom + width));
+                    let coefficient = if goal * sum * kelvin > 0.0 { largest } else { least };
                     let slope = goal * slopes[piece.part];
-                    let age = if with_age && slope.abs() > 0.0 { drift.ageing * slope.signum() } else { 0.0 };
+                    let ageing = piece.ageing.unwrap_or(drift.ageing);
+                    let age = if with_age && slope.abs() > 0.0 { ageing * slope.signum() } else { 0.0 };
                     coefficient * kelvin + age
                 };
                 let errors: Vec<f64> = self.pieces.iter().map(error).collect();

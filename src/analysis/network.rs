@@ -206,9 +206,9 @@ impl Network {
         self.constant.iter().zip(&self.slope).map(row).collect()
     }
 
-    /// All unknowns at the angular frequency `w`, rad/s, for a source of 1 V; `None` if they are not determined.
-    fn solved(&self, w: f64) -> Option<Vec<Complex64>> {
-        let factors = Factors::of(self.at(Complex64::new(0.0, w)))?;
+    /// All unknowns at a complex frequency, for a source of 1 V; `None` if they are not determined.
+    fn solved(&self, s: Complex64) -> Option<Vec<Complex64>> {
+        let factors = Factors::of(self.at(s))?;
         let mut right = vec![ZERO; self.constant.len()];
         right[self.source] = Complex64::new(1.0, 0.0);
         Some(factors.solve(right))
@@ -216,8 +216,32 @@ impl Network {
 
     /// The response from the source to the output, and the voltage at each op-amp's output, at `w` rad/s.
     pub fn response(&self, w: f64) -> Option<(Complex64, Vec<Complex64>)> {
-        let solution = self.solved(w)?;
+        let solution = self.solved(Complex64::new(0.0, w))?;
         Some((solution[self.output], self.op_amps.iter().map(|&place| solution[place]).collect()))
+    }
+
+    /// The zero of the response from source to output next to a complex frequency, by the secant method; `None` where it is
+    /// lost.
+    pub fn zero_near(&self, start: Complex64) -> Option<Complex64> {
+        let value = |s: Complex64| Some(self.solved(s)?[self.output]);
+        let (mut before, mut here) = (start * (1.0 + 1e-4), start);
+        let (mut of_before, mut of_here) = (value(before)?, value(here)?);
+        for _ in 0..60 {
+            if of_here.norm() <= 0.0 {
+                return Some(here);
+            }
+            let step = of_here * (here - before) / (of_here - of_before);
+            if !step.is_finite() {
+                return None;
+            }
+            (before, of_before) = (here, of_here);
+            here -= step;
+            if step.norm() < 1e-12 * here.norm() {
+                return Some(here);
+            }
+            of_here = value(here)?;
+        }
+        None
     }
 
     /// d ln det / ds at a complex frequency.

@@ -37,6 +37,19 @@ pub struct Real {
     pub error: Option<(f64, f64)>,
     /// The slew rate that the wanted output level asks for.
     pub slew: Option<Slew>,
+    /// The board with the least and with the largest gain-bandwidth product, where it has a spread.
+    pub ends: Vec<RealEnd>,
+}
+
+/// What a board becomes with op-amps from one end of the spread of their gain-bandwidth product: all of them from that end.
+#[derive(Clone, Debug, PartialEq)]
+pub struct RealEnd {
+    /// The gain-bandwidth product there, Hz.
+    pub bandwidth: f64,
+    /// The sections, without their least bandwidths.
+    pub sections: Vec<RealSection>,
+    /// As [`Real::error`].
+    pub error: Option<(f64, f64)>,
 }
 
 /// The steepest that an op-amp's output has to move.
@@ -61,6 +74,15 @@ pub struct RealConditions {
     pub shift: f64,
     /// The largest amplitude of a sine at the output, V, where a slew rate is asked for.
     pub level: Option<f64>,
+    /// How far the gain-bandwidth product may lie from its nominal value, relative, 0 to below 1; 0 for not at all.
+    pub spread: f64,
+}
+
+/// The surroundings with the least and with the largest gain-bandwidth product; none without a spread.
+pub(super) fn both_ends(around: &Surroundings, spread: f64) -> Vec<Surroundings> {
+    let bandwidth = around.bandwidth.filter(|_| spread > 0.0);
+    let end = |bandwidth: f64, factor: f64| Surroundings { bandwidth: Some(bandwidth * factor), ..*around };
+    bandwidth.map_or(Vec::new(), |b| [1.0 - spread, 1.0 + spread].map(|factor| end(b, factor)).to_vec())
 }
 
 /// What a board becomes with such op-amps and surroundings.
@@ -69,25 +91,62 @@ pub struct RealConditions {
 /// solve of the whole board at each frequency of the measure. Strays lie at every node but the input; a flat gain that the
 /// measure ignores is not taken out here.
 pub fn real(built: &Built, conditions: &RealConditions, yardstick: &Yardstick) -> Real {
-    let RealConditions { around, shift, level } = conditions;
-    let last = built.sections.len().saturating_sub(1);
-    let section = |(k, section): (usize, &BuiltSection)| {
-        let own = Surroundings {
-            source_resistance: if k == 0 { around.source_resistance } else { 0.0 },
-            load_resistance: around.load_resistance.filter(|_| k == last),
-            ..*around
-        };
-        real_section(section, &own, *shift)
-    };
-    let sections: Vec<RealSection> = built.sections.iter().enumerate().map(section).collect();
-    let stable = sections.iter().all(|section| matches!(section, RealSection::Stable { .. }));
-    let chain: Vec<&BuiltSection> = built.sections.iter().collect();
-    let network = Network::new(&chain, around);
-    if !stable {
-        return Real { sections, error: None, slew: None };
+    let around = &conditions.around;
+    let mut sections = each_section(built, around);
+    for (k, section) in sections.iter_mut().enumerate() {
+        if let RealSection::Stable { least_bandwidth: least, .. } = section {
+            let own = own_surroundings(around, k, built.sections.len());
+            *least = around.bandwidth.and_then(|_| least_bandwidth(&built.sections[k], &own, conditions.shift));
+        }
     }
-    let slew = level.and_then(|level| slew(built, &network, yardstick, level));
-    Real { sections, error: error(&network, yardstick), slew }
+    let ends = real_ends(built, around, conditions.spread, yardstick);
+    let slew = conditions.level.filter(|_| are_stable(&sections)).and_then(|level| {
+        let chain: Vec<&BuiltSection> = built.sections.iter().collect();
+        slew(built, &Network::new(&chain, around), yardstick, level)
+    });
+    let error = whole_error(built, around, &sections, yardstick);
+    Real { sections, error, slew, ends }
+}
+
+/// The board at both ends of the spread.
+pub(super) fn real_ends(built: &Built, around: &Surroundings, spread: f64, yardstick: &Yardstick) -> Vec<RealEnd> {
+    let end = |around: &Surroundings| {
+        let sections = each_section(built, around);
+        let error = whole_error(built, around, &sections, yardstick);
+        around.bandwidth.map(|bandwidth| RealEnd { bandwidth, sections, error })
+    };
+    both_ends(around, spread).iter().filter_map(end).collect()
+}
+
+/// What surrounds one section: the first has the source's resistance, the last the load.
+pub(super) fn own_surroundings(around: &Surroundings, index: usize, count: usize) -> Surroundings {
+    let is_last = index + 1 == count;
+    Surroundings {
+        source_resistance: if index == 0 { around.source_resistance } else { 0.0 },
+        load_resistance: around.load_resistance.filter(|_| is_last),
+        ..*around
+    }
+}
+
+/// The poles of each section, without least bandwidths.
+pub(super) fn each_section(built: &Built, around: &Surroundings) -> Vec<RealSection> {
+    let section = |(k, section)| real_section(section, &own_surroundings(around, k, built.sections.len()));
+    built.sections.iter().enumerate().map(section).collect()
+}
+
+fn are_stable(sections: &[RealSection]) -> bool {
+    sections.iter().all(|section| matches!(section, RealSection::Stable { .. }))
+}
+
+/// The error of the whole board and where, rad/s; `None` where a section is not known to be stable.
+pub(super) fn whole_error(
+    built: &Built,
+    around: &Surroundings,
+    sections: &[RealSection],
+    yardstick: &Yardstick,
+) -> Option<(f64, f64)> {
+    let chain: Vec<&BuiltSection> = built.sections.iter().collect();
+    if are_stable(sections) { error(&Network::new(&chain, around), yardstick) } else { None }
 }
 
 /// The slew rate for a sine of the amplitude `level` at that frequency of the band where the board passes most: the input
@@ -111,15 +170,13 @@ fn slew(built: &Built, network: &Network, yardstick: &Yardstick, level: f64) -> 
     most
 }
 
-/// The pole frequency and Q of one section; the largest shift of either.
-fn real_section(section: &BuiltSection, around: &Surroundings, shift: f64) -> RealSection {
-    let found = match figures(section, around) {
-        Poles::Stable(w0, q) => (w0, q),
-        Poles::Unstable => return RealSection::Unstable,
-        Poles::Unknown => return RealSection::Unknown,
-    };
-    let least_bandwidth = around.bandwidth.and_then(|_| least_bandwidth(section, around, shift));
-    RealSection::Stable { w0: found.0, q: found.1, least_bandwidth }
+/// The pole frequency and Q of one section in its surroundings, without a least bandwidth.
+pub(super) fn real_section(section: &BuiltSection, around: &Surroundings) -> RealSection {
+    match figures(section, around) {
+        Poles::Stable(w0, q) => RealSection::Stable { w0, q, least_bandwidth: None },
+        Poles::Unstable => RealSection::Unstable,
+        Poles::Unknown => RealSection::Unknown,
+    }
 }
 
 enum Poles {

@@ -53,11 +53,11 @@ impl Tolerances {
         }
     }
 
-    /// The lowest and the highest relative error of a piece: none of one that was measured, else those of its stock list,
-    /// else those of its kind to either side.
+    /// The lowest and the highest relative error of a piece: what was given for its slot, else none of one that was measured,
+    /// else those of its stock list, else those of its kind to either side.
     pub fn limits(&self, kind: Kind, piece: &BuiltPiece) -> (f64, f64) {
         match piece.tolerance {
-            _ if piece.is_measured => (0.0, 0.0),
+            _ if piece.is_measured && !piece.has_own_tolerance => (0.0, 0.0),
             Some(limits) => limits,
             None => (-self.of(kind), self.of(kind)),
         }

@@ -18,6 +18,8 @@ pub struct Trim {
     pub figure: &'static str,
     /// Its relative reach to either side of the nominal value that the tolerances of the other parts require.
     pub reach: f64,
+    /// How the figure follows the slot: relative change per relative change of its value.
+    pub sensitivity: f64,
     /// A fixed part and a trimmer in series with it that cover this reach; `None` where no part of the series does.
     pub pair: Option<(Value, Value)>,
     /// What to look at while trimming, for a sine at the input of the section.
@@ -105,6 +107,7 @@ fn section_trims(built: &Built, index: usize, tolerances: &Tolerances) -> Vec<Tr
             slot: *slot,
             figure,
             reach,
+            sensitivity: own,
             pair: pair(nominal, reach, tolerances.resistors),
             watch: watch(&section.target, figure, sensitivities.figures(part).fz.abs() > 1e-9),
         });

@@ -6,11 +6,13 @@ use super::drift::{Climate, Drift, drift};
 use super::levels::{LevelConditions, Levels, levels};
 use super::mask::{Gauge, Mask, Standing};
 use super::real::{Real, RealConditions, real};
+use super::select::{Selection, selection};
 use super::spread::{Deviations, Spread, deviations, response_yardstick, spread};
 use super::tolerance::Tolerances;
 use super::trim::{Trim, trims};
 use super::yields::{Sampling, Yield, estimate};
 use crate::target::{Biquad, Criterion, Deviation, Figures, Section};
+use crate::units::Value;
 
 /// Under what a board is looked at.
 #[derive(Clone, Debug, PartialEq)]
@@ -27,6 +29,8 @@ pub struct Conditions {
     pub levels: Option<LevelConditions>,
     /// Whether a trim is to be planned.
     pub trim: bool,
+    /// The resistor values from which one may be selected on test, where a trim is planned.
+    pub select: Vec<Value>,
     /// How boards are drawn.
     pub sampling: Sampling,
 }
@@ -71,6 +75,8 @@ pub struct Vetted {
     pub levels: Option<Levels>,
     /// How it is trimmed, where that was asked.
     pub trims: Option<Vec<Trim>>,
+    /// For each trim the values to select from on test in place of a trimmer; `None` where they do not reach that far.
+    pub selections: Vec<Option<Selection>>,
 }
 
 impl Vetted {
@@ -107,6 +113,12 @@ pub fn vet(built: &Built, conditions: &Conditions) -> Vetted {
     let works = real.as_ref().is_none_or(|real| real.error.is_some());
     let levels =
         conditions.levels.as_ref().filter(|_| works).and_then(|conditions| levels(built, conditions, &yardstick));
+    let trims = conditions.trim.then(|| trims(built, tolerances));
+    let select = |trim: &Trim| {
+        let part = built.sections[trim.section].parts.iter().find(|part| part.slot == trim.slot)?;
+        selection(trim, part.value, &conditions.select, tolerances.resistors)
+    };
+    let selections = trims.iter().flatten().map(select).collect();
     Vetted {
         criterion,
         nominal: yardstick.deviation(&nominal),
@@ -118,7 +130,8 @@ pub fn vet(built: &Built, conditions: &Conditions) -> Vetted {
         drift: conditions.climate.as_ref().map(|climate| drift(built, climate, &yardstick)),
         real,
         levels,
-        trims: conditions.trim.then(|| trims(built, tolerances)),
+        trims,
+        selections,
     }
 }
 

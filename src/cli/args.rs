@@ -6,9 +6,10 @@ use clap::builder::PossibleValuesParser;
 use clap::{Args, Parser, Subcommand, ValueEnum};
 
 use crate::parts::STOCK_COLUMNS;
-use crate::report::CSV_COLUMNS;
+use crate::report::{COMPENSATED_CSV_COLUMNS, CSV_COLUMNS};
 use crate::target::Shape;
 
+pub use super::around::AroundArgs;
 pub use super::sections_args::SectionsArgs;
 pub use super::tighten_args::TightenArgs;
 pub use super::tolerance_args::{ToleranceArgs, YieldArgs};
@@ -59,12 +60,13 @@ pub enum Command {
     Vet(Box<VetArgs>),
     /// What tighter parts would buy: the yield of the best row for each step of tolerances.
     #[command(after_help = super::tighten_args::HELP)]
-    Tighten(TightenArgs),
+    Tighten(Box<TightenArgs>),
 }
 
 const SHORTLIST_HELP: &str = "\
 Shelves are written as series and single values, then a range: E24,E96:1k..1M or 10k,22k,47k.
 Ranges are written FROM..TO. What is given here wins over the job file, in all its sections.
+With op-amps or surroundings, sections are searched for whose built network gives what the job wants.
 
 Examples:
   roundwell shortlist job.ron --format json --out shortlist.json
@@ -76,10 +78,15 @@ With --yield, 3 also where the target, or every row with its nominal parts, miss
 
 /// The long help of `shortlist`: with the columns of the CSV format.
 fn shortlist_long_help() -> String {
-    let columns = CSV_COLUMNS.map(|(name, meaning)| format!("  {name:<21} {meaning}"));
+    let lines = |columns: &[(&str, &str)]| {
+        let lines: Vec<String> = columns.iter().map(|(name, meaning)| format!("  {name:<21} {meaning}")).collect();
+        lines.join("\n")
+    };
     format!(
-        "{SHORTLIST_HELP}\n\nColumns of the CSV format; numbers in SI units, empty where not known:\n{}",
-        columns.join("\n")
+        "{SHORTLIST_HELP}\n\nColumns of the CSV format; numbers in SI units, empty where not known:\n{}\n\
+         With op-amps or surroundings also:\n{}",
+        lines(&CSV_COLUMNS),
+        lines(&COMPENSATED_CSV_COLUMNS)
     )
 }
 
@@ -171,6 +178,8 @@ pub struct ShortlistArgs {
 
     #[command(flatten)]
     pub yields: YieldArgs,
+    #[command(flatten)]
+    pub around: AroundArgs,
 
     #[command(flatten)]
     pub output: OutputArgs,
@@ -475,10 +484,14 @@ pub struct VetArgs {
     pub mask: Option<PathBuf>,
     #[command(flatten)]
     pub tolerances: ToleranceArgs,
+    /// Tolerance of the part in one slot, such as R3=0.1% or A:R3=0.1%, whatever a stock list says; of a measured part the
+    /// accuracy of the measurement. Repeatable.
+    #[arg(long, value_name = "SLOT=PERCENT", value_delimiter = ',', allow_hyphen_values = true)]
+    pub tolerance: Vec<String>,
     /// Temperatures between which the board has to work, °C; the nominal values hold at 25 °C.
     #[arg(long, value_name = "FROM..TO", allow_hyphen_values = true)]
     pub temperature: Option<String>,
-    /// Temperature coefficient of the resistors, such as 100 (to either side), -200 or -200±100 [default: 100].
+    /// Temperature coefficient of the resistors for which the stock list gives none, such as 100 (to either side), -200 or -200±100 [default: 100].
     #[arg(long, value_name = "PPM/K", allow_hyphen_values = true)]
     pub resistor_coefficient: Option<String>,
     /// Temperature coefficient of the capacitors [default: 30, as for C0G].
@@ -490,27 +503,15 @@ pub struct VetArgs {
     /// The same for capacitors.
     #[arg(long, value_name = "PPM/K", allow_hyphen_values = true)]
     pub capacitor_tracking: Option<String>,
-    /// By how much a resistor can be off at the end of its life, to either side.
+    /// By how much a resistor can be off at the end of its life, to either side, where the stock list does not say.
     #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "0%")]
     pub resistor_ageing: String,
     /// By how much a capacitor can be off at the end of its life, to either side.
     #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "0%")]
     pub capacitor_ageing: String,
-    /// Gain-bandwidth product of the op-amps, Hz [default: ideal op-amps].
-    #[arg(long, value_name = "FREQUENCY", allow_hyphen_values = true)]
-    pub gbw: Option<String>,
-    /// Output resistance of the op-amps, ohms [default: 0].
-    #[arg(long, value_name = "OHMS", allow_hyphen_values = true)]
-    pub output_resistance: Option<String>,
-    /// Resistance of the source, ohms [default: 0].
-    #[arg(long, value_name = "OHMS", allow_hyphen_values = true)]
-    pub source_resistance: Option<String>,
-    /// Load from the output to ground, ohms [default: none].
-    #[arg(long, value_name = "OHMS", allow_hyphen_values = true)]
-    pub load_resistance: Option<String>,
-    /// Stray capacitance from every node to ground, farads [default: none].
-    #[arg(long, value_name = "FARADS", allow_hyphen_values = true)]
-    pub stray: Option<String>,
+    #[command(flatten)]
+    pub around: AroundArgs,
+
     /// The largest shift of f0 and Q that is wanted from the op-amps, for the least gain-bandwidth product [default: 1%].
     #[arg(long, value_name = "PERCENT", allow_hyphen_values = true)]
     pub shift: Option<String>,
@@ -529,6 +530,9 @@ pub struct VetArgs {
     /// Plan a trim: which resistor sets what, how far it has to reach, and what to look at.
     #[arg(long)]
     pub trim: bool,
+    /// Resistor values of which one may be selected on test in place of a trimmer [default: E96:1..10M].
+    #[arg(long, value_name = "SHELF", requires = "trim")]
+    pub trim_values: Option<String>,
     /// Boards to draw at most for the yield.
     #[arg(long, visible_alias = "draws", value_name = "COUNT", allow_hyphen_values = true, default_value = "100000")]
     pub boards: String,

@@ -1,10 +1,12 @@
 //! The command line: the only place that opens files, prints and reads the clock.
 
 mod args;
+mod around;
 mod circuits;
 mod failure;
 mod files;
 mod output;
+mod price_args;
 mod progress;
 mod sections;
 mod sections_args;

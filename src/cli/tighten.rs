@@ -4,12 +4,15 @@ use super::args::{ShowFormat, TightenArgs};
 use super::failure::{Failure, Faulty};
 use super::files::read_text;
 use super::output::Output;
+use super::price_args::Prices;
 use super::vet::{circuits_with, faulty, mask};
 use super::vet_settings::{Percent, whole};
 use super::{FOUND, NOTHING_WITHIN_LIMITS};
-use crate::analysis::{Built, CAPACITOR_STEPS, RESISTOR_STEPS, Sampling, Steps, Wanted, coarsest, tighten};
+use crate::analysis::{
+    Built, CAPACITOR_STEPS, RESISTOR_STEPS, Sampling, StepPrices, Steps, Wanted, cheapest, coarsest, costs, tighten,
+};
 use crate::job::Listed;
-use crate::report::{TightenQuestion, TightenRecord, write_tighten_json, write_tighten_table};
+use crate::report::{StepCosts, TightenQuestion, TightenRecord, write_tighten_json, write_tighten_table};
 use crate::target::Measure;
 use crate::text::{Fault, located};
 use crate::units::{parse_decibels, parse_number};
@@ -19,6 +22,7 @@ struct Settings {
     steps: Steps,
     sampling: Sampling,
     wanted_yield: Option<f64>,
+    prices: Option<Prices>,
     /// The rows that are asked for; `None` for all.
     rows: Option<Vec<usize>>,
 }
@@ -35,8 +39,8 @@ pub(super) const WANTED_HELP: &str =
 /// # Errors
 /// Bad input, an output that cannot be written.
 pub fn run(args: &TightenArgs) -> Result<u8, Failure> {
-    let Settings { steps, sampling, wanted_yield, rows } = settings(args)?;
-    let (listed, rows, boards) = boards(args, rows)?;
+    let Settings { steps, sampling, wanted_yield, prices, rows } = settings(args)?;
+    let Boards { listed, rows, boards } = boards(args, rows)?;
     let Some(first) = boards.first() else {
         let fault = Fault::at("--rows", "the list has no rows");
         return Err(Failure::input(
@@ -58,14 +62,22 @@ pub fn run(args: &TightenArgs) -> Result<u8, Failure> {
     let found = pool.install(|| tighten(&boards, &wanted, &steps, &sampling));
     let marked = wanted_yield.map_or(vec![false; found.len()], |yielding| coarsest(&found, yielding));
     let target_keeps = wanted.target_keeps(&first.targets());
+    let prices = prices.map(|Prices { resistors, capacitors, currency }| {
+        let prices = StepPrices { resistors, capacitors };
+        let costs = costs(&found, &boards, &prices);
+        let cheapest = wanted_yield.and_then(|wanted| cheapest(&found, &costs, wanted));
+        StepCosts { prices, currency, costs, cheapest }
+    });
     let asked = TightenQuestion {
         title: &listed.title,
         rows: &rows,
+        is_compensated: listed.is_compensated,
         within,
         target_keeps,
         steps: &steps,
         sampling: &sampling,
         wanted_yield,
+        costs: prices.as_ref(),
     };
     let record = TightenRecord::new(&asked, &found, &marked);
     let mut bytes = Vec::new();
@@ -95,6 +107,7 @@ fn settings(args: &TightenArgs) -> Result<Settings, Failure> {
         },
         sampling: args.draw.sampling(boards, half_width, &mut faults),
         wanted_yield: args.wanted_yield.as_deref().map(|text| wanted.read("--wanted-yield", text, &mut faults)),
+        prices: args.prices.read(&RESISTOR_STEPS, &CAPACITOR_STEPS, &mut faults),
         rows: args.rows.as_deref().map(|text| rows(text, &mut faults)),
     };
     if faults.is_empty() {
@@ -128,8 +141,16 @@ fn rows(text: &str, faults: &mut Vec<Fault>) -> Vec<usize> {
     list
 }
 
-/// The list, the numbers of the rows that are asked for, and their boards.
-fn boards(args: &TightenArgs, rows: Option<Vec<usize>>) -> Result<(Listed, Vec<usize>, Vec<Built>), Failure> {
+/// The rows of a list.
+struct Boards {
+    listed: Listed,
+    /// The numbers of the rows that are asked for.
+    rows: Vec<usize>,
+    boards: Vec<Built>,
+}
+
+/// The rows of the list that are asked for.
+fn boards(args: &TightenArgs, rows: Option<Vec<usize>>) -> Result<Boards, Failure> {
     let text = read_text(&args.list)?;
     let failed = |faults| Failure::Input(vec![faulty(&args.list, &text, faults)]);
     let listed = Listed::parse(&text).map_err(failed)?;
@@ -142,7 +163,7 @@ fn boards(args: &TightenArgs, rows: Option<Vec<usize>>) -> Result<(Listed, Vec<u
             .map_err(|message| Failure::input(Fault::at("--rows", message).help("choose rows of the list")))?;
         boards.push(listed.built(row, &mut circuits).map_err(|faults| failed(located(&text, faults)))?);
     }
-    Ok((listed, rows, boards))
+    Ok(Boards { listed, rows, boards })
 }
 
 /// The error that a board may have, in the unit of the measure.

@@ -5,15 +5,17 @@ use std::path::PathBuf;
 use clap::Args;
 
 use super::args::ShowFormat;
+use super::price_args::PriceArgs;
 use super::tolerance_args::DrawArgs;
 
 /// The help that follows the flags.
 pub const HELP: &str = "\
 Each step gives all resistors one tolerance, all capacitors another; the tolerances of a stock list do
-not count here. Measured parts stay as they are.
+not count here. Measured parts stay as they are, and cost nothing.
 
 Example:
-  roundwell tighten shortlist.json --mask mask.ron --wanted-yield 95%
+  roundwell tighten shortlist.json --mask mask.ron --wanted-yield 95% \
+      --resistor-price 5%=0.005,1%=0.01,0.1%=0.08 --capacitor-price 5%=0.04,2%=0.09,1%=0.15
 
 Exit codes: 0 done, 2 bad input or usage, 3 the target misses what is wanted, or no step reaches the
 wanted yield.";
@@ -40,6 +42,8 @@ pub struct TightenArgs {
     pub wanted_yield: Option<String>,
     #[command(flatten)]
     pub draw: DrawArgs,
+    #[command(flatten)]
+    pub prices: PriceArgs,
     /// Boards to draw at most for each row and step.
     #[arg(long, visible_alias = "draws", value_name = "COUNT", allow_hyphen_values = true, default_value = "100000")]
     pub boards: String,

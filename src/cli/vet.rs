@@ -22,18 +22,26 @@ use crate::text::{Fault, located};
 /// # Errors
 /// Bad input, an output that cannot be written.
 pub fn run(args: &VetArgs) -> Result<u8, Failure> {
-    let VetSettings { tolerances, sampling, climate, real, levels } = VetSettings::new(args)?;
-    let (built, boards, listed) = board(args)?;
+    let VetSettings { tolerances, sampling, climate, drifts, slots, select, real, levels } = VetSettings::new(args)?;
+    let (mut built, boards, listed) = board(args)?;
+    let is_compensated = listed.is_compensated;
+    let missing: Vec<Fault> = slots.iter().filter_map(|slot| slot.apply(&mut built).err()).collect();
+    if !missing.is_empty() {
+        let (file, text) = (String::new(), String::new());
+        return Err(Failure::Input(vec![Faulty { file, text, faults: missing, is_first_round: false }]));
+    }
+    let climate = (drifts || built.has_ageing()).then_some(climate);
     let mask = match args.mask.as_deref() {
         Some(path) => Some(mask(path, &built.targets())?),
-        None => listed,
+        None => listed.mask,
     };
     let output = Output::open(args.out.as_deref())?;
     let pool = rayon::ThreadPoolBuilder::new().num_threads(args.threads.map_or(0, usize::from)).build();
     let pool = pool.map_err(|error| Failure::Threads(error.to_string()))?;
-    let conditions = Conditions { tolerances, mask, climate, real, levels, trim: args.trim, sampling };
+    let conditions = Conditions { tolerances, mask, climate, real, levels, trim: args.trim, select, sampling };
     let found = pool.install(|| vet(&built, &conditions));
-    let record = VetRecord::new(&built, args.row, boards, &conditions, &found);
+    let mut record = VetRecord::new(&built, args.row, boards, &conditions, &found);
+    record.is_compensated = is_compensated;
     output.write(&written(&record, args.format, usize::from(args.width))?)?;
     let missed = record.mask.as_ref().is_some_and(|mask| matches!(mask.fails, Some("target" | "nominal")));
     Ok(if missed { NOTHING_WITHIN_LIMITS } else { FOUND })
@@ -45,8 +53,8 @@ pub(super) fn faulty(path: &Path, text: &str, faults: Vec<Fault>) -> Faulty {
     Faulty { file, text: text.to_string(), faults, is_first_round: false }
 }
 
-/// The board of the row that is asked for, of how many that differ it is the worst, and the mask of the list.
-fn board(args: &VetArgs) -> Result<(Built, usize, Option<Mask>), Failure> {
+/// The board of the row that is asked for, of how many that differ it is the worst, and the list it stands in.
+fn board(args: &VetArgs) -> Result<(Built, usize, Listed), Failure> {
     let text = read_text(&args.list)?;
     let failed = |faults| Failure::Input(vec![faulty(&args.list, &text, faults)]);
     let listed = Listed::parse(&text).map_err(failed)?;
@@ -56,7 +64,7 @@ fn board(args: &VetArgs) -> Result<(Built, usize, Option<Mask>), Failure> {
         .map_err(|message| Failure::input(Fault::at("--row", message).help("choose a row of the list")))?;
     let built = listed.built(row, &mut circuits).map_err(|faults| failed(located(&text, faults)))?;
     let boards = row.boards;
-    Ok((built, boards, listed.mask))
+    Ok((built, boards, listed))
 }
 
 /// Finds a circuit by its identifier: among the files that are given, then in the library.

@@ -1,11 +1,15 @@
 //! What the flags of `vet` say, checked, with all their faults.
 
 use super::args::VetArgs;
+use super::around::Around;
 use super::failure::{Failure, Faulty};
-use crate::analysis::{Climate, KindDrift, LevelConditions, RealConditions, Sampling, Surroundings, Tolerances};
+use crate::analysis::{
+    Built, Climate, KindDrift, LevelConditions, RealConditions, Sampling, Surroundings, Tolerances,
+};
+use crate::job::{ShelfFile, plain_shelf};
 use crate::parts::TemperatureCoefficient;
 use crate::text::Fault;
-use crate::units::{Kind, parse_frequency, parse_number, parse_part};
+use crate::units::{Kind, Value, parse_number};
 
 /// The flags of `vet` as values.
 #[derive(Debug)]
@@ -14,8 +18,14 @@ pub struct VetSettings {
     pub tolerances: Tolerances,
     /// How boards are drawn.
     pub sampling: Sampling,
-    /// Temperature and age, where a flag for them is given.
-    pub climate: Option<Climate>,
+    /// Temperature and age.
+    pub climate: Climate,
+    /// Whether a flag asks for them.
+    pub drifts: bool,
+    /// Tolerances of single slots.
+    pub slots: Vec<SlotTolerance>,
+    /// The resistor values from which one may be selected on test.
+    pub select: Vec<Value>,
     /// Op-amps and surroundings, where a flag for them is given.
     pub real: Option<RealConditions>,
     /// Headroom and noise, where the swing is given.
@@ -46,10 +56,73 @@ fn read(args: &VetArgs, faults: &mut Vec<Fault>) -> VetSettings {
     let half_width = half_width.read("--interval", &args.interval, faults);
     let boards = whole("--boards", &args.boards, 1, 100_000_000, faults);
     let sampling = args.tolerances.draw.sampling(boards, half_width, faults);
-    let (climate, real) = (climate(args, faults), real(args, faults));
+    let ((climate, drifts), real) = (climate(args, faults), real(args, faults));
     let around = real.map_or(Surroundings::IDEAL, |real| real.around);
     let levels = levels(args, around, faults);
-    VetSettings { tolerances, sampling, climate, real, levels }
+    let slots = args.tolerance.iter().filter_map(|text| slot_tolerance(text, faults)).collect();
+    let select = if args.trim { select(args, faults) } else { Vec::new() };
+    VetSettings { tolerances, sampling, climate, drifts, slots, select, real, levels }
+}
+
+/// The tolerance of the parts in one slot.
+#[derive(Clone, Debug, PartialEq)]
+pub struct SlotTolerance {
+    /// As it was typed.
+    text: String,
+    section: Option<String>,
+    slot: String,
+    tolerance: f64,
+}
+
+/// Reads `R3=0.1%` or `A:R3=0.1%`.
+fn slot_tolerance(text: &str, faults: &mut Vec<Fault>) -> Option<SlotTolerance> {
+    let Some((place, percent)) = text.split_once('=') else {
+        let fault = Fault::at("--tolerance", format!("\"{text}\" names no slot and tolerance"));
+        faults.push(fault.help("write the slot, or section and slot, and a percentage: R3=0.1% or A:R3=0.1%"));
+        return None;
+    };
+    let before = faults.len();
+    let range = Percent { name: "a tolerance", most: 90.0, example: "R3=0.1%" };
+    let tolerance = range.read("--tolerance", percent, faults);
+    let (section, slot) = match place.rsplit_once(':') {
+        Some((section, slot)) => (Some(section.trim().to_string()), slot.trim()),
+        None => (None, place.trim()),
+    };
+    let slot = slot.to_string();
+    (faults.len() == before).then(|| SlotTolerance { text: text.to_string(), section, slot, tolerance })
+}
+
+impl SlotTolerance {
+    /// Gives the parts of the slot their tolerance.
+    ///
+    /// # Errors
+    /// There is no such slot: those that there are.
+    pub fn apply(&self, built: &mut Built) -> Result<(), Fault> {
+        if built.set_tolerance(self.section.as_deref(), &self.slot, self.tolerance) {
+            return Ok(());
+        }
+        let slots = built.sections.iter().map(|section| {
+            let names: Vec<&str> = section.parts.iter().map(|part| section.slot_name(part.slot)).collect();
+            format!("{} with {}", section.target.name, names.join(", "))
+        });
+        let known: Vec<String> = slots.collect();
+        let fault = Fault::at("--tolerance", format!("\"{}\": there is no such slot", self.text));
+        Err(fault.help(format!("the sections are {}", known.join("; "))))
+    }
+}
+
+/// The values to select from on test.
+fn select(args: &VetArgs, faults: &mut Vec<Fault>) -> Vec<Value> {
+    const FLAG: &str = "--trim-values";
+    let text = args.trim_values.as_deref().unwrap_or("E96:1..10M");
+    let shelf = ShelfFile::from_flag(FLAG, text).map_err(|fault| vec![fault]);
+    match shelf.and_then(|given| plain_shelf(&given, Kind::Resistor)) {
+        Ok(shelf) => shelf.values().to_vec(),
+        Err(more) => {
+            faults.extend(more);
+            Vec::new()
+        }
+    }
 }
 
 /// A percentage from zero to `most`.
@@ -84,7 +157,7 @@ pub(super) fn whole(flag: &str, text: &str, low: u64, high: u64, faults: &mut Ve
     })
 }
 
-fn climate(args: &VetArgs, faults: &mut Vec<Fault>) -> Option<Climate> {
+fn climate(args: &VetArgs, faults: &mut Vec<Fault>) -> (Climate, bool) {
     let ageing = Percent { name: "the ageing", most: 50.0, example: "0.5%" };
     let mut kind = |coefficient: Flag, tracking: Flag, age: (&str, &str), usual: &str| {
         let range = coefficient_of(coefficient.0, coefficient.1.unwrap_or(usual), faults);
@@ -130,7 +203,7 @@ fn climate(args: &VetArgs, faults: &mut Vec<Fault>) -> Option<Climate> {
             (0.0, 0.0)
         }
     };
-    (ages || args.temperature.is_some()).then_some(Climate { coldest, hottest, resistors, capacitors })
+    (Climate { coldest, hottest, resistors, capacitors }, ages || args.temperature.is_some())
 }
 
 /// A flag and its value, where it is given.
@@ -163,36 +236,14 @@ fn temperatures(text: &str, faults: &mut Vec<Fault>) -> (f64, f64) {
 }
 
 fn real(args: &VetArgs, faults: &mut Vec<Fault>) -> Option<RealConditions> {
-    let given = [
-        &args.gbw,
-        &args.output_resistance,
-        &args.source_resistance,
-        &args.load_resistance,
-        &args.stray,
-        &args.shift,
-        &args.output_level,
-    ];
-    if given.into_iter().all(Option::is_none) {
+    if !args.around.is_given() && args.shift.is_none() && args.output_level.is_none() {
         return None;
     }
-    let bandwidth = args.gbw.as_deref().and_then(|text| noted(parse_frequency(text), "--gbw", faults));
-    if args.gbw.is_none() && args.shift.is_some() {
+    let Around { surroundings: around, spread } = args.around.read(faults);
+    if args.around.gbw.is_none() && args.shift.is_some() {
         let fault = Fault::at("--shift", "says nothing about ideal op-amps");
         faults.push(fault.help("add the gain-bandwidth product, such as --gbw 3MHz"));
     }
-    let mut part = |flag: &str, text: &Option<String>, kind: Kind| -> Option<f64> {
-        let text = text.as_deref().filter(|text| text.trim() != "0")?;
-        noted(parse_part(text, kind), flag, faults).map(|value| value.to_f64())
-    };
-    let output_resistance = part("--output-resistance", &args.output_resistance, Kind::Resistor).unwrap_or(0.0);
-    let source_resistance = part("--source-resistance", &args.source_resistance, Kind::Resistor).unwrap_or(0.0);
-    let stray = part("--stray", &args.stray, Kind::Capacitor).unwrap_or(0.0);
-    // A load of zero would be a short circuit: it is read as any other value, and refused.
-    let load_resistance = args
-        .load_resistance
-        .as_deref()
-        .and_then(|text| noted(parse_part(text, Kind::Resistor), "--load-resistance", faults));
-    let load_resistance = load_resistance.map(|value| value.to_f64());
     let shift = args.shift.as_deref().map_or(0.01, |text| {
         let shift = Percent { name: "the shift", most: 50.0, example: "1%" }.read("--shift", text, faults);
         if shift <= 0.0 {
@@ -202,8 +253,7 @@ fn real(args: &VetArgs, faults: &mut Vec<Fault>) -> Option<RealConditions> {
         shift
     });
     let level = args.output_level.as_deref().and_then(|text| volts("--output-level", text, faults));
-    let around = Surroundings { bandwidth, output_resistance, source_resistance, load_resistance, stray };
-    Some(RealConditions { around, shift, level })
+    Some(RealConditions { around, shift, level, spread })
 }
 
 /// An amplitude.
@@ -238,6 +288,6 @@ fn levels(args: &VetArgs, around: Surroundings, faults: &mut Vec<Fault>) -> Opti
 }
 
 /// A value, or the fault of its flag.
-fn noted<T, E: std::fmt::Display>(read: Result<T, E>, flag: &str, faults: &mut Vec<Fault>) -> Option<T> {
+pub(super) fn noted<T, E: std::fmt::Display>(read: Result<T, E>, flag: &str, faults: &mut Vec<Fault>) -> Option<T> {
     read.map_err(|error| faults.push(Fault::at(flag, error.to_string()))).ok()
 }

@@ -9,6 +9,7 @@ use serde::Deserialize;
 use super::mask::RawMask;
 use crate::analysis::{Built, BuiltPart, BuiltPiece, BuiltSection, Joint, Mask};
 use crate::circuit::Circuit;
+use crate::parts::TemperatureCoefficient;
 use crate::target::{Criterion, Measure, Section, Shape, Weights};
 use crate::text::{Fault, located, suggestion};
 use crate::units::{Kind, Value, parse_part};
@@ -34,6 +35,8 @@ pub struct Listed {
     pub sections: Vec<ListedSection>,
     /// The rows in the order of the file.
     pub rows: Vec<ListedRow>,
+    /// Whether they were searched for with real op-amps or surroundings in mind: with ideal ones they miss their target.
+    pub is_compensated: bool,
 }
 
 /// A section as it was asked for.
@@ -83,6 +86,7 @@ struct RawList {
     mask: Option<RawMask>,
     sections: Vec<RawSection>,
     shortlist: Vec<RawRow>,
+    compensation: Option<serde::de::IgnoredAny>,
 }
 
 #[derive(Deserialize)]
@@ -141,6 +145,8 @@ struct RawPiece {
     notation: Option<String>,
     measured: Option<f64>,
     tolerance: Option<[f64; 2]>,
+    temperature_coefficient_ppm: Option<[f64; 2]>,
+    ageing: Option<f64>,
     #[serde(default)]
     lines: Vec<usize>,
 }
@@ -219,7 +225,10 @@ impl Listed {
             }
         }
         match sections {
-            Some(sections) if faults.is_empty() => Ok(Listed { title: raw.title, criterion, mask, sections, rows }),
+            Some(sections) if faults.is_empty() => {
+                let is_compensated = raw.compensation.is_some();
+                Ok(Listed { title: raw.title, criterion, mask, sections, rows, is_compensated })
+            }
             _ => Err(located(text, faults)),
         }
     }
@@ -410,7 +419,27 @@ fn read_piece(path: &str, raw: &RawPiece, kind: Kind, faults: &mut Vec<Fault>) -
         faults.push(Fault::at(format!("{path}.tolerance"), message).help("write ratios: 5 % is -0.05 and 0.05"));
     }
     let is_measured = raw.measured.is_some();
-    Some(BuiltPiece { value, label, is_measured, tolerance, line: raw.lines.first().copied() })
+    let coefficient = raw.temperature_coefficient_ppm.map(|[low, high]| (low, high));
+    // Twice the largest that a stock list may state: mean and spread.
+    let most = 2.0 * f64::from(TemperatureCoefficient::LARGEST);
+    if let Some((low, high)) = coefficient.filter(|(low, high)| !(-most <= *low && low <= high && *high <= most)) {
+        let message = format!("{low} to {high} ppm/K is no range of temperature coefficients up to {most} ppm/K");
+        let fault = Fault::at(format!("{path}.temperature_coefficient_ppm"), message);
+        faults.push(fault.help("write the smaller one first, such as -50 and 50"));
+    }
+    if let Some(ageing) = raw.ageing.filter(|ageing| !(0.0..1.0).contains(ageing)) {
+        let message = format!("{ageing} is no ageing: it is a ratio from 0 to below 1");
+        faults.push(Fault::at(format!("{path}.ageing"), message).help("write 0.005 for 0.5 %"));
+    }
+    Some(BuiltPiece {
+        tolerance,
+        line: raw.lines.first().copied(),
+        label,
+        is_measured,
+        coefficient: coefficient.map(|(low, high)| (low * 1e-6, high * 1e-6)),
+        ageing: raw.ageing,
+        ..BuiltPiece::from(value)
+    })
 }
 
 /// How pieces make up the value of a slot, if they do: one piece is the value itself.

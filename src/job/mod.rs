@@ -29,4 +29,4 @@ pub use given::{Given, Scalar, Scalars};
 pub use listed::{Listed, ListedPart, ListedRow, ListedSection};
 pub use mask::read_mask;
 pub use resolve::{Job, resolve};
-pub use shelf::{ShelfFile, Shelves};
+pub use shelf::{ShelfFile, Shelves, plain_shelf};

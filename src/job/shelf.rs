@@ -141,6 +141,17 @@ fn usual(kind: Kind) -> [&'static str; 3] {
     }
 }
 
+/// A shelf by itself, without a stock list.
+///
+/// # Errors
+/// What cannot be read, and a shelf without values.
+pub fn plain_shelf(given: &Given<Shelves>, kind: Kind) -> Result<Shelf, Vec<Fault>> {
+    let mut desk = Desk::default();
+    let place = given.flag.map_or_else(Place::job, Place::Flag);
+    let found = At { value: &given.value, place };
+    shelf(&mut desk, Some(found), kind, &Source::default()).map_err(|_| desk.faults)
+}
+
 /// The shelf of a kind, by default the usual one.
 pub(super) fn shelf(desk: &mut Desk, found: Option<At<'_, Shelves>>, kind: Kind, source: &Source) -> Checked<Shelf> {
     let usual = Shelves(vec![ShelfFile::default()]);

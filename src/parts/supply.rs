@@ -119,8 +119,9 @@ impl Supply {
                 lot.lines.push(line.clone());
                 continue;
             }
-            let label =
-                |l: &StockLine| (l.kind, l.value, l.tolerance, l.temperature_coefficient, l.dielectric.clone());
+            let label = |l: &StockLine| {
+                (l.kind, l.value, l.tolerance, l.temperature_coefficient, l.dielectric.clone(), l.ageing)
+            };
             let same = lots.iter().find(|lot| lot.lines.first().is_some_and(|first| label(first) == label(line)));
             let part_number = same.map_or(LotId(lots.len() as u32), |lot| lot.part_number);
             lots.push(Lot {

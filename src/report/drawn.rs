@@ -6,6 +6,7 @@ use serde::Serialize;
 
 use super::need::measured_notation;
 use super::record::{ChosenRecord, PieceRecord, RowRecord};
+use super::stock::ageing_in_words;
 use crate::analysis::listed_tolerance;
 use crate::parts::{Buying, Choice, Lot, Origin, Price, Supply};
 use crate::search::{BuiltBoard, Chosen, Part, Problem, Row, SectionProblem};
@@ -91,6 +92,10 @@ pub(super) fn piece(supply: &Supply, kind: Kind, choice: Choice) -> PieceRecord 
         notation: format_part(lot.map_or(choice.value, |lot| lot.nominal), kind),
         measured: lot.and_then(|lot| lot.measured).map(|value| value.to_f64()),
         tolerance: lot.and_then(listed_tolerance).map(|(low, high)| [low, high]),
+        temperature_coefficient_ppm: lot
+            .and_then(|lot| lot.lines.first()?.temperature_coefficient)
+            .map(|coefficient| [-1.0, 1.0].map(|side| coefficient.mean() + side * coefficient.spread())),
+        ageing: lot.and_then(|lot| lot.lines.first()?.ageing).map(|ageing| ageing.to_f64()),
         id: lot.and_then(|lot| lot.id()).map(str::to_owned),
         lines: lot.map_or(Vec::new(), |lot| lot.lines.iter().map(|line| line.line).collect()),
     }
@@ -166,6 +171,7 @@ pub(super) fn grade(lot: &Lot) -> Option<String> {
         line.tolerance.map(|tolerance| tolerance.in_words(lot.kind)),
         line.temperature_coefficient.map(|coefficient| coefficient.to_string()),
         line.dielectric.as_ref().map(ToString::to_string),
+        line.ageing.map(|ageing| format!("ageing {}", ageing_in_words(ageing))),
         measured_notation(lot).map(|value| format!("measured {value}")),
     ];
     let words: Vec<String> = words.into_iter().flatten().collect();

@@ -1,5 +1,7 @@
 //! The result of a search as one plain record, a stock list as another, and their renderers. Each renderer writes to a writer; none opens files.
 
+mod compensated;
+mod compensated_table;
 mod csv;
 mod detail;
 mod drawn;
@@ -26,6 +28,11 @@ mod yields;
 #[cfg(test)]
 mod sample;
 
+pub use compensated::{
+    BuiltErrorRecord, BuiltRowRecord, BuiltSectionRecord, COMPENSATED_CSV_COLUMNS, CompensatedRecord,
+    CompensationRecord, CorrectionRecord, write_compensated_csv, write_compensated_json,
+};
+pub use compensated_table::write_compensated_table;
 pub use csv::{CSV_COLUMNS, write_csv};
 pub use drawn::{BoardRecord, SupplyRecord, TakenRecord};
 pub use filter::{
@@ -50,16 +57,16 @@ pub use swap::{
 };
 pub use table::write_table;
 pub use tighten::{
-    StepRecord, TIGHTEN_FORMAT, TightenQuestion, TightenRecord, write_tighten_json, write_tighten_table,
+    StepCosts, StepRecord, TIGHTEN_FORMAT, TightenQuestion, TightenRecord, write_tighten_json, write_tighten_table,
 };
 pub use together::{BestRecord, BoundRecord, TogetherSearch};
 pub use vet::{
     LimitRecord, MaskOutcome, OffPart, SpreadRecord, TolerancesRecord, VET_FORMAT, VetPart, VetPiece, VetRecord,
     VetSection, WorstRecord, YieldRecord, write_vet_json,
 };
-pub use vet_drift::{DriftRecord, FigureDriftRecord, KindDriftRecord};
+pub use vet_drift::{DriftRecord, FigureDriftRecord, KindDriftRecord, PartDriftRecord};
 pub use vet_levels::{LevelsRecord, PeakRecord};
-pub use vet_real::{RealRecord, RealSectionRecord, SlewRecord};
+pub use vet_real::{RealEndRecord, RealRecord, RealSectionRecord, SlewRecord};
 pub use vet_table::write_vet_table;
-pub use vet_trim::TrimRecord;
+pub use vet_trim::{SelectRecord, TrimRecord};
 pub use yields::{BuiltRecord, YieldsRecord};

@@ -316,6 +316,10 @@ pub struct PieceRecord {
     /// How far it may be off its label by the tolerance of the stock list, as ratios: lowest and highest, such as −0.05 and
     /// 0.05. `None` where the list does not say, and for a measured part.
     pub tolerance: Option<[f64; 2]>,
+    /// Its least and its largest temperature coefficient by the stock list, ppm/K; `None` where the list does not say.
+    pub temperature_coefficient_ppm: Option<[f64; 2]>,
+    /// By how much it may be off at the end of its life by the stock list, a ratio, to either side.
+    pub ageing: Option<f64>,
     /// What the part or its drawer is called.
     pub id: Option<String>,
     /// The lines of the stock list that it is taken from.
@@ -324,7 +328,7 @@ pub struct PieceRecord {
 
 /// The frequency of an angular frequency that came from one: what the detour over 2π left in the last digits is taken
 /// out, so that 1 kHz is 1000 and not 999.9999999999999.
-fn hertz(w: f64) -> f64 {
+pub(super) fn hertz(w: f64) -> f64 {
     let f = w / TAU;
     format!("{f:.13e}").parse().unwrap_or(f)
 }

@@ -8,7 +8,7 @@ use serde::Serialize;
 use super::layout::{Column, grid, paragraph, printable, unbroken};
 use super::numbers::count;
 use crate::parts::{AtLine, DielectricClass, Stock, StockFault, StockLine, Tolerance, ToleranceError};
-use crate::units::{Kind, NotationError, format_part};
+use crate::units::{Kind, NotationError, Value, format_part};
 
 /// The name and version of the JSON format: keys may be added to it, none is renamed or removed.
 pub const STOCK_FORMAT: &str = "roundwell-stock/1";
@@ -105,6 +105,10 @@ pub struct LineOfStock {
     pub price: Option<PriceRecord>,
     /// What the part or its drawer is called.
     pub id: Option<String>,
+    /// By how much a part may be off at the end of its life, a ratio, to either side.
+    pub ageing: Option<f64>,
+    /// The same for people, such as `±0.5 %`.
+    pub ageing_notation: Option<String>,
     /// The measured value, in ohms or farads.
     pub measured: Option<f64>,
     /// The measured value in IEC 60062 notation.
@@ -250,6 +254,8 @@ impl LineOfStock {
                 currency: price.currency.clone(),
             }),
             id: line.id.clone(),
+            ageing: line.ageing.map(|ageing| ageing.to_f64()),
+            ageing_notation: line.ageing.map(ageing_in_words),
             measured: line.measured.map(|value| value.to_f64()),
             measured_notation: line.measured.map(|value| format_part(value, line.kind)),
             extra: line.extra.clone(),
@@ -268,6 +274,11 @@ impl StockRemark {
     }
 }
 
+/// An ageing for people.
+pub(super) fn ageing_in_words(ageing: Value) -> String {
+    format!("±{} %", ageing.shifted(2).unwrap_or(ageing).to_f64())
+}
+
 /// The text that a fault is about.
 fn wrong_text(fault: &StockFault) -> Option<&str> {
     match fault {
@@ -275,6 +286,7 @@ fn wrong_text(fault: &StockFault) -> Option<&str> {
         | StockFault::Quantity(text)
         | StockFault::TemperatureCoefficient(text)
         | StockFault::Price(text)
+        | StockFault::Ageing(text)
         | StockFault::DecimalOrThousands(text)
         | StockFault::SeveralMarks(text)
         | StockFault::TooManyCells { text, .. } => Some(text),
@@ -411,6 +423,7 @@ fn lines_of(record: &StockRecord, kind: Kind, width: usize) -> String {
         known(&|line| line.available.map(count)).map(|cells| Column::right("quantity", cells)),
         tolerance.map(|cells| Column::right("tolerance", cells)),
         coefficient.map(|cells| Column::right("tempco\nppm/K", cells)),
+        known(&|line| line.ageing_notation.clone()).map(|cells| Column::right("ageing", cells)),
         known(&|line| line.dielectric.clone()).map(|cells| Column::left("dielectric", cells)),
         price.map(|cells| Column::right(price_header, cells)),
         known(&|line| line.id.clone()).map(|cells| Column::left("id", cells)),

@@ -27,7 +27,7 @@ pub fn write_table(record: &Record, width: usize, out: &mut dyn Write) -> io::Re
         if record.title.is_empty() { String::new() } else { paragraph("", &record.title, width) },
         searched(record, width),
         outcome(record, width),
-        figures(record, width),
+        figures(record, &mark_in_words(record), width),
         values(record, width),
         detail(record, width),
         paragraph("", if record.yields.is_some() { CAUTION_WITH_YIELDS } else { CAUTION }, width),
@@ -37,7 +37,7 @@ pub fn write_table(record: &Record, width: usize, out: &mut dyn Write) -> io::Re
 }
 
 /// What was searched, and what that proves.
-fn searched(record: &Record, width: usize) -> String {
+pub(super) fn searched(record: &Record, width: usize) -> String {
     let mut text = String::new();
     for (section, search) in record.sections.iter().zip(&record.search.sections) {
         let target = target_in_words(&section.target);
@@ -159,7 +159,7 @@ pub(super) fn measure_in_words(measure: &MeasureRecord) -> String {
 }
 
 /// What was found, in a sentence or two, where it is less than what was wanted.
-fn outcome(record: &Record, width: usize) -> String {
+pub(super) fn outcome(record: &Record, width: usize) -> String {
     let mut text = String::new();
     let [limit, wanted] = [record.wanted.error_limit, record.wanted.wanted_error]
         .map(|error| unbroken(&error_in_words(record.measure.unit, error)));
@@ -207,12 +207,12 @@ fn outcome(record: &Record, width: usize) -> String {
 }
 
 /// The rows of the table: shortlist, then references.
-fn rows(record: &Record) -> impl Iterator<Item = &RowRecord> + Clone {
+pub(super) fn rows(record: &Record) -> impl Iterator<Item = &RowRecord> + Clone {
     record.shortlist.iter().chain(&record.references)
 }
 
 /// Rank and marks, or the name of a reference.
-fn label(record: &Record, row: &RowRecord) -> String {
+pub(super) fn label(record: &Record, row: &RowRecord) -> String {
     let Some(rank) = row.rank else { return row.name.unwrap_or_default().to_string() };
     let marks = [(row.rank == record.marked, '*'), (row.alternative, '+'), (is_open(record, row), '?')];
     let marks: String = marks.into_iter().filter(|(holds, _)| *holds).map(|(_, mark)| mark).collect();
@@ -226,8 +226,14 @@ fn is_open(record: &Record, row: &RowRecord) -> bool {
     (record.search.reason.is_some() || ended) && !row.proved
 }
 
+/// What the mark of a row means.
+fn mark_in_words(record: &Record) -> String {
+    let wanted = error_in_words(record.measure.unit, record.wanted.wanted_error);
+    format!("fewest part numbers within the wanted error of {wanted}")
+}
+
 /// The table of figures by row, and what its marks mean.
-fn figures(record: &Record, width: usize) -> String {
+pub(super) fn figures(record: &Record, mark: &str, width: usize) -> String {
     if rows(record).next().is_none() {
         return String::new();
     }
@@ -265,8 +271,7 @@ fn figures(record: &Record, width: usize) -> String {
     columns.append(&mut detail);
     let mut text = grid(&columns, 1, width);
     if record.marked.is_some() {
-        let wanted = error_in_words(record.measure.unit, record.wanted.wanted_error);
-        text += &paragraph("* ", &format!("fewest part numbers within the wanted error of {wanted}"), width);
+        text += &paragraph("* ", mark, width);
     }
     if record.shortlist.iter().any(|row| row.alternative) {
         let line = match record.yields {
@@ -292,7 +297,7 @@ fn worst_frequency(row: &RowRecord) -> String {
 }
 
 /// The values by slot, one table a section.
-fn values(record: &Record, width: usize) -> String {
+pub(super) fn values(record: &Record, width: usize) -> String {
     if rows(record).next().is_none() {
         return String::new();
     }

@@ -4,10 +4,11 @@ use std::io::{self, Write};
 
 use serde::Serialize;
 
-use super::layout::{Column, grid, paragraph, unbroken};
+use super::drawn::money;
+use super::layout::{Column, grid, paragraph, printable, unbroken};
 use super::numbers::{count, error_in_words};
-use super::vet_table::of_hundred;
-use crate::analysis::{Distribution, Sampling, Step, Steps};
+use super::vet_table::{compensated_in_words, of_hundred};
+use crate::analysis::{Distribution, Sampling, Step, StepPrices, Steps};
 
 /// The name and version of the JSON format: keys may be added to it, none is renamed or removed.
 pub const TIGHTEN_FORMAT: &str = "roundwell-tighten/1";
@@ -21,6 +22,9 @@ pub struct TightenRecord {
     pub title: String,
     /// The rows of the list that were compared.
     pub rows: Vec<usize>,
+    /// Whether the list was searched for with real op-amps or surroundings in mind: with the ideal ones that are assumed here
+    /// its boards are off by that correction.
+    pub is_compensated: bool,
     /// The error that a board may have, in the unit of the measure; `None` where it has to keep a mask.
     pub within: Option<f64>,
     /// The unit of that: `dB`, or empty for a plain ratio.
@@ -37,6 +41,12 @@ pub struct TightenRecord {
     pub confidence: f64,
     /// The yield that is wanted.
     pub wanted_yield: Option<f64>,
+    /// The currency of the costs, where one is written.
+    pub currency: Option<String>,
+    /// What one resistor costs, by the tolerances of the steps; empty without prices.
+    pub resistor_prices: Vec<Option<f64>>,
+    /// What one capacitor costs.
+    pub capacitor_prices: Vec<Option<f64>>,
     /// The steps: for the coarsest resistors all capacitors from the coarsest on, then for the next.
     pub steps: Vec<StepRecord>,
 }
@@ -60,6 +70,26 @@ pub struct StepRecord {
     pub passed: u64,
     /// Whether the low end of the interval reaches the wanted yield while that of no coarser step does.
     pub marked: bool,
+    /// What the parts of one board of the row cost; `None` where a price is not known.
+    pub cost: Option<f64>,
+    /// The same in millionths.
+    #[serde(skip)]
+    pub cost_millionths: Option<u64>,
+    /// Whether it costs least among the steps whose cost is known and whose interval reaches the wanted yield.
+    pub cheapest: bool,
+}
+
+/// What the steps cost.
+#[derive(Clone, Debug, PartialEq)]
+pub struct StepCosts {
+    /// The prices of single parts.
+    pub prices: StepPrices,
+    /// Their currency, where one is written.
+    pub currency: Option<String>,
+    /// The cost of one board of each step, millionths of the currency.
+    pub costs: Vec<Option<u64>>,
+    /// Index of the step that costs least among those that reach the wanted yield.
+    pub cheapest: Option<usize>,
 }
 
 /// What was asked.
@@ -69,6 +99,8 @@ pub struct TightenQuestion<'a> {
     pub title: &'a str,
     /// The numbers of the rows.
     pub rows: &'a [usize],
+    /// Whether the list was searched for with real op-amps in mind.
+    pub is_compensated: bool,
     /// The error that a board may have, and its unit; `None` for a mask.
     pub within: Option<(f64, &'static str)>,
     /// Whether the target itself keeps it.
@@ -79,12 +111,20 @@ pub struct TightenQuestion<'a> {
     pub sampling: &'a Sampling,
     /// The yield that is wanted.
     pub wanted_yield: Option<f64>,
+    /// What the steps cost, where prices are given.
+    pub costs: Option<&'a StepCosts>,
 }
 
 impl TightenRecord {
     /// The record of what was found; `marked` tells of each step whether it is among the coarsest that reach the yield.
     pub fn new(asked: &TightenQuestion, found: &[Step], marked: &[bool]) -> TightenRecord {
-        let step = |(step, marked): (&Step, &bool)| StepRecord {
+        let money = |millionths: u64| millionths as f64 / 1e6;
+        let prices = |of: fn(&StepPrices) -> &Vec<Option<u64>>| match asked.costs {
+            Some(costs) => of(&costs.prices).iter().map(|price| price.map(money)).collect(),
+            None => Vec::new(),
+        };
+        let cost = |index: usize| asked.costs.and_then(|costs| costs.costs.get(index).copied().flatten());
+        let step = |(index, (step, marked)): (usize, (&Step, &bool))| StepRecord {
             resistors: step.resistors,
             capacitors: step.capacitors,
             row: asked.rows.get(step.row).copied().unwrap_or_default(),
@@ -93,11 +133,15 @@ impl TightenRecord {
             boards: step.boards,
             passed: step.passed,
             marked: *marked,
+            cost: cost(index).map(money),
+            cost_millionths: cost(index),
+            cheapest: asked.costs.is_some_and(|costs| costs.cheapest == Some(index)),
         };
         TightenRecord {
             format: TIGHTEN_FORMAT,
             title: asked.title.to_string(),
             rows: asked.rows.to_vec(),
+            is_compensated: asked.is_compensated,
             within: asked.within.map(|(limit, _)| limit),
             unit: asked.within.map_or("", |(_, unit)| unit),
             target_keeps: asked.target_keeps,
@@ -109,7 +153,10 @@ impl TightenRecord {
             seed: asked.sampling.seed,
             confidence: asked.sampling.confidence,
             wanted_yield: asked.wanted_yield,
-            steps: found.iter().zip(marked).map(step).collect(),
+            currency: asked.costs.and_then(|costs| costs.currency.clone()),
+            resistor_prices: prices(|prices| &prices.resistors),
+            capacitor_prices: prices(|prices| &prices.capacitors),
+            steps: found.iter().zip(marked).enumerate().map(step).collect(),
         }
     }
 }
@@ -141,6 +188,9 @@ pub fn write_tighten_table(record: &TightenRecord, width: usize, out: &mut dyn W
             format!("The target itself misses {wanted}: no parts mend that. Change the target or what is wanted.");
         text += &paragraph("", &line, width);
     }
+    if record.is_compensated {
+        text += &paragraph("! ", &compensated_in_words(true), width);
+    }
     let spread = if record.distribution == "uniform" { "evenly" } else { "normally, cut off at the tolerance" };
     let reels = match record.reel_share {
         share if share > 0.0 => format!("{} of it common to the parts of one part number", of_hundred(share)),
@@ -165,6 +215,21 @@ pub fn write_tighten_table(record: &TightenRecord, width: usize, out: &mut dyn W
         };
         text.push('\n');
         text += &paragraph(if marked { "* " } else { "" }, &line, width);
+        if let Some(step) = record.steps.iter().find(|step| step.cheapest) {
+            let line = format!(
+                "costs least of those that reach {wanted}: {} a board",
+                unbroken(&cost_in_words(record, step.cost_millionths))
+            );
+            text += &paragraph("# ", &line, width);
+        } else if marked && record.has_prices() {
+            text += &paragraph("", "No step that reaches it has a price for all its parts.", width);
+        }
+    }
+    if record.has_prices() {
+        let line = "Costs are those of the parts of one board of the row shown, each part at the price of its tolerance; \
+                    measured parts cost nothing.";
+        text.push('\n');
+        text += &paragraph("", line, width);
     }
     text.push('\n');
     let caution = "The row of a step is chosen on the boards that give its yield; one that comes close may be as good. \
@@ -172,6 +237,17 @@ pub fn write_tighten_table(record: &TightenRecord, width: usize, out: &mut dyn W
                    top. Measure the build.";
     text += &paragraph("", caution, width);
     out.write_all(text.as_bytes())
+}
+
+impl TightenRecord {
+    fn has_prices(&self) -> bool {
+        !self.resistor_prices.is_empty()
+    }
+}
+
+fn cost_in_words(record: &TightenRecord, millionths: Option<u64>) -> String {
+    let currency = record.currency.as_deref().filter(|_| millionths.is_some()).unwrap_or_default();
+    format!("{} {}", money(millionths), printable(currency)).trim_end().to_string()
 }
 
 /// Different numbers in the order in which they come.
@@ -185,17 +261,26 @@ fn different(numbers: impl Iterator<Item = f64>) -> Vec<f64> {
     list
 }
 
-/// A column for each tolerance of resistors, three lines for each of capacitors.
+/// A column for each tolerance of resistors, some lines for each of capacitors.
 fn table(record: &TightenRecord, width: usize) -> String {
     let resistors = different(record.steps.iter().map(|step| step.resistors));
     let capacitors = different(record.steps.iter().map(|step| step.capacitors));
     let percent = |ratio: f64| format!("{:.1}", 100.0 * ratio);
     let cells = |step: &StepRecord| {
         let [low, high] = step.interval.map(percent);
-        let mark = if step.marked { "* " } else { "" };
-        [format!("{mark}{} %", percent(step.share)), format!("{low} to {high}"), format!("row {}", step.row)]
+        let marks: String =
+            [(step.marked, '*'), (step.cheapest, '#')].iter().filter(|(is, _)| *is).map(|(_, mark)| mark).collect();
+        let mark = if marks.is_empty() { marks } else { format!("{marks} ") };
+        let mut lines =
+            vec![format!("{mark}{} %", percent(step.share)), format!("{low} to {high}"), format!("row {}", step.row)];
+        if record.has_prices() {
+            lines.push(cost_in_words(record, step.cost_millionths));
+        }
+        lines
     };
-    let lead = capacitors.iter().flat_map(|c| [of_hundred(*c), String::new(), String::new()]).collect();
+    let blank = if record.has_prices() { 3 } else { 2 };
+    let lead = |c: &f64| std::iter::once(of_hundred(*c)).chain(std::iter::repeat_n(String::new(), blank));
+    let lead = capacitors.iter().flat_map(lead).collect();
     let mut columns = vec![Column::right("", lead)];
     for (r, chunk) in resistors.iter().zip(record.steps.chunks(capacitors.len().max(1))) {
         columns.push(Column::right(format!("R {}", of_hundred(*r)), chunk.iter().flat_map(cells).collect()));

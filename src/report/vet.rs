@@ -33,6 +33,9 @@ pub struct VetRecord {
     /// How many boards of the row differ in their measured parts: what is looked at is the worst of them. 0 where all
     /// boards are alike.
     pub boards: usize,
+    /// Whether the list was searched for with real op-amps or surroundings in mind: then only `real` judges what is built, and
+    /// all else is off by their correction.
+    pub is_compensated: bool,
     /// The sections in signal order.
     pub sections: Vec<VetSection>,
     /// What the error is.
@@ -100,7 +103,8 @@ pub struct VetPiece {
     pub notation: String,
     /// How far it may be off, as ratios: lowest and highest.
     pub tolerance: [f64; 2],
-    /// From where that is: `flag`, `list` for the stock list, or `measured` for a measured part, which is off by nothing.
+    /// From where that is: `flag` for that of all parts of the kind, `slot` for one given for this slot, `list` for the stock
+    /// list, or `measured` for a measured part, which is off by nothing.
     pub tolerance_from: &'static str,
 }
 
@@ -281,6 +285,7 @@ impl VetRecord {
             title: built.title.clone(),
             row,
             boards,
+            is_compensated: false,
             sections: built
                 .sections
                 .iter()
@@ -317,7 +322,10 @@ impl VetRecord {
                 .as_ref()
                 .zip(found.levels.as_ref())
                 .map(|(c, l)| LevelsRecord::new(built, c, l)),
-            trims: found.trims.as_ref().map(|list| list.iter().map(|trim| TrimRecord::new(built, trim)).collect()),
+            trims: found.trims.as_ref().map(|list| {
+                let both = list.iter().zip(&found.selections);
+                both.map(|(trim, select)| TrimRecord::new(built, trim, select.as_ref())).collect()
+            }),
         }
     }
 }
@@ -338,6 +346,7 @@ fn piece(kind: Kind, piece: &BuiltPiece, tolerances: &Tolerances) -> VetPiece {
         notation: format_part(piece.label, kind),
         tolerance: [low, high],
         tolerance_from: match piece.tolerance {
+            _ if piece.has_own_tolerance => "slot",
             _ if piece.is_measured => "measured",
             Some(_) => "list",
             None => "flag",

@@ -8,6 +8,7 @@ use super::layout::{Column, grid, paragraph, unbroken};
 use super::numbers::{level, short};
 use super::vet_table::{of_hundred, rounded};
 use crate::analysis::{Built, Climate, Drift, Extremes, FigureDrift, KindDrift};
+use crate::units::{Kind, format_part};
 
 /// What temperature and age do. Changes are relative to the nominal board.
 #[derive(Clone, Debug, PartialEq, Serialize)]
@@ -18,6 +19,8 @@ pub struct DriftRecord {
     pub resistors: KindDriftRecord,
     /// How capacitors change.
     pub capacitors: KindDriftRecord,
+    /// The parts of which the stock list says how they change.
+    pub parts: Vec<PartDriftRecord>,
     /// The figures of the sections.
     pub figures: Vec<FigureDriftRecord>,
     /// The largest change of the response by temperature alone, in the unit of the measure.
@@ -39,6 +42,23 @@ pub struct KindDriftRecord {
     pub tracking_ppm: f64,
     /// By how much a part can be off at the end of its life, relative.
     pub ageing: f64,
+}
+
+/// What the stock list says of one part.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct PartDriftRecord {
+    /// The section.
+    pub section: String,
+    /// The slot.
+    pub slot: String,
+    /// Resistor or capacitor.
+    pub kind: Kind,
+    /// The value on its label, in IEC 60062 notation, where the slot holds a pair.
+    pub notation: Option<String>,
+    /// The range of temperature coefficients, ppm/K.
+    pub coefficient_ppm: Option<[f64; 2]>,
+    /// By how much it can be off at the end of its life, relative.
+    pub ageing: Option<f64>,
 }
 
 /// How one figure moves.
@@ -84,7 +104,22 @@ impl DriftRecord {
                 })
             }));
         }
+        // Coefficients are given to a thousandth of a ppm/K.
+        let ppm = |x: f64| (x * 1e9).round() / 1e3;
+        let mut parts = Vec::new();
+        for (section, part) in built.sections.iter().flat_map(|s| s.parts.iter().map(move |part| (s, part))) {
+            let said = part.pieces.iter().filter(|piece| piece.coefficient.is_some() || piece.ageing.is_some());
+            parts.extend(said.map(|piece| PartDriftRecord {
+                section: section.target.name.clone(),
+                slot: section.slot_name(part.slot).to_string(),
+                kind: part.kind,
+                notation: (part.pieces.len() > 1).then(|| format_part(piece.label, part.kind)),
+                coefficient_ppm: piece.coefficient.map(|(low, high)| [ppm(low), ppm(high)]),
+                ageing: piece.ageing,
+            }));
+        }
         DriftRecord {
+            parts,
             kelvin: [climate.coldest, climate.hottest],
             resistors: KindDriftRecord::new(&climate.resistors),
             capacitors: KindDriftRecord::new(&climate.capacitors),
@@ -97,8 +132,36 @@ impl DriftRecord {
     }
 
     fn ages(&self) -> bool {
-        self.resistors.ageing > 0.0 || self.capacitors.ageing > 0.0
+        let of_parts = || self.parts.iter().any(|part| part.ageing.is_some_and(|ageing| ageing > 0.0));
+        self.resistors.ageing > 0.0 || self.capacitors.ageing > 0.0 || of_parts()
     }
+}
+
+/// What the stock list says of single parts: those alike on one line.
+fn said_of_parts(drift: &DriftRecord, warms: bool, width: usize) -> String {
+    let mut lines: Vec<(String, Vec<String>)> = Vec::new();
+    for part in &drift.parts {
+        let coefficient = part.coefficient_ppm.filter(|_| warms).map(|range| {
+            let [low, high] = range.map(|ppm| short(ppm, 5));
+            if low == high { format!("{low} ppm/K") } else { format!("{low} to {high} ppm/K") }
+        });
+        let ageing = part.ageing.map(|ageing| format!("{} over their life", of_hundred(ageing)));
+        let words: Vec<String> = coefficient.into_iter().chain(ageing).collect();
+        if words.is_empty() {
+            continue;
+        }
+        let words = words.join("; ");
+        let of_pair = part.notation.as_ref().map_or(String::new(), |notation| format!(" {notation}"));
+        let name = unbroken(&format!("{} {}{of_pair}", part.section, part.slot));
+        match lines.iter_mut().find(|(known, _)| *known == words) {
+            Some((_, names)) => names.push(name),
+            None => lines.push((words, vec![name])),
+        }
+    }
+    let line = |(words, names): (String, Vec<String>)| {
+        paragraph("   ", &format!("{words} by the stock list: {}", names.join(", ")), width)
+    };
+    lines.into_iter().map(line).collect()
 }
 
 /// The section of the page.
@@ -108,7 +171,8 @@ pub(super) fn drift_table(drift: &DriftRecord, unit: &str, width: usize) -> Stri
     let title =
         if warms { format!("Drift, {cold} to {hot}, against 25\u{a0}°C") } else { "Drift by age".to_string() };
     let mut text = paragraph("", &title, width);
-    for (name, kind) in [("resistors", drift.resistors), ("capacitors", drift.capacitors)] {
+    let kinds = [("resistors", drift.resistors, Kind::Resistor), ("capacitors", drift.capacitors, Kind::Capacitor)];
+    for (name, kind, of) in kinds {
         let mut words = Vec::new();
         if warms {
             let [low, high] = kind.coefficient_ppm.map(|ppm| short(ppm, 5));
@@ -118,8 +182,10 @@ pub(super) fn drift_table(drift: &DriftRecord, unit: &str, width: usize) -> Stri
         if drift.ages() {
             words.push(format!("{} over their life", of_hundred(kind.ageing)));
         }
-        text += &paragraph(&format!("   {name}: "), &words.join("; "), width);
+        let other = if drift.parts.iter().any(|part| part.kind == of) { "other " } else { "" };
+        text += &paragraph(&format!("   {other}{name}: "), &words.join("; "), width);
     }
+    text += &said_of_parts(drift, warms, width);
     text.push('\n');
     let percent = |ratio: f64| match format!("{:+.3} %", 100.0 * ratio) {
         zero if zero == "+0.000 %" || zero == "-0.000 %" => "0 %".to_string(),

@@ -99,7 +99,20 @@ fn board(record: &VetRecord, width: usize) -> String {
     for line in said {
         text += &paragraph("            ", &line, width);
     }
-    text + &paragraph("Error:      ", &measure_in_words(&record.measure), width)
+    text += &paragraph("Error:      ", &measure_in_words(&record.measure), width);
+    if record.is_compensated {
+        text += &paragraph("! ", &compensated_in_words(record.real.is_some()), width);
+    }
+    text
+}
+
+/// What has to be said of a list that was searched for with real op-amps in mind.
+pub(super) fn compensated_in_words(is_real_shown: bool) -> String {
+    let next = if is_real_shown { "" } else { " Add the op-amps, such as --gbw 10MHz, to see what is built." };
+    format!(
+        "The list was searched for with real op-amps or surroundings in mind: whatever is computed for ideal ones is off by \
+         that correction.{next}"
+    )
 }
 
 /// The tolerances that the flags do not give: those of the stock list, the largest first, and measured parts.
@@ -110,6 +123,7 @@ fn said_tolerances(record: &VetRecord) -> Vec<String> {
     };
     // How far up, in words, and for which parts.
     let mut listed: Vec<(f64, String, Vec<String>)> = Vec::new();
+    let mut own: Vec<(f64, String, Vec<String>)> = Vec::new();
     let mut measured: Vec<String> = Vec::new();
     for (section, part) in record.sections.iter().flat_map(|s| s.parts.iter().map(move |part| (s, part))) {
         for piece in &part.made_of {
@@ -117,21 +131,27 @@ fn said_tolerances(record: &VetRecord) -> Vec<String> {
             let name = unbroken(&format!("{} {}{of_pair}", section.name, part.slot));
             match piece.tolerance_from {
                 "measured" => measured.push(name),
-                "list" => {
+                from @ ("list" | "slot") => {
                     let words = unbroken(&in_words(piece.tolerance));
-                    match listed.iter_mut().find(|(_, known, _)| *known == words) {
+                    let lines = if from == "list" { &mut listed } else { &mut own };
+                    match lines.iter_mut().find(|(_, known, _)| *known == words) {
                         Some((_, _, names)) => names.push(name),
-                        None => listed.push((piece.tolerance[1], words, vec![name])),
+                        None => lines.push((piece.tolerance[1], words, vec![name])),
                     }
                 }
                 _ => {}
             }
         }
     }
-    listed.sort_by(|(a, ..), (b, ..)| b.total_cmp(a));
-    let shown = listed.into_iter();
-    let mut lines: Vec<String> =
-        shown.map(|(_, words, names)| format!("{words} by the stock list: {}", names.join(", "))).collect();
+    let mut lines = Vec::new();
+    for (mut found, by) in [(listed, "by the stock list"), (own, "as given for")] {
+        found.sort_by(|(a, ..), (b, ..)| b.total_cmp(a));
+        let shown = found.into_iter();
+        lines.extend(shown.map(|(_, words, names)| match by {
+            "as given for" => format!("{words} {by} {}", names.join(", ")),
+            _ => format!("{words} {by}: {}", names.join(", ")),
+        }));
+    }
     if !measured.is_empty() {
         lines.push(format!("measured, and taken without a tolerance: {}", measured.join(", ")));
     }

@@ -14,7 +14,7 @@ use crate::target::Section;
 use crate::units::{Kind, Value};
 
 use super::family::log_gradient;
-use super::model::Model;
+use super::model::{Group, Model};
 use super::window::Coefficient::{self, D, N};
 
 /// Unrounded values of the active groups of a section.
@@ -76,6 +76,21 @@ pub(crate) fn solve(model: &Model, section: &Section, ignore_gain: bool) -> Opti
         }
     }
     Some(Ideal { values: exact(&loose), on_shelf: pinned })
+}
+
+/// The unrounded values nearest to given ones, by their logarithms, that realise the section exactly; by active group, ohms
+/// or farads. Pinned groups keep theirs. `None` where Newton's steps do not lead there.
+pub(crate) fn near(model: &Model, section: &Section, ignore_gain: bool, values: &[f64]) -> Option<Vec<f64>> {
+    let equations = equations(model, section, ignore_gain);
+    let groups = model.active_groups();
+    let logarithm = |(group, value): (&Group, &f64)| {
+        if group.kind == Kind::Resistor { -value.ln() } else { value.ln() }
+    };
+    let start: Vec<f64> = groups.iter().zip(values).map(logarithm).collect();
+    let free: Vec<bool> = groups.iter().map(|group| group.shelf.len() > 1).collect();
+    let found = Task { equations: &equations, centre: &start, free: &free }.polish(start.clone())?;
+    let value = |(group, u): (&Group, f64)| if group.kind == Kind::Resistor { (-u).exp() } else { u.exp() };
+    Some(groups.iter().zip(found).map(value).collect())
 }
 
 /// The ideal's coefficients relative to the leading one of the denominator, as equations; those that the circuit fixes

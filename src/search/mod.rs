@@ -22,7 +22,7 @@ mod window;
 pub use board::shortlist;
 pub use cascade::{
     Cascade, CascadeError, CascadeRequest, CascadeSection, Filter, Gains, Level, OpAmpLevel, Pairing, Pairings,
-    Sequence, Stage, Swing, cascade, ideal_parts,
+    Sequence, Stage, Swing, cascade, ideal_parts, ideal_parts_near,
 };
 pub use front::{End, ErrorKey, Proof};
 pub use limits::{Monitor, Progress, StopReason, Unwatched};

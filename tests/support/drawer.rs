@@ -175,7 +175,14 @@ impl Things {
         let all: Vec<(LotId, &[StockLine])> = supply.lots().map(|(id, lot)| (id, lot.lines.as_slice())).collect();
         let label = |lines: &[StockLine]| {
             let line = &lines[0];
-            (line.kind, line.value, line.tolerance, line.temperature_coefficient, line.dielectric.clone())
+            (
+                line.kind,
+                line.value,
+                line.tolerance,
+                line.temperature_coefficient,
+                line.dielectric.clone(),
+                line.ageing,
+            )
         };
         let thing = |lines: &[StockLine]| {
             let measured = lines[0].measured.is_some();

@@ -17,6 +17,7 @@ pub(super) enum Column {
     Price,
     PartId,
     MeasuredValue,
+    Ageing,
 }
 
 /// The columns of a stock file: the words that a header may have, the first of which is the name of the column, and
@@ -24,7 +25,7 @@ pub(super) enum Column {
 ///
 /// Letter case does not count, and `_` and `-` are blanks. A unit may follow the word, alone or in brackets:
 /// `tolerance %`, `measured (nF)`, `tempco [ppm/K]`, `price (EUR)`; it goes for the numbers that have none.
-pub const STOCK_COLUMNS: [(&[&str], &str); 9] = [
+pub const STOCK_COLUMNS: [(&[&str], &str); 10] = [
     (&["kind", "type"], "R or C, resistor or capacitor"),
     (&["value"], "nominal value in IEC 60062 or SI notation: 4k7, 4700, 10n, 1e-8, 10 nF"),
     (&["quantity", "qty", "count"], "how many there are, a whole number from 0"),
@@ -34,6 +35,10 @@ pub const STOCK_COLUMNS: [(&[&str], &str); 9] = [
     (&["price", "unit price"], "for one part, with or without a currency: 0.12, €0.12, 0.12 EUR"),
     (&["part id", "id", "part", "part number"], "what the part or its drawer is called"),
     (&["measured value", "measured"], "true value of one physical part, in the notation of values"),
+    (
+        &["ageing", "aging", "end of life"],
+        "by how much a part may be off at the end of its life, beside its tolerance: 0.5%",
+    ),
 ];
 
 /// Where the columns of a file are.
@@ -123,16 +128,18 @@ impl Column {
         Column::Price,
         Column::PartId,
         Column::MeasuredValue,
+        Column::Ageing,
     ];
 
     /// Those that hold numbers.
-    pub const NUMBERS: [Column; 6] = [
+    pub const NUMBERS: [Column; 7] = [
         Column::Value,
         Column::Quantity,
         Column::Tolerance,
         Column::TemperatureCoefficient,
         Column::Price,
         Column::MeasuredValue,
+        Column::Ageing,
     ];
 
     /// The name in [`STOCK_COLUMNS`].
@@ -147,7 +154,7 @@ impl Column {
                 [Kind::Resistor, Kind::Capacitor].iter().any(|kind| parse_part(&format!("1{unit}"), *kind).is_ok())
             }
             Column::Quantity => unit == "pcs",
-            Column::Tolerance => unit == "%",
+            Column::Tolerance | Column::Ageing => unit == "%",
             Column::TemperatureCoefficient => temperature::is_unit(unit),
             Column::Price => price::is_currency(unit),
             Column::Kind | Column::Dielectric | Column::PartId => false,

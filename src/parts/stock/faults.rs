@@ -92,6 +92,9 @@ pub enum StockFault {
     /// The temperature coefficient.
     #[error("\"{0}\" is no temperature coefficient: expected ppm/K up to {max}, for example -200, ±50 or -750±120", max = TemperatureCoefficient::LARGEST)]
     TemperatureCoefficient(String),
+    /// The ageing.
+    #[error("\"{0}\" is no ageing: expected a percentage above 0 and below 100, for example 0.5 %")]
+    Ageing(String),
     /// The price.
     #[error(
         "\"{0}\" is no price: expected an amount from 0 to 1000000 for one part with at most six decimals, for example 0.12, €0.12 or 0.12 EUR"

@@ -94,6 +94,8 @@ pub struct StockLine {
     pub id: Option<String>,
     /// The true value of one physical part, in ohms or farads.
     pub measured: Option<Value>,
+    /// By how much a part may be off at the end of its life, beside its tolerance, to either side: a ratio below 1.
+    pub ageing: Option<Value>,
     /// The cells of the other columns that are not empty, by the name of their column.
     pub extra: BTreeMap<String, String>,
 }
@@ -111,13 +113,21 @@ impl StockLine {
         }
     }
 
-    /// Whether the parts of two lines can stand in for each other: the same value, tolerance, temperature coefficient
-    /// and dielectric, and neither measured. Id, price and other columns do not count.
+    /// Whether the parts of two lines can stand in for each other: the same value, tolerance, temperature coefficient,
+    /// dielectric and ageing, and neither measured. Id, price and other columns do not count.
     pub fn is_same_choice(&self, other: &StockLine) -> bool {
         let is_measured = self.measured.is_some() || other.measured.is_some();
-        !is_measured
-            && (self.kind, self.value, self.tolerance, self.temperature_coefficient, &self.dielectric)
-                == (other.kind, other.value, other.tolerance, other.temperature_coefficient, &other.dielectric)
+        let of = |line: &StockLine| {
+            (
+                line.kind,
+                line.value,
+                line.tolerance,
+                line.temperature_coefficient,
+                line.dielectric.clone(),
+                line.ageing,
+            )
+        };
+        !is_measured && of(self) == of(other)
     }
 }
 

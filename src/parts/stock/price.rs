@@ -18,8 +18,9 @@ impl Price {
     /// The largest amount, a million of the currency: more for one part is a slip.
     const LARGEST: u64 = 1_000_000_000_000;
 
-    /// Reads an amount with at most six decimals, and a currency before or behind it.
-    pub(super) fn read(text: &str) -> Option<Price> {
+    /// Reads an amount with at most six decimals, and a currency before or behind it; `None` for anything else, and beyond a
+    /// million of the currency.
+    pub fn read(text: &str) -> Option<Price> {
         let is_amount = |sign: char| sign.is_ascii_digit() || sign == '.';
         let start = text.find(is_amount)?;
         let end = text.rfind(is_amount)? + 1;

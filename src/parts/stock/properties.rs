@@ -75,6 +75,7 @@ fn cells() -> impl Strategy<Value = (StockLine, [String; 10])> {
             price: Some(Price { millionths: cents * 10_000, currency: None }),
             id: Some(id.clone()),
             measured,
+            ageing: None,
             extra: BTreeMap::from([("shelf".to_owned(), shelf.clone())]),
         };
         let cells = [

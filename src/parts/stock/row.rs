@@ -50,6 +50,7 @@ impl Row<'_> {
             TemperatureCoefficient::read(text).ok_or(StockFault::TemperatureCoefficient(quoted))
         });
         let price = self.number(Column::Price, |text, quoted| Price::read(text).ok_or(StockFault::Price(quoted)));
+        let ageing = self.number(Column::Ageing, |text, quoted| ageing(text).ok_or(StockFault::Ageing(quoted)));
         let dielectric = self.text(Column::Dielectric).map(Dielectric::read);
         let id = self.text(Column::PartId).map(str::to_owned);
         let others = self.layout.others.iter();
@@ -70,6 +71,7 @@ impl Row<'_> {
             price,
             id,
             measured,
+            ageing,
             extra,
         })
     }
@@ -117,6 +119,16 @@ impl Row<'_> {
         let column = self.layout.title(column).map(str::to_owned);
         self.faults.push(AtLine { line: self.line, column, what });
         None
+    }
+}
+
+/// A percentage above 0 and below 100, such as `0.5 %` or `±0.5%`, as a ratio.
+fn ageing(text: &str) -> Option<Value> {
+    // Only a percentage is read, so that the value does not matter.
+    let nominal = Value::new(1, 0).ok().filter(|_| text.trim_end().ends_with('%'))?;
+    match Tolerance::read(text, Kind::Resistor, nominal).ok()? {
+        Tolerance::Relative { below, above } if below == above => Some(above),
+        _ => None,
     }
 }
 

@@ -54,6 +54,7 @@ fn a_drawer_is_read_with_all_that_it_states() {
         price: None,
         id: Some("R".to_owned()),
         measured: None,
+        ageing: None,
         extra: BTreeMap::new(),
     };
     let extra = |pairs: &[(&str, &str)]| pairs.iter().map(|(k, v)| (k.to_string(), v.to_string())).collect();
@@ -356,4 +357,23 @@ fn lines_that_differ_in_what_matters_are_different_choices() {
     assert_eq!(same, [true, true, false, false, false, false]);
     assert!(!stock.lines[5].is_same_choice(&stock.lines[5]));
     assert!(stock.oddities.is_empty());
+}
+
+#[test]
+fn ageing_is_a_percentage_to_either_side() {
+    for (text, ratio) in [("0.5 %", "0.005"), ("±2%", "0.02"), ("10 %", "0.1")] {
+        let stock = read(&format!("kind;value;ageing\nC;10n;{text}\n"));
+        assert_eq!(stock.faults, []);
+        assert_eq!(stock.lines[0].ageing.map(|ageing| ageing.to_f64()), ratio.parse().ok(), "{text}");
+    }
+    assert_eq!(read("kind;value;end of life (%)\nC;10n;1,5\n").lines[0].ageing.map(|a| a.to_f64()), Some(0.015));
+    assert_eq!(read("kind;value;ageing\nC;10n;\n").lines[0].ageing, None);
+    for text in ["0.5", "J", "-5/+1 %", "0 %", "100 %", "1pF", "some"] {
+        let told = fault_of("C;10n", "ageing", text);
+        let expected = "is no ageing: expected a percentage above 0 and below 100, for example 0.5 %";
+        assert_eq!(told, format!("\"{text}\" {expected}"));
+    }
+    // Parts that age otherwise are another choice.
+    let stock = read("kind;value;ageing\nC;10n;1%\nC;10n;2%\nC;10n;1.0 %\n");
+    assert!(!stock.lines[0].is_same_choice(&stock.lines[1]) && stock.lines[0].is_same_choice(&stock.lines[2]));
 }

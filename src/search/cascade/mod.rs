@@ -17,7 +17,7 @@ use crate::target::{Design, Parts, Section, Specification};
 
 use super::problem::SectionProblem;
 pub use builder::cascade;
-pub use unit::{Stage, ideal_parts};
+pub use unit::{Stage, ideal_parts, ideal_parts_near};
 
 /// Which zeros go with which poles.
 #[derive(Clone, Debug, Default, PartialEq)]

@@ -38,6 +38,23 @@ pub fn ideal_parts(problem: &SectionProblem) -> Option<Vec<f64>> {
     Some(values)
 }
 
+/// Unrounded part values by slot that give a section exactly and lie as near as can be to given ones, by their logarithms:
+/// the network keeps its ratios as far as the section lets it. Pinned slots, and those without effect on the response, keep
+/// what they have. With `ignore_gain` the gain may be any. `None` where no such values are found.
+pub fn ideal_parts_near(problem: &SectionProblem, ignore_gain: bool, values: &[f64]) -> Option<Vec<f64>> {
+    let supply = Supply::default();
+    let plain = |shelf: &Shelf| Shelf::new(shelf.kind(), shelf.values().iter().copied()).ok();
+    let shelves = problem.shelves.iter().map(plain).collect::<Option<_>>()?;
+    let model = Model::new(&SectionProblem { shelves, ..problem.clone() }, &supply)?;
+    let start: Vec<f64> = model.active_groups().iter().map(|group| values[group.slots[0]]).collect();
+    let found = ideal::near(&model, &problem.target, ignore_gain, &start)?;
+    let mut near = values.to_vec();
+    for (group, value) in model.active_groups().iter().zip(found) {
+        group.slots.iter().for_each(|&slot| near[slot] = value);
+    }
+    Some(near)
+}
+
 /// A section, and what its op-amp outputs do.
 #[derive(Clone, Debug)]
 pub(super) struct Unit {
