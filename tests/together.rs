@@ -311,6 +311,30 @@ fn frequencies_that_make_good_for_each_other() {
     assert!((found.rows[0].deviation.error - best.error).abs() < 1.5e-7, "{best:?}");
 }
 
+#[test]
+fn a_board_that_is_off_as_far_as_its_only_inexact_section() {
+    // The first section is exact, so the second one misses its target by just what the board misses the whole: allowed
+    // whatever the sections' own limits. Alone the second would take 13k, and with it a third part number.
+    let f0 = 1.0 / (TAU * 10e3 * 10e-9);
+    for own in [0.0, 1e-6, 1.0] {
+        for exact in [rc_low_pass(f0, "10k", "10n"), rc_high_pass(f0, "10k", "10n")] {
+            let other = rc_low_pass(f0 / 1.25, "10k 13k", "10n");
+            let problem = board(vec![exact, other], Goals { own_error: Some(own), ..wide(3.0) });
+            let outcome = compare_whole("exact", &problem);
+            assert!(outcome.rows.iter().any(|row| row.part_numbers == Some(2)), "{own}");
+        }
+    }
+}
+
+#[test]
+fn four_sections() {
+    let pole = |f0| rc_low_pass(f0, "8k2 10k 12k", "10n 12n 15n");
+    compare_all_limits(
+        "four",
+        &[pole(1e3), pole(1.2e3), pole(1.2e3), rc_high_pass(90.0, "120k 150k 180k", "10n 12n")],
+    );
+}
+
 // ---- stock --------------------------------------------------------------------------------------------------------
 
 #[test]
@@ -381,8 +405,8 @@ fn like_sections_exchanged_are_no_alternative() {
 
 // ---- from practice ------------------------------------------------------------------------------------------------
 
-#[test]
-fn a_crossover_of_one_resistor_and_one_capacitor() {
+/// Four unity-gain sections as one chain, one series or parallel pair each.
+fn crossover(goals: Goals) -> Problem {
     // Fourth-order Linkwitz-Riley at 2200 Hz: common practice, computed. Equal parts R, R, 2C, C make the low-pass and
     // C, C, R, 2R the high-pass of Q = 1/sqrt 2 at f0 = 1/(2 pi sqrt 2 R C).
     let (r, c) = (series(R, Series::E24, "1k", "100k"), series(C, Series::E6, "1n", "100n"));
@@ -398,8 +422,14 @@ fn a_crossover_of_one_resistor_and_one_capacitor() {
     };
     let low = || of(Shape::LowPass, "sallen-key-low-pass", "low-pass");
     let high = || of(Shape::HighPass, "sallen-key-high-pass", "high-pass");
-    let goals = Goals { max_part_numbers: Some(2), ..Goals::default() };
-    let outcome = shortlist(&board(vec![low(), low(), high(), high()], goals), &Unwatched);
+    board(vec![low(), low(), high(), high()], goals)
+}
+
+#[test]
+fn a_crossover_of_one_resistor_and_one_capacitor() {
+    let q = std::f64::consts::FRAC_1_SQRT_2;
+    let job = crossover(Goals { max_part_numbers: Some(4), ..Goals::default() });
+    let outcome = shortlist(&job, &Unwatched);
     let row: &Row = outcome.rows.iter().find(|row| row.part_numbers == Some(2)).unwrap();
     let f0 = |chosen: &roundwell::search::Chosen| chosen.achieved.w0 / TAU;
     let product = 51e-6;
@@ -414,5 +444,26 @@ fn a_crossover_of_one_resistor_and_one_capacitor() {
     }
     assert_eq!(row.placed_parts, 20);
     assert!(row.proved, "{:?}", outcome.together);
+    // Every board of one resistor and one capacitor value; with f0 off by an octave there is none within the limit.
+    let mut least = f64::INFINITY;
+    for r in job.sections[0].shelves[0].choices() {
+        for c in job.sections[0].shelves[2].choices() {
+            let mut one = job.clone();
+            for section in &mut one.sections {
+                section.shelves = section
+                    .shelves
+                    .iter()
+                    .map(|s| s.replaced(if s.kind() == R { *r } else { *c }).unwrap())
+                    .collect();
+            }
+            let f0 = 1.0 / (TAU * 2f64.sqrt() * r.value.to_f64() * c.value.to_f64());
+            if (1100.0..4400.0).contains(&f0) {
+                least = least.min(Whole::run(&one).least_of(2));
+            }
+        }
+    }
+    assert!((row.deviation.error - least).abs() < 1.5e-7, "{} {least}", row.deviation.error);
+    let claims: Vec<_> = outcome.rows.iter().map(|row| (row.part_numbers, row.deviation.error, row.proved)).collect();
+    assert!(claims.iter().any(|(count, error, proved)| *count == Some(3) && *error < 0.03 && *proved), "{claims:?}");
     assert!(matches!(outcome.together.unwrap().proof, Proof::Exhaustive(_)));
 }

@@ -35,6 +35,7 @@ struct With {
     weighted: bool,
     no_gain: bool,
     measured: bool,
+    cost: bool,
 }
 
 const CIRCUITS: [(&str, &str); 11] = [
@@ -64,7 +65,8 @@ fn drawn_drawer(numbers: &mut Numbers, with: With) -> Drawer {
     let lines = (r.iter().map(|v| ('R', v))).chain(c.iter().map(|v| ('C', v))).map(|(kind, value)| {
         let quantity = [0, 1, 2, 3, 4, 6, 8][numbers.below(7)] * boards;
         let quantity = if numbers.below(4) == 0 { String::new() } else { quantity.to_string() };
-        format!("{kind},{value},{quantity},,,")
+        let price = if with.cost { [0.01, 0.02, 0.05, 0.1][numbers.below(4)].to_string() } else { String::new() };
+        format!("{kind},{value},{quantity},,{price},")
     });
     let mut lines: Vec<String> = lines.collect();
     if with.measured {
@@ -77,7 +79,7 @@ fn drawn_drawer(numbers: &mut Numbers, with: With) -> Drawer {
     let lines: Vec<&str> = lines.iter().map(String::as_str).collect();
     let buying = [Buying::Forbidden, Buying::AtMost(1), Buying::AtMost(3), Buying::Allowed][numbers.below(4)];
     let drawer = Drawer::lines(&lines).boards(boards, numbers.below(2) as u64).buying(buying);
-    if buying == Buying::Forbidden { drawer } else { drawer.beside(R, "13k").beside(C, "18n") }
+    if buying == Buying::Forbidden || with.cost { drawer } else { drawer.beside(R, "13k").beside(C, "18n") }
 }
 
 fn drawn_section(numbers: &mut Numbers, drawer: &Drawer, with: With) -> Option<SectionProblem> {
@@ -148,6 +150,9 @@ fn drawn(numbers: &mut Numbers, with: With) -> Option<Problem> {
         goals.impedance = [None, None, Some((6e3, 1.5e4))][numbers.below(3)];
     }
     goals.rank = [Rank::Error, Rank::Error, Rank::PartNumbers, Rank::ToBuy][numbers.below(4)];
+    if with.cost {
+        goals.rank = Rank::Cost;
+    }
     let mut problem = Problem { supply: drawer.supply.clone(), ..board(sections, goals) };
     problem.criterion.ignore_gain = with.no_gain && !vector;
     if with.weighted {
@@ -205,6 +210,11 @@ fn drawn_with_pairs() {
 fn drawn_with_stock() {
     compare_drawn(4, 40, With { stock: true, ..With::default() }, (60, 5));
     compare_drawn(5, 30, With { stock: true, demands: true, pairs: true, ..With::default() }, (40, 3));
+}
+
+#[test]
+fn drawn_with_cost() {
+    compare_drawn(12, 20, With { stock: true, cost: true, ..With::default() }, (20, 1));
 }
 
 #[test]

@@ -15,7 +15,7 @@
 use std::collections::{BTreeMap, BTreeSet};
 
 use roundwell::parts::{Buying, Choice};
-use roundwell::search::{Chosen, Goals, Outcome, Problem, Proof, Row, SectionProblem, Unwatched, shortlist};
+use roundwell::search::{Chosen, Goals, Outcome, Problem, Proof, Rank, Row, SectionProblem, Unwatched, shortlist};
 use roundwell::target::{Biquad, Criterion, Measure, Section, Yardstick};
 use roundwell::units::Kind;
 use roundwell::verify::verify;
@@ -29,16 +29,11 @@ pub const STEP: f64 = 1.5e-7;
 /// The most different choices on all shelves.
 const IDS: usize = 40;
 
-/// What a board takes: part numbers, part numbers to buy, bodies.
-pub type Takes = [usize; 3];
+/// What a board takes: part numbers, part numbers to buy, bodies, and where rows are ranked by it the cost in millionths.
+pub type Takes = [usize; 4];
 
 pub fn no_more(a: &Takes, b: &Takes) -> bool {
     a.iter().zip(b).all(|(a, b)| a <= b)
-}
-
-/// What a row says that it takes.
-fn said(row: &Row) -> Takes {
-    [row.part_numbers.unwrap_or(0), row.to_buy.unwrap_or(0), row.placed_parts]
 }
 
 /// An error in steps.
@@ -225,6 +220,12 @@ impl<'a> Whole<'a> {
         sets
     }
 
+    /// What a row says that it takes.
+    fn said(&self, row: &Row) -> Takes {
+        let cost = row.cost.filter(|_| self.problem.goals.rank == Rank::Cost);
+        [row.part_numbers.unwrap_or(0), row.to_buy.unwrap_or(0), row.placed_parts, cost.unwrap_or(0) as usize]
+    }
+
     /// What a board takes; `None` where the stock or the job does not allow it.
     fn takes(&self, uses: &[u8; IDS], numbers: u64) -> Option<Takes> {
         let supply = &self.problem.supply;
@@ -257,7 +258,12 @@ impl<'a> Whole<'a> {
         let count = numbers.count_ones() as usize;
         let allowed = (!supply.has_stock() || to_buy <= most)
             && self.problem.goals.max_part_numbers.is_none_or(|most| count <= most);
-        allowed.then(|| [count, to_buy, uses.iter().map(|&n| usize::from(n)).sum()])
+        let price = |(i, (_, choice)): (usize, &(Kind, Choice))| {
+            usize::from(uses[i]) * supply.price(*choice).map_or(0, |price| price as usize)
+        };
+        let by_cost = self.problem.goals.rank == Rank::Cost;
+        let cost = if by_cost { self.ids.iter().enumerate().map(price).sum() } else { 0 };
+        allowed.then(|| [count, to_buy, uses.iter().map(|&n| usize::from(n)).sum(), cost])
     }
 
     /// Calls with each board that can be built: what it takes, the largest miss of a section beyond its own limit, its sets.
@@ -293,7 +299,7 @@ impl<'a> Whole<'a> {
 
     /// The smallest error among the allowed boards of at most so many part numbers.
     pub fn least_of(&self, part_numbers: usize) -> f64 {
-        self.least(&[part_numbers, usize::MAX, usize::MAX])
+        self.least(&[part_numbers, usize::MAX, usize::MAX, usize::MAX])
     }
 
     /// The smallest error below `error` of a board of at most so many part numbers whose sections miss their own targets by
@@ -345,7 +351,7 @@ impl<'a> Whole<'a> {
         let problem = self.problem;
         let (takes, error, own) = self.recount(&row.sections);
         let takes = takes.ok_or("more than the job or the stock allows")?;
-        let said = said(row);
+        let said = self.said(row);
         if takes != said {
             return Err(format!("takes {takes:?}, {said:?} is said"));
         }
@@ -373,7 +379,11 @@ impl<'a> Whole<'a> {
             }
         }
         assert_eq!(verify(self.problem, outcome), Ok(()), "{}", say());
-        let together = outcome.together.as_ref().expect("several sections");
+        let Some(together) = &outcome.together else {
+            // Ranked by cost, the sections are only chosen one at a time.
+            assert!(self.problem.goals.rank == Rank::Cost && outcome.rows.iter().all(|row| !row.proved), "{}", say());
+            return;
+        };
         self.check_proved(label, outcome, &|row| row.deviation.error <= self.problem.goals.error_limit);
         for bound in &together.bounds {
             let least = self.least_of(bound.part_numbers);
@@ -391,7 +401,7 @@ impl<'a> Whole<'a> {
     pub fn check_proved(&self, label: &str, outcome: &Outcome, which: &dyn Fn(&Row) -> bool) {
         let say = || self.say(label, outcome);
         for row in outcome.rows.iter().filter(|row| row.proved && which(row)) {
-            let takes = said(row);
+            let takes = self.said(row);
             let (error, least) = (row.deviation.error, self.least(&takes));
             assert!(error <= least + STEP, "said to be proved: {takes:?} {error}, there is {least}: {}", say());
             // Also none with more bodies or more to buy, but those of rows listed before.
@@ -441,22 +451,24 @@ impl<'a> Whole<'a> {
     pub fn check_complete(&self, label: &str, outcome: &Outcome) {
         let say = || self.say(label, outcome);
         let goals = &self.problem.goals;
-        let together = outcome.together.as_ref().expect("several sections");
         assert_eq!(outcome.stopped, None, "{}", say());
-        assert!(matches!(together.proof, Proof::Exhaustive(_)), "{}", say());
-        let (fine, end) = (steps(goals.error_resolution), self.end());
+        let fine = steps(goals.error_resolution);
+        let end = self.end();
         let is_there = |takes: &Takes, error: f64| {
             outcome.rows.iter().any(|row| {
-                no_more(&said(row), takes)
+                no_more(&self.said(row), takes)
                     && (row.deviation.error <= error + STEP || steps(row.deviation.error) < fine)
             })
         };
+        self.check_one_at_a_time(outcome, end, &is_there, &say);
+        let Some(together) = &outcome.together else { return };
+        assert!(matches!(together.proof, Proof::Exhaustive(_)), "{}", say());
         for (takes, best) in self.best.iter().filter(|(t, b)| t[0] <= end && b.error <= goals.error_limit) {
             assert!(is_there(takes, best.error), "not listed: {takes:?} {best:?}: {}", say());
             assert!(outcome.within_limit, "{}", say());
         }
         for row in outcome.rows.iter().filter(|row| !row.alternative && row.deviation.error <= goals.error_limit) {
-            let takes = said(row);
+            let takes = self.said(row);
             let least = self.least(&takes);
             assert!(
                 row.deviation.error <= least + STEP,
@@ -472,7 +484,7 @@ impl<'a> Whole<'a> {
         for row in outcome.rows.iter().filter(|row| !row.alternative && row.deviation.error <= goals.error_limit) {
             let mut fewer = outcome.rows.iter().filter(|other| other.part_numbers <= row.part_numbers);
             let best = fewer.all(|other| steps(other.deviation.error) >= steps(row.deviation.error));
-            assert!(row.proved || !best, "all was searched, and {:?} is not proved: {}", said(row), say());
+            assert!(row.proved || !best, "all was searched, and {:?} is not proved: {}", self.said(row), say());
         }
         for bound in &together.bounds {
             let listed = outcome.rows.iter().filter(|row| row.part_numbers <= Some(bound.part_numbers));
@@ -488,7 +500,6 @@ impl<'a> Whole<'a> {
         assert_eq!(marked, wanted.map(|row| row.part_numbers).min(), "the wrong row is marked: {}", say());
         let fewest = self.best.iter().filter(|(_, b)| b.error <= goals.wanted_error - STEP).map(|(t, _)| t[0]).min();
         assert!(fewest.is_none_or(|k| marked.flatten().is_some_and(|m| m <= k.max(0))), "{}", say());
-        self.check_one_at_a_time(outcome, end, &is_there, &say);
     }
 
     /// Every combination of the sets of the sections' own fronts must be matched or beaten.
@@ -556,7 +567,7 @@ impl<'a> Whole<'a> {
         });
         text += "\n listed:";
         for row in &outcome.rows {
-            let said = said(row);
+            let said = self.said(row);
             let own = self.recount(&row.sections).2;
             let (proved, other) = (row.proved, row.alternative);
             text += &format!(
