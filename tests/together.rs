@@ -13,7 +13,7 @@ mod whole;
 
 use drawer::{Drawer, paired};
 use roundwell::parts::{Buying, Series};
-use roundwell::search::{Goals, Joint, Problem, Proof, Row, SectionProblem, Unwatched, shortlist};
+use roundwell::search::{Goals, Joint, Outcome, Problem, Proof, Row, SectionProblem, Unwatched, shortlist};
 use roundwell::target::{Measure, Shape, Weights};
 use roundwell::units::Kind;
 use support::*;
@@ -264,6 +264,65 @@ fn the_weighted_measure() {
             let mut problem = board(vec![biquad, inverter(1e3, -2.0, "8k2 12k 15k", "10n 22n")], problem.goals);
             problem.criterion.measure = Measure::Weighted(weights);
             compare_whole("gains", &problem);
+        }
+    }
+}
+
+#[test]
+fn notches_beside_other_sections() {
+    let f0 = 1.0 / (TAU * 10e3 * 22e-9);
+    let (r, c) = (ohms("10k 15k"), farads("10n 22n"));
+    let notched = |q| section(notch(f0 * 1.001, q, 1.0, f0 * 1.001), "fliege-notch", "notch", &r, &c);
+    for floor_db in [60.0, 30.0, 12.0] {
+        for own in [None, Some(1.0), Some(40.0)] {
+            let sections = vec![notched(1.1), low_pass(1.5 * f0, 0.7, "6k8 10k 15k", "6n8 10n 22n")];
+            let mut problem = board(sections, Goals { own_error: own, ..wide(10.0) });
+            problem.criterion.floor_db = floor_db;
+            compare_whole("notch", &problem);
+        }
+    }
+}
+
+#[test]
+fn high_q() {
+    // Sharp poles have frequencies of the measure to themselves.
+    let sharp = low_pass(1.0e3, 6.2, "10k 11k", "1n5 1n8 220n 270n");
+    compare_all_limits("sharp", &[sharp.clone(), low_pass(1.6e3, 0.6, "10k 11k", "6n8 10n 15n")]);
+    compare_all_limits("twice", &[sharp.clone(), sharp]);
+}
+
+#[test]
+fn the_brute_force_notices_what_is_wrong() {
+    let [a, b] = butterworth();
+    let problem = board(vec![a, b], Goals { own_error: Some(2.0), ..wide(6.0) });
+    let every = Whole::run(&problem);
+    let right = compare_whole("right", &problem);
+    let notices = |outcome: &Outcome| {
+        let check = || {
+            every.check_claims("wrong", outcome);
+            every.check_complete("wrong", outcome);
+        };
+        std::panic::catch_unwind(std::panic::AssertUnwindSafe(check)).is_err()
+    };
+    assert!(right.rows.len() > 2 && !notices(&right));
+    for i in 0..right.rows.len() {
+        let mut missing = right.clone();
+        missing.rows.remove(i);
+        let within = |row: &Row| row.deviation.error <= problem.goals.wanted_error;
+        let marked = (0..missing.rows.len()).filter(|&i| within(&missing.rows[i]));
+        missing.marked = marked.min_by_key(|&i| missing.rows[i].part_numbers);
+        assert!(notices(&missing), "row {i} is gone");
+    }
+    let bounds = &right.together.as_ref().unwrap().bounds;
+    // A board that is not allowed for is listed too where it was found.
+    let is_best = |row: &Row, k| (row.deviation.error - every.least_of(k)).abs() < 1.5e-7;
+    let is_met = |k: usize| right.rows.iter().any(|row| row.part_numbers == Some(k) && is_best(row, k));
+    assert!(bounds.iter().filter(|bound| is_met(bound.part_numbers)).count() > 2);
+    for i in (0..bounds.len()).filter(|&i| is_met(bounds[i].part_numbers)) {
+        for factor in [0.999, 1.001] {
+            let mut off = right.clone();
+            off.together.as_mut().unwrap().bounds[i].none_below *= factor;
+            assert!(notices(&off), "bound {i} times {factor}");
         }
     }
 }

@@ -36,6 +36,8 @@ struct With {
     no_gain: bool,
     measured: bool,
     cost: bool,
+    /// Floors close under the peak, narrow bands, values over three decades.
+    wild: bool,
 }
 
 const CIRCUITS: [(&str, &str); 11] = [
@@ -55,6 +57,10 @@ const CIRCUITS: [(&str, &str); 11] = [
 fn drawn_drawer(numbers: &mut Numbers, with: With) -> Drawer {
     let resistors = values(R, "4k7 5k6 6k8 8k2 10k 12k 15k 18k 22k");
     let capacitors = values(C, "4n7 6n8 8n2 10n 12n 15n 22n 33n");
+    let (resistors, capacitors) = match with.wild {
+        true => (values(R, "1k 2k2 4k7 8k2 10k 15k 22k 47k 100k 150k"), values(C, "1n 2n2 4n7 10n 22n 47n 100n")),
+        false => (resistors, capacitors),
+    };
     let (r, c) = (3 + numbers.below(3), 2 + numbers.below(3));
     let (r, c) = (numbers.some_of(&resistors, r), numbers.some_of(&capacitors, c));
     let boards = if with.measured { 1 } else { 1 + numbers.below(3) as u64 };
@@ -155,6 +161,12 @@ fn drawn(numbers: &mut Numbers, with: With) -> Option<Problem> {
     }
     let mut problem = Problem { supply: drawer.supply.clone(), ..board(sections, goals) };
     problem.criterion.ignore_gain = with.no_gain && !vector;
+    if with.wild {
+        problem.criterion.floor_db = [60.0, 40.0, 20.0, 10.0][numbers.below(4)];
+        let w0 = problem.sections[numbers.below(problem.sections.len())].target.w0;
+        let bands = [None, None, Some((w0 / 3.0, w0 * 2.0)), Some((w0 / 30.0, w0 * 0.9)), Some((w0, w0 * 20.0))];
+        problem.criterion.band = bands[numbers.below(5)];
+    }
     if with.weighted {
         let weight = |numbers: &mut Numbers| [0.0, 0.5, 1.0, 2.0][numbers.below(4)];
         let [f0, q, gain] = [0, 1, 2].map(|_| weight(numbers));
@@ -210,6 +222,14 @@ fn drawn_with_pairs() {
 fn drawn_with_stock() {
     compare_drawn(4, 40, With { stock: true, ..With::default() }, (60, 5));
     compare_drawn(5, 30, With { stock: true, demands: true, pairs: true, ..With::default() }, (40, 3));
+}
+
+#[test]
+fn drawn_with_floors_and_bands() {
+    let wild = With { wild: true, ..With::default() };
+    compare_drawn(13, 40, wild, (40, 1));
+    compare_drawn(14, 20, With { no_gain: true, ..wild }, (20, 1));
+    compare_drawn(15, 20, With { all_pass: true, stock: true, ..wild }, (20, 1));
 }
 
 #[test]
