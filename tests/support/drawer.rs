@@ -350,17 +350,19 @@ impl Front {
 
 /// What may stand in a group of slots.
 #[derive(Clone, Debug)]
-struct Held {
-    pieces: Vec<Choice>,
-    joint: Option<Joint>,
-    value: f64,
+pub struct Held {
+    pub pieces: Vec<Choice>,
+    pub joint: Option<Joint>,
+    pub value: f64,
 }
 
-struct Group {
-    slots: Vec<usize>,
-    kind: Kind,
-    silent: bool,
-    held: Vec<Held>,
+/// Slots that hold the same.
+pub struct Group {
+    pub slots: Vec<usize>,
+    pub kind: Kind,
+    /// Whether they do not move the response.
+    pub silent: bool,
+    pub held: Vec<Held>,
 }
 
 /// A piece for all boards: measured parts of one label are alike.
@@ -403,7 +405,8 @@ fn value_of(kind: Kind, joint: Joint, a: &Choice, b: &Choice) -> f64 {
     }
 }
 
-fn groups(section: &SectionProblem) -> Vec<Group> {
+/// The groups of slots of a section, with all that may stand in them.
+pub fn groups(section: &SectionProblem) -> Vec<Group> {
     let silent = silent(section);
     let mut groups: Vec<Group> = Vec::new();
     for slot in section.output().filled(&section.circuit) {
