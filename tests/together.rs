@@ -442,7 +442,6 @@ fn two_sections_and_one_part_each() {
 // ---- faults found ----------------------------------------------------------------------------------------------------
 
 #[test]
-#[ignore = "rows beyond the error limit are said to be proved, although no board was searched for there"]
 fn rows_beyond_the_limit_are_not_said_to_be_proved() {
     // Alone, the second section is best with 8k2; beside 9k1 it is better off with 13k.
     let f0 = 1.0 / (TAU * 10e3 * 10e-9);
@@ -453,7 +452,6 @@ fn rows_beyond_the_limit_are_not_said_to_be_proved() {
 }
 
 #[test]
-#[ignore = "a board with like sections exchanged takes the place of an alternative"]
 fn like_sections_exchanged_are_no_alternative() {
     let f0 = 1.0 / (TAU * 10e3 * 10e-9);
     let pole = || rc_low_pass(f0, "9k1 11k", "10n");
@@ -463,7 +461,6 @@ fn like_sections_exchanged_are_no_alternative() {
 }
 
 #[test]
-#[ignore = "at the number of part numbers where the front ends, a better board with one body more is dropped"]
 fn the_best_board_of_the_last_number_of_part_numbers_is_listed() {
     // 33n with 6k8, with two 12k side by side, and with 12k beside 18k: three part numbers, five or six bodies, both below
     // the resolution.

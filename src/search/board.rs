@@ -101,6 +101,7 @@ impl Board<'_> {
         let good = combinations.iter().filter(|c| c.key <= wanted);
         let one_at_a_time = good.map(|c| (c.tally.takes.part_numbers, c.key)).min();
         combinations.extend(together.iter().flat_map(|t| t.boards.iter().cloned()));
+        combinations.iter_mut().for_each(|c| self.put_in_order(c));
         combinations.sort_by(|a, b| (&a.sets, &a.boards).cmp(&(&b.sets, &b.boards)));
         combinations.dedup_by(|a, b| a.sets == b.sets && a.boards == b.boards);
         let fewest = combinations.iter().map(|c| c.tally.takes.part_numbers).min();
@@ -116,9 +117,11 @@ impl Board<'_> {
         if together.is_some() {
             // Beyond the end of the front nothing was searched together.
             let resolution = ErrorKey::new(goals.error_resolution);
-            let ends: Vec<Takes> =
-                combinations.iter().filter(|c| c.key < resolution).map(|c| c.tally.takes).collect();
-            combinations.retain(|c| !ends.iter().any(|end| *end != c.tally.takes && end.is_within(&c.tally.takes)));
+            let good = combinations.iter().filter(|c| c.key < resolution);
+            let ends: Vec<Takes> = good.map(|c| c.tally.takes).collect();
+            let is_beyond =
+                |takes: &Takes, end: &Takes| end.part_numbers < takes.part_numbers && end.is_within(takes);
+            combinations.retain(|c| !ends.iter().any(|end| is_beyond(&c.tally.takes, end)));
         }
         // By ascending error, a combination is on the front if it takes less of something than each before it.
         let mut front: Vec<&Combination> = Vec::new();
@@ -187,7 +190,10 @@ impl Board<'_> {
         };
         let proved = match (together, self.prepared) {
             (_, [only]) => is_proved(only),
-            (Some(together), _) => !alternative && together.proves(combination),
+            (Some(together), _) => {
+                let limit = ErrorKey::new(self.problem.goals.error_limit);
+                !alternative && combination.key <= limit && together.proves(combination)
+            }
             (None, _) => false,
         };
         let chosen = |sets: &[SetAtLevel]| -> Vec<Chosen> {

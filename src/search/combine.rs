@@ -68,6 +68,21 @@ impl Combination {
 }
 
 impl Board<'_> {
+    /// Puts the sets of sections that are alike in all but their name into one order: exchanged they are the same board.
+    pub fn put_in_order(&self, combination: &mut Combination) {
+        if !combination.boards.is_empty() {
+            return;
+        }
+        for second in 1..self.prepared.len() {
+            for first in 0..second {
+                let alike = self.prepared[first].problem.is_like(self.prepared[second].problem);
+                if alike && combination.sets[second] < combination.sets[first] {
+                    combination.sets.swap(first, second);
+                }
+            }
+        }
+    }
+
     /// All combinations of one set of each section that the stock allows, or, where they are too many, of thinned lists;
     /// and whether something was left out.
     pub fn combinations(&self) -> (Vec<Combination>, bool) {
@@ -93,10 +108,12 @@ impl Board<'_> {
         }
         // What was found by the time of a stop is still combined, as far as that takes no time.
         let combine = |(i, found): (usize, &Vec<&Found>)| {
-            (i < LEAST_COMBINATIONS || self.monitor.stop().is_none()).then(|| self.combination(found)).flatten()
+            if i < LEAST_COMBINATIONS || self.monitor.stop().is_none() { self.combination(found) } else { Vec::new() }
         };
-        let mut combinations: Vec<Combination> = choices.par_iter().enumerate().filter_map(combine).collect();
-        if self.prepared.len() > 1 && self.problem.supply.has_stock() && combinations.len() < choices.len() {
+        let combined: Vec<Vec<Combination>> = choices.par_iter().enumerate().map(combine).collect();
+        let fails = combined.iter().any(Vec::is_empty);
+        let mut combinations: Vec<Combination> = combined.into_iter().flatten().collect();
+        if self.prepared.len() > 1 && self.problem.supply.has_stock() && fails {
             let mut further = Further { board: self, searches: 0, found: Vec::new() };
             let order: Vec<usize> = (0..self.prepared.len()).collect();
             further.search(&order, &self.problem.supply, &mut vec![None; order.len()]);
@@ -104,9 +121,8 @@ impl Board<'_> {
             further.search(&backwards, &self.problem.supply, &mut vec![None; backwards.len()]);
             // A search that was cut short may have left sets out too.
             thinned |= further.searches >= MOST_SEARCHES || self.monitor.stop().is_some();
-            let again =
-                further.found.par_iter().filter_map(|found| self.combination(&found.iter().collect::<Vec<_>>()));
-            combinations.extend(again.collect::<Vec<_>>());
+            let again = further.found.par_iter().map(|found| self.combination(&found.iter().collect::<Vec<_>>()));
+            combinations.extend(again.collect::<Vec<_>>().into_iter().flatten());
             combinations.sort_by(|a, b| (&a.sets, &a.boards).cmp(&(&b.sets, &b.boards)));
             combinations.dedup_by(|a, b| a.sets == b.sets && a.boards == b.boards);
         }
@@ -127,30 +143,34 @@ impl Board<'_> {
         all.flat_map(|(p, set)| super::canonical::parts(&p.forms[set.form].groups, &set.choices))
     }
 
-    /// One set of each section as a whole; `None` where the stock does not suffice for it.
-    fn combination(&self, found: &[&Found]) -> Option<Combination> {
+    /// One set of each section as a whole, in each way that takes less of something than the others; none where the stock
+    /// does not suffice.
+    fn combination(&self, found: &[&Found]) -> Vec<Combination> {
         if found.iter().any(|f| !f.boards.is_empty()) {
-            return self.differing(found);
+            return self.differing(found).into_iter().collect();
         }
+        let cost_counts = self.problem.goals.rank == Rank::Cost;
         let levels: Vec<Vec<SetAtLevel>> =
             self.prepared.iter().zip(found).map(|(p, f)| self.at_levels(p, f)).collect();
         let count = |sets: &[SetAtLevel]| tally(&self.problem.supply, self.parts(sets));
         // The first level of each is the preferred one; others are taken only where they save something.
-        let mut best: Vec<SetAtLevel> = levels.iter().filter_map(|list| list.first().cloned()).collect();
-        let mut tallied = count(&best);
+        let first: Vec<SetAtLevel> = levels.iter().filter_map(|list| list.first().cloned()).collect();
+        let mut best: Vec<(Vec<SetAtLevel>, Tally)> = Vec::new();
+        let mut take = |sets: Vec<SetAtLevel>| {
+            let Some(tally) = count(&sets) else { return };
+            if !best.iter().any(|(_, known)| known.is_within(&tally, cost_counts)) {
+                best.retain(|(_, known)| !tally.is_within(known, cost_counts));
+                best.push((sets, tally));
+            }
+        };
+        take(first);
         if levels.len() > 1 && levels.iter().map(Vec::len).product::<usize>() <= MOST_LEVELS {
             let mut index = vec![0; levels.len()];
             'all: loop {
                 for (place, list) in index.iter_mut().zip(&levels) {
                     *place += 1;
                     if *place < list.len() {
-                        let sets: Vec<SetAtLevel> =
-                            levels.iter().zip(&index).map(|(list, &i)| list[i].clone()).collect();
-                        if let Some(next) = count(&sets)
-                            && tallied.is_none_or(|best| next.takes < best.takes)
-                        {
-                            (best, tallied) = (sets, Some(next));
-                        }
+                        take(levels.iter().zip(&index).map(|(list, &i)| list[i].clone()).collect());
                         continue 'all;
                     }
                     *place = 0;
@@ -158,8 +178,11 @@ impl Board<'_> {
                 break;
             }
         }
-        let key = ErrorKey::new(self.whole.deviation(&self.responses(&best)).error);
-        Some(Combination { key, tally: tallied?, sets: best, boards: Vec::new() })
+        let whole = |(sets, tally): (Vec<SetAtLevel>, Tally)| {
+            let key = ErrorKey::new(self.whole.deviation(&self.responses(&sets)).error);
+            Combination { key, tally, sets, boards: Vec::new() }
+        };
+        best.into_iter().map(whole).collect()
     }
 
     /// Sets of which some differ from board to board: the boards of each section are taken in the order of their errors.

@@ -62,8 +62,8 @@ pub struct Row {
     pub worst_miss: f64,
     /// Whether the row is not on the front, and listed because alternatives were asked for.
     pub alternative: bool,
-    /// Whether it is proved that no set on these shelves in this circuit, but those of the rows before it, has a smaller
-    /// error with as few part numbers. For several sections: no board of which each section misses its own target by no
+    /// Whether it is proved that no set on these shelves in this circuit that takes no more of anything, but those of the
+    /// rows before it, has a smaller error. For several sections: no board of which each section misses its own target by no
     /// more than [`TogetherSummary::own_errors`] or the error of the row.
     pub proved: bool,
     /// Part numbers that must be bought; `None` without a stock list.

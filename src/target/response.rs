@@ -290,6 +290,11 @@ impl Yardstick {
         };
         let raw = points.iter().filter(|p| p.2 > self.floor).map(|&(_, p, t)| (t / p).ln());
         let (mut from, mut to) = raw.fold((f64::INFINITY, f64::NEG_INFINITY), |(l, h), v| (l.min(v), h.max(v)));
+        // Where the floor cuts nothing off, the middle of the ratios is the answer.
+        let middle = 0.5 * (from + to);
+        if imbalance(middle).abs() <= 1e-14 {
+            return middle.exp();
+        }
         for _ in 0..80 {
             let middle = 0.5 * (from + to);
             if imbalance(middle) > 0.0 { to = middle } else { from = middle }
