@@ -700,7 +700,10 @@ fn boards_are_what_they_say() {
         }
     }
     let found = listed(&outcome);
-    let same =
-        found.len() == expected.len() && found.iter().zip(&expected).all(|(a, b)| a.0 == b.0 && agree(a.1, b.1));
-    assert!(same, "{found:?} {expected:?}");
+    // Chosen together they are no worse; below the resolution nothing better is looked for.
+    let resolution = board.goals.error_resolution;
+    let met = |&(count, error): &(usize, f64)| {
+        found.iter().any(|&(other, best)| other <= count && best <= error.max(resolution) + SAME)
+    };
+    assert!(expected.iter().all(met), "{found:?} {expected:?}");
 }

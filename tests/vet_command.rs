@@ -439,7 +439,8 @@ fn bad_input_is_told_with_its_range() {
 fn the_example_list_is_that_of_its_job() {
     let folder = tempfile::tempdir().unwrap();
     let job = Path::new(env!("CARGO_MANIFEST_DIR")).join("data/examples/vibration-logger.ron");
-    let line = format!("shortlist {} --format json --out new.json", job.display());
+    let line =
+        format!("shortlist {} --one-at-a-time --error-resolution 0.001 --format json --out new.json", job.display());
     assert_eq!(run(folder.path(), &line).status.code(), Some(0));
     let read = |path: &Path| Listed::parse(&fs::read_to_string(path).unwrap()).unwrap();
     assert_eq!(read(&job.with_extension("json")), read(&folder.path().join("new.json")));

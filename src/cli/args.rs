@@ -320,6 +320,9 @@ pub struct GoalArgs {
     /// others make good what one is off [default: the wanted error].
     #[arg(long, value_name = "ERROR")]
     pub own_error: Option<String>,
+    /// Search several sections one at a time and combine their fronts: quick, but nothing is proved of the board.
+    #[arg(long, value_name = "BOOL", num_args = 0..=1, require_equals = true, default_missing_value = "true")]
+    pub one_at_a_time: Option<bool>,
     /// The front ends where the best error falls below this [default: 0.001 dB or 0.01 %, for
     /// several sections ten times that].
     #[arg(long, value_name = "ERROR")]

@@ -69,6 +69,8 @@ written! {
         /// By how much each of several sections may miss its own target, where the board does not miss the whole by more,
         /// likewise; the wanted error.
         own_error: Scalar,
+        /// Whether several sections are searched one at a time and their fronts combined, unproved; false.
+        one_at_a_time: bool,
         /// The error below which nothing better is looked for, likewise; 0.001 dB or 0.01 %, for
         /// several sections ten times that.
         error_resolution: Scalar,

@@ -138,6 +138,7 @@ pub(super) fn goals(desk: &mut Desk, job: &JobFile, measure: Checked<Measure>, s
         wanted_error,
         error_limit,
         own_error: own_error?,
+        one_at_a_time: job.one_at_a_time.as_ref().is_some_and(|given| given.value),
         error_resolution,
         rows: rows?.unwrap_or(usual.rows),
         alternatives: alternatives?.unwrap_or(usual.alternatives),

@@ -223,7 +223,8 @@ pub(super) fn label(record: &Record, row: &RowRecord) -> String {
 /// all rows alike, and is said once.
 fn is_open(record: &Record, row: &RowRecord) -> bool {
     let ended = record.search.together.as_ref().is_some_and(|together| together.stop.is_some());
-    (record.search.reason.is_some() || ended) && !row.proved
+    let front = record.search.together.is_some() && !row.alternative;
+    (record.search.reason.is_some() || ended || front) && !row.proved
 }
 
 /// What the mark of a row means.

@@ -120,6 +120,9 @@ pub struct Goals {
     /// Where several sections are chosen together: by how much each of them may miss its own target, if that is more than
     /// the board may miss the whole. `None` for the wanted error.
     pub own_error: Option<f64>,
+    /// Whether several sections are only searched one at a time and their fronts combined: that is quick, but then nothing is
+    /// proved of the board.
+    pub one_at_a_time: bool,
     /// The front ends where the best error falls below this.
     pub error_resolution: f64,
     /// How many rows to list at most.
@@ -165,6 +168,7 @@ impl Default for Goals {
             wanted_error: 0.1,
             error_limit: 1.0,
             own_error: None,
+            one_at_a_time: false,
             error_resolution: 0.001,
             rows: 10,
             alternatives: 0,

@@ -28,7 +28,7 @@ use super::limits::{Progress, StopReason};
 use super::model::Model;
 use super::outcome::Bound;
 use super::prepared::Prepared;
-use super::problem::{Goals, Rank};
+use super::problem::{Goals, Problem, Rank};
 use super::section::{LEAST_LEVEL, LEVEL_FACTOR};
 use candidates::{Candidate, Catalogue, Gathering, widened};
 use offsets::{Off, Offsets, ROWS};
@@ -44,6 +44,8 @@ pub(crate) struct Together {
     pub bounds: Vec<Bound>,
     /// The number of part numbers at which the search ended too early.
     pub ended_at: Option<usize>,
+    /// Whether boards that buy less were waited for, whatever the error of those that buy more.
+    pub purchases_count: bool,
     /// Sets of sections and boards whose response was evaluated.
     pub sets: u64,
     /// Partial and whole sets and boards visited.
@@ -55,13 +57,12 @@ impl Together {
     pub fn proves(&self, row: &Combination) -> bool {
         let part_numbers = row.tally.takes.part_numbers;
         let searched = match self.proof {
-            // A board that buys less may have a larger error than was gone through.
-            Proof::Exhaustive(_) => row.tally.takes.bought == 0,
-            Proof::Stopped { complete_below, .. } => part_numbers < complete_below && row.tally.takes.bought == 0,
+            Proof::Exhaustive(_) => true,
+            Proof::Stopped { complete_below, .. } => part_numbers < complete_below,
         };
         let bound = self.bounds.iter().filter(|bound| bound.part_numbers == part_numbers);
         let excluded = bound.into_iter().any(|bound| row.key <= ErrorKey::new(bound.searched_to));
-        (searched || excluded) && row.boards.is_empty()
+        ((searched && self.purchases_count) || excluded) && row.boards.is_empty()
     }
 }
 
@@ -71,11 +72,15 @@ const MOST_NODES: f64 = 4e7;
 /// The same where sections may miss their own targets by more than usual.
 const FEW_NODES: f64 = 4e5;
 
-/// How much one level may take, in candidates and palettes looked at.
-const MOST_STEPS: u64 = 120_000_000;
+/// How much all levels together may take, in candidates and palettes looked at.
+const MOST_STEPS: u64 = 300_000_000;
 
 /// Boards of more sections are not searched as a whole.
 const MOST_SECTIONS: usize = 16;
+
+/// What it takes, in the same measure, to judge a board that misses the error, and one that meets it.
+const MISSED: u64 = 100;
+const MET: u64 = 5_000;
 
 /// In how many parts the candidates of the first section are gone through.
 const PARTS: usize = 512;
@@ -87,7 +92,11 @@ pub(crate) fn together(board: &Board<'_>) -> Option<Together> {
     let measured = board.prepared.iter().any(|p| p.forms.iter().any(Model::is_measured));
     let offered =
         (2..=MOST_SECTIONS).contains(&problem.sections.len()) && board.prepared.len() == problem.sections.len();
-    if !offered || problem.goals.rank == Rank::Cost || (measured && problem.supply.boards > 1) {
+    if !offered
+        || problem.goals.one_at_a_time
+        || problem.goals.rank == Rank::Cost
+        || (measured && problem.supply.boards > 1)
+    {
         return None;
     }
     let forms = || board.prepared.iter().flat_map(|p| &p.forms);
@@ -100,13 +109,20 @@ pub(crate) fn together(board: &Board<'_>) -> Option<Together> {
         bounds: Vec::new(),
         open_from: None,
         ended_at: None,
+        steps: 0,
         sets: 0,
         nodes: 0,
     };
     let proof = search.run();
     let boards = search.best.front().iter().flatten().filter_map(|found| board.placed(found)).collect();
     let Search { bounds, ended_at, sets, nodes, .. } = search;
-    Some(Together { boards, proof, bounds, ended_at, sets, nodes })
+    Some(Together { boards, proof, bounds, ended_at, purchases_count: purchases_count(problem), sets, nodes })
+}
+
+/// Whether boards that buy less with more part numbers, or at a larger error, are waited for: only where that is what rows
+/// are ranked by, for it takes long.
+fn purchases_count(problem: &Problem) -> bool {
+    problem.goals.rank == Rank::ToBuy || !problem.supply.has_stock()
 }
 
 /// The sets gathered for one section.
@@ -156,6 +172,8 @@ struct Search<'a> {
     open_from: Option<usize>,
     /// The number of part numbers from which on only some boards were looked at.
     ended_at: Option<usize>,
+    /// Candidates and palettes looked at.
+    steps: u64,
     sets: u64,
     nodes: u64,
 }
@@ -176,8 +194,7 @@ impl Search<'_> {
         let resolution = ErrorKey::new(goals.error_resolution);
         for part_numbers in fewest..=most.min(allowed) {
             // Unless that is what counts, boards that buy less with more part numbers are not waited for.
-            let counts = goals.rank == Rank::ToBuy || !self.board.problem.supply.has_stock();
-            let bought = if counts { 0 } else { usize::MAX };
+            let bought = if purchases_count(self.board.problem) { 0 } else { usize::MAX };
             let least = Takes { part_numbers, bought, placed_parts };
             let known = self.best.error_within(&least);
             if known.is_some_and(|key| key < resolution) {
@@ -335,8 +352,10 @@ impl Search<'_> {
         let roots = lists[0].len();
         let size = roots.div_ceil(PARTS).max(1);
         let starts: Vec<usize> = (0..roots).step_by(size).collect();
-        let (steps, finished) = (AtomicU64::new(0), AtomicUsize::new(0));
+        let (steps, finished) = (AtomicU64::new(self.steps), AtomicUsize::new(0));
         let overrun = AtomicBool::new(false);
+        let free = |p: &Prepared<'_>| p.forms.iter().all(Model::silent_groups_are_free);
+        let takes_are_known = !board.problem.supply.has_stock() && board.prepared.iter().all(free);
         let best_error = self.best.error().map(ErrorKey::ceiling);
         let bound = self.bounds.last().map(|bound| bound.none_below);
         let results: Vec<(Best, u64, u64)> = starts
@@ -352,6 +371,7 @@ impl Search<'_> {
                     models: HashMap::new(),
                     best: Best::new(board.problem.goals.alternatives + 1, false),
                     sets: 0,
+                    takes_are_known,
                     told: 0,
                     steps: &steps,
                     overrun: &overrun,
@@ -378,6 +398,7 @@ impl Search<'_> {
             self.best.merge(best);
             self.sets += sets;
             self.nodes += steps;
+            self.steps += steps;
         }
         board.monitor.stop().map_or(Ok(()), |reason| Err(Halt::Stopped(reason)))
     }
@@ -395,6 +416,8 @@ struct Meeting<'a, 'b> {
     models: HashMap<Vec<u16>, Model>,
     best: Best,
     sets: u64,
+    /// Whether a board takes what its active groups do: no silent one ever needs a part number of its own.
+    takes_are_known: bool,
     /// Steps that have been added to those of all parts.
     told: u64,
     steps: &'b AtomicU64,
@@ -402,7 +425,7 @@ struct Meeting<'a, 'b> {
 }
 
 impl Meet for Meeting<'_, '_> {
-    fn meet(&mut self, chosen: &[usize]) {
+    fn meet(&mut self, chosen: &[usize]) -> u64 {
         self.sets += 1;
         let prepared = self.board.prepared;
         let mut candidates: Vec<&Candidate> = vec![self.lists[0].candidate(chosen[0]); chosen.len()];
@@ -415,17 +438,21 @@ impl Meet for Meeting<'_, '_> {
         let responses: Vec<Biquad> = (prepared.iter().zip(&candidates).zip(&choices))
             .map(|((p, candidate), choices)| p.forms[usize::from(candidate.form)].biquad(choices))
             .collect();
-        let Some(first) = self.board.whole.within(&responses, widened(self.level)) else { return };
-        if self.board.problem.goals.alternatives == 0 {
-            let mut palette: Vec<u16> = candidates.iter().flat_map(|c| c.palette.iter().copied()).collect();
-            palette.sort_unstable();
-            palette.dedup();
-            let placed = prepared.iter().zip(&candidates).map(|(p, c)| p.forms[usize::from(c.form)].placed_parts);
-            let takes = Takes { part_numbers: palette.len(), bought: 0, placed_parts: placed.sum() };
-            let key = ErrorKey::new(first.error * (1.0 - 1e-9) - 1e-12);
-            if self.best.error_within(&takes).is_some_and(|known| known < key) {
-                return;
-            }
+        let mut palette: Vec<u16> = candidates.iter().flat_map(|c| c.palette.iter().copied()).collect();
+        palette.sort_unstable();
+        palette.dedup();
+        let placed = prepared.iter().zip(&candidates).map(|(p, c)| p.forms[usize::from(c.form)].placed_parts);
+        let least = Takes { part_numbers: palette.len(), bought: 0, placed_parts: placed.sum() };
+        // What takes at least as much as one that is known must be no worse; where alternatives are wanted, as good as the
+        // last that is kept of those that take the same.
+        let known = match self.board.problem.goals.alternatives {
+            0 => self.best.error_within(&least),
+            _ if self.takes_are_known => self.best.worst_kept(&least),
+            _ => None,
+        };
+        let limit = known.map_or(self.level, |key| key.ceiling().min(self.level));
+        if self.board.whole.within(&responses, widened(limit)).is_none() {
+            return MISSED;
         }
         let forms: Vec<u16> = candidates.iter().map(|c| c.form).collect();
         let active = choices.concat();
@@ -443,6 +470,7 @@ impl Meet for Meeting<'_, '_> {
                 self.best.insert(found);
             }
         }
+        MET
     }
 
     fn halted(&mut self, steps: u64) -> bool {

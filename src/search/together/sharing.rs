@@ -344,8 +344,8 @@ pub(super) struct Descent<'a, 'b> {
 
 /// Told of each combination; says whether to go on, which is asked now and then besides.
 pub(super) trait Meet {
-    /// Candidates by depth that have few enough part numbers, and that may meet the error.
-    fn meet(&mut self, chosen: &[usize]);
+    /// Candidates by depth that have few enough part numbers, and that may meet the error; gives how many steps that took.
+    fn meet(&mut self, chosen: &[usize]) -> u64;
     /// Whether to stop, after so many steps in all.
     fn halted(&mut self, steps: u64) -> bool;
 }
@@ -381,7 +381,7 @@ impl<'a, 'b> Descent<'a, 'b> {
     fn descend(&mut self, chosen: &mut Vec<usize>, union: &[u16], off: &Off, meet: &mut dyn Meet) -> bool {
         let depth = chosen.len();
         let Some(list) = self.lists.get(depth) else {
-            meet.meet(chosen);
+            self.steps += meet.meet(chosen);
             return !meet.halted(self.steps);
         };
         let fresh = self.most - union.len();
@@ -395,7 +395,7 @@ impl<'a, 'b> Descent<'a, 'b> {
                 let news = || palette().filter(|id| union.binary_search(id).is_err()).count();
                 if may_meet(&off, &self.rest[depth + 1], &self.reach) && news() <= fresh {
                     chosen.push(index as usize);
-                    meet.meet(chosen);
+                    self.steps += meet.meet(chosen);
                     chosen.pop();
                 }
             }
