@@ -52,7 +52,28 @@ fn the_limit_on_part_numbers_holds_for_the_board() {
     let output = run(&["shortlist", JOB, "--max-part-numbers", "4"]);
     assert_eq!(output.status.code(), Some(3));
     let text = String::from_utf8(output.stdout).unwrap();
-    assert!(text.contains("Nothing found keeps the limit of 4 on part numbers: the fewest are 6."), "{text}");
+    assert!(text.contains("Nothing found keeps the limit of 4 on part numbers: the fewest found are 6."), "{text}");
+}
+
+/// The best board of 4 part numbers misses the target by little more than a section may: that must not keep the boards of 5
+/// from being searched.
+#[test]
+fn a_front_is_proved_across_the_own_error() {
+    let folder = tempfile::tempdir().unwrap();
+    let path = folder.path().join("butterworth.ron");
+    let section = |q| format!("(shape: LowPass, f0: 1000, q: {q}, circuit: \"tow-thomas\"),");
+    let shelves =
+        "resistors: (series: E96, from: \"100\", to: \"1M\"), capacitors: (series: E12, from: \"100p\", to: \"1u\")";
+    let sections = [section("0.5411961"), section("1.306563")].concat();
+    let job = format!("(sections: [{sections}], own_error: 0.06, error_limit: 0.12, {shelves})");
+    std::fs::write(&path, job).unwrap();
+    let record = json(&run(&["shortlist", path.to_str().unwrap(), "--max-part-numbers", "5", "--format", "json"]));
+    let error = |row: &Value| row["ranking_error"].as_f64().unwrap();
+    let list = record["shortlist"].as_array().unwrap();
+    let four = list.iter().find(|row| row["part_numbers"] == 4).unwrap();
+    assert!((0.06..0.09).contains(&error(four)), "{four}");
+    let five = list.iter().find(|row| row["part_numbers"] == 5).unwrap();
+    assert!(error(five) < error(four) && five["proved"] == true && four["proved"] == true, "{five}");
 }
 
 #[test]

@@ -165,7 +165,7 @@ pub(super) fn outcome(record: &Record, width: usize) -> String {
         .map(|error| unbroken(&error_in_words(record.measure.unit, error)));
     if let (true, Some(fewest)) = (record.shortlist.is_empty(), record.search.fewest_found) {
         let most = record.wanted.max_part_numbers.map_or(String::new(), |most| format!(" of {most}"));
-        let line = format!("Nothing found keeps the limit{most} on part numbers: the fewest are {fewest}.");
+        let line = format!("Nothing found keeps the limit{most} on part numbers: the fewest found are {fewest}.");
         text += &paragraph("", &line, width);
     } else if record.shortlist.is_empty() {
         let line = match record.search.reason {

@@ -101,11 +101,13 @@ fn statement(problem: &Problem, summary: &TogetherSummary) -> String {
         true => format!("{} to {}", error_in_words(unit, least), error_in_words(unit, most)),
         false => error_in_words(unit, most),
     };
+    let pinned = problem.sections.iter().any(|section| section.own_error.is_some());
+    let or = if pinned { "or, where not pinned to that," } else { "or" };
     let allowed = match problem.criterion.measure {
         Measure::Weighted(_) => String::new(),
         _ => {
             format!(
-                ", of all whose sections by themselves miss their targets by {own} at most, or by no more than the board does"
+                ", of all whose sections by themselves miss their targets by {own} at most, {or} by no more than the board does"
             )
         }
     };

@@ -279,7 +279,7 @@ impl Search<'_> {
             let own = self.own(index, level, cap);
             let pool = &mut self.pools[index];
             // Beyond the usual limit only what is quickly done is.
-            let affordable = if own > board.problem.goals.own_error() { FEW_NODES } else { MOST_NODES };
+            let affordable = if level > board.problem.goals.own_error() { FEW_NODES } else { MOST_NODES };
             if pool.own < own {
                 *pool = Pool { own, ..Pool::default() };
             } else if own < pool.own {
