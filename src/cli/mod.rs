@@ -19,6 +19,7 @@ mod tighten_args;
 mod tolerance_args;
 mod values;
 mod vet;
+mod vet_args;
 mod vet_settings;
 
 use std::ffi::OsString;

@@ -56,8 +56,8 @@ pub fn run(args: &TightenArgs) -> Result<u8, Failure> {
         (None, None, Some(mask)) => (Wanted::mask(mask, first), None),
         (None, None, None) => return Err(Failure::input(Fault::at("", NOTHING_WANTED).help(WANTED_HELP))),
     };
-    let output = Output::open(args.out.as_deref())?;
-    let pool = rayon::ThreadPoolBuilder::new().num_threads(args.threads.map_or(0, usize::from)).build();
+    let output = Output::open(args.page.out.as_deref())?;
+    let pool = rayon::ThreadPoolBuilder::new().num_threads(args.page.threads.map_or(0, usize::from)).build();
     let pool = pool.map_err(|error| Failure::Threads(error.to_string()))?;
     let found = pool.install(|| tighten(&boards, &wanted, &steps, &sampling));
     let marked = wanted_yield.map_or(vec![false; found.len()], |yielding| coarsest(&found, yielding));
@@ -81,8 +81,8 @@ pub fn run(args: &TightenArgs) -> Result<u8, Failure> {
     };
     let record = TightenRecord::new(&asked, &found, &marked);
     let mut bytes = Vec::new();
-    let result = match args.format {
-        ShowFormat::Table => write_tighten_table(&record, usize::from(args.width), &mut bytes),
+    let result = match args.page.format {
+        ShowFormat::Table => write_tighten_table(&record, usize::from(args.page.width), &mut bytes),
         ShowFormat::Json => write_tighten_json(&record, &mut bytes),
     };
     result.map_err(|error| Failure::Unwritable(error.to_string()))?;

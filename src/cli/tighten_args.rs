@@ -4,7 +4,7 @@ use std::path::PathBuf;
 
 use clap::Args;
 
-use super::args::ShowFormat;
+use super::args::PageArgs;
 use super::price_args::PriceArgs;
 use super::tolerance_args::DrawArgs;
 
@@ -50,16 +50,6 @@ pub struct TightenArgs {
     /// Draw no more once the interval of the best row is this narrow to either side; 0 draws all.
     #[arg(long, value_name = "PERCENT", allow_hyphen_values = true, default_value = "1%")]
     pub interval: String,
-    /// How to write it.
-    #[arg(long, value_enum, default_value_t)]
-    pub format: ShowFormat,
-    /// Write to this file in place of standard output; it is replaced only when all is written.
-    #[arg(long, value_name = "FILE")]
-    pub out: Option<PathBuf>,
-    /// Characters to the line.
-    #[arg(long, value_name = "COUNT", default_value_t = 80, value_parser = clap::value_parser!(u16).range(40..=1000))]
-    pub width: u16,
-    /// Threads to work with [default: one for each processor core].
-    #[arg(long, value_name = "COUNT", value_parser = clap::value_parser!(u16).range(1..=1024))]
-    pub threads: Option<u16>,
+    #[command(flatten)]
+    pub page: PageArgs,
 }

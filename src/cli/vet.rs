@@ -35,14 +35,14 @@ pub fn run(args: &VetArgs) -> Result<u8, Failure> {
         Some(path) => Some(mask(path, &built.targets())?),
         None => listed.mask,
     };
-    let output = Output::open(args.out.as_deref())?;
-    let pool = rayon::ThreadPoolBuilder::new().num_threads(args.threads.map_or(0, usize::from)).build();
+    let output = Output::open(args.page.out.as_deref())?;
+    let pool = rayon::ThreadPoolBuilder::new().num_threads(args.page.threads.map_or(0, usize::from)).build();
     let pool = pool.map_err(|error| Failure::Threads(error.to_string()))?;
     let conditions = Conditions { tolerances, mask, climate, real, levels, trim: args.trim, select, sampling };
     let found = pool.install(|| vet(&built, &conditions));
     let mut record = VetRecord::new(&built, args.row, boards, &conditions, &found);
     record.is_compensated = is_compensated;
-    output.write(&written(&record, args.format, usize::from(args.width))?)?;
+    output.write(&written(&record, args.page.format, usize::from(args.page.width))?)?;
     let missed = record.mask.as_ref().is_some_and(|mask| matches!(mask.fails, Some("target" | "nominal")));
     Ok(if missed { NOTHING_WITHIN_LIMITS } else { FOUND })
 }

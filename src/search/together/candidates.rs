@@ -12,7 +12,7 @@ use crate::units::Kind;
 use super::super::canonical::{impedance, in_ohms};
 use super::super::family::{Budget, Family, Visitor};
 use super::super::limits::{Monitor, StopReason};
-use super::super::model::Model;
+use super::super::model::{Group, Model};
 use super::super::prepared::Prepared;
 use super::super::problem::Goals;
 use super::super::section::tasks;
@@ -214,9 +214,7 @@ impl Visitor for Collector<'_> {
         {
             return;
         }
-        let number = |(group, &choice): (&super::super::model::Group, &Choice)| {
-            catalogue.numbers.get(&(group.kind, choice)).copied()
-        };
+        let number = |(group, &choice): (&Group, &Choice)| catalogue.numbers.get(&(group.kind, choice)).copied();
         let Some(items) = groups.iter().zip(&choices).map(number).collect::<Option<Vec<u16>>>() else { return };
         let image = |order: &Vec<usize>| order.iter().map(|&k| items[k]).collect::<Vec<u16>>();
         let items = self.model.symmetries.iter().map(image).chain([items.clone()]).min().unwrap_or(items);

@@ -143,7 +143,7 @@ impl Marked {
 }
 
 /// The least and the most in each row.
-pub(super) fn span<'a>(candidates: impl Iterator<Item = &'a Candidate>) -> (Off, Off) {
+fn span<'a>(candidates: impl Iterator<Item = &'a Candidate>) -> (Off, Off) {
     let none = ([f32::INFINITY; ROWS], [f32::NEG_INFINITY; ROWS]);
     candidates.fold(none, |(mut least, mut most), candidate| {
         for (row, &off) in candidate.off.iter().enumerate() {
